@@ -1,0 +1,55 @@
+package solver
+
+// Stop says why a draw's path ended where it did.
+type Stop uint8
+
+const (
+	StopFloor       Stop = iota // the last lattice lambda was reached
+	StopEntered                 // more distinct candidates than StopAfter had entered
+	StopUncertified             // the next step could not be certified
+)
+
+// String returns the word used in files and messages.
+func (s Stop) String() string {
+	switch s {
+	case StopFloor:
+		return "floor"
+	case StopEntered:
+		return "stop_after"
+	case StopUncertified:
+		return "not certified"
+	}
+	return "unknown"
+}
+
+// Entry is the first lattice step at which a candidate is selected in a draw.
+type Entry struct {
+	Candidate int32 // position in Problem.Candidates
+	Step      int32 // lattice step
+	Negative  bool  // sign of the coefficient at that step
+}
+
+// Coef is one non-zero coefficient on the original scale of the column.
+type Coef struct {
+	Step      int32
+	Candidate int32 // position in Problem.Candidates
+	Value     float64
+}
+
+// Path is the outcome of one draw: the certified fits at lattice steps
+// First..Last. All numbers are record numbers: functions of the draw and the
+// model alone, whatever block, worker or kernel made them.
+type Path struct {
+	First, Last int       // lattice steps with a certified fit; Last < First: none
+	Stop        Stop      // why the path ended
+	Entries     []Entry   // ordered by step, then candidate
+	Coefs       []Coef    // ordered by step, then candidate; only non-zero
+	Intercepts  []float64 // one per step First..Last, original scale
+	Always      []float64 // len(Problem.Always) per step, original scale, step by step
+	Still       []int32   // candidates that do not vary in the draw, ascending
+	Violation   float64   // largest certified violation over the steps
+	Gap         float64   // largest relative duality gap over the steps
+	Borderline  int       // steps redone because a candidate stood on the border
+	Twins       int       // entries that coincided with another candidate within the draw
+	Why         string    // for StopUncertified: what failed
+}
