@@ -1,6 +1,6 @@
 module holdfast
 
-go 1.26
+go 1.26.0
 
 require (
 	github.com/apache/arrow/go/v17 v17.0.0
