@@ -1,0 +1,45 @@
+// Package resample says which rows are in which draw, and has a pool of
+// workers that fits the draws in blocks and hands the outcomes on in order.
+//
+// # Vocabulary
+//
+//   - A unit is what is drawn: a row of the table whose case weight is not 0.
+//   - A draw is one set of row counts, numbered from 0.
+//   - A complementary pair is draws 2k and 2k+1: two disjoint halves of
+//     floor(n/2) of the n units each. Where n is odd, one unit, chosen at
+//     random, is in neither.
+//   - A bootstrap draw takes n units with replacement.
+//   - A block is a run of neighbouring draws that one worker fits together.
+//
+// # Sameness
+//
+// Every pair (every bootstrap draw) has a generator of its own, keyed by its
+// design, the seed and its number. So any draw can be made anywhere and in
+// any order, and neither the number of draws nor the number of workers can
+// change it. The stream is ChaCha8 as math/rand/v2 has it, whose output is
+// part of a written specification; the integers below a limit and the
+// shuffle are written here, so that a later library cannot change a draw. A
+// test pins the first draws.
+//
+// # The pool
+//
+// [Run] cuts the draws into blocks, lets each worker take the next block
+// when it is free, and gives the outcomes to one [Sink] in draw order,
+// whichever worker was first. Blocks that wait for an earlier one are
+// bounded in number. The first failure, or the end of the context, stops the
+// handing out of blocks and cancels the fits that are under way; blocks that
+// are whole by then still reach the sink, in draw order, so that the work
+// in them is not lost.
+//
+// A [Plan] is read-only and may be shared by goroutines; a Sample belongs to
+// whoever asked for it, save its case weights, which all draws share.
+//
+// # Papers
+//
+// Complementary pairs: Shah and Samworth (2013), Journal of the Royal
+// Statistical Society B 75, 55-80. Bootstrap: Efron (1979), Annals of
+// Statistics 7, 1-26. Integers below a limit: Lemire (2019), ACM
+// Transactions on Modeling and Computer Simulation 29(1), article 3. Partial
+// shuffle: Knuth, The Art of Computer Programming, volume 2, section 3.4.2,
+// algorithm P. Stream: ChaCha of Bernstein (2008) with 8 rounds.
+package resample
