@@ -1,0 +1,152 @@
+package rundir
+
+import (
+	"bufio"
+	"crypto/rand"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"os"
+	"path/filepath"
+	"strings"
+	"syscall"
+)
+
+// tempPrefix and tempSuffix mark files that are not finished. They are
+// ignored by every reader.
+const (
+	tempPrefix = ".unfinished-"
+	tempSuffix = ".tmp"
+)
+
+// handle is an open file that is being written.
+type handle interface {
+	io.Writer
+	Sync() error
+	Close() error
+}
+
+// files are the operations by which this package changes a disk. Tests put a
+// version in its place that fails at a chosen operation.
+type files interface {
+	MkdirAll(path string) error
+	Create(path string) (handle, error) // must not exist yet
+	Rename(from, to string) error
+	Remove(path string) error
+	SyncFolder(path string) error
+}
+
+// disk is the real file system.
+type disk struct{}
+
+func (disk) MkdirAll(path string) error { return os.MkdirAll(path, 0o755) }
+
+func (disk) Create(path string) (handle, error) {
+	return os.OpenFile(path, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o644)
+}
+
+func (disk) Rename(from, to string) error { return os.Rename(from, to) }
+func (disk) Remove(path string) error     { return os.Remove(path) }
+
+// SyncFolder makes a rename in the folder durable. Some network file systems
+// have no such operation and say EINVAL or ENOTSUP; there is nothing to sync
+// then, so that is no failure.
+func (disk) SyncFolder(path string) error {
+	f, err := os.Open(path)
+	if err != nil {
+		return err
+	}
+	err = f.Sync()
+	if errors.Is(err, syscall.EINVAL) || errors.Is(err, syscall.ENOTSUP) {
+		err = nil
+	}
+	return errors.Join(err, f.Close())
+}
+
+// WriteFile writes a file that appears whole or not at all, replacing one of
+// that name: write is called with the temporary file, which is then synced,
+// closed and renamed, and the folder synced. On an error nothing of that name
+// has changed, except where only the last sync failed: then the file is whole
+// and may be lost in a power failure.
+func WriteFile(path string, write func(io.Writer) error) error {
+	return writeFile(disk{}, path, write)
+}
+
+func writeFile(fsys files, path string, write func(io.Writer) error) error {
+	folder, name := filepath.Split(path)
+	if folder == "" {
+		folder = "."
+	}
+	temp := filepath.Join(folder, tempName(name))
+	if err := fill(fsys, temp, write); err != nil {
+		fsys.Remove(temp) // the first error says more than this one could
+		return fmt.Errorf("rundir: write %s: %w", path, err)
+	}
+	if err := fsys.Rename(temp, path); err != nil {
+		fsys.Remove(temp)
+		return fmt.Errorf("rundir: write %s: %w", path, err)
+	}
+	if err := fsys.SyncFolder(folder); err != nil {
+		return fmt.Errorf("rundir: sync folder %s: %w", folder, err)
+	}
+	return nil
+}
+
+// fill creates the temporary file, writes, syncs and closes it.
+func fill(fsys files, temp string, write func(io.Writer) error) error {
+	f, err := fsys.Create(temp)
+	if err != nil {
+		return err
+	}
+	w := bufio.NewWriterSize(f, 1<<16)
+	err = write(w)
+	if err == nil {
+		err = w.Flush()
+	}
+	if err == nil {
+		err = f.Sync()
+	}
+	return errors.Join(err, f.Close())
+}
+
+// tempName returns a name that no other process picks, in the same folder.
+func tempName(name string) string {
+	var b [8]byte
+	rand.Read(b[:])
+	return tempPrefix + name + "-" + hex.EncodeToString(b[:]) + tempSuffix
+}
+
+func isTemp(name string) bool {
+	return strings.HasPrefix(name, tempPrefix) && strings.HasSuffix(name, tempSuffix)
+}
+
+// readLimited reads a file that must be regular and at most limit bytes long,
+// so that a wrong or hostile file is refused before memory is taken.
+func readLimited(path string, limit int64) ([]byte, error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	defer f.Close()
+	size, err := regularSize(f)
+	if err != nil {
+		return nil, err
+	}
+	if size > limit {
+		return nil, fmt.Errorf("%s: %d bytes, more than the %d that such a file can have", path, size, limit)
+	}
+	return io.ReadAll(io.LimitReader(f, limit))
+}
+
+func regularSize(f fs.File) (int64, error) {
+	info, err := f.Stat()
+	if err != nil {
+		return 0, err
+	}
+	if !info.Mode().IsRegular() {
+		return 0, fmt.Errorf("%s: not a regular file", info.Name())
+	}
+	return info.Size(), nil
+}

@@ -1,0 +1,55 @@
+// Package rundir is the run directory: everything that a run leaves on disk,
+// so that a judgement never fits again.
+//
+// # What is in it
+//
+//	run.json        identity, lattice, decision of record, log of judgements
+//	study.toml      the study with every default written out
+//	draws/          finished draws, one Parquet file per block
+//	parts/I.json    state, host, timings and worst certificate of part I
+//
+// and beside them whatever tables the caller writes with [Dir.Write].
+//
+// # Vocabulary
+//
+// The identity of a run is what decides the bits of its draws: the table's
+// fingerprint, the outcome, the candidates, the penalty, and the draws
+// without their number. Its digest stands in run.json and in every block, so
+// a block of another run is found out. A block is the draws that one worker
+// fitted together. The decision of record is the decision that was written
+// before draw 0; every other one is logged.
+//
+// # A block file
+//
+// draws/block-NNNNNN.parquet, NNNNNN the first draw in it, holds one row per
+// draw, in the order of draw numbers:
+//
+//	draw, first, last        int32   draw number; first and last certified lattice step
+//	stop, why                text    floor | stop_after | not certified; what failed
+//	violation, gap           double  worst certificate over the steps
+//	borderline, twins        int32   steps redone at the border; entries that coincided
+//	entries                  list of (step, predictor int32; negative boolean)
+//	coefficients             list of (step, predictor int32; coefficient double), non-zero
+//	intercepts               list of double, one per step
+//	always                   list of double, step by step, in run.json's order
+//	still                    list of int32, predictors that did not vary in the draw
+//
+// A predictor is its position among the candidates of run.json, from 0.
+// Coefficients are in the column's own units. Integers are delta-packed and
+// nothing is compressed: the bytes follow from the draws alone, a reader needs
+// no decompressor, and a damaged size cannot make it take much memory.
+//
+// Two SHA-256 digests stand in the file's key-value metadata.
+// "holdfast.pages" is over all bytes before the footer, and is checked before
+// a page is decoded. "holdfast.draws" is over a canonical encoding of the
+// decoded draws (see digest.go) and is checked after it, so the numbers that
+// are judged are the numbers that were fitted, whatever wrote the file.
+//
+// # Safety
+//
+// A file appears whole or not at all: a unique temporary name in the same
+// folder, write, sync, close, rename, sync of the folder. A failed sync is an
+// error and is not tried again. The mode is 0644 less the umask. A Dir may be
+// used by several goroutines at once. A directory can be opened and read
+// where it cannot be written.
+package rundir

@@ -1,0 +1,121 @@
+package rundir
+
+import (
+	"fmt"
+	"strconv"
+	"strings"
+
+	"github.com/apache/arrow/go/v17/parquet"
+	"github.com/apache/arrow/go/v17/parquet/compress"
+	"github.com/apache/arrow/go/v17/parquet/schema"
+)
+
+// Limits of what a run directory can hold. They are far above any real run;
+// a file that says more is refused before memory is taken.
+const (
+	maxDraws = 1 << 20
+	maxSteps = 1 << 20
+)
+
+// Keys of a block file's metadata.
+const (
+	keyFormat   = "holdfast.format"
+	keyIdentity = "holdfast.identity"
+	keyPages    = "holdfast.pages" // digest of the bytes before the footer
+	keyDraws    = "holdfast.draws" // digest of the decoded draws
+)
+
+// Columns of a block file, in file order: one per leaf of the schema.
+const (
+	colDraw = iota
+	colFirst
+	colLast
+	colStop
+	colWhy
+	colViolation
+	colGap
+	colBorderline
+	colTwins
+	colEntryStep
+	colEntryPredictor
+	colEntryNegative
+	colCoefStep
+	colCoefPredictor
+	colCoefValue
+	colIntercept
+	colAlways
+	colStill
+	numColumns
+)
+
+// blockSchema is the schema described in the package documentation.
+func blockSchema() *schema.GroupNode {
+	integer := func(name string) schema.Node { return schema.NewInt32Node(name, parquet.Repetitions.Required, -1) }
+	real := func(name string) schema.Node { return schema.NewFloat64Node(name, parquet.Repetitions.Required, -1) }
+	flag := func(name string) schema.Node { return schema.NewBooleanNode(name, parquet.Repetitions.Required, -1) }
+	return schema.MustGroup(schema.NewGroupNode("draws", parquet.Repetitions.Required, schema.FieldList{
+		integer("draw"), integer("first"), integer("last"),
+		text("stop"), text("why"),
+		real("violation"), real("gap"),
+		integer("borderline"), integer("twins"),
+		listOf("entries", record(integer("step"), integer("predictor"), flag("negative"))),
+		listOf("coefficients", record(integer("step"), integer("predictor"), real("coefficient"))),
+		listOf("intercepts", real("element")),
+		listOf("always", real("element")),
+		listOf("still", integer("element")),
+	}, -1))
+}
+
+func text(name string) schema.Node {
+	return schema.MustPrimitive(schema.NewPrimitiveNodeLogical(name, parquet.Repetitions.Required,
+		schema.StringLogicalType{}, parquet.Types.ByteArray, -1, -1))
+}
+
+func record(fields ...schema.Node) schema.Node {
+	return schema.MustGroup(schema.NewGroupNode("element", parquet.Repetitions.Required, fields, -1))
+}
+
+// listOf is the three-level list of the Parquet format, nothing in it null:
+// a definition level of 0 is an empty list, 1 an element.
+func listOf(name string, element schema.Node) schema.Node {
+	inner := schema.MustGroup(schema.NewGroupNode("list", parquet.Repetitions.Repeated, schema.FieldList{element}, -1))
+	return schema.MustGroup(schema.NewGroupNodeLogical(name, parquet.Repetitions.Required,
+		schema.FieldList{inner}, schema.NewListLogicalType(), -1))
+}
+
+// blockProperties fixes all that decides the bytes: no statistics, no
+// dictionaries, no compression, integers delta-packed.
+func blockProperties() *parquet.WriterProperties {
+	options := []parquet.WriterProperty{
+		parquet.WithCreatedBy("holdfast"),
+		parquet.WithVersion(parquet.V2_LATEST),
+		parquet.WithDataPageVersion(parquet.DataPageV1),
+		parquet.WithDictionaryDefault(false),
+		parquet.WithStats(false),
+		parquet.WithCompression(compress.Codecs.Uncompressed),
+		parquet.WithEncoding(parquet.Encodings.Plain),
+	}
+	leaves := schema.NewSchema(blockSchema())
+	for i := 0; i < leaves.NumColumns(); i++ {
+		if leaf := leaves.Column(i); leaf.PhysicalType() == parquet.Types.Int32 {
+			options = append(options, parquet.WithEncodingFor(leaf.Path(), parquet.Encodings.DeltaBinaryPacked))
+		}
+	}
+	return parquet.NewWriterProperties(options...)
+}
+
+// blockName is the file name of the block whose first draw is given.
+func blockName(first int) string { return fmt.Sprintf("block-%06d.parquet", first) }
+
+// blockNumber reads a block's first draw from its file name.
+func blockNumber(name string) (first int, ok bool) {
+	digits, ok := strings.CutPrefix(name, "block-")
+	if !ok {
+		return 0, false
+	}
+	if digits, ok = strings.CutSuffix(digits, ".parquet"); !ok {
+		return 0, false
+	}
+	first, err := strconv.Atoi(digits)
+	return first, err == nil && first >= 0 && blockName(first) == name
+}

@@ -1,0 +1,188 @@
+package rundir
+
+import (
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"hash"
+	"io"
+
+	"github.com/apache/arrow/go/v17/parquet"
+	"github.com/apache/arrow/go/v17/parquet/file"
+
+	"holdfast/solver"
+)
+
+// ErrNoDecision is what errors.Is finds where draws come before the decision
+// of record.
+var ErrNoDecision = errors.New("rundir: the decision of record must be set before the first draw")
+
+// Put writes one block of finished draws: path i is that of draw first+i. It
+// keeps nothing of paths. Equal draws give equal bytes.
+func (d *Dir) Put(first int, paths []solver.Path) error {
+	run := d.Run()
+	if run.Decision == nil {
+		return ErrNoDecision
+	}
+	block := make([]numbered, len(paths))
+	for i := range paths {
+		block[i] = numbered{first + i, paths[i]}
+	}
+	if err := run.checkBlock(block); err != nil {
+		return fmt.Errorf("rundir: put: %w", err)
+	}
+	return readOnly(writeFile(d.fs, d.join(drawsFolder, blockName(first)), func(w io.Writer) error {
+		return encodeBlock(w, run.Digest, block)
+	}))
+}
+
+// checkBlock checks each draw of a block and their order.
+func (r *Run) checkBlock(block []numbered) error {
+	if len(block) == 0 {
+		return errors.New("a block without draws")
+	}
+	for i := range block {
+		if err := r.checkPath(&block[i]); err != nil {
+			return err
+		}
+		if i > 0 && block[i].number <= block[i-1].number {
+			return fmt.Errorf("draw %d stands behind draw %d", block[i].number, block[i-1].number)
+		}
+	}
+	return nil
+}
+
+// encodeBlock writes a block file.
+func encodeBlock(w io.Writer, identity string, block []numbered) (err error) {
+	defer recovered(&err)
+	out := &tally{w: w, hash: sha256.New()}
+	pw := file.NewParquetWriter(out, blockSchema(), file.WithWriterProps(blockProperties()))
+	if err := writeColumns(pw.AppendRowGroup(), flatten(block)); err != nil {
+		return err
+	}
+	for _, kv := range [][2]string{
+		{keyFormat, fmt.Sprint(Format)},
+		{keyIdentity, identity},
+		{keyPages, hex.EncodeToString(out.hash.Sum(nil))},
+		{keyDraws, blockDigest(identity, sumsOf(block))},
+	} {
+		if err := pw.AppendKeyValueMetadata(kv[0], kv[1]); err != nil {
+			return err
+		}
+	}
+	// The library's Close loses the error of the footer, so the sink keeps it.
+	return errors.Join(pw.Close(), out.err)
+}
+
+func sumsOf(block []numbered) []sum {
+	sums := make([]sum, len(block))
+	for i := range block {
+		sums[i] = drawSum(block[i].number, &block[i].path)
+	}
+	return sums
+}
+
+// tally passes bytes on, hashes them and keeps the first error.
+type tally struct {
+	w    io.Writer
+	hash hash.Hash
+	err  error
+}
+
+func (t *tally) Write(b []byte) (int, error) {
+	if t.err != nil {
+		return 0, t.err
+	}
+	n, err := t.w.Write(b)
+	t.hash.Write(b[:n])
+	t.err = err
+	return n, err
+}
+
+// recovered turns a panic of the Parquet library into an error. Its readers
+// and writers panic on damaged input and on failed writes.
+func recovered(err *error) {
+	if r := recover(); r != nil {
+		*err = fmt.Errorf("the Parquet library gave up: %v", r)
+	}
+}
+
+// columns writes the leaves of a row group one after the other and keeps the
+// first error.
+type columns struct {
+	group file.SerialRowGroupWriter
+	err   error
+}
+
+// writeColumns writes and closes the row group.
+func writeColumns(group file.SerialRowGroupWriter, f *flat) error {
+	c := &columns{group: group}
+	put(c, f.draw, nil)
+	put(c, f.first, nil)
+	put(c, f.last, nil)
+	put(c, bytesOf(f.stop), nil)
+	put(c, bytesOf(f.why), nil)
+	put(c, f.violation, nil)
+	put(c, f.gap, nil)
+	put(c, f.borderline, nil)
+	put(c, f.twins, nil)
+	put(c, f.entryStep, f.entries)
+	put(c, f.entryPredictor, f.entries)
+	put(c, f.entryNegative, f.entries)
+	put(c, f.coefStep, f.coefs)
+	put(c, f.coefPredictor, f.coefs)
+	put(c, f.coefValue, f.coefs)
+	put(c, f.intercept, f.intercepts)
+	put(c, f.always, f.alwayses)
+	put(c, f.still, f.stills)
+	return errors.Join(c.err, group.Close())
+}
+
+// batchWriter is a typed column writer of the library.
+type batchWriter[T any] interface {
+	WriteBatch(values []T, definition, repetition []int16) (int64, error)
+	Close() error
+}
+
+// put writes the next leaf. lengths are those of its lists, one per row; nil
+// for a leaf with one value per row.
+func put[T any](c *columns, values []T, lengths []int) {
+	if c.err != nil {
+		return
+	}
+	column, err := c.group.NextColumn()
+	if err != nil {
+		c.err = err
+		return
+	}
+	w, ok := column.(batchWriter[T])
+	if !ok {
+		c.err = fmt.Errorf("column %s: holds no %T", column.Descr().Path(), values)
+		return
+	}
+	definition, repetition := levels(lengths)
+	_, err = w.WriteBatch(values, definition, repetition)
+	c.err = errors.Join(err, w.Close())
+}
+
+// levels encodes list lengths as Parquet's definition and repetition levels.
+func levels(lengths []int) (definition, repetition []int16) {
+	for _, n := range lengths {
+		if n == 0 {
+			definition, repetition = append(definition, 0), append(repetition, 0)
+		}
+		for i := range n {
+			definition, repetition = append(definition, 1), append(repetition, int16(min(i, 1)))
+		}
+	}
+	return definition, repetition
+}
+
+func bytesOf(texts []string) []parquet.ByteArray {
+	list := make([]parquet.ByteArray, len(texts))
+	for i, t := range texts {
+		list[i] = parquet.ByteArray(t)
+	}
+	return list
+}
