@@ -38,9 +38,9 @@ const window = 4
 
 // Run makes all draws of the plan, fits them and puts the outcomes into the
 // sink in draw order. It returns when nothing of it runs any more. The error
-// is that of the first failure, and names its draws; where ctx ended first,
-// errors.Is finds ctx's cause in it. In both cases the blocks that
-// were whole have been put. A panic in the fitter or the sink becomes a
+// is that of the first failure, and names its draws; where ctx ended first it
+// is a *StoppedError. In both cases the blocks that were whole have been put,
+// so the sink may have gaps. A panic in the fitter or the sink becomes a
 // *PanicError.
 func Run(ctx context.Context, plan Plan, f Fitter, sink Sink, opt Options) error {
 	opt, err := opt.resolve(plan)
@@ -198,10 +198,25 @@ func (r *run) put(sink Sink, o outcome) error {
 // own: workers that were stopped from outside report nothing of theirs.
 func (r *run) verdict(ctx context.Context, err error) error {
 	if err != nil && ctx.Err() != nil && errors.Is(err, ctx.Err()) {
-		return fmt.Errorf("resample: stopped after %d of %d draws: %w", r.tally.done.Draws, r.plan.Number, context.Cause(ctx))
+		return &StoppedError{Draws: r.tally.done.Draws, Total: r.plan.Number, Cause: context.Cause(ctx), end: ctx.Err()}
 	}
 	return err
 }
+
+// StoppedError says that the caller's context ended before the last draw.
+// errors.Is finds the context's error and its cause in it.
+type StoppedError struct {
+	Draws, Total int   // draws put into the sink, draws of the plan
+	Cause        error // context.Cause of the caller's context
+	end          error
+}
+
+func (e *StoppedError) Error() string {
+	return fmt.Sprintf("resample: stopped after %d of %d draws: %v", e.Draws, e.Total, e.Cause)
+}
+
+// Unwrap serves errors.Is and errors.As.
+func (e *StoppedError) Unwrap() []error { return []error{e.end, e.Cause} }
 
 // drawRange names draws first to last-1.
 func drawRange(first, last int) string {

@@ -1,0 +1,63 @@
+package resample_test
+
+import (
+	"context"
+	"fmt"
+
+	"holdfast/resample"
+	"holdfast/solver"
+)
+
+// counter stands for a solver: it reports how many tanks a draw holds.
+type counter struct{}
+
+func (counter) FitBlock(_ context.Context, samples []*solver.Sample, progress func(int)) ([]solver.Path, error) {
+	paths := make([]solver.Path, len(samples))
+	for i, s := range samples {
+		paths[i].Last = s.Len()
+		progress(1)
+	}
+	return paths, nil
+}
+
+// printer stands for a run directory.
+type printer struct{}
+
+func (printer) Put(first int, paths []solver.Path) error {
+	for i, p := range paths {
+		fmt.Printf("draw %d: %d tanks\n", first+i, p.Last)
+	}
+	return nil
+}
+
+// Nine tanks of larvae: four in each half, one left over.
+func Example() {
+	plan, err := resample.NewPlan(resample.Plan{Rows: 9, Design: resample.Halves, Number: 4, Seed: 1})
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	err = resample.Run(context.Background(), plan, counter{}, printer{}, resample.Options{Workers: 2})
+	fmt.Println(err)
+	// Output:
+	// draw 0: 4 tanks
+	// draw 1: 4 tanks
+	// draw 2: 4 tanks
+	// draw 3: 4 tanks
+	// <nil>
+}
+
+// The rows of a draw, so that anyone can check a frequency.
+func ExampleDrawn() {
+	plan, err := resample.NewPlan(resample.Plan{Rows: 5, Design: resample.Bootstrap, Number: 1, Seed: 1})
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	total := 0
+	for _, count := range resample.Drawn(plan.Sample(0)) {
+		total += count
+	}
+	fmt.Println(total, "rows drawn in all")
+	// Output: 5 rows drawn in all
+}
