@@ -1,0 +1,206 @@
+package solver
+
+import (
+	"context"
+	"math"
+	"sync"
+
+	"holdfast/solver/kernel"
+)
+
+// blockBytes bounds the gathered columns of the draws that one worker fits
+// together.
+const blockBytes = 192 << 20
+
+// BlockLimit returns how many draws of the given number of rows one worker
+// should fit together: as many as one pass over a column serves, fewer where
+// their gathered columns would take much memory, at least a pair.
+func (m *Model) BlockLimit(drawRows int) int {
+	gathered := 8 * max(drawRows, 1) * min(m.candidates(), max(drawRows, 1), 100)
+	return max(2, min(kernel.MaxLanes, blockBytes/gathered))
+}
+
+// window is how many lattice steps a fitting looks ahead. On a table with many
+// more rows than candidates the passes over the table cost most, and solutions
+// between two far lambdas are nearly straight lines; elsewhere a step at a
+// time is best.
+func (m *Model) window() int {
+	if m.whim != nil {
+		return m.whim.window()
+	}
+	if m.rows >= 2*m.candidates() {
+		return 8
+	}
+	return 1
+}
+
+// FitBlock fits the path of each draw and returns them in the order of the
+// samples. The draws share the passes over the table; each path depends on its
+// own sample only, to the bit. progress, which may be nil, is told of lattice
+// steps done. It is safe for concurrent use. A draw that cannot be certified
+// ends its path and says so in its Path; an error is returned only for a
+// cancelled context or a draw that cannot be fitted at all.
+func (m *Model) FitBlock(ctx context.Context, samples []*Sample, progress func(steps int)) ([]Path, error) {
+	m.seedFrom(ctx)
+	paths := make([]Path, len(samples))
+	fits := make([]*fitting, len(samples))
+	for k, s := range samples {
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
+		f := m.fitting()
+		defer m.release(f)
+		if err := f.start(m.weighted(s)); err != nil {
+			return nil, err
+		}
+		f.record(&paths[k], progress)
+		fits[k] = f
+	}
+	if err := m.lockstep(ctx, fits); err != nil {
+		return nil, err
+	}
+	return paths, nil
+}
+
+// weighted adds the problem's case weights to a sample that has none.
+func (m *Model) weighted(s *Sample) *Sample {
+	if s.Case != nil || m.p.Case == nil {
+		return s
+	}
+	w := *s
+	w.Case = m.p.Case
+	return &w
+}
+
+// lockstep lets the fittings ask for gradients together until all are done.
+func (m *Model) lockstep(ctx context.Context, fits []*fitting) error {
+	var screen screen = &productScreen{m: m}
+	reqs := make([]*request, 0, len(fits))
+	for len(fits) > 0 {
+		reqs, fits = gatherRequests(reqs[:0], fits)
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		if err := screen.answer(ctx, reqs); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// gatherRequests takes each fitting as far as it goes and drops those that are
+// done.
+func gatherRequests(reqs []*request, fits []*fitting) ([]*request, []*fitting) {
+	going := make([]*fitting, 0, len(fits))
+	for _, f := range fits {
+		if r := f.next(); r != nil {
+			reqs, going = append(reqs, r), append(going, f)
+		}
+	}
+	return reqs, going
+}
+
+// record makes the fitting write its certified steps into a path on the
+// lattice.
+func (f *fitting) record(p *Path, progress func(int)) {
+	first := f.m.last
+	if !f.constant() {
+		if top := f.top(); top > 0 {
+			first = min(f.m.lattice.lastEmpty(top), f.m.last)
+		}
+	}
+	*p = Path{First: first, Last: first - 1, Still: f.still}
+	f.path = p
+	f.accept = func(r *record, list []chosen) {
+		f.note(p, r, list)
+		if progress != nil {
+			progress(1)
+		}
+	}
+	f.travel(f.m.lattice.at, first, f.m.last)
+}
+
+// note appends a certified step to a path.
+func (f *fitting) note(p *Path, r *record, list []chosen) {
+	step := f.cur
+	for _, c := range list {
+		if !f.entered[c.unit] {
+			p.Entries = append(p.Entries, Entry{Candidate: c.unit, Step: int32(step), Negative: c.enter < 0})
+			if math.Abs(c.share) < 1 {
+				p.Twins++
+			}
+		}
+		p.Coefs = append(p.Coefs, Coef{Step: int32(step), Candidate: c.unit, Value: f.original(r, c)})
+	}
+	p.Last = step
+	intercept, always := f.rest(r, list)
+	p.Intercepts = append(p.Intercepts, intercept)
+	p.Always = append(p.Always, always...)
+	p.Violation = max(p.Violation, r.cert.violation)
+	p.Gap = max(p.Gap, r.cert.gap)
+}
+
+// original is a coefficient in the column's own units.
+func (f *fitting) original(r *record, c chosen) float64 {
+	return r.beta[c.place] * c.share / f.work.scale[f.work.place[c.unit]]
+}
+
+// rest returns the intercept and the always-in coefficients in the columns'
+// own units; always-in columns that were redundant in the draw have 0.
+func (f *fitting) rest(r *record, list []chosen) (intercept float64, always []float64) {
+	always = make([]float64, len(f.m.p.Always))
+	intercept = f.d.mean
+	subtract := func(unit int32, b float64) {
+		i := f.work.place[unit]
+		j := f.m.design(unit)
+		intercept = math.FMA(-b, f.m.p.Centre[j]+f.work.mean[i], intercept)
+	}
+	for k, i := range r.members {
+		if u := f.work.units[i]; f.m.penalty.always(u) {
+			b := r.beta[k] / f.work.scale[i]
+			always[int(u)-f.m.candidates()] = b
+			subtract(u, b)
+		}
+	}
+	for _, c := range list {
+		subtract(c.unit, f.original(r, c))
+	}
+	return intercept, always
+}
+
+// seeds are the lambdas at which candidates enter on all rows: proposals for
+// draws on long tables, where most draws agree with them. Nothing recorded
+// depends on them.
+type seeds struct {
+	once   sync.Once
+	lambda []float64
+}
+
+func (s *seeds) enters(c int32, lambda float64) bool {
+	return s.lambda != nil && s.lambda[c] >= lambda
+}
+
+// seedFrom makes the seeds, once, where windows are long. A failure leaves
+// the seeds empty: they only propose.
+func (m *Model) seedFrom(ctx context.Context) {
+	if m.rows < 2*m.candidates() {
+		return
+	}
+	m.seeds.once.Do(func() {
+		f := m.fitting()
+		defer m.release(f)
+		var p Path
+		if f.start(m.everything()) != nil {
+			return
+		}
+		f.record(&p, nil)
+		if m.lockstep(ctx, []*fitting{f}) != nil {
+			return
+		}
+		lambda := make([]float64, m.candidates())
+		for _, e := range p.Entries {
+			lambda[e.Candidate] = m.Lambda(int(e.Step))
+		}
+		m.seeds.lambda = lambda
+	})
+}

@@ -1,0 +1,278 @@
+package solver
+
+import (
+	"context"
+	"math"
+
+	"holdfast/solver/kernel"
+)
+
+// screenMargin is the relative distance from a threshold within which a
+// screening number decides nothing: the unit is gathered and judged by a
+// record number. Screening numbers are wrong by about 1e-11 of the outcome's
+// spread (screenRounding), which the margin is widened by.
+const (
+	screenMargin   = 1e-7
+	screenRounding = 1e-10
+)
+
+// snapshotBytes bounds the score vectors that one draw keeps as references.
+const snapshotBytes = 64 << 20
+
+// noReference marks a candidate whose gradient must be computed.
+const noReference = int32(-1)
+
+// gradients holds one screening gradient per candidate, divided by scale, mix
+// and penalty weight so that it compares with lambda itself, and the snapshot
+// of the score vector that it belongs to.
+type gradients struct {
+	value []float64
+	ref   []int32 // number of a snapshot
+}
+
+func (g *gradients) resize(n int) {
+	g.value = resize(g.value, n)
+	if cap(g.ref) < n {
+		g.ref = make([]int32, n)
+	}
+	g.ref = g.ref[:n]
+}
+
+func (g *gradients) copyFrom(o *gradients) {
+	copy(g.value, o.value)
+	copy(g.ref, o.ref)
+}
+
+// snapshots are the score vectors that gradients refer to. Numbers go up; the
+// oldest are let go when the room is used up.
+type snapshots struct {
+	first int32 // number of kept[0]
+	kept  [][]float64
+	spare [][]float64
+	most  int
+}
+
+func (s *snapshots) reset(rows int) {
+	s.spare = append(s.spare, s.kept...)
+	s.kept, s.first = s.kept[:0], 0
+	s.most = max(8, snapshotBytes/(8*max(rows, 1)))
+}
+
+// add keeps a copy of u and returns its number.
+func (s *snapshots) add(u []float64) int32 {
+	if len(s.kept) >= s.most {
+		half := len(s.kept) / 2
+		s.spare = append(s.spare, s.kept[:half]...)
+		s.kept = append(s.kept[:0], s.kept[half:]...)
+		s.first += int32(half)
+	}
+	var b []float64
+	if n := len(s.spare); n > 0 {
+		b, s.spare = s.spare[n-1], s.spare[:n-1]
+	}
+	s.kept = append(s.kept, append(b[:0], u...))
+	return s.first + int32(len(s.kept)) - 1
+}
+
+// distances returns, per kept snapshot, an upper limit of the distance to u,
+// in units of a standardised column's gradient: |g(u) - g(s)| is at most
+// ||u - s||/sqrt(N) (Cauchy-Schwarz).
+func (s *snapshots) distances(dst []float64, u []float64, total float64) []float64 {
+	dst = resize(dst, len(s.kept))
+	for i, v := range s.kept {
+		dst[i] = math.Sqrt(kernel.SquaredDistance(u, v)/total) * (1 + 1e-9)
+	}
+	return dst
+}
+
+// reach returns how far a candidate's gradient can be from its stored value.
+func reach(first, ref int32, distance []float64, norm float64) float64 {
+	if ref < first {
+		return math.Inf(1)
+	}
+	return norm * distance[ref-first]
+}
+
+// request asks for the candidates whose gradient at a score vector may reach
+// least, with their gradients brought up to date.
+type request struct {
+	f     *fitting
+	u     []float64
+	least float64 // lambda less the margin
+	found []int32 // the answer: units whose gradient reaches least, ascending
+}
+
+// screen answers requests for gradients of all candidates; how is its own
+// business.
+type screen interface {
+	answer(ctx context.Context, reqs []*request) error
+}
+
+// productScreen computes the gradients that no reference excludes, column by
+// column over all requests, so that a column is read once for all of them:
+// as one product with up to sixteen lanes where most need it, else by the
+// rows of each draw.
+type productScreen struct {
+	m        *Model
+	need     []uint16 // per candidate: the requests that need it
+	distance []float64
+	number   []int32
+	lane     [][]float64 // per request: root*u
+	sum      []float64
+	rows     []float64 // all table rows x lanes, filled when first needed
+	filled   bool
+	out      []float64
+}
+
+func (s *productScreen) answer(ctx context.Context, reqs []*request) error {
+	for len(reqs) > 0 {
+		n := min(len(reqs), kernel.MaxLanes)
+		if err := s.pass(ctx, reqs[:n]); err != nil {
+			return err
+		}
+		reqs = reqs[n:]
+	}
+	return nil
+}
+
+func (s *productScreen) pass(ctx context.Context, reqs []*request) error {
+	s.mark(reqs)
+	if err := s.compute(ctx, reqs); err != nil {
+		return err
+	}
+	for _, r := range reqs {
+		r.collect()
+	}
+	return nil
+}
+
+// mark finds which candidates each request needs, and takes its snapshot.
+func (s *productScreen) mark(reqs []*request) {
+	if len(s.need) != s.m.candidates() {
+		s.need = make([]uint16, s.m.candidates())
+	}
+	clear(s.need)
+	s.number, s.sum, s.filled = s.number[:0], s.sum[:0], false
+	for len(s.lane) < len(reqs) {
+		s.lane = append(s.lane, nil)
+	}
+	for l, r := range reqs {
+		f := r.f
+		s.distance = f.snaps.distances(s.distance, r.u, f.d.total)
+		bit, first := uint16(1)<<l, f.snaps.first
+		for c, v := range f.end.value {
+			if f.inverse[c] == 0 {
+				continue
+			}
+			if !(math.Abs(v)+reach(first, f.end.ref[c], s.distance, f.normOf(c)) < r.least) {
+				s.need[c] |= bit
+			}
+		}
+		if whim := f.m.whim; whim != nil {
+			whim.alsoNeed(s.need, f.inverse, bit)
+		}
+		s.number = append(s.number, f.snaps.add(r.u))
+		s.lane[l] = f.d.lane(s.lane[l], r.u)
+		s.sum = append(s.sum, kernel.Sum(s.lane[l]))
+	}
+}
+
+func (s *productScreen) compute(ctx context.Context, reqs []*request) error {
+	const stretch = 1024 // candidates between two looks at the context
+	for c0 := 0; c0 < len(s.need); c0 += stretch {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		for c := c0; c < min(c0+stretch, len(s.need)); c++ {
+			if s.need[c] != 0 {
+				s.column(reqs, c)
+			}
+		}
+	}
+	return nil
+}
+
+// column brings one candidate's gradient up to date in the requests that need
+// it.
+func (s *productScreen) column(reqs []*request, c int) {
+	x, holes := s.m.column(int32(c))
+	byLanes := s.lanesPay(reqs, s.need[c])
+	if byLanes {
+		s.fill(reqs)
+		s.out = resize(s.out, len(reqs))
+		kernel.Lanes([][]float64{x}, s.rows, len(reqs), s.out)
+	}
+	for l, r := range reqs {
+		if s.need[c]>>l&1 == 0 {
+			continue
+		}
+		f := r.f
+		var raw float64
+		if byLanes {
+			raw = s.out[l]
+		} else {
+			raw = kernel.DotRows(x, f.d.rows, s.lane[l])
+		}
+		sum := s.sum[l]
+		if holes != nil {
+			sum -= f.d.overHoles(holes, s.lane[l])
+		}
+		f.end.value[c] = (raw - f.mean[c]*sum) * f.inverse[c] / f.d.total
+		f.end.ref[c] = s.number[l]
+	}
+}
+
+// lanesPay weighs a product over all rows and lanes against one over the drawn
+// rows for each request that needs the column (measured with the portable
+// kernels, 500 rows: 0.33 ns per row and lane, 0.45 ns per drawn row).
+func (s *productScreen) lanesPay(reqs []*request, need uint16) bool {
+	if whim := s.m.whim; whim != nil && whim.coin() {
+		return true
+	}
+	drawn := 0
+	for l, r := range reqs {
+		if need>>l&1 != 0 {
+			drawn += len(r.f.d.rows)
+		}
+	}
+	return 0.33*float64(s.m.rows*len(reqs)) < 0.45*float64(drawn)
+}
+
+// fill lays the requests' vectors out row by row, zero where not drawn.
+func (s *productScreen) fill(reqs []*request) {
+	if s.filled {
+		return
+	}
+	k := len(reqs)
+	s.rows = resize(s.rows, s.m.rows*k)
+	clear(s.rows)
+	for l, r := range reqs {
+		for i, row := range r.f.d.rows {
+			s.rows[int(row)*k+l] = s.lane[l][i]
+		}
+	}
+	s.filled = true
+}
+
+// collect lists the units whose gradient reaches the request's least.
+func (r *request) collect() {
+	r.found = r.found[:0]
+	for c, v := range r.f.end.value {
+		if math.Abs(v) >= r.least && r.f.end.ref[c] == r.f.snaps.newest() && r.f.inverse[c] != 0 {
+			r.found = append(r.found, int32(c))
+		}
+	}
+}
+
+func (s *snapshots) newest() int32 { return s.first + int32(len(s.kept)) - 1 }
+
+// overHoles sums a lane over the drawn rows that are missing in a column.
+func (d *drawn) overHoles(holes []uint64, lane []float64) float64 {
+	sum := 0.0
+	for k, r := range d.rows {
+		if isHole(holes, r) {
+			sum += lane[k]
+		}
+	}
+	return sum
+}

@@ -1,0 +1,128 @@
+package solver
+
+import (
+	"math"
+
+	"holdfast/solver/kernel"
+)
+
+// coincide is how close to 1 a correlation must be for two columns to be the
+// same predictor, over the table (copies) or within a draw (twins).
+const coincide = 1e-12
+
+// working is the set of units of one draw that have been looked at closely:
+// their gathered columns in scaled units, the Gram matrix among them and their
+// products with the outcome. All of it is record numbers: each entry depends
+// on the draw and on its own units only, not on when or why they joined.
+type working struct {
+	units []int32 // in order of joining: history, so nothing recorded may depend on it
+	place map[int32]int32
+	scale []float64   // what a column was divided by: penalty units
+	mean  []float64   // draw mean less centre
+	z     [][]float64 // root * (x - mean) / scale
+	h     symmetric   // z'z / N
+	c     []float64   // z'y / N
+	twin  []int       // lowest unit, as a place in the set, that this one coincides with
+	spare [][]float64 // column buffers of earlier draws
+}
+
+func (w *working) reset() {
+	w.spare = append(w.spare, w.z...)
+	w.units, w.scale, w.mean, w.z, w.c, w.twin = w.units[:0], w.scale[:0], w.mean[:0], w.z[:0], w.c[:0], w.twin[:0]
+	w.h.reset()
+	if w.place == nil {
+		w.place = make(map[int32]int32)
+	}
+	clear(w.place)
+}
+
+// buffer returns a column buffer of an earlier draw, or nil.
+func (w *working) buffer() []float64 {
+	n := len(w.spare)
+	if n == 0 {
+		return nil
+	}
+	b := w.spare[n-1]
+	w.spare = w.spare[:n-1]
+	return b
+}
+
+func (w *working) has(unit int32) bool { _, ok := w.place[unit]; return ok }
+
+// add gathers units and extends the Gram matrix. Units already in are left.
+func (w *working) add(f *fitting, units []int32) {
+	from := len(w.units)
+	for _, u := range units {
+		if !w.has(u) {
+			w.gather(f, u)
+		}
+	}
+	f.m.family.addHessian(&f.d, w.z, from, &w.h)
+	for i := from; i < len(w.units); i++ {
+		w.c = append(w.c, kernel.Dot(w.z[i], f.d.y)/f.d.total)
+		w.twin = append(w.twin, w.findTwin(f, i))
+	}
+}
+
+func (w *working) gather(f *fitting, unit int32) {
+	x, holes := f.m.column(unit)
+	col := f.d.gather(x, holes, w.buffer())
+	scale := f.m.scaleOf(unit, col.sd)
+	for k := range col.values {
+		col.values[k] /= scale
+	}
+	w.place[unit] = int32(len(w.units))
+	w.units = append(w.units, unit)
+	w.scale = append(w.scale, scale)
+	w.mean = append(w.mean, col.mean)
+	w.z = append(w.z, col.values)
+}
+
+// findTwin returns the member with the lowest unit among those that coincide
+// with member i, i itself included, and passes the finding on to the others.
+// Only the pure lasso needs it: with a quadratic part equal columns share the
+// coefficient by themselves.
+func (w *working) findTwin(f *fitting, i int) int {
+	pen, u := f.m.penalty, w.units[i]
+	if pen.quadratic() || pen.always(u) || w.h.row[i][i] == 0 {
+		return i
+	}
+	best := i
+	var class []int
+	for j := range i {
+		if pen.weight[w.units[j]] == pen.weight[u] && w.coincide(i, j) {
+			class = append(class, j)
+			if w.units[j] < w.units[best] {
+				best = j
+			}
+		}
+	}
+	for _, j := range class {
+		w.twin[j] = best
+	}
+	return best
+}
+
+func (w *working) coincide(i, j int) bool {
+	a, b, r := w.h.row[i][i], w.h.row[j][j], math.Abs(w.h.row[i][j])
+	return b > 0 && math.Abs(a-b) <= 1e-9*a && r >= (1-coincide)*math.Sqrt(a*b)
+}
+
+// fitted overwrites dst with the sum of beta[i]*z[members[i]], members in the
+// order given, one fused multiply-add each, a chunk of rows at a time.
+func (w *working) fitted(members []int, beta, dst []float64) {
+	clear(dst)
+	for r0 := 0; r0 < len(dst); r0 += kernel.Chunk {
+		r1 := min(r0+kernel.Chunk, len(dst))
+		part := dst[r0:r1]
+		i := 0
+		for ; i+4 <= len(members); i += 4 {
+			m := members[i : i+4 : i+4]
+			b := [4]float64{beta[i], beta[i+1], beta[i+2], beta[i+3]}
+			kernel.AddScaled4(&b, w.z[m[0]][r0:r1], w.z[m[1]][r0:r1], w.z[m[2]][r0:r1], w.z[m[3]][r0:r1], part)
+		}
+		for ; i < len(members); i++ {
+			kernel.AddScaled(beta[i], w.z[members[i]][r0:r1], part)
+		}
+	}
+}
