@@ -1,0 +1,195 @@
+// Command engine is one timed run of our engine for the side-by-side
+// comparison: it reads a table of bench/shape, fits all draws with the given
+// number of workers and prints what it took as JSON. It is started afresh for
+// every run, so that peak memory is that of one run.
+package main
+
+import (
+	"context"
+	"encoding/json"
+	"flag"
+	"fmt"
+	"os"
+	"runtime/pprof"
+	"time"
+
+	"holdfast/bench/shape"
+	"holdfast/resample"
+	"holdfast/solver"
+)
+
+// settings are the command's flags.
+type settings struct {
+	shape          shape.Shape
+	dir            string
+	draws, workers int
+	seed           uint64
+	ratio, floor   float64
+	profile        string
+	entries        bool
+}
+
+// report is printed as JSON.
+type report struct {
+	Workers    int          `json:"workers"`
+	Draws      int          `json:"draws"`
+	ReadTime   float64      `json:"read_seconds"`
+	ModelTime  float64      `json:"model_seconds"`
+	FitTime    float64      `json:"fit_seconds"`
+	PerDraw    float64      `json:"seconds_per_draw"`
+	PeakMemory int64        `json:"peak_bytes"`
+	LambdaMax  float64      `json:"lambda_max"`
+	Steps      int          `json:"steps"`
+	Kernel     string       `json:"kernel"`
+	Violation  float64      `json:"violation"`
+	Gap        float64      `json:"gap"`
+	Failed     int          `json:"not_certified"`
+	Borderline int          `json:"borderline"`
+	Entries    [][][2]int32 `json:"entries,omitempty"` // per draw: column, step
+}
+
+func main() {
+	if err := run(); err != nil {
+		fmt.Fprintln(os.Stderr, "engine:", err)
+		os.Exit(1)
+	}
+}
+
+func run() error {
+	s, err := parse()
+	if err != nil {
+		return err
+	}
+	r, err := s.measure()
+	if err != nil {
+		return err
+	}
+	return json.NewEncoder(os.Stdout).Encode(r)
+}
+
+func parse() (settings, error) {
+	var s settings
+	name := flag.String("shape", "wide", "wide, tall or long")
+	flag.StringVar(&s.dir, "dir", "bench/out", "folder of the tables")
+	flag.IntVar(&s.draws, "draws", 64, "number of draws")
+	flag.IntVar(&s.workers, "workers", 1, "workers")
+	flag.Uint64Var(&s.seed, "seed", 1, "seed of the draws")
+	flag.Float64Var(&s.ratio, "ratio", 0.954, "lambda from step to step")
+	flag.Float64Var(&s.floor, "floor", 0.1, "last lambda as a share of lambda_max")
+	flag.StringVar(&s.profile, "cpuprofile", "", "file for a CPU profile of the fits")
+	flag.BoolVar(&s.entries, "entries", false, "print the entries of every draw")
+	flag.Parse()
+	var err error
+	s.shape, err = shape.Find(*name)
+	return s, err
+}
+
+func (s settings) measure() (*report, error) {
+	r := &report{Workers: s.workers, Draws: s.draws, Kernel: solver.Kernel()}
+	start := time.Now()
+	cols, y, err := s.shape.Read(s.dir)
+	if err != nil {
+		return nil, err
+	}
+	problem := problemOf(cols, y, s.ratio, s.floor)
+	r.ReadTime = lap(&start)
+	model, err := solver.NewModel(context.Background(), problem)
+	if err != nil {
+		return nil, err
+	}
+	r.ModelTime = lap(&start)
+	paths, err := s.fit(model)
+	if err != nil {
+		return nil, err
+	}
+	r.FitTime = lap(&start)
+	r.PerDraw = r.FitTime / float64(s.draws)
+	r.LambdaMax, r.Steps = model.LambdaMax(), model.LastStep()+1
+	r.describe(paths, s.entries)
+	r.PeakMemory, err = shape.PeakMemory()
+	return r, err
+}
+
+// lap returns the seconds since start and sets it to now.
+func lap(start *time.Time) float64 {
+	now := time.Now()
+	d := now.Sub(*start).Seconds()
+	*start = now
+	return d
+}
+
+// problemOf centres the columns in place; every column is a candidate.
+func problemOf(cols [][]float64, y []float64, ratio, floor float64) solver.Problem {
+	p := solver.Problem{Outcome: y, Mix: 1, Ratio: ratio, Floor: floor, Centre: make([]float64, len(cols)), Names: make([]string, len(cols))}
+	for j, c := range cols {
+		p.Centre[j] = centre(c)
+		p.Candidates = append(p.Candidates, int32(j))
+		p.Names[j] = fmt.Sprintf("x%d", j)
+	}
+	p.Design = solver.NewDense(len(y), cols, nil)
+	return p
+}
+
+func centre(x []float64) float64 {
+	mean := 0.0
+	for _, v := range x {
+		mean += v
+	}
+	mean /= float64(len(x))
+	for i := range x {
+		x[i] -= mean
+	}
+	return mean
+}
+
+// fit makes and fits all draws as a run does, but keeps them in memory.
+func (s settings) fit(model *solver.Model) ([]solver.Path, error) {
+	plan, err := s.shape.Plan(s.draws, s.seed)
+	if err != nil {
+		return nil, err
+	}
+	if s.profile != "" {
+		f, err := os.Create(s.profile)
+		if err != nil {
+			return nil, err
+		}
+		defer f.Close()
+		if err := pprof.StartCPUProfile(f); err != nil {
+			return nil, err
+		}
+		defer pprof.StopCPUProfile()
+	}
+	var kept memory
+	err = resample.Run(context.Background(), plan, model, &kept, resample.Options{Workers: s.workers})
+	return kept.paths, err
+}
+
+// memory is a sink that keeps the draws.
+type memory struct{ paths []solver.Path }
+
+func (m *memory) Put(first int, paths []solver.Path) error {
+	if first != len(m.paths) {
+		return fmt.Errorf("draw %d came after %d draws", first, len(m.paths))
+	}
+	m.paths = append(m.paths, paths...)
+	return nil
+}
+
+// describe adds the certificates and, if asked for, the entries.
+func (r *report) describe(paths []solver.Path, entries bool) {
+	for _, p := range paths {
+		r.Violation, r.Gap = max(r.Violation, p.Violation), max(r.Gap, p.Gap)
+		r.Borderline += p.Borderline
+		if p.Stop == solver.StopUncertified {
+			r.Failed++
+		}
+		if !entries {
+			continue
+		}
+		of := [][2]int32{}
+		for _, e := range p.Entries {
+			of = append(of, [2]int32{e.Candidate, e.Step})
+		}
+		r.Entries = append(r.Entries, of)
+	}
+}

@@ -1,0 +1,11 @@
+// Package shape makes the seeded tables of the side-by-side comparison and
+// keeps them in files that both sides read.
+//
+// Columns follow a first-order autoregression with coefficient 0.5 between
+// neighbours, each with variance 1. A few columns picked at random carry the
+// signal, with coefficients of either sign between 0.5 and 1.5, and noise is
+// added for a given ratio of the signal's variance to the noise's.
+//
+// Files are .npy (version 1.0, little endian): matrices of float64 in column
+// order, matrices of int32 in row order.
+package shape
