@@ -120,7 +120,10 @@ func SolveBudget(r Request) (*Budget, error) {
 	default:
 		errs = b.solveSelected(r)
 	}
-	return b, noneSolved(errs)
+	if err := noneSolved(errs); err != nil {
+		return nil, err
+	}
+	return b, nil
 }
 
 func (r Request) check() error {

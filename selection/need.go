@@ -73,7 +73,7 @@ func checkSelected(q, p float64) error {
 
 func checkFalseSelections(v float64) error {
 	if !(v > 0) || math.IsInf(v, 0) {
-		return badNumber("false_selections", v, "must be above 0")
+		return badNumber("false_selections", v, "must be a finite number above 0")
 	}
 	return nil
 }

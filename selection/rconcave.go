@@ -51,31 +51,31 @@ type affine struct {
 
 // tail returns P(i >= j) for the member whose mean is given, 0 < mean < j <= k.
 func (a affine) tail(j int, mean float64) float64 {
-	lo, hi := -60.0, 60.0 // log rho
+	hi := 60 * math.Max(1, -2*a.r) // of log rho: the weights then span e^-120 to e^120
+	lo := -hi
 	for hi-lo > 1e-15*math.Max(1, math.Abs(lo+hi)/2) {
 		mid := (lo + hi) / 2
 		if mid == lo || mid == hi {
 			break
 		}
-		if m, _ := a.moments(math.Exp(mid), j); m > mean {
+		if m, _ := a.moments(mid, j); m > mean {
 			lo = mid
 		} else {
 			hi = mid
 		}
 	}
-	_, tail := a.moments(math.Exp((lo+hi)/2), j)
+	_, tail := a.moments((lo+hi)/2, j)
 	return tail
 }
 
-// moments returns the mean and P(i >= j) at rho.
-func (a affine) moments(rho float64, j int) (mean, tail float64) {
-	k := float64(a.k)
+// moments returns the mean and P(i >= j) at log rho = u.
+func (a affine) moments(u float64, j int) (mean, tail float64) {
+	weight := a.weights(u)
 	var sum, first, above float64
 	for i := 0; i <= a.k; i++ {
-		x := float64(i)
-		w := a.weight((k - x + float64(rho*x)) / k)
+		w := weight(float64(i) / float64(a.k))
 		sum += w
-		first += float64(w * x)
+		first += float64(w * float64(i))
 		if i >= j {
 			above += w
 		}
@@ -83,14 +83,36 @@ func (a affine) moments(rho float64, j int) (mean, tail float64) {
 	return first / sum, above / sum
 }
 
-// weight is x^(1/r), without a logarithm for the two exponents in use.
-func (a affine) weight(x float64) float64 {
+// weights returns x^(1/r), x = 1 - s + rho s, as a function of s = i/k: without
+// a logarithm for the two exponents in use, else by logarithms, since rho can
+// then be too large or small for a float64.
+func (a affine) weights(u float64) func(s float64) float64 {
+	rho := math.Exp(u)
 	switch a.r {
 	case -0.5:
-		return 1 / (x * x)
+		return func(s float64) float64 {
+			x := 1 - s + float64(rho*s)
+			return 1 / (x * x)
+		}
 	case -0.25:
-		x *= x
-		return 1 / (x * x)
+		return func(s float64) float64 {
+			x := 1 - s + float64(rho*s)
+			x *= x
+			return 1 / (x * x)
+		}
 	}
-	return math.Pow(x, 1/a.r)
+	return func(s float64) float64 { return math.Exp(logMix(s, u) / a.r) }
+}
+
+// logMix is log(1 - s + s e^u) for s in [0,1].
+func logMix(s, u float64) float64 {
+	switch {
+	case s == 0:
+		return 0
+	case s == 1:
+		return u
+	case u <= 0:
+		return math.Log(1 - s + float64(s*math.Exp(u)))
+	}
+	return u + math.Log(s+float64((1-s)*math.Exp(-u)))
 }
