@@ -4,9 +4,9 @@
 GO  ?= go
 DIR ?= .
 
-.PHONY: test format vet unit portable race cross demo build bench
+.PHONY: test format vet unit portable race cross fused demo build bench
 
-test: format vet unit portable race cross
+test: format vet unit portable race cross fused
 
 # Fails where gofmt would change a file, where a file cannot be parsed, and
 # where gofmt itself is missing. DIR=folder looks at another folder.
@@ -34,6 +34,10 @@ race:
 cross:
 	GOOS=darwin GOARCH=arm64 $(GO) vet ./resample ./selection ./solver/...
 	GOOS=windows GOARCH=amd64 $(GO) vet ./resample ./selection ./solver/...
+
+# Products and additions that the compiler fuses on some processors only.
+fused:
+	.ci/fused ./solver/... ./selection ./resample ./io/...
 
 # The main job from start to end on the invented table; DEMO names the folder.
 demo:
