@@ -5,6 +5,7 @@ import (
 	"encoding/binary"
 	"fmt"
 	"io"
+	"math"
 	"os"
 	"strings"
 
@@ -87,10 +88,14 @@ func ReadColumns(path string, rows, cols int) ([][]float64, error) {
 		return nil, fmt.Errorf("shape: %s: it does not hold %d x %d columns: remove it, it is made anew", path, rows, cols)
 	}
 	out := make([][]float64, cols)
+	buffer := make([]byte, 8*rows) // one for all columns: the peak memory of a run must be the engine's
 	for j := range out {
-		out[j] = make([]float64, rows)
-		if err := binary.Read(r, binary.LittleEndian, out[j]); err != nil {
+		if _, err := io.ReadFull(r, buffer); err != nil {
 			return nil, fmt.Errorf("shape: %s: column %d: %w", path, j, err)
+		}
+		out[j] = make([]float64, rows)
+		for i := range out[j] {
+			out[j][i] = math.Float64frombits(binary.LittleEndian.Uint64(buffer[8*i:]))
 		}
 	}
 	return out, nil

@@ -56,7 +56,7 @@ func printTimes(w io.Writer, results []result) {
 // printPeer splits the time of the scikit-learn loop: copying and
 // standardising the rows, and the path alone.
 func printPeer(w io.Writer, results []result) {
-	fmt.Fprintln(w, "| case | scikit-learn: copy and standardise, ms per draw | lasso_path alone, ms per draw | ours over lasso_path alone | not converged |")
+	fmt.Fprintln(w, "| case | scikit-learn: copy and standardise, ms per draw | lasso_path alone, ms per draw | lasso_path alone over ours | not converged |")
 	fmt.Fprintln(w, "|---|---|---|---|---|")
 	for _, r := range results {
 		var prepare, path []float64
