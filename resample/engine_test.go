@@ -1,0 +1,153 @@
+package resample_test
+
+import (
+	"context"
+	"math/rand/v2"
+	"reflect"
+	"sync/atomic"
+	"testing"
+
+	"holdfast/resample"
+	"holdfast/solver"
+)
+
+// model is a lasso on an invented table in which three columns matter and
+// neighbours are alike.
+func model(t *testing.T, rows, cols int) *solver.Model {
+	t.Helper()
+	r := rand.New(rand.NewPCG(7, uint64(rows)))
+	table := make([][]float64, cols)
+	outcome := make([]float64, rows)
+	p := solver.Problem{
+		Centre: make([]float64, cols), Names: make([]string, cols),
+		Mix: 1, Ratio: 0.9, Floor: 0.05,
+	}
+	for j := range table {
+		table[j] = make([]float64, rows)
+		sum := 0.0
+		for i := range rows {
+			v := r.NormFloat64()
+			if j > 0 {
+				v += float64(0.7 * table[j-1][i])
+			}
+			table[j][i], sum = v, sum+v
+		}
+		for i := range rows {
+			table[j][i] -= sum / float64(rows)
+			if j%(cols/3+1) == 0 {
+				outcome[i] += table[j][i]
+			}
+		}
+		p.Candidates = append(p.Candidates, int32(j))
+	}
+	for i := range outcome {
+		outcome[i] += 2 * r.NormFloat64()
+	}
+	p.Design, p.Outcome = solver.NewDense(rows, table, nil), outcome
+	m, err := solver.NewModel(context.Background(), p)
+	if err != nil {
+		t.Fatal(err)
+	}
+	return m
+}
+
+// every is a sink that keeps all paths.
+type every struct{ paths []solver.Path }
+
+func (e *every) Put(_ int, paths []solver.Path) error {
+	e.paths = append(e.paths, paths...)
+	return nil
+}
+
+// The whole engine: every number of every draw has the same bits, whatever
+// the workers, the blocks and the neighbours in a block (DESIGN 5 and 6), on
+// a wide and on a long table.
+func TestEngineSameBitsForAnyWorkersAndBlock(t *testing.T) {
+	for _, size := range [][2]int{{40, 90}, {160, 20}} {
+		m := model(t, size[0], size[1])
+		for _, design := range []resample.Design{resample.Halves, resample.Bootstrap} {
+			plan, err := resample.NewPlan(resample.Plan{Rows: size[0], Design: design, Number: 28, Seed: 2})
+			if err != nil {
+				t.Fatal(err)
+			}
+			var alone every
+			for d := range plan.Number {
+				paths, err := m.FitBlock(context.Background(), []*solver.Sample{plan.Sample(d)}, nil)
+				if err != nil {
+					t.Fatal(err)
+				}
+				alone.paths = append(alone.paths, paths...)
+			}
+			for _, opt := range []resample.Options{{Workers: 1}, {Workers: 2, Block: 4}, {Workers: 7, Block: 2}, {Workers: 2, Block: 28}} {
+				var got every
+				if err := resample.Run(context.Background(), plan, m, &got, opt); err != nil {
+					t.Fatal(err)
+				}
+				compare(t, plan, opt, got.paths, alone.paths)
+			}
+		}
+	}
+}
+
+func compare(t *testing.T, plan resample.Plan, opt resample.Options, got, want []solver.Path) {
+	t.Helper()
+	entries := 0
+	for d := range want {
+		entries += len(want[d].Entries)
+		if !reflect.DeepEqual(got[d], want[d]) {
+			t.Errorf("%d rows, %v, %d workers, block %d: draw %d differs", plan.Rows, plan.Design, opt.Workers, opt.Block, d)
+		}
+	}
+	if entries < 5*plan.Number {
+		t.Errorf("only %d entries in %d draws: the check says little", entries, plan.Number)
+	}
+}
+
+// A stop in the middle of real fits is prompt and leaves whole draws only,
+// equal to those of an undisturbed run.
+func TestEngineStops(t *testing.T) {
+	m := model(t, 40, 90)
+	plan, err := resample.NewPlan(resample.Plan{Rows: 40, Number: 400, Seed: 2})
+	if err != nil {
+		t.Fatal(err)
+	}
+	ctx, cancel := context.WithCancel(context.Background())
+	defer cancel()
+	var after atomic.Int32
+	got := make(map[int][]solver.Path)
+	sink := putter(func(first int, paths []solver.Path) error {
+		got[first] = paths
+		if first == 20 {
+			cancel()
+		}
+		return nil
+	})
+	progress := func(p resample.Progress) {
+		if ctx.Err() != nil {
+			after.Add(1)
+		}
+	}
+	if err := resample.Run(ctx, plan, m, sink, resample.Options{Workers: 2, Block: 2, Progress: progress}); err == nil {
+		t.Fatal("no error")
+	}
+	if len(got) < 11 || len(got) > 11+8 {
+		t.Errorf("%d of 200 blocks were kept", len(got))
+	}
+	for first, paths := range got {
+		want, err := m.FitBlock(context.Background(), []*solver.Sample{plan.Sample(first), plan.Sample(first + 1)}, nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if !reflect.DeepEqual(paths, want) {
+			t.Errorf("draws from %d differ", first)
+		}
+	}
+	// A fit looks at the context before each request: few steps come late.
+	if n := after.Load(); n > 100 {
+		t.Errorf("%d reports after the stop", n)
+	}
+}
+
+type putter func(first int, paths []solver.Path) error
+
+func (f putter) Put(first int, paths []solver.Path) error { return f(first, paths) }
