@@ -1,0 +1,328 @@
+package table
+
+import (
+	"context"
+	"fmt"
+	"math/bits"
+	"sort"
+	"strconv"
+	"strings"
+)
+
+// countGaps counts missing, NaN and infinite cells of candidates and always-in
+// columns over the rows in use.
+func (l *loading) countGaps(ctx context.Context) error {
+	l.gaps = make([]Gaps, l.p)
+	words := (l.n + 63) / 64
+	masks := make([][]uint64, l.workers)
+	err := l.each(ctx, l.p, func(w, j int) error {
+		if masks[w] == nil {
+			masks[w] = make([]uint64, words)
+		}
+		g := gapsOf(l.values[j], l.used, masks[w])
+		g.Column = l.cols[j].Name
+		l.gaps[j] = g
+		return nil
+	})
+	if err != nil {
+		return err
+	}
+	l.excludeEmpty()
+	l.holed = make([]uint64, words)
+	for _, m := range masks {
+		for i, b := range m {
+			l.holed[i] |= b
+		}
+	}
+	return nil
+}
+
+// gapsOf counts the gaps of a column over the rows in use and marks their
+// rows. A column that has no value at all marks none: it is not its rows that
+// are at fault.
+func gapsOf(v []float64, used, mark []uint64) Gaps {
+	var g Gaps
+	var rows int64
+	for i, x := range v {
+		if used != nil && used[i>>6]>>(i&63)&1 == 0 {
+			continue
+		}
+		rows++
+		switch {
+		case !notFinite(x):
+		case isMissing(x):
+			g.Missing++
+		case x != x:
+			g.NaN++
+		default:
+			g.Infinite++
+		}
+	}
+	if g.Total() == 0 || g.Missing+g.NaN == rows {
+		return g
+	}
+	for i, x := range v {
+		if notFinite(x) && (used == nil || used[i>>6]>>(i&63)&1 == 1) {
+			mark[i>>6] |= 1 << (i & 63)
+		}
+	}
+	return g
+}
+
+// excludeEmpty leaves out candidates that hold no value at all, except under
+// Refuse, where every gap is refused.
+func (l *loading) excludeEmpty() {
+	if l.req.Missing == Refuse {
+		return
+	}
+	full := int64(l.n - l.zero)
+	keep, candidates := 0, len(l.req.Candidates)
+	for j := range l.values {
+		if j < candidates && l.gaps[j].Missing+l.gaps[j].NaN == full {
+			l.data.Excluded = append(l.data.Excluded, Exclusion{l.cols[j].Name, "no row has a value"})
+			continue
+		}
+		l.values[keep], l.cols[keep], l.rounded[keep] = l.values[j], l.cols[j], l.rounded[j]
+		if j < l.p {
+			l.gaps[keep] = l.gaps[j]
+		}
+		keep++
+	}
+	gone := len(l.values) - keep
+	l.p -= gone
+	l.values, l.cols, l.gaps = l.values[:keep], l.cols[:keep], l.gaps[:l.p]
+}
+
+// applyPolicy refuses, or decides what happens to the gaps.
+func (l *loading) applyPolicy(context.Context) error {
+	if len(l.data.Excluded) == len(l.req.Candidates) {
+		return faultf(l.path(), "no candidate is left: in none of %s does any row have a value", plural(int64(len(l.req.Candidates)), "candidate"))
+	}
+	worst := l.worstFirst()
+	if len(worst) == 0 {
+		return nil
+	}
+	for j := len(l.req.Candidates) - len(l.data.Excluded); j < l.p; j++ {
+		if l.req.Missing != Refuse && l.gaps[j].Total() == int64(l.n-l.zero) {
+			return columnFaultf(l.path(), l.cols[j].Name, "cannot be an always-in column: no row has a value")
+		}
+	}
+	switch l.req.Missing {
+	case DropRows:
+		return l.dropRows(worst)
+	case FillMean:
+		return l.fillMean(worst)
+	}
+	return &Error{Path: l.path(), Why: l.refusal(worst), Gaps: worst}
+}
+
+// worstFirst returns the columns with gaps, most gaps first, table order
+// among equals.
+func (l *loading) worstFirst() []Gaps {
+	var out []Gaps
+	for _, g := range l.gaps {
+		if g.Total() > 0 {
+			out = append(out, g)
+		}
+	}
+	sort.SliceStable(out, func(a, b int) bool { return out[a].Total() > out[b].Total() })
+	return out
+}
+
+// dropRows takes the rows with gaps out of use.
+func (l *loading) dropRows(worst []Gaps) error {
+	before := l.n - l.zero
+	lost := 0
+	for _, w := range l.holed {
+		lost += bits.OnesCount64(w)
+	}
+	share := 100 * float64(lost) / float64(before)
+	switch {
+	case before-lost < 2:
+		return &Error{Path: l.path(), Gaps: worst, Why: fmt.Sprintf(
+			"missing = \"drop-rows\" keeps %d of %d rows: leave out the columns with the most gaps (%s), or use missing = \"fill-mean\"",
+			before-lost, before, gapList(worst))}
+	case lost*10 > before && !l.req.AcceptLoss:
+		return &Error{Path: l.path(), Gaps: worst, Why: fmt.Sprintf(
+			"missing = \"drop-rows\" leaves out %d of %d rows (%.1f %%), more than a tenth: leave out the columns with the most gaps (%s), use missing = \"fill-mean\", or confirm with [table] accept_loss = true",
+			lost, before, share, gapList(worst))}
+	}
+	for i, w := range l.holed {
+		if l.used == nil {
+			l.used = fullMask(l.n)
+		}
+		l.used[i] &^= w
+	}
+	l.data.Notes = append(l.data.Notes, fmt.Sprintf(
+		"drop-rows left out %d of %d rows (%.1f %%) because of gaps in %s: %s", lost, before, share, plural(int64(len(worst)), "column"), gapList(worst)))
+	return nil
+}
+
+// fillMean keeps the gaps, except infinite values.
+func (l *loading) fillMean(worst []Gaps) error {
+	var infinite []Gaps
+	var cells int64
+	for _, g := range worst {
+		if g.Infinite > 0 {
+			infinite = append(infinite, Gaps{Column: g.Column, Infinite: g.Infinite})
+		}
+		cells += g.Total()
+	}
+	if len(infinite) > 0 {
+		sort.SliceStable(infinite, func(a, b int) bool { return infinite[a].Infinite > infinite[b].Infinite })
+		return &Error{Path: l.path(), Gaps: infinite, Why: fmt.Sprintf(
+			"infinite values are never filled: %s; correct them, leave these columns out, or use missing = \"drop-rows\"", gapList(infinite))}
+	}
+	l.data.Missing = worst
+	l.data.Notes = append(l.data.Notes, fmt.Sprintf("fill-mean: %s in %s take%s the mean of the draw",
+		plural(cells, "cell"), plural(int64(len(worst)), "column"), thirdPerson(cells)))
+	return nil
+}
+
+// refusal is the text of the error under Refuse: which columns, and what each
+// way out would keep.
+func (l *loading) refusal(worst []Gaps) string {
+	rows := l.n - l.zero
+	lost := 0
+	for _, w := range l.holed {
+		lost += bits.OnesCount64(w)
+	}
+	var b strings.Builder
+	fmt.Fprintf(&b, "%s missing, NaN or infinite values: %s; ", plural(int64(len(worst)), "column has", "columns have"), gapList(worst))
+	empty := 0
+	infinite := false
+	for _, g := range worst {
+		infinite = infinite || g.Infinite > 0
+		if g.Total() == int64(rows) {
+			empty++
+		}
+	}
+	fmt.Fprintf(&b, "leaving %s out keeps all %d rows and %d of %d columns; missing = \"drop-rows\" keeps %d rows",
+		itThem(len(worst)), rows, l.p-len(worst), l.p, rows-lost)
+	if empty > 0 {
+		fmt.Fprintf(&b, " (without %s that %s no value at all)", plural(int64(empty), "column"), hasHave(empty))
+	}
+	if !infinite {
+		fmt.Fprintf(&b, "; missing = \"fill-mean\" keeps everything and takes the draw's mean for the cells")
+	}
+	return b.String()
+}
+
+// gapList names the ten worst columns and says how many more there are.
+func gapList(worst []Gaps) string {
+	const most = 10
+	var parts []string
+	for _, g := range worst[:min(most, len(worst))] {
+		var c []string
+		if g.Missing > 0 {
+			c = append(c, strconv.FormatInt(g.Missing, 10)+" missing")
+		}
+		if g.NaN > 0 {
+			c = append(c, strconv.FormatInt(g.NaN, 10)+" NaN")
+		}
+		if g.Infinite > 0 {
+			c = append(c, strconv.FormatInt(g.Infinite, 10)+" infinite")
+		}
+		parts = append(parts, quote(g.Column)+" ("+strings.Join(c, ", ")+")")
+	}
+	s := strings.Join(parts, ", ")
+	if more := len(worst) - most; more > 0 {
+		s += fmt.Sprintf(" and %d more", more)
+	}
+	return s
+}
+
+// rowsUsed lists the rows in use; nil if all are.
+func (l *loading) rowsUsed() []int32 {
+	if l.used == nil {
+		return nil
+	}
+	var rows []int32
+	for i := range l.n {
+		if l.used[i>>6]>>(i&63)&1 == 1 {
+			rows = append(rows, int32(i))
+		}
+	}
+	return rows
+}
+
+// compact moves the rows in use to the front of a column and returns them.
+func compact(v []float64, rows []int32) []float64 {
+	if rows == nil {
+		return v
+	}
+	for k, i := range rows {
+		v[k] = v[i]
+	}
+	return v[:len(rows):len(rows)]
+}
+
+// fullMask has the bits 0..n-1 set.
+func fullMask(n int) []uint64 {
+	m := make([]uint64, (n+63)/64)
+	for i := range m {
+		m[i] = ^uint64(0)
+	}
+	if n&63 != 0 {
+		m[len(m)-1] = 1<<(n&63) - 1
+	}
+	return m
+}
+
+// rowList names rows by their position in the table, from 0.
+func rowList(rows []int) string {
+	const most = 10
+	var parts []string
+	for _, r := range rows[:min(most, len(rows))] {
+		parts = append(parts, strconv.Itoa(r))
+	}
+	if len(rows) == 1 {
+		return "row " + parts[0] + " (rows are counted from 0)"
+	}
+	s := "rows " + strings.Join(parts, ", ")
+	if more := len(rows) - most; more > 0 {
+		s += fmt.Sprintf(" and %d more", more)
+	}
+	return s + " (rows are counted from 0)"
+}
+
+// plural writes a count and a word; two words give singular and plural.
+func plural(n int64, word ...string) string {
+	w := word[0]
+	if n != 1 {
+		if len(word) > 1 {
+			w = word[1]
+		} else {
+			w += "s"
+		}
+	}
+	return strconv.FormatInt(n, 10) + " " + w
+}
+
+func wasWere(n int64) string {
+	if n == 1 {
+		return "was"
+	}
+	return "were"
+}
+
+func thirdPerson(n int64) string {
+	if n == 1 {
+		return "s"
+	}
+	return ""
+}
+
+func hasHave(n int) string {
+	if n == 1 {
+		return "has"
+	}
+	return "have"
+}
+
+func itThem(n int) string {
+	if n == 1 {
+		return "it"
+	}
+	return "them"
+}
