@@ -87,16 +87,7 @@ type verdict struct {
 // record number.
 func (f *fitting) judge(r *record) verdict {
 	var v verdict
-	var outside []int32
-	inside := make(map[int32]bool, len(r.members))
-	for _, i := range r.members {
-		inside[f.work.units[i]] = true
-	}
-	for _, c := range f.suspects(r) {
-		if !inside[c] {
-			outside = append(outside, c)
-		}
-	}
+	outside := f.suspects(r)
 	known := len(f.work.units)
 	f.work.add(f, f.newcomers(outside))
 	f.qp.grow(len(f.work.units))
@@ -141,8 +132,8 @@ func (f *fitting) twinMember(r *record, place int) int {
 	return -1
 }
 
-// suspects lists the candidates that the screening numbers do not exclude at a
-// record: first by the gradients at the window's ends and the distance of the
+// suspects lists the candidates outside a record that the screening numbers do
+// not exclude: first by the gradients at the window's ends and the distance of the
 // record's residual from theirs, then by the gradient itself.
 func (f *fitting) suspects(r *record) []int32 {
 	least := f.least(r.lambda, r.u)
@@ -151,9 +142,11 @@ func (f *fitting) suspects(r *record) []int32 {
 	first, endD := f.snaps.first, f.distance[1]
 	f.lane = f.d.lane(f.lane, r.u)
 	sum := kernel.Sum(f.lane)
+	f.mark(r, true)
+	defer f.mark(r, false)
 	var out []int32
 	for c, v := range f.end.value {
-		if f.inverse[c] == 0 {
+		if f.inverse[c] == 0 || f.inside[c] {
 			continue
 		}
 		norm := f.normOf(c)
@@ -170,6 +163,15 @@ func (f *fitting) suspects(r *record) []int32 {
 		}
 	}
 	return out
+}
+
+// mark notes in f.inside which candidates a record holds.
+func (f *fitting) mark(r *record, in bool) {
+	for k, i := range r.members {
+		if r.sign[k] != 0 {
+			f.inside[f.work.units[i]] = in
+		}
+	}
 }
 
 // between returns how much of the window's start, rather than its end, a

@@ -31,6 +31,7 @@ type fitting struct {
 	inverse []float64 // 1 / (scale * mix * weight); 0: does not vary in the draw
 	norm    []float64 // sd * inverse; nil: all 1
 	still   []int32
+	inside  []bool // scratch: the candidates of a record
 	snaps   snapshots
 	start0  gradients // at the certified step before the window, where it is longer than one step
 	startU  []float64
@@ -133,6 +134,9 @@ func (f *fitting) measure() {
 	n := f.m.candidates()
 	f.mean, f.inverse = resize(f.mean, n), resize(f.inverse, n)
 	f.end.resize(n)
+	if len(f.inside) != n {
+		f.inside = make([]bool, n)
+	}
 	f.still = nil
 	f.norm = nil
 	if f.m.scale != nil || f.m.penalty.mix < 1 || f.m.p.Relative != nil {
@@ -301,8 +305,22 @@ func (f *fitting) ask() *request {
 	f.req.u = resize(f.req.u, len(f.d.rows))
 	f.m.family.score(&f.d, f.fit, f.req.u)
 	f.req.least = f.least(f.lambda(f.to), f.req.u)
+	f.req.number = f.snaps.add(f.req.u)
+	f.knowWorkingSet()
 	f.asked = true
 	return &f.req
+}
+
+// knowWorkingSet takes the gradients of the working set's candidates, which the
+// Gram matrix gives, so that the screen need not compute them.
+func (f *fitting) knowWorkingSet() {
+	p := f.m.penalty
+	for i, u := range f.work.units {
+		if !p.always(u) {
+			f.end.value[u] = f.qp.g[i] / p.threshold(u, 1)
+			f.end.ref[u] = f.req.number
+		}
+	}
 }
 
 // newcomers returns those of the units that the working set does not have.

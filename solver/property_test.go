@@ -241,7 +241,7 @@ func TestHistories(t *testing.T) {
 			want := mustFit(t, mustModel(t, make()), samples)
 			for seed := range uint64(6) {
 				m := mustModel(t, make())
-				m.whim = &whim{rand.New(rand.NewPCG(seed, 3))}
+				m.whim = &whim{rand.New(rand.NewPCG(seed, 3)), seed > 0}
 				size := 1 + int(seed)*3
 				for k0 := 0; k0 < len(samples); k0 += size {
 					k1 := min(k0+size, len(samples))

@@ -96,10 +96,11 @@ func reach(first, ref int32, distance []float64, norm float64) float64 {
 // request asks for the candidates whose gradient at a score vector may reach
 // least, with their gradients brought up to date.
 type request struct {
-	f     *fitting
-	u     []float64
-	least float64 // lambda less the margin
-	found []int32 // the answer: units whose gradient reaches least, ascending
+	f      *fitting
+	u      []float64
+	number int32   // of u's snapshot
+	least  float64 // lambda less the margin
+	found  []int32 // the answer: units whose gradient reaches least, ascending
 }
 
 // screen answers requests for gradients of all candidates; how is its own
@@ -116,7 +117,6 @@ type productScreen struct {
 	m        *Model
 	need     []uint16 // per candidate: the requests that need it
 	distance []float64
-	number   []int32
 	lane     [][]float64 // per request: root*u
 	sum      []float64
 	rows     []float64 // all table rows x lanes, filled when first needed
@@ -146,13 +146,13 @@ func (s *productScreen) pass(ctx context.Context, reqs []*request) error {
 	return nil
 }
 
-// mark finds which candidates each request needs, and takes its snapshot.
+// mark finds which candidates each request needs.
 func (s *productScreen) mark(reqs []*request) {
 	if len(s.need) != s.m.candidates() {
 		s.need = make([]uint16, s.m.candidates())
 	}
 	clear(s.need)
-	s.number, s.sum, s.filled = s.number[:0], s.sum[:0], false
+	s.sum, s.filled = s.sum[:0], false
 	for len(s.lane) < len(reqs) {
 		s.lane = append(s.lane, nil)
 	}
@@ -171,7 +171,6 @@ func (s *productScreen) mark(reqs []*request) {
 		if whim := f.m.whim; whim != nil {
 			whim.alsoNeed(s.need, f.inverse, bit)
 		}
-		s.number = append(s.number, f.snaps.add(r.u))
 		s.lane[l] = f.d.lane(s.lane[l], r.u)
 		s.sum = append(s.sum, kernel.Sum(s.lane[l]))
 	}
@@ -218,7 +217,7 @@ func (s *productScreen) column(reqs []*request, c int) {
 			sum -= f.d.overHoles(holes, s.lane[l])
 		}
 		f.end.value[c] = (raw - f.mean[c]*sum) * f.inverse[c] / f.d.total
-		f.end.ref[c] = s.number[l]
+		f.end.ref[c] = r.number
 	}
 }
 
@@ -258,13 +257,11 @@ func (s *productScreen) fill(reqs []*request) {
 func (r *request) collect() {
 	r.found = r.found[:0]
 	for c, v := range r.f.end.value {
-		if math.Abs(v) >= r.least && r.f.end.ref[c] == r.f.snaps.newest() && r.f.inverse[c] != 0 {
+		if math.Abs(v) >= r.least && r.f.end.ref[c] == r.number && r.f.inverse[c] != 0 {
 			r.found = append(r.found, int32(c))
 		}
 	}
 }
-
-func (s *snapshots) newest() int32 { return s.first + int32(len(s.kept)) - 1 }
 
 // overHoles sums a lane over the drawn rows that are missing in a column.
 func (d *drawn) overHoles(holes []uint64, lane []float64) float64 {
