@@ -51,9 +51,9 @@ type affine struct {
 
 // tail returns P(i >= j) for the member whose mean is given, 0 < mean < j <= k.
 func (a affine) tail(j int, mean float64) float64 {
-	hi := 60 * math.Max(1, -2*a.r) // of log rho: the weights then span e^-120 to e^120
-	lo := -hi
-	for hi-lo > 1e-15*math.Max(1, math.Abs(lo+hi)/2) {
+	wide := math.Min(60*math.Max(1, -2*a.r), -600*a.r) // the weights then span e^-120 to e^120, and never overflow
+	lo, hi := -wide, wide                              // of log rho
+	for hi-lo > 1e-15*math.Max(wide/60, math.Abs(lo+hi)/2) {
 		mid := (lo + hi) / 2
 		if mid == lo || mid == hi {
 			break
@@ -112,7 +112,7 @@ func logMix(s, u float64) float64 {
 	case s == 1:
 		return u
 	case u <= 0:
-		return math.Log(1 - s + float64(s*math.Exp(u)))
+		return math.Log1p(s * math.Expm1(u))
 	}
 	return u + math.Log(s+float64((1-s)*math.Exp(-u)))
 }
