@@ -29,16 +29,16 @@ var effects = []effect{
 	{"oxygen_d09", 3.0},
 	{"ammonia_d11", -3.4},
 	{"isochrysis_d07", 3.2},
-	{"chaetoceros_d13", 2.8},
-	{"egg_diameter", 3.0},
+	{"chaetoceros_d13", 1.6},
+	{"egg_diameter", 2.4},
 	{"larval_density_d01", -3.0},
 	{"otu_0087", -3.4},
 	{"otu_0412", 3.4},
-	{"otu_0733", -2.8},
+	{"otu_0733", -2.2},
 }
 
 const (
-	meanSurvival = 58.0 // percent
+	meanSurvival = 54.0 // percent
 	noisePoints  = 4.5  // standard deviation of what no column explains, percent points
 )
 
