@@ -185,7 +185,7 @@ func (d Decision) checkBootstrap(f *faults) {
 		d.Replace != nil && d.Replace.FalseSelections != nil:
 		f.add("decision.false_selections", `draws.design = "bootstrap" has no bound on false selections: give threshold and selected in its place`)
 	case d.Selected == nil || d.Threshold == nil || d.Replace != nil:
-		f.add("decision.selected", `is missing: draws.design = "bootstrap" has no bound to derive it from`)
+		f.value("draws.design", quoted(Bootstrap.String()), "needs decision.selected: there is no bound to derive it from")
 	}
 }
 

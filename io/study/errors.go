@@ -43,11 +43,17 @@ func (p Problem) Error() string {
 // the error of Read, Parse, Resolve and CheckReady: a wrong study, exit code 2.
 type Problems []Problem
 
-// Error puts each problem on a line of its own.
+// mostShown is how many problems a message lists.
+const mostShown = 20
+
+// Error puts each problem on a line of its own, the first of very many.
 func (ps Problems) Error() string {
-	lines := make([]string, len(ps))
-	for i, p := range ps {
-		lines[i] = p.Error()
+	var lines []string
+	for _, p := range ps[:min(mostShown, len(ps))] {
+		lines = append(lines, p.Error())
+	}
+	if more := len(ps) - mostShown; more > 0 {
+		lines = append(lines, fmt.Sprintf("study: and %d more problems", more))
 	}
 	return strings.Join(lines, "\n")
 }

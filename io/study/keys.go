@@ -270,6 +270,14 @@ func numberMeant(v value) string {
 // realText is a number as TOML writes it, in the fewest digits that read back
 // the same.
 func realText(x float64) string {
+	switch {
+	case math.IsNaN(x):
+		return "nan"
+	case math.IsInf(x, 1):
+		return "inf"
+	case math.IsInf(x, -1):
+		return "-inf"
+	}
 	s := strconv.FormatFloat(x, 'g', -1, 64)
 	if strings.ContainsAny(s, ".e") {
 		return s

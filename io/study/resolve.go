@@ -139,11 +139,16 @@ func (r *resolver) balanced() []string {
 
 // unknown notes a name that no column has.
 func (r *resolver) unknown(key, name string) {
-	if len(r.names) == 0 {
-		r.faults.value(key, quoted(name), "the table has no columns")
-		return
+	r.faults.value(key, quoted(name), "the table has no such column%s", r.hint(name))
+}
+
+// hint names the nearest column. Past the problems that are shown it is not
+// worth the search: a list may hold as many wrong names as a table columns.
+func (r *resolver) hint(name string) string {
+	if len(r.names) == 0 || len(r.faults.found) >= mostShown {
+		return ""
 	}
-	r.faults.value(key, quoted(name), "the table has no such column; the nearest is %s", quoted(nearest(name, r.names)))
+	return "; the nearest is " + quoted(nearest(name, r.names))
 }
 
 // read marks the columns that a list names or matches.
@@ -163,7 +168,7 @@ func (r *resolver) read(key string, list []string, of func(*wishes) *wish) {
 			continue
 		}
 		if !r.mark(m, of) {
-			r.faults.value(key, quoted(text), "matches no column of the table; the nearest is %s", quoted(nearest(text, r.names)))
+			r.faults.value(key, quoted(text), "matches no column of the table%s", r.hint(text))
 		}
 	}
 }

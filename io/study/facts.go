@@ -1,0 +1,441 @@
+package study
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"regexp"
+	"unicode/utf8"
+
+	"holdfast/selection"
+)
+
+// Facts is what Draft has to know of a table.
+type Facts struct {
+	Path       string // the table as the study is to write it: relative to the study, or absolute
+	Source     string // name of the study, for its messages and Dir; may be empty
+	Outcome    string // column to be explained
+	Rows       int64  // rows of the table
+	Incomplete int64  // rows with a gap in a usable column; negative: not counted
+	Columns    []Fact // in table order
+}
+
+// Fact is what a scan found in one column. What it could not find is zero.
+type Fact struct {
+	Column
+	Missing  int64 // null or NaN
+	Infinite int64
+
+	Constant  bool     // one value in all rows
+	TwoValued bool     // two values
+	Whole     bool     // whole numbers only
+	Unique    bool     // no value twice, none missing
+	Rising    bool     // every value larger (or every value smaller) than that of the row before
+	Date      bool     // whole numbers that read as dates, such as 20260314
+	Min, Max  float64  // over the values there are
+	R         *float64 // correlation with the outcome; nil: not defined
+	AUC       *float64 // of this column alone for a two-valued outcome; nil: not defined
+}
+
+// gaps is the number of cells without a finite value.
+func (f Fact) gaps() int64 { return f.Missing + f.Infinite }
+
+// The limits of a leak (DESIGN section 9).
+const (
+	leakR   = 0.98
+	leakAUC = 0.95
+)
+
+// FlagKind says what a flag is about.
+type FlagKind uint8
+
+const (
+	FlagOutcome    FlagKind = iota // a two-valued outcome taken as a number
+	FlagLeak                       // a candidate that is the outcome in other clothes
+	FlagIdentifier                 // row numbers and other identifiers
+	FlagUnique                     // whole numbers, every value once: a count or an identifier
+	FlagDate                       // a date written as a whole number
+	FlagUnusable                   // cannot be a predictor as it is
+	FlagConstant                   // one value: never chosen
+	FlagEmpty                      // no value at all
+	FlagGaps                       // gaps that decide how missing values are treated
+	FlagShape                      // the size of the table limits the answer
+)
+
+// String names the kind in one or two words.
+func (k FlagKind) String() string {
+	return word([]string{"outcome", "leak", "identifier", "unique numbers", "date", "not usable", "constant", "empty", "gaps", "shape"}, k)
+}
+
+// Flag is something that would mislead, or that was decided for the user.
+type Flag struct {
+	Kind   FlagKind
+	Column string // empty: the table as a whole
+	Text   string // a sentence without the column's name and full stop
+	Left   bool   // the draft leaves the column out
+}
+
+// Flags lists what is conspicuous, the outcome first, then the table's
+// columns in order, then the table as a whole. The error says why no study
+// can be drafted from such a table.
+func (f Facts) Flags() ([]Flag, error) {
+	d, err := newDrafter(f)
+	if err != nil {
+		return nil, err
+	}
+	return d.flags, nil
+}
+
+// Smallest tables in which an order of the values says anything: below, a
+// column of counts rises, or fills its range, too easily by chance.
+const (
+	rowsForRising = 8
+	rowsForDense  = 20
+)
+
+// namedAsIdentifier fits names whose last word is that of an identifier.
+var namedAsIdentifier = regexp.MustCompile(`(?i:(^|[^a-z])(id|nr|number|index|idx|row|serial|barcode|key)$)|[a-z]ID$`)
+
+// identifier says why a column is one, empty where it is not.
+func (f Fact) identifier(rows int64) string {
+	span := f.Max - f.Min
+	switch {
+	case !f.Whole || !f.Unique || f.Constant:
+		return ""
+	case f.Rising && rows >= rowsForRising && span == float64(rows-1):
+		return "a row number: it counts the rows"
+	case f.Rising && rows >= rowsForRising:
+		return "whole numbers in the order of the rows, every value once: a row number or a time, not a measurement"
+	case rows >= rowsForDense && span < 2*float64(rows):
+		return "whole numbers without a value twice and almost without a gap between them: an identifier"
+	case namedAsIdentifier.MatchString(f.Name):
+		return "whole numbers, every value once, and named as an identifier"
+	}
+	return ""
+}
+
+// leak says why a column is the outcome in other clothes, empty where not.
+func (f Fact) leak() string {
+	if f.R != nil && math.Abs(*f.R) >= leakR {
+		return fmt.Sprintf("its correlation with the outcome is %.3f: the outcome in other clothes?", *f.R)
+	}
+	if f.AUC != nil && max(*f.AUC, 1-*f.AUC) > leakAUC {
+		return fmt.Sprintf("alone it tells the two outcomes apart (AUC %.3f): the outcome in other clothes?", *f.AUC)
+	}
+	return ""
+}
+
+// flag judges one column that is not the outcome.
+func (f Fact) flag(rows int64) (Flag, bool) {
+	flag := Flag{Column: f.Name}
+	identifier, leak := f.identifier(rows), f.leak()
+	switch {
+	case !f.Usable:
+		flag.Kind, flag.Text = FlagUnusable, f.Reason
+	case rows > 0 && f.Missing == rows:
+		flag.Kind, flag.Text, flag.Left = FlagEmpty, "no row has a value", true
+	case leak != "":
+		flag.Kind, flag.Text, flag.Left = FlagLeak, leak, true
+	case identifier != "":
+		flag.Kind, flag.Text, flag.Left = FlagIdentifier, identifier, true
+	case f.Date:
+		flag.Kind, flag.Text = FlagDate, "a date written as a whole number: its distances mean nothing; leave it out, or turn it into days"
+	case f.Constant:
+		flag.Kind, flag.Text = FlagConstant, "one value in all rows: never chosen, and not counted"
+	case f.Whole && f.Unique && rows >= rowsForDense:
+		flag.Kind, flag.Text = FlagUnique, "whole numbers, every value once: if it is an identifier and no count, leave it out"
+	default:
+		return flag, false
+	}
+	return flag, true
+}
+
+// drafter gathers what a draft is written from.
+type drafter struct {
+	facts      Facts
+	outcome    Fact
+	flags      []Flag
+	left       []Flag // of flags: what goes into candidates.leave
+	unusable   []Flag
+	candidates []Fact
+	missing    Missing
+	missingWhy string
+	rows       int64 // in use at least
+	shape      tableShape
+}
+
+func newDrafter(f Facts) (*drafter, error) {
+	d := &drafter{facts: f}
+	for _, step := range []func() error{d.checkOutcome, d.sortColumns, d.chooseMissing, d.chooseShape, d.checkNames} {
+		if err := step(); err != nil {
+			return nil, err
+		}
+	}
+	return d, nil
+}
+
+// refuse is the error of a table from which no study can be drafted.
+func (d *drafter) refuse(format string, args ...any) error {
+	return Problems{{File: d.facts.Path, Why: fmt.Sprintf(format, args...)}}
+}
+
+// checkOutcome finds the outcome and refuses one that cannot be explained.
+func (d *drafter) checkOutcome() error {
+	f := d.facts
+	names := make([]string, len(f.Columns))
+	found := -1
+	for i, c := range f.Columns {
+		names[i] = c.Name
+		if c.Name == f.Outcome && found < 0 {
+			found = i
+		}
+	}
+	shown := quoted(f.Outcome)
+	switch {
+	case len(names) == 0:
+		return d.refuse("the table has no columns")
+	case f.Outcome == "":
+		return d.refuse("name the column to be explained: --outcome COLUMN")
+	case found < 0:
+		return d.refuse("the table has no column %s to be explained; the nearest is %s", shown, quoted(nearest(f.Outcome, names)))
+	}
+	d.outcome = f.Columns[found]
+	switch o := d.outcome; {
+	case !o.Usable:
+		return d.refuse("column %s cannot be the outcome: %s", shown, o.Reason)
+	case o.gaps() > 0:
+		return d.refuse("the outcome %s has no value in %d of %d rows, and an outcome is never filled: take these rows out of the table", shown, o.gaps(), f.Rows)
+	case f.Rows < 4:
+		return d.refuse("the table has %d rows, and two halves take at least 4", f.Rows)
+	case o.Constant:
+		return d.refuse("the outcome %s has one value in all rows: there is nothing to explain", shown)
+	case o.TwoValued:
+		d.flags = append(d.flags, Flag{Kind: FlagOutcome, Column: o.Name, Text: "two values, taken as numbers here: a linear fit of a yes-no outcome finds predictors, but its coefficients are no odds"})
+	}
+	return nil
+}
+
+// sortColumns tells candidates from what is left out.
+func (d *drafter) sortColumns() error {
+	for _, c := range d.facts.Columns {
+		if c.Name == d.facts.Outcome {
+			continue
+		}
+		flag, flagged := c.flag(d.facts.Rows)
+		if flagged {
+			d.flags = append(d.flags, flag)
+		}
+		switch {
+		case !c.Usable:
+			d.unusable = append(d.unusable, flag)
+		case flag.Left:
+			d.left = append(d.left, flag)
+		default:
+			d.candidates = append(d.candidates, c)
+		}
+	}
+	return nil
+}
+
+// chooseMissing says what happens to gaps, such that the study runs.
+func (d *drafter) chooseMissing() error {
+	d.rows = d.facts.Rows
+	lost, gappy := d.lost()
+	switch {
+	case gappy == 0:
+		d.missingWhy = "no candidate has a missing value"
+		return nil
+	case lost*20 <= d.facts.Rows && d.facts.Rows-lost >= 4:
+		d.missing, d.rows = DropRows, d.facts.Rows-lost
+		d.missingWhy = fmt.Sprintf("gaps in %s take out at most %d of %d rows", numberOf(gappy, "candidate"), lost, d.facts.Rows)
+		d.flags = append(d.flags, Flag{Kind: FlagGaps, Text: d.missingWhy + `: missing = "drop-rows"`})
+		return nil
+	}
+	d.leaveInfinite()
+	lost, gappy = d.lost()
+	if gappy == 0 {
+		d.missingWhy = "no candidate has a missing value, those with infinite values left out"
+		return nil
+	}
+	d.missing = FillMean
+	d.missingWhy = fmt.Sprintf("gaps in %s; without the rows that have one, up to %d of %d rows would be lost", numberOf(gappy, "candidate"), lost, d.facts.Rows)
+	d.flags = append(d.flags, Flag{Kind: FlagGaps, Text: d.missingWhy + `: missing = "fill-mean", which weakens candidates with many gaps`})
+	return nil
+}
+
+// lost bounds the rows that have a gap in a candidate, and counts the
+// candidates that have any.
+func (d *drafter) lost() (rows int64, gappy int) {
+	for _, c := range d.candidates {
+		if n := c.gaps(); n > 0 {
+			gappy++
+			rows = min(rows+n, d.facts.Rows)
+		}
+	}
+	if d.facts.Incomplete >= 0 {
+		rows = min(rows, d.facts.Incomplete)
+	}
+	return rows, gappy
+}
+
+// leaveInfinite leaves out candidates with infinite values, which are never
+// filled.
+func (d *drafter) leaveInfinite() {
+	var kept []Fact
+	for _, c := range d.candidates {
+		if c.Infinite == 0 {
+			kept = append(kept, c)
+			continue
+		}
+		flag := Flag{Kind: FlagGaps, Column: c.Name, Left: true,
+			Text: fmt.Sprintf("infinite in %s, which is never filled", numberOf(int(c.Infinite), "row"))}
+		d.flags = append(d.flags, flag)
+		d.left = append(d.left, flag)
+	}
+	d.candidates = kept
+}
+
+// chooseShape sets threshold, bound, floor and selected by the table's shape.
+func (d *drafter) chooseShape() error {
+	varying := 0
+	for _, c := range d.candidates {
+		if !c.Constant {
+			varying++
+		}
+	}
+	if varying == 0 {
+		return d.refuse("no candidate is left: of %d columns %d cannot be used, %d are left out and %d have one value in all rows",
+			len(d.facts.Columns), len(d.unusable), len(d.left), len(d.candidates)-varying)
+	}
+	var err error
+	if d.shape, err = shapeOf(varying, int(min(d.rows/2, math.MaxInt32))); err != nil {
+		return err
+	}
+	d.flags = append(d.flags, d.shape.flags()...)
+	return nil
+}
+
+// checkNames refuses names that a study cannot write.
+func (d *drafter) checkNames() error {
+	names := []string{d.facts.Path, d.facts.Outcome}
+	for _, l := range d.left {
+		names = append(names, l.Column)
+	}
+	for _, name := range names {
+		if !utf8.ValidString(name) {
+			return d.refuse("the name \"%s\" is not UTF-8, so no study can write it: rename it", printable(name))
+		}
+	}
+	return nil
+}
+
+// tableShape is what the number of candidates and of units in a half decide
+// (DESIGN section 7, "draft by shape").
+type tableShape struct {
+	candidates, units int
+	threshold         float64
+	bound             selection.BoundName
+	floor             float64
+	why               string // of the three above
+
+	selected    int
+	selectedWhy string
+	luck        float64 // false selections at threshold and selected
+	asked       float64 // false selections aimed at
+}
+
+// The limits of DESIGN section 7.
+const (
+	manyPerUnit    = 10 // candidates per unit from which a table is very wide
+	unitsPerFew    = 10 // units per candidate beyond which it is narrow
+	unitsPerChoice = 3  // units that a selected predictor takes at least
+	smallPanel     = 50 // candidates below which fewer false selections are aimed at
+	regressionSize = 8  // candidates that an ordinary regression takes better
+	fewUnits       = 15 // units in a half that show overwhelming effects only
+)
+
+func shapeOf(candidates, units int) (tableShape, error) {
+	standard := Default()
+	s := tableShape{
+		candidates: candidates, units: units,
+		threshold: selection.DefaultThreshold, bound: standard.Decision.Bound, floor: standard.Penalty.Floor,
+		why:   fmt.Sprintf("the default, for %d candidates and %d rows in a half", candidates, units),
+		asked: selection.DefaultFalseSelections,
+	}
+	switch {
+	case candidates >= manyPerUnit*units:
+		s.threshold, s.bound, s.floor = 0.6, selection.WorstCase, 0.01
+		s.why = fmt.Sprintf("%d candidates are at least %d times the %d rows in a half", candidates, manyPerUnit, units)
+	case candidates*unitsPerFew < units:
+		s.threshold, s.floor = 0.9, 0.001
+		s.why = fmt.Sprintf("%d candidates are fewer than a tenth of the %d rows in a half", candidates, units)
+	}
+	if candidates < smallPanel {
+		s.asked = float64(candidates) / smallPanel
+	}
+	return s, s.choose(standard.Draws.Number)
+}
+
+// choose finds selected, and the false selections it comes to.
+func (s *tableShape) choose(draws int) error {
+	s.selected, s.selectedWhy = s.allowed(draws), fmt.Sprintf("what false_selections = %s allows", realText(s.asked))
+	if most := s.units / unitsPerChoice; s.selected > most {
+		s.selected, s.selectedWhy = most, fmt.Sprintf("a third of the %d rows in a half", s.units)
+	}
+	if s.selected < 1 {
+		s.selected, s.selectedWhy = 1, "the least there is"
+	}
+	err := s.promise(draws)
+	if errors.Is(err, selection.ErrNoBound) && s.bound != selection.WorstCase {
+		s.why += fmt.Sprintf("; but the %s bound does not exist for so few", s.bound)
+		s.bound = selection.WorstCase
+		err = s.promise(draws)
+	}
+	return err
+}
+
+// allowed is the selected that the budget gives, 0 where it gives none.
+func (s *tableShape) allowed(draws int) int {
+	ask := selection.Ask{Bound: s.bound, Threshold: &s.threshold, FalseSelections: &s.asked}
+	d, err := selection.Decide(ask, s.candidates, draws, false, 0)
+	if err != nil { // less than one predictor, or no such bound: see promise
+		return 0
+	}
+	return d.Selected
+}
+
+// promise finds the false selections at threshold and selected; the error is
+// selection.ErrNoBound where the bound does not exist there.
+func (s *tableShape) promise(draws int) error {
+	q := float64(s.selected)
+	ask := selection.Ask{Bound: s.bound, Threshold: &s.threshold, Selected: &q}
+	d, err := selection.Decide(ask, s.candidates, draws, false, 0)
+	switch {
+	case err != nil:
+		return err
+	case d.FalseSelections == nil:
+		return fmt.Errorf("study: draft: %d candidates: %w", s.candidates, selection.ErrNoBound)
+	}
+	s.luck = *d.FalseSelections
+	return nil
+}
+
+// flags says where the table is too small for the question.
+func (s tableShape) flags() []Flag {
+	var flags []Flag
+	if s.candidates <= regressionSize {
+		flags = append(flags, Flag{Kind: FlagShape, Text: fmt.Sprintf("with %s an ordinary regression answers better", numberOf(s.candidates, "candidate"))})
+	}
+	if s.units <= fewUnits {
+		flags = append(flags, Flag{Kind: FlagShape, Text: fmt.Sprintf("with %s in a half only overwhelming effects can be found", numberOf(s.units, "row"))})
+	}
+	return flags
+}
+
+// numberOf writes a count and its noun.
+func numberOf(n int, noun string) string {
+	if n == 1 {
+		return "1 " + noun
+	}
+	return fmt.Sprintf("%d %ss", n, noun)
+}
