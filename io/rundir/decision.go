@@ -79,6 +79,7 @@ func (d *Dir) LogJudgement(j Judged) error {
 	if now.Digest != d.run.Digest {
 		return fmt.Errorf("rundir: %s: run.json now belongs to another run (identity %.12s, not %.12s)", d.path, now.Digest, d.run.Digest)
 	}
+	d.run = *now
 	if now.Decision != nil && now.Decision.Same(j.Decision) && j.Draws == now.Meta.Number {
 		return nil
 	}

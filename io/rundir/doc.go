@@ -35,9 +35,9 @@
 //	still                    list of int32, predictors that did not vary in the draw
 //
 // A predictor is its position among the candidates of run.json, from 0.
-// Coefficients are in the column's own units. Integers are delta-packed and
-// nothing is compressed: the bytes follow from the draws alone, a reader needs
-// no decompressor, and a damaged size cannot make it take much memory.
+// Coefficients are in the column's own units. Values are plain and nothing is
+// compressed (16 bytes a coefficient): the bytes follow from the draws alone,
+// and a file cannot claim more memory than its own length.
 //
 // Two SHA-256 digests stand in the file's key-value metadata.
 // "holdfast.pages" is over all bytes before the footer, and is checked before

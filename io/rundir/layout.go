@@ -84,9 +84,9 @@ func listOf(name string, element schema.Node) schema.Node {
 }
 
 // blockProperties fixes all that decides the bytes: no statistics, no
-// dictionaries, no compression, integers delta-packed.
+// dictionaries, no compression, plain values.
 func blockProperties() *parquet.WriterProperties {
-	options := []parquet.WriterProperty{
+	return parquet.NewWriterProperties(
 		parquet.WithCreatedBy("holdfast"),
 		parquet.WithVersion(parquet.V2_LATEST),
 		parquet.WithDataPageVersion(parquet.DataPageV1),
@@ -94,14 +94,7 @@ func blockProperties() *parquet.WriterProperties {
 		parquet.WithStats(false),
 		parquet.WithCompression(compress.Codecs.Uncompressed),
 		parquet.WithEncoding(parquet.Encodings.Plain),
-	}
-	leaves := schema.NewSchema(blockSchema())
-	for i := 0; i < leaves.NumColumns(); i++ {
-		if leaf := leaves.Column(i); leaf.PhysicalType() == parquet.Types.Int32 {
-			options = append(options, parquet.WithEncodingFor(leaf.Path(), parquet.Encodings.DeltaBinaryPacked))
-		}
-	}
-	return parquet.NewWriterProperties(options...)
+	)
 }
 
 // blockName is the file name of the block whose first draw is given.

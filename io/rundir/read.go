@@ -10,6 +10,7 @@ import (
 	"io"
 	"os"
 	"path/filepath"
+	"slices"
 
 	"github.com/apache/arrow/go/v17/arrow/memory"
 	"github.com/apache/arrow/go/v17/parquet"
@@ -136,16 +137,17 @@ func checkPages(pr *file.Reader, src io.ReaderAt, footer int64) error {
 	return nil
 }
 
-// leaf is a column chunk and how many values it says it holds.
-type leaf struct {
-	reader file.ColumnChunkReader
-	values int64
-	rows   int64
+// cursor reads leaf after leaf and keeps the first error.
+type cursor struct {
+	group      *file.RowGroupReader
+	size       int64
+	candidates int
+	next       int
+	err        error
 }
 
-// leaves opens the column chunks after checking that the schema is ours and
-// that the sizes in the footer are possible in a file of this size.
-func leaves(pr *file.Reader, size int64, candidates int) ([]leaf, error) {
+// open checks that the schema is ours and that the row group is possible.
+func open(pr *file.Reader, size int64, candidates int) (*cursor, error) {
 	meta := pr.MetaData()
 	if meta.Schema == nil || !meta.Schema.Equals(schema.NewSchema(blockSchema())) {
 		return nil, errors.New("its columns are not those of a block")
@@ -154,20 +156,7 @@ func leaves(pr *file.Reader, size int64, candidates int) ([]leaf, error) {
 	if pr.NumRowGroups() != 1 || rows < 1 || rows > maxDraws || pr.RowGroup(0).NumRows() != rows {
 		return nil, fmt.Errorf("damaged: %d rows in %d row groups", rows, pr.NumRowGroups())
 	}
-	group := pr.RowGroup(0)
-	list := make([]leaf, numColumns)
-	for i := range list {
-		n, err := checkChunk(group, i, size, candidates)
-		if err != nil {
-			return nil, err
-		}
-		reader, err := group.Column(i)
-		if err != nil {
-			return nil, err
-		}
-		list[i] = leaf{reader, n, rows}
-	}
-	return list, nil
+	return &cursor{group: pr.RowGroup(0), size: size, candidates: candidates}, nil
 }
 
 // checkChunk refuses a column chunk that cannot be ours: compressed, outside
@@ -180,141 +169,94 @@ func checkChunk(group *file.RowGroupReader, i int, size int64, candidates int) (
 	start, length, n, rows := chunk.DataPageOffset(), chunk.TotalCompressedSize(), chunk.NumValues(), group.NumRows()
 	if chunk.Compression() != compress.Codecs.Uncompressed || chunk.HasDictionaryPage() || chunk.CryptoMetadata() != nil ||
 		start < 4 || start > size || length < 0 || length > size-start {
-		return 0, fmt.Errorf("damaged: column %d lies outside the file", i)
+		return 0, errors.New("it is not a plain column inside the file")
 	}
-	most := rows
+	most := rows // one each
 	switch i {
 	case colEntryStep, colEntryPredictor, colEntryNegative, colStill:
 		most = rows * int64(candidates+1)
 	case colCoefStep, colCoefPredictor:
-		// as many as coefficients; compared when they are read
-		most = rows + size/8
+		most = rows + length/4
 	case colCoefValue, colIntercept, colAlways:
 		most = rows + length/8
 	}
 	if n < rows || n > most {
-		return 0, fmt.Errorf("damaged: column %d says it holds %d values for %d draws", i, n, rows)
+		return 0, fmt.Errorf("it says it holds %d values for %d draws", n, rows)
 	}
 	return n, nil
 }
 
 // readColumns decodes all columns.
 func readColumns(pr *file.Reader, size int64, candidates int) (*flat, error) {
-	list, err := leaves(pr, size, candidates)
+	c, err := open(pr, size, candidates)
 	if err != nil {
 		return nil, err
 	}
-	c := &cursor{leaves: list}
 	f := &flat{}
-	f.draw, f.first, f.last = single[int32](c), single[int32](c), single[int32](c)
-	f.stop, f.why = textsOf(single[parquet.ByteArray](c)), textsOf(single[parquet.ByteArray](c))
-	f.violation, f.gap = single[float64](c), single[float64](c)
-	f.borderline, f.twins = single[int32](c), single[int32](c)
-	f.entryStep, f.entries = lists[int32](c, nil)
-	f.entryPredictor, _ = lists[int32](c, f.entries)
-	f.entryNegative, _ = lists[bool](c, f.entries)
-	f.coefStep, f.coefs = lists[int32](c, nil)
-	f.coefPredictor, _ = lists[int32](c, f.coefs)
-	f.coefValue, _ = lists[float64](c, f.coefs)
-	f.intercept, f.intercepts = lists[float64](c, nil)
-	f.always, f.alwayses = lists[float64](c, nil)
-	f.still, f.stills = lists[int32](c, nil)
+	f.draw, f.first, f.last = single(c, plainInts), single(c, plainInts), single(c, plainInts)
+	f.stop, f.why = single(c, plainTexts), single(c, plainTexts)
+	f.violation, f.gap = single(c, plainFloats), single(c, plainFloats)
+	f.borderline, f.twins = single(c, plainInts), single(c, plainInts)
+	f.entryStep, f.entries = lists(c, nil, plainInts)
+	f.entryPredictor, _ = lists(c, f.entries, plainInts)
+	f.entryNegative, _ = lists(c, f.entries, plainFlags)
+	f.coefStep, f.coefs = lists(c, nil, plainInts)
+	f.coefPredictor, _ = lists(c, f.coefs, plainInts)
+	f.coefValue, _ = lists(c, f.coefs, plainFloats)
+	f.intercept, f.intercepts = lists(c, nil, plainFloats)
+	f.always, f.alwayses = lists(c, nil, plainFloats)
+	f.still, f.stills = lists(c, nil, plainInts)
 	return f, c.err
 }
 
-// cursor reads leaf after leaf and keeps the first error.
-type cursor struct {
-	leaves []leaf
-	next   int
-	err    error
-}
-
-// batchReader is a typed column reader of the library.
-type batchReader[T any] interface {
-	ReadBatch(batch int64, values []T, definition, repetition []int16) (int64, int, error)
-	Err() error
-}
-
-// batch is how many values are asked for at a time: memory grows only with
-// values that are really there.
-const batch = 1 << 13
-
-// single reads a leaf with one value per row.
-func single[T any](c *cursor) []T {
-	values, _ := lists[T](c, nil)
+// single reads the next leaf, which has one value per row.
+func single[T any](c *cursor, decode decoder[T]) []T {
+	values, _ := lists(c, nil, decode)
 	return values
 }
 
 // lists reads the next leaf: its values, and for a list the length of each
 // row's list. want, if not nil, is what the lengths must be.
-func lists[T any](c *cursor, want []int) (values []T, lengths []int) {
+func lists[T any](c *cursor, want []int, decode decoder[T]) ([]T, []int) {
 	if c.err != nil {
 		return nil, nil
 	}
-	l := c.leaves[c.next]
-	values, definition, repetition, err := readLeaf[T](l)
-	if err == nil && l.reader.Descriptor().MaxRepetitionLevel() > 0 {
-		lengths, err = lengthsOf(definition, repetition, int(l.rows), len(values))
-	} else if err == nil && int64(len(values)) != l.rows {
-		err = fmt.Errorf("%d values for %d draws", len(values), l.rows)
-	}
-	if err == nil && want != nil && !equal(lengths, want) {
+	values, lengths, err := readLeaf(c, decode)
+	if err == nil && want != nil && !slices.Equal(lengths, want) {
 		err = errors.New("its lists differ in length from those of its neighbours")
 	}
 	if err != nil {
-		c.err = fmt.Errorf("damaged: column %s: %w", l.reader.Descriptor().Path(), err)
+		c.err = fmt.Errorf("damaged: column %d: %w", c.next, err)
 		return nil, nil
 	}
 	c.next++
 	return values, lengths
 }
 
-// readLeaf reads all values and levels of a leaf.
-func readLeaf[T any](l leaf) (values []T, definition, repetition []int16, err error) {
-	r, ok := l.reader.(batchReader[T])
-	if !ok {
-		return nil, nil, nil, errors.New("of another type")
+// readLeaf reads the leaf that is next.
+func readLeaf[T any](c *cursor, decode decoder[T]) ([]T, []int, error) {
+	n, err := checkChunk(c.group, c.next, c.size, c.candidates)
+	if err != nil {
+		return nil, nil, err
 	}
-	var (
-		v      = make([]T, batch)
-		def    = make([]int16, batch)
-		rep    = make([]int16, batch)
-		nested = l.reader.Descriptor().MaxRepetitionLevel() > 0
-		read   int64
-	)
-	for read < l.values {
-		levels, n, err := r.ReadBatch(min(batch, l.values-read), v, def, rep)
-		if err == nil {
-			err = r.Err()
-		}
-		if err != nil {
-			return nil, nil, nil, err
-		}
-		if levels == 0 {
-			return nil, nil, nil, fmt.Errorf("it ends after %d of %d values", read, l.values)
-		}
-		values = append(values, clone(v[:n])...)
-		if nested {
-			definition, repetition = append(definition, def[:levels]...), append(repetition, rep[:levels]...)
-		}
-		read += levels
+	pages, err := c.group.GetColumnPageReader(c.next)
+	if err != nil {
+		return nil, nil, err
 	}
-	return values, definition, repetition, nil
-}
-
-// clone copies texts out of the page that the library is about to reuse;
-// other values are copied by the append that follows.
-func clone[T any](values []T) []T {
-	if texts, ok := any(values).([]parquet.ByteArray); ok {
-		for i := range texts {
-			texts[i] = bytes.Clone(texts[i])
-		}
+	rows, nested := int(c.group.NumRows()), c.next >= colEntryStep
+	chunk, err := readChunk(pages, nested, n, decode)
+	if err != nil {
+		return nil, nil, err
 	}
-	return values
+	if !nested {
+		return chunk.values, nil, nil
+	}
+	lengths, err := lengthsOf(chunk.definition, chunk.repetition, rows, len(chunk.values))
+	return chunk.values, lengths, err
 }
 
 // lengthsOf decodes Parquet's levels into list lengths.
-func lengthsOf(definition, repetition []int16, rows, values int) ([]int, error) {
+func lengthsOf(definition, repetition []byte, rows, values int) ([]int, error) {
 	var lengths []int
 	total := 0
 	for i := range definition {
@@ -333,26 +275,6 @@ func lengthsOf(definition, repetition []int16, rows, values int) ([]int, error) 
 		return nil, fmt.Errorf("%d lists with %d values for %d draws with %d", len(lengths), total, rows, values)
 	}
 	return lengths, nil
-}
-
-func equal(a, b []int) bool {
-	if len(a) != len(b) {
-		return false
-	}
-	for i := range a {
-		if a[i] != b[i] {
-			return false
-		}
-	}
-	return true
-}
-
-func textsOf(list []parquet.ByteArray) []string {
-	texts := make([]string, len(list))
-	for i, b := range list {
-		texts[i] = string(b)
-	}
-	return texts
 }
 
 // guard is the allocator of the library's readers. Nothing in a block is

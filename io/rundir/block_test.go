@@ -1,0 +1,351 @@
+package rundir
+
+import (
+	"bytes"
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"os"
+	"path/filepath"
+	"strings"
+	"testing"
+
+	"holdfast/selection"
+	"holdfast/solver"
+)
+
+func TestPathsAreReadBackToTheBit(t *testing.T) {
+	r := source(t)
+	d := hatcheryRun(t, 60)
+	paths := randomPaths(r, 60)
+	for first := 0; first < 60; {
+		n := min(1+r.IntN(9), 60-first)
+		if err := d.Put(first, paths[first:first+n]); err != nil {
+			t.Fatal(err)
+		}
+		first += n
+	}
+	got, err := d.ReadPaths()
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i := range paths {
+		if !sameBits(got[i], paths[i]) {
+			t.Errorf("draw %d: read %+v, written %+v", i, got[i], paths[i])
+		}
+	}
+}
+
+// A judgement needs part of the record; here it is derived a second time.
+func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
+	d := hatcheryRun(t, 2)
+	paths := []solver.Path{{
+		First: -2, Last: 0, Stop: solver.StopEntered,
+		Entries:    []solver.Entry{{Candidate: 4, Step: -1, Negative: true}, {Candidate: 0, Step: 0}},
+		Coefs:      []solver.Coef{{Step: -1, Candidate: 4, Value: -0.5}, {Step: 0, Candidate: 0, Value: 1}, {Step: 0, Candidate: 4, Value: -1}},
+		Intercepts: []float64{1, 2, 3}, Always: []float64{1, 2, 3, 4, 5, 6}, Still: []int32{2, 5}, Violation: 1e-12,
+	}, {
+		First: 18, Last: 20, Stop: solver.StopUncertified, Why: "gap 2e-9", Intercepts: []float64{1, 2, 3},
+		Always: []float64{1, 2, 3, 4, 5, 6}, Gap: 1e-13, Borderline: 3, Twins: 1,
+	}}
+	if err := d.Put(0, paths); err != nil {
+		t.Fatal(err)
+	}
+	f, err := d.Read()
+	if err != nil {
+		t.Fatal(err)
+	}
+	a, b := f.Draws[0], f.Draws[1]
+	if a.Number != 0 || a.First != -2 || a.Last != 0 || a.Uncertified || a.Complete {
+		t.Errorf("draw 0: %+v", a)
+	}
+	if b.Number != 1 || !b.Uncertified || !b.Complete || len(b.Entries) != 0 {
+		t.Errorf("draw 1: %+v", b)
+	}
+	if len(a.Entries) != 2 || a.Entries[0] != (selection.Entry{Predictor: 4, Step: -1, Negative: true}) {
+		t.Errorf("entries of draw 0: %+v", a.Entries)
+	}
+	if len(a.Coefs) != 3 || a.Coefs[2] != (selection.Coef{Step: 0, Predictor: 4, Value: -1}) || len(a.Always) != 6 || len(a.Still) != 2 {
+		t.Errorf("draw 0: %+v", a)
+	}
+	want := Uncertified{Draw: 1, Step: 21, Why: "gap 2e-9"}
+	if f.Violation != 1e-12 || f.Gap != 1e-13 || f.Borderline != 3 || f.Twins != 1 || len(f.Uncertified) != 1 || f.Uncertified[0] != want {
+		t.Errorf("certificates: %+v", f)
+	}
+}
+
+func encoded(t testing.TB, run Run, block []numbered) []byte {
+	t.Helper()
+	var b bytes.Buffer
+	if err := encodeBlock(&b, run.Digest, block); err != nil {
+		t.Fatal(err)
+	}
+	return b.Bytes()
+}
+
+func numberedFrom(first int, paths []solver.Path) []numbered {
+	block := make([]numbered, len(paths))
+	for i := range paths {
+		block[i] = numbered{first + i, paths[i]}
+	}
+	return block
+}
+
+func TestEqualDrawsGiveEqualBytes(t *testing.T) {
+	run := hatcheryRun(t, 8).Run()
+	block := numberedFrom(0, randomPaths(source(t), 8))
+	if !bytes.Equal(encoded(t, run, block), encoded(t, run, block)) {
+		t.Error("two writes differ")
+	}
+}
+
+// The bytes and the digest of one small block, computed by this package when
+// the format was fixed. Another value here is another format: it needs
+// another Format number, or runs on disk can no longer be gone on with.
+func TestFormatOfABlockIsFixed(t *testing.T) {
+	run := Run{Format: Format, Digest: strings.Repeat("ab", 32)}
+	block := numberedFrom(6, []solver.Path{
+		{First: 1, Last: 2, Stop: solver.StopEntered, Violation: 1e-12, Gap: 2e-13, Twins: 1,
+			Entries:    []solver.Entry{{Candidate: 3, Step: 1, Negative: true}},
+			Coefs:      []solver.Coef{{Step: 1, Candidate: 3, Value: -0.25}, {Step: 2, Candidate: 3, Value: -0.5}},
+			Intercepts: []float64{3, 3.5}, Always: []float64{1, 2}, Still: []int32{0}},
+		{First: 1, Last: 0, Stop: solver.StopUncertified, Why: "constant outcome"},
+	})
+	whole := sha256.Sum256(encoded(t, run, block))
+	check(t, "bytes", hex.EncodeToString(whole[:]), "22af6e5024f6b0d0d8dc0d532f4324f5976a1c7c0e8682b8c3ad009c95ad4ede")
+	check(t, "draws", blockDigest(run.Digest, sumsOf(block)), "ca3ce2faf90f7573820836fe5956e924504943c8ebadc3b7b13ef8554fefeae5")
+}
+
+func check(t *testing.T, what, got, want string) {
+	t.Helper()
+	if got != want {
+		t.Errorf("%s: %s, not %s", what, got, want)
+	}
+}
+
+// decodeBytes reads a block from memory.
+func decodeBytes(run *Run, text []byte) ([]numbered, error) {
+	block, _, err := run.decodeBlock(bytes.NewReader(text), int64(len(text)))
+	return block, err
+}
+
+// Every bit that flips is found, or does not matter: the draws that come out
+// are the draws that went in.
+func TestFlippedBitsAreFound(t *testing.T) {
+	r := source(t)
+	run := hatcheryRun(t, 4).Run()
+	block := numberedFrom(0, randomPaths(r, 4))
+	text := encoded(t, run, block)
+	found := 0
+	for i := range text {
+		bit := byte(1) << r.IntN(8)
+		text[i] ^= bit
+		got, err := decodeBytes(&run, text)
+		text[i] ^= bit
+		if err != nil {
+			found++
+			continue
+		}
+		if len(got) != len(block) {
+			t.Fatalf("byte %d: %d draws came out, not %d", i, len(got), len(block))
+		}
+		for k := range got {
+			if got[k].number != block[k].number || !sameBits(got[k].path, block[k].path) {
+				t.Fatalf("byte %d, bit %08b: draw %d differs and nobody noticed", i, bit, block[k].number)
+			}
+		}
+	}
+	t.Logf("%d of %d flips found, the others harmless", found, len(text))
+	if found < len(text)*3/4 {
+		t.Errorf("only %d of %d flips found", found, len(text))
+	}
+}
+
+func TestTruncatedBlocksAreFound(t *testing.T) {
+	run := hatcheryRun(t, 4).Run()
+	text := encoded(t, run, numberedFrom(0, randomPaths(source(t), 4)))
+	for n := range text {
+		if _, err := decodeBytes(&run, text[:n]); err == nil {
+			t.Fatalf("%d of %d bytes were taken for a whole block", n, len(text))
+		}
+	}
+}
+
+// Without the digest of the pages (as if damage had also repaired it), the
+// decoder itself and the digest of the draws must find what changes a draw.
+func TestDigestOfDrawsFindsWhatPagesHide(t *testing.T) {
+	r := source(t)
+	run := hatcheryRun(t, 4).Run()
+	block := numberedFrom(0, randomPaths(r, 4))
+	text := encoded(t, run, block)
+	footer, err := footerStart(bytes.NewReader(text), int64(len(text)))
+	if err != nil {
+		t.Fatal(err)
+	}
+	old := sha256.Sum256(text[:footer])
+	for i := 4; i < int(footer); i += 3 {
+		bit := byte(1) << r.IntN(8)
+		changed := bytes.Clone(text)
+		changed[i] ^= bit
+		now := sha256.Sum256(changed[:footer])
+		changed = bytes.Replace(changed, []byte(hex.EncodeToString(old[:])), []byte(hex.EncodeToString(now[:])), 1)
+		got, err := decodeBytes(&run, changed)
+		if err != nil {
+			if strings.Contains(err.Error(), "digest of its pages") {
+				t.Fatalf("byte %d: the test did not repair the digest of the pages", i)
+			}
+			continue
+		}
+		for k := range got {
+			if !sameBits(got[k].path, block[k].path) {
+				t.Fatalf("byte %d, bit %08b: draw %d differs and nobody noticed", i, bit, block[k].number)
+			}
+		}
+	}
+}
+
+func TestBadBlocksAreRefused(t *testing.T) {
+	good := func() solver.Path {
+		return solver.Path{First: 0, Last: 1, Intercepts: []float64{1, 2}, Always: []float64{1, 2, 3, 4},
+			Entries: []solver.Entry{{Candidate: 1, Step: 0}}, Coefs: []solver.Coef{{Step: 0, Candidate: 1, Value: 1}, {Step: 1, Candidate: 1, Value: 2}}}
+	}
+	cases := map[string]func(*solver.Path){
+		"entry beyond the candidates": func(p *solver.Path) { p.Entries[0].Candidate = 6 },
+		"negative candidate":          func(p *solver.Path) { p.Entries[0].Candidate = -1 },
+		"entry before the first step": func(p *solver.Path) { p.Entries[0].Step = -1 },
+		"entered twice":               func(p *solver.Path) { p.Entries = append(p.Entries, solver.Entry{Candidate: 1, Step: 1}) },
+		"coefficient twice":           func(p *solver.Path) { p.Coefs[1].Step = 0 },
+		"coefficient after the last":  func(p *solver.Path) { p.Coefs[1].Step = 2 },
+		"intercepts short":            func(p *solver.Path) { p.Intercepts = p.Intercepts[:1] },
+		"always short":                func(p *solver.Path) { p.Always = p.Always[:3] },
+		"still out of order":          func(p *solver.Path) { p.Still = []int32{3, 3} },
+		"stop without meaning":        func(p *solver.Path) { p.Stop = 9 },
+		"absurd step":                 func(p *solver.Path) { p.Last = 1 << 40 },
+	}
+	d := hatcheryRun(t, 4)
+	if err := d.Put(0, []solver.Path{good()}); err != nil {
+		t.Fatalf("the good path: %v", err)
+	}
+	for name, spoil := range cases {
+		p := good()
+		spoil(&p)
+		if err := d.Put(1, []solver.Path{p}); err == nil {
+			t.Errorf("%s: written", name)
+		}
+	}
+	if err := d.Put(4, []solver.Path{good()}); err == nil {
+		t.Error("draw 4 of 4 was written")
+	}
+	if err := d.Put(0, nil); err == nil {
+		t.Error("an empty block was written")
+	}
+}
+
+func TestMissingDamagedForeignAndDoubleBlocks(t *testing.T) {
+	r := source(t)
+	d := hatcheryRun(t, 12)
+	paths := randomPaths(r, 12)
+	for first := 0; first < 12; first += 4 {
+		if err := d.Put(first, paths[first:first+4]); err != nil {
+			t.Fatal(err)
+		}
+	}
+	block := func(first int) string { return d.join(drawsFolder, blockName(first)) }
+	copyFile := func(from, to string) {
+		text, err := os.ReadFile(from)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if err := os.WriteFile(to, text, 0o644); err != nil {
+			t.Fatal(err)
+		}
+	}
+
+	// A draw that a second block holds with the same bits counts once.
+	if err := d.Put(2, paths[2:6]); err != nil {
+		t.Fatal(err)
+	}
+	draws, err := d.Draws()
+	if err != nil || len(draws) != 12 {
+		t.Fatalf("overlapping equal blocks: %d draws, %v", len(draws), err)
+	}
+	for i := range draws {
+		if draws[i].Number != i {
+			t.Fatalf("draw %d stands at place %d", draws[i].Number, i)
+		}
+	}
+
+	// One that differs is an error that names both files.
+	other := append([]solver.Path{}, paths[2:6]...)
+	other[0].Violation = 5e-11
+	if err := d.Put(2, other); err != nil {
+		t.Fatal(err)
+	}
+	_, err = d.Draws()
+	if err == nil || !strings.Contains(err.Error(), block(0)) || !strings.Contains(err.Error(), block(2)) {
+		t.Errorf("blocks that disagree: %v", err)
+	}
+	os.Remove(block(2))
+
+	// A block under another name is a copy that somebody made.
+	copyFile(block(4), block(5))
+	if _, err = d.Draws(); err == nil || !strings.Contains(err.Error(), block(5)) {
+		t.Errorf("renamed block: %v", err)
+	}
+	os.Remove(block(5))
+
+	// What is not finished, and what is no block, is no concern of ours.
+	copyFile(block(4), d.join(drawsFolder, tempName(blockName(4))))
+	copyFile(block(4), d.join(drawsFolder, "notes.txt"))
+	if draws, err = d.Draws(); err != nil || len(draws) != 12 {
+		t.Errorf("temporary files: %d draws, %v", len(draws), err)
+	}
+
+	// Damage and loss are listed, and what is whole is still read.
+	text, _ := os.ReadFile(block(4))
+	text[len(text)/3] ^= 4
+	os.WriteFile(block(4), text, 0o644)
+	os.Remove(block(8))
+	f, err := d.Read()
+	if err != nil {
+		t.Fatal(err)
+	}
+	if len(f.Draws) != 4 || len(f.Missing) != 8 || len(f.Damaged) != 1 || f.Damaged[0].Path != block(4) {
+		t.Errorf("damage: %d draws, missing %v, damaged %v", len(f.Draws), f.Missing, f.Damaged)
+	}
+	_, err = d.Draws()
+	if !errors.Is(err, ErrIncomplete) || !strings.Contains(err.Error(), block(4)) || !strings.Contains(err.Error(), "4-11") {
+		t.Errorf("damage: %v", err)
+	}
+
+	// A block of another run is named.
+	id := hatcheryIdentity()
+	id.Draws.Seed = 2
+	foreign, err := Create(filepath.Join(t.TempDir(), "other.run"), id, nil, hatcheryMeta(12))
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := foreign.SetDecision(hatcheryDecision()); err != nil {
+		t.Fatal(err)
+	}
+	if err := foreign.Put(8, paths[8:]); err != nil {
+		t.Fatal(err)
+	}
+	copyFile(foreign.join(drawsFolder, blockName(8)), block(8))
+	if _, err = d.Draws(); !errors.Is(err, ErrForeign) || !strings.Contains(err.Error(), block(8)) {
+		t.Errorf("foreign block: %v", err)
+	}
+}
+
+func TestBlockNames(t *testing.T) {
+	for _, first := range []int{0, 7, 999999, 1000000} {
+		if got, ok := blockNumber(blockName(first)); !ok || got != first {
+			t.Errorf("%s is read as %d, %v", blockName(first), got, ok)
+		}
+	}
+	for _, name := range []string{"block-1.parquet", "block-0000001.parquet", "block-+00001.parquet", "block-000001.parquet.bak", "block--00001.parquet", ""} {
+		if _, ok := blockNumber(name); ok {
+			t.Errorf("%q is taken for a block", name)
+		}
+	}
+}
