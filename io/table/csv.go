@@ -53,12 +53,11 @@ func inText(path string, err error) error {
 // header reads the first record and finds the separator.
 func (c *csvFile) header() ([]string, error) {
 	var names []string
-	b, err := openBlocks(c.path)
+	b, err := openBlocks(c.path, ',')
 	if err != nil {
 		return nil, err
 	}
 	defer b.close()
-	c.comma = ','
 	block, err := b.next(1)
 	if err == io.EOF {
 		return nil, damagedf("the file is empty")
@@ -68,6 +67,8 @@ func (c *csvFile) header() ([]string, error) {
 	}
 	line := firstRecord(block.data)
 	switch {
+	case len(line) == 0:
+		return nil, damagedf("the file is empty")
 	case bytes.HasPrefix(line, []byte("\xff\xfe")), bytes.HasPrefix(line, []byte("\xfe\xff")):
 		return nil, damagedf("the text is UTF-16: save it as UTF-8")
 	case bytes.IndexByte(line, 0) >= 0:
@@ -237,7 +238,7 @@ func (c *csvFile) fill(ctx context.Context, cols []int, out [][]float64, workers
 // blocks cuts the file into blocks of whole records and has them worked on at
 // the same time. It returns the number of rows.
 func (c *csvFile) blocks(ctx context.Context, workers int, work func(worker int, b csvBlock) error) (int64, error) {
-	in, err := openBlocks(c.path)
+	in, err := openBlocks(c.path, c.comma)
 	if err != nil {
 		return 0, err
 	}

@@ -26,6 +26,7 @@ type csvBlock struct {
 type csvBlocks struct {
 	in     *bufio.Reader
 	file   *os.File
+	comma  byte
 	carry  []byte // begin of a record whose end was not read yet
 	row    int64
 	line   int64
@@ -33,12 +34,12 @@ type csvBlocks struct {
 	spare  chan []byte
 }
 
-func openBlocks(path string) (*csvBlocks, error) {
+func openBlocks(path string, comma byte) (*csvBlocks, error) {
 	in, f, err := openText(path)
 	if err != nil {
 		return nil, err
 	}
-	return &csvBlocks{in: in, file: f, line: 1}, nil
+	return &csvBlocks{in: in, file: f, comma: comma, line: 1}, nil
 }
 
 func (b *csvBlocks) close() { b.file.Close() }
@@ -92,7 +93,7 @@ func (b *csvBlocks) next(least int) (csvBlock, error) {
 		}
 		if n == 0 && err == io.EOF {
 			if quotes&1 == 1 {
-				return csvBlock{}, damagedf("line %d: a quote is opened and never closed", b.line+int64(bytes.Count(data[:end], []byte{'\n'})))
+				return csvBlock{}, b.openQuote(data, end)
 			}
 			end = len(data)
 			break
@@ -106,6 +107,22 @@ func (b *csvBlocks) next(least int) (csvBlock, error) {
 	rows, lines := countRecords(block.data)
 	b.row, b.line = b.row+rows, b.line+lines
 	return block, nil
+}
+
+// openQuote explains a file whose quotes do not come in pairs: the record that
+// begins at end is never closed, or holds a quote that should be doubled.
+func (b *csvBlocks) openQuote(data []byte, end int) error {
+	line := b.line + int64(bytes.Count(data[:end], []byte{'\n'}))
+	f := csvFields{rest: data[end:], comma: b.comma}
+	for {
+		_, ok, err := f.next()
+		switch {
+		case err == errBareQuote:
+			return damagedf("line %d: %v", line, err)
+		case err != nil || !ok:
+			return damagedf("line %d: a quote is opened and never closed", line)
+		}
+	}
 }
 
 // read appends what is there, up to the room in the slice.

@@ -122,6 +122,9 @@ func (l *loading) path() string { return l.src.path }
 // choose finds the columns asked for and refuses what cannot be had.
 func (l *loading) choose(context.Context) error {
 	l.data = &Data{}
+	if err := l.checkRows(); err != nil {
+		return err
+	}
 	all := l.src.format.columns()
 	at := make(map[string]int, len(all))
 	for i, c := range all {
@@ -167,7 +170,7 @@ func (l *loading) choose(context.Context) error {
 			return err
 		}
 	}
-	return l.checkRows()
+	return checkMemory(l.path(), l.n, len(l.from), l.req.Memory)
 }
 
 // noCandidates explains a table or a request without candidates.
@@ -198,7 +201,7 @@ func (l *loading) checkRows() error {
 	default:
 		l.n = int(n)
 	}
-	return checkMemory(l.path(), l.n, len(l.from), l.req.Memory)
+	return nil
 }
 
 // read fills one block of memory, column after column.
