@@ -37,6 +37,7 @@ type report struct {
 	ModelTime  float64      `json:"model_seconds"`
 	FitTime    float64      `json:"fit_seconds"`
 	PerDraw    float64      `json:"seconds_per_draw"`
+	CPUPerDraw float64      `json:"cpu_seconds_per_draw"` // all workers together
 	PeakMemory int64        `json:"peak_bytes"`
 	LambdaMax  float64      `json:"lambda_max"`
 	Steps      int          `json:"steps"`
@@ -98,11 +99,12 @@ func (s settings) measure() (*report, error) {
 		return nil, err
 	}
 	r.ModelTime = lap(&start)
+	before := shape.CPUTime()
 	paths, err := s.fit(model)
 	if err != nil {
 		return nil, err
 	}
-	r.FitTime = lap(&start)
+	r.FitTime, r.CPUPerDraw = lap(&start), (shape.CPUTime()-before)/float64(s.draws)
 	r.PerDraw = r.FitTime / float64(s.draws)
 	r.LambdaMax, r.Steps = model.LambdaMax(), model.LastStep()+1
 	r.describe(paths, s.entries)

@@ -60,7 +60,7 @@ def fit(job):
     rows = np.load(os.path.join(a.dir, a.shape + "_rows.npy"))
     last = int(np.floor(np.log(a.floor) / np.log(a.ratio) + 1e-9))
     out = {"prepare": 0.0, "path": 0.0, "entries": {}, "unconverged": 0}
-    begin = time.perf_counter()
+    begin, cpu = time.perf_counter(), time.process_time()
     for d in draws:
         t0 = time.perf_counter()
         z, u = half(x, y, rows[d])
@@ -74,7 +74,7 @@ def fit(job):
         out["prepare"] += t1 - t0
         out["path"] += t2 - t1
         out["unconverged"] += sum(issubclass(w.category, ConvergenceWarning) for w in caught)
-    out["begin"], out["end"] = begin, time.perf_counter()
+    out["begin"], out["end"], out["cpu"] = begin, time.perf_counter(), time.process_time() - cpu
     out["peak"] = peak_memory()
     return out
 
@@ -106,6 +106,7 @@ def main():
     wall = max(p["end"] for p in parts) - min(p["begin"] for p in parts)
     result = {
         "workers": a.workers, "draws": a.draws, "fit_seconds": wall, "seconds_per_draw": wall / a.draws,
+        "cpu_seconds_per_draw": sum(p["cpu"] for p in parts) / a.draws,
         "prepare_seconds_per_draw": sum(p["prepare"] for p in parts) / a.draws,
         "path_seconds_per_draw": sum(p["path"] for p in parts) / a.draws,
         "peak_bytes": max(p["peak"] for p in parts), "not_converged": sum(p["unconverged"] for p in parts),

@@ -14,6 +14,7 @@ import (
 type ours struct {
 	ModelTime  float64      `json:"model_seconds"`
 	PerDraw    float64      `json:"seconds_per_draw"`
+	CPU        float64      `json:"cpu_seconds_per_draw"`
 	PeakMemory int64        `json:"peak_bytes"`
 	LambdaMax  float64      `json:"lambda_max"`
 	Steps      int          `json:"steps"`
@@ -28,6 +29,7 @@ type ours struct {
 // peer is what bench/peer/loop.py prints.
 type peer struct {
 	PerDraw      float64      `json:"seconds_per_draw"`
+	CPU          float64      `json:"cpu_seconds_per_draw"`
 	Prepare      float64      `json:"prepare_seconds_per_draw"`
 	Path         float64      `json:"path_seconds_per_draw"`
 	PeakMemory   int64        `json:"peak_bytes"`

@@ -6,6 +6,7 @@ import (
 	"io"
 	"os"
 	"runtime"
+	"slices"
 	"strings"
 )
 
@@ -41,13 +42,14 @@ func processor() string {
 // printTimes compares seconds per draw. Intervals cover the median with at
 // least 95 %.
 func printTimes(w io.Writer, results []result) {
-	fmt.Fprintln(w, "| case | steps | workers | ours, ms per draw | scikit-learn, ms per draw | ratio of medians | p | our peak MB | its peak MB |")
+	fmt.Fprintln(w, "| case | steps | workers | ours, ms per draw | scikit-learn, ms per draw | ratio of medians | p | CPU ms per draw: ours, its | peak MB: ours, its |")
 	fmt.Fprintln(w, "|---|---|---|---|---|---|---|---|---|")
 	for _, r := range results {
 		for _, n := range allWorkers {
-			a, b := perDraw(r.ours[n]), perDrawPeer(r.peer[n])
-			fmt.Fprintf(w, "| %v | %d | %d | %s | %s | %.1f | %.1g | %.0f | %.0f |\n", r.of, r.check.ours.Steps, n, spread(a), spread(b),
-				median(b)/median(a), mannWhitney(a, b), ourPeak(r.ours[n]), peerPeak(r.peer[n]))
+			a, b := times(r.ours[n], ours.wall), times(r.peer[n], peer.wall)
+			fmt.Fprintf(w, "| %v | %d | %d | %s | %s | %.1f | %.1g | %s, %s | %.0f, %.0f |\n", r.of, r.check.ours.Steps, n, spread(a), spread(b),
+				median(b)/median(a), mannWhitney(a, b), digits(median(times(r.ours[n], ours.cpu))), digits(median(times(r.peer[n], peer.cpu))),
+				slices.Max(times(r.ours[n], ours.megabytes)), slices.Max(times(r.peer[n], peer.megabytes)))
 		}
 	}
 	fmt.Fprintln(w)
@@ -59,13 +61,12 @@ func printPeer(w io.Writer, results []result) {
 	fmt.Fprintln(w, "| case | scikit-learn: copy and standardise, ms per draw | lasso_path alone, ms per draw | lasso_path alone over ours | not converged |")
 	fmt.Fprintln(w, "|---|---|---|---|---|")
 	for _, r := range results {
-		var prepare, path []float64
+		prepare, path := times(r.peer[1], peer.prepare), times(r.peer[1], peer.path)
 		failed := 0
 		for _, p := range r.peer[1] {
-			prepare, path = append(prepare, 1000*p.Prepare), append(path, 1000*p.Path)
 			failed += p.NotConverged
 		}
-		fmt.Fprintf(w, "| %v | %s | %s | %.1f | %d |\n", r.of, spread(prepare), spread(path), median(path)/median(perDraw(r.ours[1])), failed)
+		fmt.Fprintf(w, "| %v | %s | %s | %.1f | %d |\n", r.of, spread(prepare), spread(path), median(path)/median(times(r.ours[1], ours.wall)), failed)
 	}
 	fmt.Fprintln(w)
 }
@@ -80,10 +81,7 @@ func printChecks(w io.Writer, results []result) {
 		if r.check.tolerances[1] {
 			different += fmt.Sprintf(" (%d at tolerance %g)", r.check.tight, tightTolerance)
 		}
-		var model []float64
-		for _, run := range r.ours[1] {
-			model = append(model, run.ModelTime)
-		}
+		model := times(r.ours[1], func(run ours) float64 { return run.ModelTime })
 		fmt.Fprintf(w, "| %v | %d in %d draws | %s | %.1g | %.1g | %d | %d | %.2f | %.0f %% |\n", r.of, r.check.entries, r.check.draws, different, o.Violation,
 			o.Gap, o.Failed, o.Borderline, median(model), 100*r.share)
 	}
@@ -96,44 +94,30 @@ func printRuns(w io.Writer, results []result) {
 	fmt.Fprintln(w)
 	for _, r := range results {
 		for _, n := range allWorkers {
-			fmt.Fprintf(w, "- %v, workers %d: ours %s; scikit-learn %s\n", r.of, n, list(perDraw(r.ours[n])), list(perDrawPeer(r.peer[n])))
+			fmt.Fprintf(w, "- %v, workers %d: ours %s; scikit-learn %s\n", r.of, n, list(times(r.ours[n], ours.wall)), list(times(r.peer[n], peer.wall)))
 		}
 	}
 }
 
-func perDraw(runs []ours) []float64 {
+// times takes one figure of every run.
+func times[R any](runs []R, of func(R) float64) []float64 {
 	var out []float64
 	for _, r := range runs {
-		out = append(out, 1000*r.PerDraw)
+		out = append(out, of(r))
 	}
 	return out
 }
 
-func perDrawPeer(runs []peer) []float64 {
-	var out []float64
-	for _, r := range runs {
-		out = append(out, 1000*r.PerDraw)
-	}
-	return out
-}
-
-// ourPeak and peerPeak are the largest of the runs, in MB of 10^6 bytes; with
-// several processes that of the largest process.
-func ourPeak(runs []ours) float64 {
-	peak := int64(0)
-	for _, r := range runs {
-		peak = max(peak, r.PeakMemory)
-	}
-	return float64(peak) / 1e6
-}
-
-func peerPeak(runs []peer) float64 {
-	peak := int64(0)
-	for _, r := range runs {
-		peak = max(peak, r.PeakMemory)
-	}
-	return float64(peak) / 1e6
-}
+// Milliseconds per draw, and peak memory in MB of 10^6 bytes: of the largest
+// process where there are several.
+func (r ours) wall() float64      { return 1000 * r.PerDraw }
+func (r ours) cpu() float64       { return 1000 * r.CPU }
+func (r ours) megabytes() float64 { return float64(r.PeakMemory) / 1e6 }
+func (r peer) wall() float64      { return 1000 * r.PerDraw }
+func (r peer) cpu() float64       { return 1000 * r.CPU }
+func (r peer) prepare() float64   { return 1000 * r.Prepare }
+func (r peer) path() float64      { return 1000 * r.Path }
+func (r peer) megabytes() float64 { return float64(r.PeakMemory) / 1e6 }
 
 // spread is the median with its interval.
 func spread(x []float64) string {

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"os"
 	"strings"
+	"syscall"
 )
 
 // PeakMemory returns the largest resident size that this process has had, in
@@ -22,4 +23,14 @@ func PeakMemory() (int64, error) {
 		}
 	}
 	return 0, errors.New("shape: peak memory: the kernel does not record it")
+}
+
+// CPUTime returns the seconds of processor time that this process has used,
+// which is what a run costs on a machine that others use too.
+func CPUTime() float64 {
+	var u syscall.Rusage
+	if err := syscall.Getrusage(syscall.RUSAGE_SELF, &u); err != nil {
+		panic(err) // the arguments are constants that the kernel knows
+	}
+	return float64(u.Utime.Nano()+u.Stime.Nano()) / 1e9
 }
