@@ -1,0 +1,195 @@
+package main
+
+import (
+	"context"
+
+	"github.com/spf13/cobra"
+
+	"holdfast/io/study"
+	"holdfast/io/table"
+	"holdfast/solver"
+)
+
+// inspectOptions is what `inspect` is told beside the question.
+type inspectOptions struct {
+	quick  bool
+	asJSON bool
+}
+
+func (p *program) inspectCommand() *cobra.Command {
+	var q question
+	var o inspectOptions
+	c := &cobra.Command{
+		Use:   "inspect TABLE|STUDY [--outcome COL] [--quick]",
+		Short: "what a table holds, and what of it would mislead or be refused",
+		Long: `inspect reads a table and says what it holds: kinds, missing values, constant
+columns, copies, columns that are nearly the same, and, with an outcome, what
+looks like the outcome in other clothes. For a study it also says whether a run
+would be refused.`,
+		Example: "  holdfast demo demo\n  holdfast inspect demo/hatchery.parquet --outcome survival_d21",
+		Args:    exactly("TABLE"),
+	}
+	f := c.Flags()
+	q.addFlags(f)
+	f.BoolVar(&o.quick, "quick", false, "do not compare columns with each other")
+	f.BoolVar(&o.asJSON, "json", false, "print JSON, with figures for every column")
+	c.RunE = func(c *cobra.Command, args []string) error {
+		q.path = args[0]
+		return p.inspect(c.Context(), q, o)
+	}
+	return c
+}
+
+// inspection is what was found in a table.
+type inspection struct {
+	path     string
+	summary  *table.Summary
+	flags    []study.Flag
+	quick    bool
+	copies   []likeness
+	near     []likeness
+	refusals []string // why a run would be refused
+	decision string   // what a run would decide, for a study that can be run
+}
+
+// likeness is a column that says the same as another one, or nearly.
+type likeness struct {
+	Column string  `json:"column"`
+	Of     string  `json:"of"`
+	R      float64 `json:"r"`
+}
+
+// inspect looks at a table and prints what it found. What a run would refuse
+// is a finding here, not a failure.
+func (p *program) inspect(ctx context.Context, q question, o inspectOptions) error {
+	i := &inspection{quick: o.quick}
+	source, err := i.openFor(&q)
+	if err != nil {
+		return err
+	}
+	i.path = source.Path()
+	if i.summary, err = source.Scan(ctx, q.outcome); err != nil {
+		return wrong(err, "")
+	}
+	if q.outcome != "" {
+		facts := factsOf(i.summary)
+		facts.Path = i.path
+		if i.flags, err = facts.Flags(); err != nil {
+			i.refuse(err)
+		}
+	}
+	if isStudy(q.path) {
+		q.outcome = ""
+		if err := i.tryStudy(ctx, q); err != nil {
+			return err
+		}
+	}
+	if !o.quick {
+		if err := p.compare(ctx, source, i); err != nil {
+			return err
+		}
+	}
+	if o.asJSON {
+		return p.writeJSON(i.document())
+	}
+	return p.printInspection(i)
+}
+
+// openFor opens the table of a question; of a study it takes the outcome.
+func (i *inspection) openFor(q *question) (*table.Source, error) {
+	path := q.path
+	if isStudy(q.path) {
+		if q.outcome != "" {
+			_, err := q.openStudy()
+			return nil, err
+		}
+		s, err := study.Read(q.path, q.sets)
+		if err != nil {
+			return nil, wrong(err, "")
+		}
+		path, q.outcome = s.TablePath(), s.Outcome.Column
+	} else if len(q.sets) > 0 {
+		return nil, misuse("holdfast inspect: --set goes with a study, and "+q.path+" is a table", "holdfast draft makes a study for it")
+	}
+	source, err := table.Open(path)
+	return source, wrong(err, "")
+}
+
+// tryStudy does what a run does before its first fit.
+func (i *inspection) tryStudy(ctx context.Context, q question) error {
+	a, err := q.openStudy()
+	if err != nil {
+		return i.found(ctx, err)
+	}
+	l, err := a.load(ctx, 0)
+	if err != nil {
+		return i.found(ctx, err)
+	}
+	s, err := l.settle()
+	if err != nil {
+		return i.found(ctx, err)
+	}
+	i.decision = inWords(s.decision)
+	return nil
+}
+
+// found takes an error of the table or the study as a finding; one of the
+// machine stays an error.
+func (i *inspection) found(ctx context.Context, err error) error {
+	if exitCode(ctx, err) != exitWrong {
+		return err
+	}
+	i.refuse(err)
+	return nil
+}
+
+func (i *inspection) refuse(err error) { i.refusals = append(i.refusals, err.Error()) }
+
+// compare finds copies and columns that are nearly the same.
+func (p *program) compare(ctx context.Context, source *table.Source, i *inspection) error {
+	names := comparable(i.summary)
+	if len(names) < 2 {
+		return nil
+	}
+	data, err := source.Load(ctx, table.Request{Candidates: names, Missing: table.FillMean})
+	if err != nil {
+		return wrong(err, "holdfast inspect --quick does not compare columns")
+	}
+	all := make([]int32, len(data.Candidates))
+	for j := range all {
+		all[j] = int32(j)
+	}
+	found, err := solver.Examine(ctx, data.X, all)
+	if err != nil {
+		return wrong(err, "")
+	}
+	out := map[int32]bool{}
+	for _, j := range found.Constant {
+		out[j] = true
+	}
+	for _, c := range found.Copies {
+		out[c.Col] = true
+		i.copies = append(i.copies, likeness{data.Candidates[c.Col], data.Candidates[c.Of], 1})
+	}
+	var rest []int32
+	for _, j := range all {
+		if !out[j] {
+			rest = append(rest, j)
+		}
+	}
+	p.tellPairs(len(rest), data.TableRows)
+	i.near, err = nearlySame(ctx, data, rest)
+	return err
+}
+
+// comparable names the columns that can be compared: numeric, not constant,
+// without infinite values, not the outcome.
+func comparable(s *table.Summary) []string {
+	var names []string
+	for _, c := range s.Columns {
+		if c.Usable && c.Distinct > 1 && c.Infinite == 0 && c.Name != s.Outcome {
+			names = append(names, c.Name)
+		}
+	}
+	return names
+}

@@ -1,0 +1,258 @@
+package main
+
+import (
+	"fmt"
+	"slices"
+	"strings"
+	"text/tabwriter"
+
+	"holdfast/io/table"
+)
+
+// printInspection prints an inspection for people.
+func (p *program) printInspection(i *inspection) error {
+	fmt.Fprintf(p.out, "%s: %d rows, %d columns\n\n", oneLine(i.path), i.summary.Rows, len(i.summary.Columns))
+	w := tabwriter.NewWriter(p.out, 0, 0, 2, ' ', 0)
+	line := func(label, text string) {
+		if text == "" {
+			text = "none"
+		}
+		fmt.Fprintf(w, "%s\t%s\n", label, oneLine(text))
+	}
+	line("kinds", i.kinds())
+	line("not usable", listed(i.columns(func(c table.ColumnSummary) string { return unless(c.Usable, c.Reason) })))
+	line("missing", listed(i.columns(gaps)))
+	line("constant", listed(i.columns(func(c table.ColumnSummary) string { return unless(!c.Constant, fmt.Sprintf("%.6g", c.Min)) })))
+	line("look like labels", listed(i.columns(label)))
+	line("rounded", listed(i.columns(func(c table.ColumnSummary) string {
+		return unless(c.Rounded == 0, fmt.Sprintf("%d integers too large for an exact number", c.Rounded))
+	})))
+	if i.quick {
+		line("copies", "not looked for (--quick)")
+		line("nearly the same", "not looked for (--quick)")
+	} else {
+		line("copies", listed(likenesses(i.copies, false)))
+		line("nearly the same", listed(likenesses(i.near, true)))
+	}
+	i.printOutcome(line)
+	if err := w.Flush(); err != nil {
+		return err
+	}
+	p.printFindings(i)
+	return nil
+}
+
+// printOutcome describes the outcome and what looks like it.
+func (i *inspection) printOutcome(line func(label, text string)) {
+	if i.summary.Outcome == "" {
+		line("outcome", "not said (--outcome COLUMN)")
+		return
+	}
+	for _, c := range i.summary.Columns {
+		if c.Name == i.summary.Outcome {
+			line("outcome", fmt.Sprintf("%s: %.4g to %.4g, mean %.4g, standard deviation %.4g", c.Name, c.Min, c.Max, c.Mean, c.SD))
+		}
+	}
+	line("suspected leaks", listed(i.columns(func(c table.ColumnSummary) string {
+		return unless(!c.Leak || c.Name == i.summary.Outcome, fmt.Sprintf("r = %.3f", c.Correlation))
+	})))
+}
+
+// printFindings prints what a draft would say and what would be refused.
+func (p *program) printFindings(i *inspection) {
+	if len(i.flags) > 0 {
+		fmt.Fprintln(p.out, "\na draft says:")
+	}
+	for k, f := range i.flags {
+		if k == mostFlags {
+			fmt.Fprintf(p.out, "  and %d more; --json lists all\n", len(i.flags)-mostFlags)
+			break
+		}
+		text := f.Text
+		if f.Column != "" {
+			text = f.Column + ": " + text
+		}
+		if f.Left {
+			text += " (left out)"
+		}
+		fmt.Fprintln(p.out, "  "+oneLine(text))
+	}
+	if i.decision != "" {
+		fmt.Fprintf(p.out, "\na run would decide: %s\n", i.decision)
+	}
+	for _, r := range i.refusals {
+		fmt.Fprintf(p.out, "\na run would be refused: %s\n", oneLine(r))
+	}
+}
+
+// mostFlags is how many lines of a draft are shown.
+const mostFlags = 20
+
+// columns lists the columns for which about says something.
+func (i *inspection) columns(about func(table.ColumnSummary) string) []string {
+	var list []string
+	for _, c := range i.summary.Columns {
+		if text := about(c); text != "" {
+			list = append(list, c.Name+" ("+text+")")
+		}
+	}
+	return list
+}
+
+// unless is text, or nothing where fine.
+func unless(fine bool, text string) string {
+	if fine {
+		return ""
+	}
+	return text
+}
+
+// kinds counts the columns of each kind.
+func (i *inspection) kinds() string {
+	count := map[table.Kind]int{}
+	for _, c := range i.summary.Columns {
+		count[c.Kind]++
+	}
+	var words []string
+	for k := table.Number; k <= table.Empty; k++ {
+		if count[k] > 0 {
+			words = append(words, fmt.Sprintf("%d %s", count[k], k))
+		}
+	}
+	return strings.Join(words, ", ")
+}
+
+// gaps says what is missing in a column.
+func gaps(c table.ColumnSummary) string {
+	var words []string
+	for _, g := range []struct {
+		n    int64
+		word string
+	}{{c.Missing, "missing"}, {c.NaN, "not a number"}, {c.Infinite, "infinite"}} {
+		if g.n > 0 {
+			words = append(words, fmt.Sprintf("%d %s", g.n, g.word))
+		}
+	}
+	return strings.Join(words, ", ")
+}
+
+// label says why a column of numbers looks like a label and no measurement.
+func label(c table.ColumnSummary) string {
+	switch {
+	case !c.Usable:
+		return ""
+	case c.RowNumber:
+		return "counts the rows"
+	case c.Dates != "":
+		return c.Dates
+	case c.Unique && c.Monotone:
+		return "whole numbers in the order of the rows, none twice"
+	case c.Unique:
+		return "whole numbers, none twice"
+	}
+	return ""
+}
+
+// likenesses lists pairs, with their correlation where it says something.
+func likenesses(list []likeness, withR bool) []string {
+	list = slices.Clone(list)
+	slices.SortStableFunc(list, func(a, b likeness) int { return byStrength(a.R, b.R) })
+	words := make([]string, len(list))
+	for k, l := range list {
+		words[k] = l.Column + " (of " + l.Of + ")"
+		if withR {
+			words[k] = fmt.Sprintf("%s and %s (r = %.3f)", l.Column, l.Of, l.R)
+		}
+	}
+	return words
+}
+
+// byStrength orders correlations by size, largest first.
+func byStrength(a, b float64) int {
+	switch a, b = max(a, -a), max(b, -b); {
+	case a > b:
+		return -1
+	case a < b:
+		return 1
+	}
+	return 0
+}
+
+// listed joins words, as far as a line goes.
+func listed(words []string) string {
+	if more := len(words) - mostListed; more > 0 {
+		words = append(slices.Clone(words[:mostListed]), fmt.Sprintf("and %d more; --json lists all", more))
+	}
+	return strings.Join(words, ", ")
+}
+
+// columnJSON is a column in `inspect --json`; null where a figure does not
+// exist.
+type columnJSON struct {
+	Name        string   `json:"column"`
+	Type        string   `json:"type"`
+	Kind        string   `json:"kind"`
+	Usable      bool     `json:"usable"`
+	Reason      string   `json:"reason,omitempty"`
+	Missing     int64    `json:"missing"`
+	NaN         int64    `json:"nan"`
+	Infinite    int64    `json:"infinite"`
+	Rounded     int64    `json:"rounded"`
+	Constant    bool     `json:"constant"`
+	Label       string   `json:"label,omitempty"`
+	Min         *float64 `json:"min"`
+	Max         *float64 `json:"max"`
+	Mean        *float64 `json:"mean"`
+	SD          *float64 `json:"sd"`
+	Correlation *float64 `json:"outcome_correlation"`
+	AUC         *float64 `json:"outcome_auc"`
+	Leak        bool     `json:"leak"`
+}
+
+// flagJSON is a line of what a draft says.
+type flagJSON struct {
+	Kind   string `json:"kind"`
+	Column string `json:"column"`
+	Text   string `json:"text"`
+	Left   bool   `json:"left_out"`
+}
+
+// document is what `inspect --json` prints.
+func (i *inspection) document() any {
+	columns := make([]columnJSON, len(i.summary.Columns))
+	for k, c := range i.summary.Columns {
+		columns[k] = columnJSON{
+			Name: c.Name, Type: c.Type, Kind: c.Kind.String(), Usable: c.Usable, Reason: c.Reason,
+			Missing: c.Missing, NaN: c.NaN, Infinite: c.Infinite, Rounded: c.Rounded,
+			Constant: c.Constant, Label: label(c),
+			Min: defined(c.Min), Max: defined(c.Max), Mean: defined(c.Mean), SD: defined(c.SD),
+			Correlation: defined(c.Correlation), AUC: defined(c.AUC), Leak: c.Leak && c.Name != i.summary.Outcome,
+		}
+	}
+	flags := make([]flagJSON, len(i.flags))
+	for k, f := range i.flags {
+		flags[k] = flagJSON{f.Kind.String(), f.Column, f.Text, f.Left}
+	}
+	return struct {
+		Table    string       `json:"table"`
+		Rows     int64        `json:"rows"`
+		Outcome  string       `json:"outcome"`
+		Columns  []columnJSON `json:"columns"`
+		Compared bool         `json:"compared"`
+		Copies   []likeness   `json:"copies"`
+		Near     []likeness   `json:"nearly_the_same"`
+		Flags    []flagJSON   `json:"flags"`
+		Refused  []string     `json:"refused"`
+	}{
+		i.path, i.summary.Rows, i.summary.Outcome, columns, !i.quick,
+		some(i.copies), some(i.near), flags, some(i.refusals),
+	}
+}
+
+// some makes an empty list of none, so that JSON has [] and not null.
+func some[T any](list []T) []T {
+	if list == nil {
+		return []T{}
+	}
+	return list
+}

@@ -1,0 +1,81 @@
+package main
+
+import (
+	"bufio"
+	"context"
+	"fmt"
+
+	"github.com/spf13/cobra"
+
+	"holdfast/resample"
+)
+
+func (p *program) rowsCommand() *cobra.Command {
+	var q question
+	var draw int
+	var asJSON bool
+	c := &cobra.Command{
+		Use:   "rows STUDY|TABLE --draw D [--outcome COL]",
+		Short: "the rows of a draw, so that anyone can check a frequency",
+		Long: `rows prints which rows of the table a draw holds and how often: their positions
+in the table as read, from 0. Draws are numbered from 0; draws 2k and 2k+1 are
+the two halves of pair k.`,
+		Example: "  holdfast demo demo\n  holdfast rows demo/study.toml --draw 0",
+		Args:    exactly("STUDY"),
+	}
+	f := c.Flags()
+	q.addFlags(f)
+	f.IntVar(&draw, "draw", 0, "number of the draw, from 0")
+	f.BoolVar(&asJSON, "json", false, "print JSON")
+	c.RunE = func(c *cobra.Command, args []string) error {
+		q.path = args[0]
+		if !c.Flags().Changed("draw") {
+			return misuse("holdfast rows: --draw is missing", "--draw 0 is the first")
+		}
+		return p.rows(c.Context(), q, draw, asJSON)
+	}
+	return c
+}
+
+// rows prints the rows of one draw.
+func (p *program) rows(ctx context.Context, q question, draw int, asJSON bool) error {
+	a, err := q.open(ctx)
+	if err != nil {
+		return err
+	}
+	l, err := a.load(ctx, 0)
+	if err != nil {
+		return err
+	}
+	p.tellDraft(a)
+	plan, err := l.plan()
+	if err != nil {
+		return err
+	}
+	if draw < 0 || draw >= plan.Number {
+		return misuse(fmt.Sprintf("holdfast rows: --draw %d: the study has draws 0 to %d", draw, plan.Number-1), "")
+	}
+	list := []drawnRow{}
+	for i, count := range resample.Drawn(plan.Sample(draw)) {
+		row := i
+		if l.data.Rows != nil {
+			row = int(l.data.Rows[i])
+		}
+		list = append(list, drawnRow{row, count})
+	}
+	if asJSON {
+		return p.writeJSON(list)
+	}
+	w := bufio.NewWriter(p.out)
+	fmt.Fprintln(w, "row,count")
+	for _, r := range list {
+		fmt.Fprintf(w, "%d,%d\n", r.Row, r.Count)
+	}
+	return w.Flush()
+}
+
+// drawnRow is a row of a draw: its position in the table as read.
+type drawnRow struct {
+	Row   int `json:"row"`
+	Count int `json:"count"`
+}

@@ -1,0 +1,99 @@
+package main
+
+import (
+	"fmt"
+	"io"
+	"math"
+	"path/filepath"
+	"slices"
+
+	"holdfast/io/report"
+	"holdfast/io/rundir"
+	"holdfast/selection"
+)
+
+// info is what a report says beside the judgement.
+func (j *judged) info(v view) report.Info {
+	i := report.Info{
+		Outcome: j.run.Identity.Outcome, Kind: j.run.Identity.Kind,
+		Record: j.run.Decision, PerSD: v.perSD,
+		Full: filepath.Join(j.dir.Path(), "stability.csv"),
+	}
+	if j.explored && !j.saved {
+		i.Full = "--json, or --save"
+	}
+	for _, e := range j.run.Meta.Excluded {
+		if e.Of != "" {
+			i.Copies = append(i.Copies, report.Copy{Name: e.Column, Of: e.Of})
+		}
+	}
+	return i
+}
+
+// seen is the judgement in the units that the view asks for.
+func (j *judged) seen(v view) *selection.Judgement {
+	if v.perSD {
+		return j.judgement.PerSD()
+	}
+	return j.judgement
+}
+
+// show prints a judgement: for people, or for programs with the warnings on
+// stderr.
+func (p *program) show(j *judged, v view) error {
+	if !v.asJSON {
+		return report.Text(p.out, j.seen(v), j.info(v), width(p.out), colour(p.out))
+	}
+	if err := report.JSON(p.out, j.seen(v), j.info(v)); err != nil {
+		return err
+	}
+	if j.explored {
+		fmt.Fprintln(p.err, "warning: explored after seeing the result: the decision of record is "+inWords(*j.run.Decision))
+	}
+	for _, w := range slices.Concat(j.judgement.Warnings, j.judgement.Decision.Notes) {
+		fmt.Fprintln(p.err, "warning: "+oneLine(w))
+	}
+	return nil
+}
+
+// resultFile is a file of the run directory that a judgement writes.
+type resultFile struct {
+	name  string
+	write func(io.Writer) error
+}
+
+// tables are the tables of the run directory. Coefficients are in the columns'
+// own units, whatever is shown.
+func (j *judged) tables() []resultFile {
+	return []resultFile{
+		{"stability.csv", func(w io.Writer) error { return report.WriteStabilityCSV(w, j.judgement, false) }},
+		{"stability.parquet", func(w io.Writer) error { return report.WriteStabilityParquet(w, j.judgement) }},
+		{"paths.parquet", func(w io.Writer) error { return report.WritePaths(w, j.judgement, lambdaOf(j.run)) }},
+		{"terms.parquet", func(w io.Writer) error { return report.WriteTerms(w, nil) }},
+	}
+}
+
+// writeSpreadsheet writes the stability table so that no name in it is taken
+// for a formula.
+func (j *judged) writeSpreadsheet(w io.Writer, v view) error {
+	return report.WriteStabilityCSV(w, j.seen(v), true)
+}
+
+// lambdaOf returns the lambda of each lattice step of a run, lambda_max times
+// ratio to the step, by repeated squaring with every product rounded once: to
+// the bit what the fits had (a test compares them).
+func lambdaOf(run rundir.Run) func(step int) float64 {
+	return func(step int) float64 {
+		power, square := 1.0, run.Identity.Penalty.Ratio
+		for n := int(math.Abs(float64(step))); n > 0; n >>= 1 {
+			if n&1 == 1 {
+				power = float64(power * square)
+			}
+			square = float64(square * square)
+		}
+		if step < 0 {
+			return run.Meta.LambdaMax / power
+		}
+		return float64(run.Meta.LambdaMax * power)
+	}
+}

@@ -1,0 +1,124 @@
+package main
+
+import (
+	"context"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"github.com/spf13/pflag"
+
+	"holdfast/io/study"
+	"holdfast/io/table"
+)
+
+// question is what a command was asked to work on: STUDY, or TABLE with an
+// outcome.
+type question struct {
+	path    string
+	outcome string
+	sets    []string
+}
+
+// addFlags adds the flags that go with STUDY|TABLE.
+func (q *question) addFlags(f *pflag.FlagSet) {
+	f.StringVar(&q.outcome, "outcome", "", "with a table in place of a study: the outcome's column")
+	f.StringArrayVar(&q.sets, "set", nil, "override a key of the study: section.key=value (repeatable)")
+}
+
+// asked is a question with its study read and its table opened.
+type asked struct {
+	question
+	study   *study.Study
+	source  *table.Source
+	drafted []byte // text of the study where it was drafted for a table
+}
+
+// isStudy reports whether path names a study file and not a table.
+func isStudy(path string) bool { return strings.EqualFold(filepath.Ext(path), ".toml") }
+
+// open reads the study, or drafts one for a table, and opens the table.
+func (q question) open(ctx context.Context) (*asked, error) {
+	if isStudy(q.path) {
+		return q.openStudy()
+	}
+	return q.openTable(ctx)
+}
+
+func (q question) openStudy() (*asked, error) {
+	if q.outcome != "" {
+		return nil, misuse("holdfast: --outcome goes with a table, and "+q.path+" is a study",
+			"--set outcome.column="+q.outcome+" changes the study's outcome")
+	}
+	s, err := study.Read(q.path, q.sets)
+	if err != nil {
+		return nil, wrong(err, "")
+	}
+	if err := s.CheckReady(); err != nil {
+		return nil, wrong(err, "")
+	}
+	source, err := table.Open(s.TablePath())
+	if err != nil {
+		return nil, wrong(err, "")
+	}
+	return &asked{question: q, study: s, source: source}, nil
+}
+
+func (q question) openTable(ctx context.Context) (*asked, error) {
+	if q.outcome == "" {
+		return nil, misuse("holdfast: "+q.path+" is a table, so the outcome's column must be said",
+			"add --outcome COLUMN, or give a study file (.toml)")
+	}
+	text, source, err := q.draft(ctx, filepath.Dir(q.path))
+	if err != nil {
+		return nil, err
+	}
+	// The draft stands beside the table, under a name that no file needs to
+	// have.
+	s, err := study.Parse(filepath.Join(filepath.Dir(q.path), q.name()+".toml"), text, q.sets)
+	if err != nil {
+		return nil, wrong(err, "")
+	}
+	if err := s.CheckReady(); err != nil {
+		return nil, wrong(err, "")
+	}
+	return &asked{question: q, study: s, source: source, drafted: text}, nil
+}
+
+// name is the file name of the study or table without its ending.
+func (q question) name() string {
+	base := filepath.Base(filepath.Clean(q.path))
+	base = strings.TrimSuffix(base, ".gz")
+	if info, err := os.Stat(q.path); err == nil && info.IsDir() {
+		return base
+	}
+	if name := strings.TrimSuffix(base, filepath.Ext(base)); name != "" {
+		return name
+	}
+	return base
+}
+
+// runPath is NAME.run beside the study or table.
+func (q question) runPath() string {
+	return filepath.Join(filepath.Dir(filepath.Clean(q.path)), q.name()+".run")
+}
+
+// columns are the table's columns in the words of package study.
+func (a *asked) columns() []study.Column {
+	var cols []study.Column
+	for _, c := range a.source.Columns() {
+		cols = append(cols, study.Column{Name: c.Name, Usable: c.Usable, Reason: c.Reason})
+	}
+	return cols
+}
+
+// policy is the study's rule for missing values in the words of package table.
+func policy(m study.Missing) table.Policy {
+	switch m {
+	case study.DropRows:
+		return table.DropRows
+	case study.FillMean:
+		return table.FillMean
+	}
+	return table.Refuse
+}
