@@ -35,19 +35,23 @@ func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 		}
 		if weak := r.weak(f); len(weak) > 0 {
 			redone = true
+			f.dropResidual(r.u)
 			support = slices.DeleteFunc(support, func(c choice) bool { return slices.Contains(weak, c.place) })
 			continue
 		}
 		v := f.judge(r)
 		if len(v.fresh) > 0 {
+			f.dropResidual(r.u)
 			return v.fresh, nil
 		}
 		redone = redone || v.border
 		if v.moved {
+			f.dropResidual(r.u)
 			continue
 		}
 		if v.violator != nil {
 			redone = true
+			f.dropResidual(r.u)
 			support = append(support, *v.violator)
 			continue
 		}
@@ -218,6 +222,7 @@ func (f *fitting) screened(c int32, sum float64) float64 {
 
 // take makes a record the certified step, and hands it on.
 func (f *fitting) take(r *record, twins [][2]int, redone bool) {
+	f.dropResidual(f.rec.u)
 	f.rec = r
 	list := f.chosen(r, twins)
 	if f.path != nil && redone {

@@ -128,7 +128,7 @@ func (r *record) solve(f *fitting) {
 		r.beta[k] = w.c[i] - r.sign[k]*p.threshold(w.units[i], r.lambda)
 	}
 	r.chol.solve(r.beta)
-	r.u = make([]float64, len(f.d.rows))
+	r.u = f.residual()
 	r.grad = make([]float64, len(r.members))
 	r.score(f)
 	best := r.worst(f)
@@ -137,15 +137,31 @@ func (r *record) solve(f *fitting) {
 			return
 		}
 		trial := *r
-		trial.beta, trial.u, trial.grad = trial.corrected(f), make([]float64, len(r.u)), make([]float64, len(r.grad))
+		trial.beta, trial.u, trial.grad = trial.corrected(f), f.residual(), make([]float64, len(r.grad))
 		trial.score(f)
 		now := trial.worst(f)
 		if !(now < best) {
+			f.dropResidual(trial.u)
 			return
 		}
+		f.dropResidual(r.u)
 		*r, best = trial, now
 	}
 }
+
+// residual returns a buffer for a record's residual, of an earlier record where
+// one has been dropped.
+func (f *fitting) residual() []float64 {
+	n := len(f.spareU)
+	if n == 0 {
+		return make([]float64, len(f.d.rows))
+	}
+	u := f.spareU[n-1]
+	f.spareU = f.spareU[:n-1]
+	return resize(u, len(f.d.rows))
+}
+
+func (f *fitting) dropResidual(u []float64) { f.spareU = append(f.spareU, u) }
 
 // corrected returns the coefficients after one Newton correction.
 func (r *record) corrected(f *fitting) []float64 {

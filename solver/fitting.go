@@ -55,6 +55,7 @@ type fitting struct {
 	req      request
 	distance [2][]float64
 	lane     []float64
+	spareU   [][]float64 // residuals of dropped records
 	fit      []float64
 	accept   func(r *record, chosen []chosen)
 	path     *Path

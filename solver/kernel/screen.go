@@ -64,18 +64,23 @@ func DotRows(x []float64, rows []int32, u []float64) float64 {
 
 func dotRowsChunk(x []float64, rows []int32, u []float64) float64 {
 	var s0, s1, s2, s3 float64
-	for len(rows) >= 4 && len(u) >= 4 {
-		r, v := rows[:4:4], u[:4:4]
-		s0 = math.FMA(x[r[0]], v[0], s0)
-		s1 = math.FMA(x[r[1]], v[1], s1)
-		s2 = math.FMA(x[r[2]], v[2], s2)
-		s3 = math.FMA(x[r[3]], v[3], s3)
-		rows, u = rows[4:], u[4:]
+	for len(rows) >= 8 && len(u) >= 8 {
+		r, v := rows[:8:8], u[:8:8]
+		s0 += float64(x[r[0]] * v[0])
+		s1 += float64(x[r[1]] * v[1])
+		s2 += float64(x[r[2]] * v[2])
+		s3 += float64(x[r[3]] * v[3])
+		s0 += float64(x[r[4]] * v[4])
+		s1 += float64(x[r[5]] * v[5])
+		s2 += float64(x[r[6]] * v[6])
+		s3 += float64(x[r[7]] * v[7])
+		rows, u = rows[8:], u[8:]
 	}
+	s := [4]float64{s0, s1, s2, s3}
 	for k, r := range rows {
-		s0 = math.FMA(x[r], u[k], s0)
+		s[k&3] += float64(x[r] * u[k])
 	}
-	return (s0 + s1) + (s2 + s3)
+	return (s[0] + s[1]) + (s[2] + s[3])
 }
 
 // Moments returns, over the rows of a draw, the weighted sums of x, x*x and
@@ -104,17 +109,17 @@ func momentsChunk(x []float64, rows []int32, wy []float64) (sx, sxx, sxy float64
 		v, z := x[r[0]], x[r[1]]
 		sx += v
 		tx += z
-		sxx = math.FMA(v, v, sxx)
-		txx = math.FMA(z, z, txx)
-		sxy = math.FMA(v, q[0], sxy)
-		txy = math.FMA(z, q[1], txy)
+		sxx += float64(v * v)
+		txx += float64(z * z)
+		sxy += float64(v * q[0])
+		txy += float64(z * q[1])
 		rows, wy = rows[2:], wy[2:]
 	}
 	for k, r := range rows {
 		v := x[r]
 		sx += v
-		sxx = math.FMA(v, v, sxx)
-		sxy = math.FMA(v, wy[k], sxy)
+		sxx += float64(v * v)
+		sxy += float64(v * wy[k])
 	}
 	return sx + tx, sxx + txx, sxy + txy
 }
@@ -124,8 +129,8 @@ func weightedMomentsChunk(x []float64, rows []int32, w, wy []float64) (sx, sxx, 
 		v := x[r]
 		t := w[k] * v
 		sx += t
-		sxx = math.FMA(t, v, sxx)
-		sxy = math.FMA(v, wy[k], sxy)
+		sxx += float64(t * v)
+		sxy += float64(v * wy[k])
 	}
 	return sx, sxx, sxy
 }
@@ -149,15 +154,15 @@ func distanceChunk(x, y []float64) float64 {
 	for len(x) >= 4 && len(y) >= 4 {
 		a, b := x[:4:4], y[:4:4]
 		d0, d1, d2, d3 := a[0]-b[0], a[1]-b[1], a[2]-b[2], a[3]-b[3]
-		s0 = math.FMA(d0, d0, s0)
-		s1 = math.FMA(d1, d1, s1)
-		s2 = math.FMA(d2, d2, s2)
-		s3 = math.FMA(d3, d3, s3)
+		s0 += float64(d0 * d0)
+		s1 += float64(d1 * d1)
+		s2 += float64(d2 * d2)
+		s3 += float64(d3 * d3)
 		x, y = x[4:], y[4:]
 	}
 	for i, v := range x {
 		d := v - y[i]
-		s0 = math.FMA(d, d, s0)
+		s0 += float64(d * d)
 	}
 	return (s0 + s1) + (s2 + s3)
 }
