@@ -62,6 +62,11 @@ const (
 // names the column that the others are compared with; empty for none. An
 // outcome that is not numeric is an *Error, as is a table without rows.
 func (s *Source) Scan(ctx context.Context, outcome string) (*Summary, error) {
+	return s.scan(ctx, outcome, 0)
+}
+
+// scan is Scan with a limit to memory; 0: what the machine has free.
+func (s *Source) scan(ctx context.Context, outcome string, limit int64) (*Summary, error) {
 	if err := s.unchanged(); err != nil {
 		return nil, err
 	}
@@ -72,7 +77,7 @@ func (s *Source) Scan(ctx context.Context, outcome string) (*Summary, error) {
 	if sc.n > 1<<31-1 {
 		return nil, faultf(s.path, "the table has %s rows: at most %s can be used", grouped(sc.n), grouped(1<<31-1))
 	}
-	if err := checkMemory(s.path, int(sc.n), 3*sc.workers+2, 0); err != nil {
+	if err := checkMemory(s.path, int(sc.n), 3*sc.workers+2, limit); err != nil {
 		return nil, err
 	}
 	out := &Summary{Rows: sc.n, Outcome: outcome, Columns: make([]ColumnSummary, len(s.format.columns()))}

@@ -1,0 +1,239 @@
+package table
+
+import (
+	"encoding/binary"
+	"errors"
+	"fmt"
+	"os"
+	"path/filepath"
+	"runtime"
+	"strings"
+	"testing"
+	"time"
+
+	"github.com/apache/arrow/go/v17/arrow"
+	"github.com/apache/arrow/go/v17/arrow/ipc"
+	"github.com/apache/arrow/go/v17/parquet"
+	"github.com/apache/arrow/go/v17/parquet/compress"
+)
+
+// testLimit is the memory that a damaged file may ask for in tests.
+const testLimit = 1 << 22
+
+// survive opens, loads and scans whatever the bytes are. Every failure must be
+// an *Error: the file's fault, not a panic and not the machine's.
+func survive(t testing.TB, path string, text []byte) error {
+	t.Helper()
+	if err := os.WriteFile(path, text, 0o644); err != nil {
+		t.Fatal(err)
+	}
+	s, err := Open(path)
+	if err == nil {
+		var r Request
+		for _, c := range s.Columns() {
+			if c.Usable {
+				r.Candidates = append(r.Candidates, c.Name)
+			}
+		}
+		r.Missing, r.Memory, r.Workers = FillMean, testLimit, 2
+		_, err = s.Load(t.Context(), r)
+		if _, scanned := s.scan(t.Context(), "", testLimit); scanned != nil {
+			err = errors.Join(err, scanned)
+		}
+	}
+	if err == nil {
+		return nil
+	}
+	for _, e := range leavesOf(err) {
+		var ours *Error
+		if !errors.As(e, &ours) {
+			t.Errorf("the error is a %T, not an *Error: %v", e, e)
+		}
+		if strings.Contains(e.Error(), "runtime error") && testing.Verbose() {
+			t.Logf("caught: %v", e)
+		}
+	}
+	return err
+}
+
+func leavesOf(err error) []error {
+	if j, ok := err.(interface{ Unwrap() []error }); ok {
+		return j.Unwrap()
+	}
+	return []error{err}
+}
+
+// damageable are small files of every binary format.
+func damageable(t testing.TB) map[string][]byte {
+	t.Helper()
+	cols, _ := everyType()
+	var few []testColumn
+	for _, c := range cols {
+		switch c.name {
+		case "f64", "i64", "bool", "d128", "holes", "inull":
+			few = append(few, testColumn{c.name, c.typ, c.cells[:20]})
+		}
+	}
+	few = append(few, testColumn{"text", arrow.BinaryTypes.String, few[0].cells})
+	for i := range few[len(few)-1].cells {
+		few[len(few)-1].cells = append([]any{}, few[len(few)-1].cells...)
+		few[len(few)-1].cells[i] = fmt.Sprint("level ", i%3)
+	}
+	level := testColumn{"level", &arrow.DictionaryType{IndexType: arrow.PrimitiveTypes.Int8, ValueType: arrow.PrimitiveTypes.Float64}, nil}
+	for i := range 20 {
+		level.cells = append(level.cells, float64(i%3))
+	}
+	dir := t.TempDir()
+	out := map[string][]byte{}
+	keep := func(path string) {
+		b, err := os.ReadFile(path)
+		must(t, err)
+		out[filepath.Base(path)] = b
+	}
+	keep(writeParquet(t, filepath.Join(dir, "plain.parquet"), few, 11, parquet.WithDictionaryDefault(false), parquet.WithStats(false)))
+	keep(writeParquet(t, filepath.Join(dir, "two.parquet"), few, 20, parquet.WithDataPageVersion(parquet.DataPageV2), parquet.WithCompression(compress.Codecs.Zstd),
+		parquet.WithDictionaryFor("i64", false), parquet.WithEncodingFor("i64", parquet.Encodings.DeltaBinaryPacked), parquet.WithStats(false)))
+	keep(writeParquet(t, filepath.Join(dir, "snappy.parquet"), few[:3], 20, parquet.WithCompression(compress.Codecs.Snappy), parquet.WithStats(false)))
+	keep(writeArrow(t, filepath.Join(dir, "file.arrow"), append(few, level), 20, false))
+	keep(writeArrow(t, filepath.Join(dir, "stream.arrow"), append(few, level), 11, true, ipc.WithLZ4()))
+	return out
+}
+
+func TestEveryByteDamaged(t *testing.T) {
+	dir := t.TempDir()
+	for name, whole := range damageable(t) {
+		must(t, survive(t, filepath.Join(dir, name), whole))
+		refused := 0
+		step := max(1, len(whole)/300)
+		for i := 0; i < len(whole); i += step {
+			for _, flip := range []byte{0xff, 0x01} {
+				b := append([]byte(nil), whole...)
+				b[i] ^= flip
+				if survive(t, filepath.Join(dir, name), b) != nil {
+					refused++
+				}
+			}
+		}
+		if refused == 0 {
+			t.Errorf("%s: no damage was noticed", name)
+		}
+	}
+}
+
+func TestEveryLengthCutOff(t *testing.T) {
+	dir := t.TempDir()
+	for name, whole := range damageable(t) {
+		for n := 0; n < len(whole); n += 1 + n/40 {
+			err := survive(t, filepath.Join(dir, name), whole[:n])
+			// A stream without its end mark may stop between batches.
+			if err == nil && !strings.HasPrefix(name, "stream") {
+				t.Errorf("%s: the first %d of %d bytes are accepted", name, n, len(whole))
+			}
+		}
+	}
+}
+
+func TestLiesInTheFooter(t *testing.T) {
+	// Footers written by hand in Thrift's compact protocol: claims that no
+	// file of this size can keep.
+	dir := t.TempDir()
+	list := func(n uint64, elem byte) []byte { return binary.AppendUvarint([]byte{0xf0 | elem}, n) }
+	zig := func(v int64) []byte { return binary.AppendUvarint(nil, uint64(v<<1)^uint64(v>>63)) }
+	root := []byte{0x48, 1, 's', 0x15, 2, 0x00}        // name "s", one child
+	leaf := []byte{0x15, 10, 0x25, 0, 0x18, 1, 'x', 0} // double, required, "x"
+	schema := append(append([]byte{0x19, 0x2c}, root...), leaf...)
+	for name, c := range map[string]struct {
+		footer []byte
+		want   string
+	}{
+		"long list":   {append([]byte{0x29}, list(1<<40, thriftStruct)...), "a list is longer than the file"},
+		"long text":   {append([]byte{0x29, 0x1c, 0x48}, binary.AppendUvarint(nil, 1<<50)...), "a text is longer than the file"},
+		"deep":        {[]byte(strings.Repeat("\x1c", 500)), "nest too deeply"},
+		"no schema":   {[]byte{0x15, 4, 0x00}, "holds no schema"},
+		"many rows":   {join([]byte{0x15, 4}, schema, []byte{0x16}, zig(1<<40), []byte{0x19, 0x0c, 0}), "claims 1099511627776 rows"},
+		"group rows":  {join([]byte{0x15, 4}, schema, []byte{0x16}, zig(1<<40), []byte{0x19, 0x1c, 0x19, 0x0c, 0x26}, zig(1<<40), []byte{0, 0}), "has 0 column chunks, the schema 1 columns"},
+		"chunk place": {join([]byte{0x15, 4}, schema, []byte{0x16, 4, 0x19, 0x1c, 0x19, 0x1c, 0x3c, 0x76}, zig(1<<40), []byte{0x26, 8, 0, 0, 0x26, 4, 0, 0}), "a column chunk lies outside the file"},
+	} {
+		t.Run(name, func(t *testing.T) {
+			file := append([]byte("PAR1"), c.footer...)
+			file = binary.LittleEndian.AppendUint32(file, uint32(len(c.footer)))
+			file = append(file, "PAR1"...)
+			before := allocated()
+			err := survive(t, filepath.Join(dir, "t.parquet"), file)
+			wantError(t, err, c.want)
+			if taken := allocated() - before; taken > 1<<20 {
+				t.Errorf("%d bytes were taken", taken)
+			}
+		})
+	}
+}
+
+func join(parts ...[]byte) (out []byte) {
+	for _, p := range parts {
+		out = append(out, p...)
+	}
+	return out
+}
+
+func allocated() uint64 {
+	var m runtime.MemStats
+	runtime.ReadMemStats(&m)
+	return m.TotalAlloc
+}
+
+func TestHugeClaimsOfRows(t *testing.T) {
+	// A file may hold two thousand million equal rows in a few bytes and tell
+	// the truth; then memory decides, before any is taken.
+	cols := []testColumn{{"x", arrow.PrimitiveTypes.Float64, []any{1.0, 1.0, 1.0}}}
+	path := writeParquet(t, tempFile(t, "t.parquet"), cols, 10)
+	s, err := Open(path)
+	must(t, err)
+	set := s.format.(*parquetSet)
+	set.total, set.files[0].groups[0].rows, set.files[0].groups[0].chunks[0].values = 2e9, 2e9, 2e9
+	_, err = s.Load(t.Context(), Request{Candidates: []string{"x"}, Memory: 1 << 30})
+	wantError(t, err, "2000000000 rows x 1 columns need 16.0 GB, and 1.1 GB is all that may be taken")
+	set.total = 3e9
+	_, err = s.Load(t.Context(), Request{Candidates: []string{"x"}})
+	wantError(t, err, "the table has 3,000,000,000 rows: at most 2,147,483,647 can be used")
+}
+
+func TestOpenQuoteDoesNotTakeTheWholeFile(t *testing.T) {
+	// A quote that is never closed in a large file must not hang or eat memory.
+	text := "a,b\n1,\"2\n" + strings.Repeat("3,4\n", 1<<20)
+	start := time.Now()
+	wantError(t, second(Open(writeText(t, tempFile(t, "t.csv"), text))), "line 2: a quote is opened and never closed")
+	if d := time.Since(start); d > 10*time.Second {
+		t.Errorf("it took %v", d)
+	}
+}
+
+func FuzzParquet(f *testing.F) {
+	for name, b := range damageable(f) {
+		if strings.HasSuffix(name, ".parquet") {
+			f.Add(b)
+		}
+	}
+	path := filepath.Join(f.TempDir(), "t.parquet")
+	f.Fuzz(func(t *testing.T, b []byte) { survive(t, path, b) })
+}
+
+func FuzzIPC(f *testing.F) {
+	for name, b := range damageable(f) {
+		if strings.HasSuffix(name, ".arrow") {
+			f.Add(b)
+		}
+	}
+	path := filepath.Join(f.TempDir(), "t.arrow")
+	f.Fuzz(func(t *testing.T, b []byte) { survive(t, path, b) })
+}
+
+func FuzzCSV(f *testing.F) {
+	for _, s := range []string{
+		"a,b\n1,2\n3,NA\n", "\xef\xbb\xbfa;b\r\n\"1\";2,5\r\n", "a\tb\n\"x\ny\"\t\"\"\"\"\n", "\"", "a,b\n1,\"2", "a|b\n|\n\n|1", "a,b\n1e999,0x10\n-Inf,nan\n",
+		"a,a\n1,2\n", "\n\n", "a\n1\n\n2\n", "a,b\n99999999999999999999,1_0\n2024-01-31,true\n", "\x1f\x8b\x08\x00",
+	} {
+		f.Add([]byte(s))
+	}
+	path := filepath.Join(f.TempDir(), "t.csv")
+	f.Fuzz(func(t *testing.T, b []byte) { survive(t, path, b) })
+}
