@@ -1,0 +1,304 @@
+package report
+
+import (
+	"fmt"
+	"math"
+	"strings"
+
+	"holdfast/selection"
+)
+
+// How many rows below the stable ones the text shows: enough to see what came
+// close, and all that could change sides up to a limit.
+const (
+	nextRows = 10
+	mostNext = 30
+)
+
+// Cells of the table's parts.
+const (
+	leastName = 12
+	mostName  = 40
+	leastBar  = 6
+	mostBar   = 24
+	gap       = 2
+)
+
+// cut is how many rows the text shows.
+func cut(j *selection.Judgement) int {
+	end := j.Stable + nextRows
+	for i := j.Stable; i < len(j.Rows) && i < j.Stable+mostNext; i++ {
+		if j.Rows[i].CouldChange {
+			end = max(end, i+1)
+		}
+	}
+	end = min(end, len(j.Rows))
+	for end > j.Stable && j.Rows[end-1].Count == 0 {
+		end--
+	}
+	return end
+}
+
+// table writes the table with the predictors that matter for the decision.
+func (p *page) table() {
+	j := p.j
+	end := cut(j)
+	p.line("")
+	if end > 0 {
+		g := p.newGrid(j.Rows[:end])
+		p.heading(g)
+		for i := range j.Rows[:end] {
+			if i == j.Stable {
+				p.border(g)
+			}
+			p.row(g, i)
+		}
+		if end == j.Stable {
+			p.border(g)
+		}
+	}
+	p.below(end)
+}
+
+// below says what the table leaves out and what its marks mean.
+func (p *page) below(end int) {
+	full := p.info.Full
+	if full == "" {
+		full = "stability.csv"
+	}
+	if more := len(p.j.Rows) - end; end == 0 {
+		p.line("No candidate was chosen in any draw; all stand in " + clean(full))
+	} else if more > 0 {
+		p.line(fmt.Sprintf("%s and %d more, see %s", p.dots(), more, clean(full)))
+	}
+	if p.j.CouldChange > 0 {
+		p.item("", "~ ", fmt.Sprintf("could change sides with other draws (%d in all): the interval covers the threshold, %d of %d.",
+			p.j.CouldChange, p.j.Need, p.j.Draws))
+	}
+}
+
+// grid holds the texts of the table's rows and the widths of its columns.
+type grid struct {
+	name, chosen, interval, sign, median, spread []string
+	mark                                         []string // of the note behind the name, or empty
+	wName, wChosen, wInterval, wBar, wSign       int
+	wMedian, wSpread                             int
+	chosenHead, intervalHead, spreadHead         string
+	coefMark                                     string
+}
+
+const (
+	chosenOver   = "chosen"
+	intervalOver = "interval"
+	medianHead   = "median"
+	signHead     = "sign"
+	nameHead     = "predictor"
+)
+
+// newGrid makes the texts and shares out the width: what numbers need, then
+// the names, then the bar.
+func (p *page) newGrid(rows []selection.Row) *grid {
+	g := &grid{
+		chosenHead: fmt.Sprintf("of %d", p.j.Draws), spreadHead: "2.5 to 97.5 %",
+		intervalHead: "95 % " + p.note(selection.MonteCarlo),
+		coefMark: p.note("The coefficients are those of the draws that chose the predictor, at the end of what counts of their paths. " +
+			"They are shrunken, belong to a changing set of companions, and are too narrow for weak predictors: no test, and no confidence interval."),
+	}
+	for i := range rows {
+		g.addRow(p, &rows[i])
+	}
+	g.wChosen = widest(g.chosen, g.chosenHead, chosenOver)
+	g.wInterval = widest(g.interval, g.intervalHead, intervalOver)
+	g.wSign = widest(g.sign, signHead)
+	g.wMedian = widest(g.median, medianHead)
+	g.wSpread = widest(g.spread, g.spreadHead)
+	g.share(p.cells)
+	for i := range g.name {
+		g.name[i] = shorten(g.name[i], g.wName-width(g.mark[i]), p.dots()) + g.mark[i]
+	}
+	return g
+}
+
+// share gives the names what they need, up to two thirds of what numbers
+// leave, and the bar the rest. Where there is no room for a bar worth looking
+// at there is none.
+func (g *grid) share(cells int) {
+	rest := cells - gap - (g.wChosen + g.wInterval + g.wSign + g.wMedian + g.wSpread) - 5*gap
+	need := min(g.widestName(), mostName)
+	g.wName = min(need, max(leastName, (rest-gap)*2/3))
+	g.wBar = min(mostBar, rest-gap-g.wName)
+	if g.wBar < leastBar {
+		g.wBar = 0
+		g.wName = min(need, max(leastName, rest))
+	}
+}
+
+func (g *grid) addRow(p *page, r *selection.Row) {
+	g.name, g.mark = append(g.name, clean(r.Predictor)), append(g.mark, p.noteCopies(r.Predictor))
+	g.chosen = append(g.chosen, fmt.Sprint(r.Count))
+	g.interval = append(g.interval, drawsText(r, p.j.Draws))
+	g.sign = append(g.sign, signText(r.PositiveShare))
+	if r.SelectedMedian == nil {
+		g.median, g.spread = append(g.median, ""), append(g.spread, "")
+		return
+	}
+	g.median = append(g.median, number3(*r.SelectedMedian))
+	g.spread = append(g.spread, short(*r.SelectedLow, 2)+" to "+short(*r.SelectedHigh, 2))
+}
+
+// copiesOf lists the columns that stand under a predictor's name.
+func (p *page) copiesOf(predictor string) []string {
+	var list []string
+	for _, c := range p.info.Copies {
+		if c.Of == predictor {
+			list = append(list, c.Name)
+		}
+	}
+	return list
+}
+
+// mostCopies is how many copies of a predictor a note names.
+const mostCopies = 5
+
+// noteCopies makes a note of the columns that a row stands for, and returns its
+// mark.
+func (p *page) noteCopies(predictor string) string {
+	list := p.copiesOf(predictor)
+	if len(list) == 0 {
+		return ""
+	}
+	more := ""
+	if len(list) > mostCopies {
+		more = fmt.Sprintf(" and %d more", len(list)-mostCopies)
+		list = list[:mostCopies]
+	}
+	return " " + p.note(fmt.Sprintf("%s stands also for what equals it up to shift and scale: %s%s", predictor, strings.Join(list, ", "), more))
+}
+
+// drawsText is the interval of the frequency in draws, rounded outward.
+func drawsText(r *selection.Row, draws int) string {
+	low, high := math.Floor(r.Low*float64(draws)), math.Ceil(r.High*float64(draws))
+	return fmt.Sprintf("%.0f-%.0f", max(low, 0), min(high, float64(draws)))
+}
+
+// signText is the sign at entry, with the share of the draws that chose the
+// predictor where not all agree.
+func signText(positive *float64) string {
+	switch {
+	case positive == nil:
+		return ""
+	case *positive == 1:
+		return "+"
+	case *positive == 0:
+		return "-"
+	case *positive >= 0.5:
+		return fmt.Sprintf("+%.0f%%", math.Floor(100**positive))
+	}
+	return fmt.Sprintf("-%.0f%%", math.Floor(100*(1-*positive)))
+}
+
+// heading writes the column heads. What stands over the coefficients is longer
+// than they are and reaches to the left, over the bar and the signs.
+func (p *page) heading(g *grid) {
+	unit := ""
+	if p.info.PerSD {
+		unit = " per standard deviation"
+	}
+	over := g.join("", "", chosenOver, intervalOver)
+	title := "description, not a confidence interval " + g.coefMark
+	p.line(p.paint(dim, spaces(g.total()-width(title))+"coefficient"+unit+" where chosen:"))
+	p.line(p.paint(dim, over+spaces(gap)+padLeft(title, g.total()-width(over)-gap)))
+	heads := []string{g.join("", nameHead, g.chosenHead, g.intervalHead)}
+	if g.wBar > 0 {
+		heads = append(heads, spaces(g.wBar))
+	}
+	heads = append(heads, padRight(signHead, g.wSign), padLeft(medianHead, g.wMedian), g.spreadHead)
+	p.line(p.paint(dim, strings.Join(heads, spaces(gap))))
+}
+
+// join lays out the left part of a line.
+func (g *grid) join(mark, name, chosen, interval string) string {
+	return strings.Join([]string{padRight(mark, 1) + " " + padRight(name, g.wName),
+		padLeft(chosen, g.wChosen), padLeft(interval, g.wInterval)}, spaces(gap))
+}
+
+func (p *page) row(g *grid, i int) {
+	r := &p.j.Rows[i]
+	mark := " "
+	if r.CouldChange {
+		mark = "~"
+	}
+	name := padRight(g.name[i], g.wName)
+	if r.Stable {
+		name = p.paint(bold, name)
+	}
+	parts := []string{p.paint(yellow, mark) + " " + name, padLeft(g.chosen[i], g.wChosen), padLeft(g.interval[i], g.wInterval)}
+	if g.wBar > 0 {
+		parts = append(parts, p.paint(cyan, padRight(p.bar(r, g.wBar), g.wBar)))
+	}
+	parts = append(parts, padRight(g.sign[i], g.wSign), padLeft(g.median[i], g.wMedian), g.spread[i])
+	p.line(strings.Join(parts, spaces(gap)))
+}
+
+// border stands between the stable predictors and the others.
+func (p *page) border(g *grid) {
+	text := fmt.Sprintf("stable above: %d of %d draws or more", p.j.Need, p.j.Draws)
+	if p.j.Stable == 0 {
+		text = fmt.Sprintf("none was chosen in %d of %d draws", p.j.Need, p.j.Draws)
+	}
+	dash := "─"
+	if p.info.ASCII {
+		dash = "-"
+	}
+	left := strings.Repeat(dash, 2)
+	right := strings.Repeat(dash, max(2, g.total()-width(text)-4))
+	p.line(p.paint(dim, left+" "+text+" "+right))
+}
+
+// total is the width of a full line.
+func (g *grid) total() int {
+	w := gap + g.wName + g.wChosen + g.wInterval + g.wSign + g.wMedian + g.wSpread + 5*gap
+	if g.wBar > 0 {
+		w += gap + g.wBar
+	}
+	return w
+}
+
+// bar draws the frequency, with a tick at the threshold where the bar does not
+// reach it.
+func (p *page) bar(r *selection.Row, cells int) string {
+	full, tick := "█", "┊"
+	if p.info.ASCII {
+		full, tick = "#", "|"
+	}
+	length := int(math.Round(r.Frequency * float64(cells)))
+	at := int(math.Ceil(p.j.Attained*float64(cells))) - 1
+	if !r.Stable {
+		length = min(length, at) // never past the threshold for the sake of rounding
+	}
+	line := strings.Repeat(full, length)
+	if length <= at {
+		line += spaces(at-length) + tick
+	}
+	return line
+}
+
+// widestName is the largest width of a name with its mark.
+func (g *grid) widestName() int {
+	w := width(nameHead)
+	for i := range g.name {
+		w = max(w, width(g.name[i])+width(g.mark[i]))
+	}
+	return w
+}
+
+// widest is the largest width among texts.
+func widest(texts []string, more ...string) int {
+	w := 0
+	for _, list := range [][]string{texts, more} {
+		for _, t := range list {
+			w = max(w, width(t))
+		}
+	}
+	return w
+}
