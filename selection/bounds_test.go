@@ -287,6 +287,24 @@ func TestUnimodalIsTheMaximum(t *testing.T) {
 	}
 }
 
+// The conditions of STATISTICS 2.2, at their borders, B = 50.
+func TestUnimodalConditions(t *testing.T) {
+	for _, c := range []struct {
+		theta float64
+		need  int
+		ok    bool
+	}{
+		{0.577, 100, true}, {0.578, 100, false}, // at most 1/sqrt(3)
+		{1e-6, 51, false}, {1e-6, 52, true}, // at least two above half
+		{0.3, 58, true}, {0.3, 57, false}, // above 1/2 + 1/100 + .75*.09 = .5775
+		{0.15, 53, true}, {0.15, 52, false}, // above 1/2 + .0225
+	} {
+		if _, err := UnimodalBound(c.theta*1000, 1000, c.need, 50); c.ok != (err == nil) || !c.ok && !errors.Is(err, ErrNoBound) {
+			t.Errorf("theta=%g need=%d: %v", c.theta, c.need, err)
+		}
+	}
+}
+
 // As r falls the shape assumption fades to a single hump (STATISTICS 2.6).
 func TestDFadesToOneHump(t *testing.T) {
 	for _, c := range []struct {

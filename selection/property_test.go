@@ -147,8 +147,9 @@ func TestJudgeEqualsSlowJudgement(t *testing.T) {
 				t.Errorf("seed %d, %s, q=%d, candidate %d:\ngot  %s\nwant %s", seed, region, q, r.Index, got, want)
 			}
 			lo, hi, _, _ := WilsonPairs(n/2-(count-both), count-2*both, both, Level)
-			if r.Low != lo || r.High != hi {
-				t.Errorf("seed %d, candidate %d: interval %g, %g, want %g, %g", seed, r.Index, r.Low, r.High, lo, hi)
+			change := lo <= j.Attained && j.Attained <= hi
+			if r.Low != lo || r.High != hi || r.CouldChange != change {
+				t.Errorf("seed %d, candidate %d: interval %g, %g, %t, want %g, %g, %t", seed, r.Index, r.Low, r.High, r.CouldChange, lo, hi, change)
 			}
 		}
 		if j.Stable > j.MostStable {

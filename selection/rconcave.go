@@ -70,10 +70,10 @@ func (a affine) tail(j int, mean float64) float64 {
 
 // moments returns the mean and P(i >= j) at log rho = u.
 func (a affine) moments(u float64, j int) (mean, tail float64) {
-	weight := a.weights(u)
+	rho := math.Exp(u)
 	var sum, first, above float64
 	for i := 0; i <= a.k; i++ {
-		w := weight(float64(i) / float64(a.k))
+		w := a.weight(float64(i), u, rho)
 		sum += w
 		first += float64(w * float64(i))
 		if i >= j {
@@ -83,25 +83,20 @@ func (a affine) moments(u float64, j int) (mean, tail float64) {
 	return first / sum, above / sum
 }
 
-// weights returns x^(1/r), x = 1 - s + rho s, as a function of s = i/k: without
-// a logarithm for the two exponents in use, else by logarithms, since rho can
-// then be too large or small for a float64.
-func (a affine) weights(u float64) func(s float64) float64 {
-	rho := math.Exp(u)
+// weight is ((k-i) + rho i)^(1/r) at rho = e^u, up to a factor that all i share:
+// without a logarithm for the two exponents in use, else by logarithms, since
+// rho can then be too large or small for a float64.
+func (a affine) weight(i, u, rho float64) float64 {
+	k := float64(a.k)
+	x := k - i + float64(rho*i)
 	switch a.r {
 	case -0.5:
-		return func(s float64) float64 {
-			x := 1 - s + float64(rho*s)
-			return 1 / (x * x)
-		}
+		return 1 / (x * x)
 	case -0.25:
-		return func(s float64) float64 {
-			x := 1 - s + float64(rho*s)
-			x *= x
-			return 1 / (x * x)
-		}
+		x *= x
+		return 1 / (x * x)
 	}
-	return func(s float64) float64 { return math.Exp(logMix(s, u) / a.r) }
+	return math.Exp(logMix(i/k, u) / a.r)
 }
 
 // logMix is log(1 - s + s e^u) for s in [0,1].
