@@ -23,7 +23,7 @@ func WorstCaseBound(q, p, tau float64) (float64, error) {
 	return q * q / ((2*tau - 1) * p), nil
 }
 
-// UnimodalBound is the bound of Shah and Samworth (2013), equation (8), for
+// UnimodalBound is the bound of Shah and Samworth (2013), Theorem 2, for
 // predictors that are stable from a count of need on, out of 2*pairs draws. It
 // assumes that the share of pairs in which both halves choose a predictor has
 // a unimodal distribution. Where its side conditions do not hold it does not
@@ -39,7 +39,7 @@ func UnimodalBound(q, p float64, need, pairs int) (float64, error) {
 	return unimodalFactor(need, pairs) * (q / p) * q, nil
 }
 
-// RConcaveBound is the bound of Shah and Samworth (2013), equation (9), for
+// RConcaveBound is the r-concave bound of Shah and Samworth (2013) for
 // predictors that are stable from a count of need on, out of 2*pairs draws:
 //
 //	p * min( D(theta^2, 2 tau - 1, B, -1/2), D(theta, tau, 2B, -1/4) ), theta = q/p.

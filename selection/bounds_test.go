@@ -129,7 +129,7 @@ func meanAndTail(law []float64, j int) (mean, tail float64) {
 }
 
 // No r-concave law exceeds D at its own mean (the definition of D in Shah and
-// Samworth 2013, Section 3.3).
+// Samworth 2013).
 func TestDIsNeverExceeded(t *testing.T) {
 	rng := rand.New(rand.NewPCG(11, 3))
 	close := 0
@@ -260,7 +260,7 @@ func uniformsBest(n, j int, mean float64) float64 {
 
 // The unimodal bound equals the exact maximum inside its side conditions, and
 // its formula is too small in some places outside, which is why the conditions
-// matter (Shah and Samworth 2013, equation 8 and Theorem 2).
+// matter (Shah and Samworth 2013, Theorem 2).
 func TestUnimodalIsTheMaximum(t *testing.T) {
 	inside, tooSmall := 0, 0
 	for _, b := range []int{5, 10, 20} {

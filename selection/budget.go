@@ -185,6 +185,8 @@ func checkGiven(threshold, selected, falseSelections *float64, candidates int) e
 
 func checkDraws(draws int, bootstrap bool) error {
 	switch {
+	case draws > mostDraws:
+		return badCount("draws", draws, "must be at most a thousand million")
 	case bootstrap && draws < 1:
 		return badCount("draws", draws, "must be at least 1")
 	case !bootstrap && draws < 2:

@@ -139,6 +139,7 @@ func TestBudgetMisuse(t *testing.T) {
 		"one more is needed":     func(r *Request) { r.Selected = nil },
 		"nothing given":          func(r *Request) { r.Selected, r.Threshold = nil, nil },
 		"must be even":           func(r *Request) { r.Draws = 101 },
+		"thousand million":       func(r *Request) { r.Draws = 1 << 60 },
 		"draws: 0":               func(r *Request) { r.Draws = 0 },
 		"candidates: 0":          func(r *Request) { r.Candidates = 0 },
 		"threshold: NaN":         func(r *Request) { r.Threshold = value(math.NaN()) },

@@ -8,6 +8,9 @@ import "math"
 // anything that matters.
 const snap = 1e-9
 
+// mostDraws keeps products of two counts inside an int64.
+const mostDraws = 1_000_000_000
+
 // nearInt returns the integer beside x and whether x is within snap of it.
 func nearInt(x float64) (float64, bool) {
 	r := math.Round(x)
@@ -41,8 +44,8 @@ func Need(threshold float64, draws int) (int, error) {
 	if err := checkThreshold(threshold); err != nil {
 		return 0, err
 	}
-	if draws < 1 {
-		return 0, badCount("draws", draws, "must be at least 1")
+	if err := checkDraws(draws, true); err != nil {
+		return 0, err
 	}
 	return max(int(ceilSnap(float64(draws)*threshold)), draws/2+1), nil
 }
@@ -79,8 +82,8 @@ func checkFalseSelections(v float64) error {
 }
 
 func checkPairs(need, pairs int) error {
-	if pairs < 1 {
-		return badCount("pairs", pairs, "must be at least 1")
+	if pairs < 1 || pairs > mostDraws/2 {
+		return badCount("pairs", pairs, "must be at least 1 and at most 500 million")
 	}
 	if need <= pairs || need > 2*pairs {
 		return badCount("need", need, "must be above half of the draws and at most all of them")

@@ -2,8 +2,8 @@ package selection
 
 import "math"
 
-// DValue is the function D of the r-concave bound (Shah and Samworth 2013,
-// Section 3.3): the largest P(X >= t) over all X on {0, 1/n, ..., 1} with mean
+// DValue is the function D of the r-concave bound (Shah and Samworth
+// 2013): the largest P(X >= t) over all X on {0, 1/n, ..., 1} with mean
 // at most eta whose probability mass function f is r-concave, that is f^r is
 // convex on the support and the support has no gaps. It takes eta in [0,1],
 // n >= 1 and r < 0.

@@ -88,7 +88,7 @@ func TestReferenceNeed(t *testing.T) {
 }
 
 // The grid checks Meinshausen and Buhlmann (2010), Theorem 1, and Shah and
-// Samworth (2013), equations 8 and 9.
+// Samworth (2013), Theorem 2 and the r-concave bound.
 func TestReferenceGrid(t *testing.T) {
 	grid := readReference(t).Grid
 	if len(grid) != 432 {
