@@ -135,6 +135,7 @@ func newTable(w io.Writer, fields []arrow.Field) *table {
 		t.out, err = pqarrow.NewFileWriter(t.schema, t.sink, parquet.NewWriterProperties(
 			parquet.WithCreatedBy("holdfast"),
 			parquet.WithVersion(parquet.V2_LATEST),
+			parquet.WithRootRepetition(parquet.Repetitions.Required), // other readers take the library's default for a list
 			parquet.WithCompression(compress.Codecs.Uncompressed),
 			parquet.WithMaxRowGroupLength(batch),
 		), pqarrow.DefaultWriterProps())

@@ -16,6 +16,7 @@ import (
 	"github.com/apache/arrow/go/v17/arrow"
 	"github.com/apache/arrow/go/v17/arrow/array"
 	"github.com/apache/arrow/go/v17/arrow/memory"
+	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/file"
 	"github.com/apache/arrow/go/v17/parquet/pqarrow"
 
@@ -257,6 +258,9 @@ func readTable(t *testing.T, text []byte) arrow.Table {
 	pr, err := file.NewParquetReader(bytes.NewReader(text))
 	if err != nil {
 		t.Fatal(err)
+	}
+	if root := pr.MetaData().Schema.Root().RepetitionType(); root != parquet.Repetitions.Required {
+		t.Errorf("the root of the schema is %s: readers that count it take every column for a list", root)
 	}
 	r, err := pqarrow.NewFileReader(pr, pqarrow.ArrowReadProperties{}, memory.DefaultAllocator)
 	if err != nil {
