@@ -51,6 +51,9 @@ func (p *program) draft(ctx context.Context, q question, out string) error {
 		if _, err := os.Lstat(out); err == nil {
 			return misuse("holdfast draft: "+out+" exists, and is not written over", "give --out another name, or remove the file")
 		}
+		if info, err := os.Stat(dir); err != nil || !info.IsDir() {
+			return misuse("holdfast draft: "+dir+": there is no such folder to write "+filepath.Base(out)+" into", "make the folder first")
+		}
 	}
 	text, _, err := q.draft(ctx, dir)
 	if err != nil {

@@ -2,13 +2,16 @@ package main
 
 import (
 	"bytes"
+	"encoding/json"
 	"fmt"
 	"os"
 	"path/filepath"
 	"reflect"
+	"slices"
 	"strings"
 	"testing"
 
+	"holdfast/io/demo"
 	"holdfast/io/rundir"
 	"holdfast/solver"
 )
@@ -132,7 +135,24 @@ func TestExamples(t *testing.T) {
 // and says what to type next.
 func checkDemo(t *testing.T, stdout, stderr string) {
 	t.Helper()
-	for _, want := range []string{"expected by luck", "of the 12 columns that matter were found", "temperature_d05"} {
+	code, text, errs := typed("judge", "demo/study.run", "--json")
+	var judgement struct {
+		Decision struct{ Stable []string }
+	}
+	if err := json.Unmarshal([]byte(text), &judgement); code != 0 || err != nil {
+		t.Fatalf("demo: judge --json: exit code %d, %v: %s", code, err, errs)
+	}
+	found := 0
+	for _, name := range demo.Matter() {
+		if slices.Contains(judgement.Decision.Stable, name) {
+			found++
+		}
+	}
+	// The smallest and the largest number at which there is something to show.
+	if found < 6 || found == len(demo.Matter()) {
+		t.Errorf("demo: %d of the columns that matter are stable", found)
+	}
+	for _, want := range []string{"Expected by luck", fmt.Sprintf("%d of the 12 columns that matter were found", found), "temperature_d05"} {
 		if !strings.Contains(stdout, want) {
 			t.Errorf("demo: stdout lacks %q", want)
 		}

@@ -109,7 +109,7 @@ func (p *program) makeDraws(ctx context.Context, s *settled, o runOptions) (*run
 	if err != nil {
 		return nil, err
 	}
-	p.tellPlan(s, model, o)
+	p.tellPlan(s, o)
 	start := time.Now()
 	m := newMeter(p.err, s.plan.Number)
 	err = resample.Run(ctx, s.plan, model, dir, resample.Options{
@@ -196,9 +196,9 @@ func (s *settled) meta(model *solver.Model) rundir.Meta {
 }
 
 // tellPlan says what is about to happen, and what was decided.
-func (p *program) tellPlan(s *settled, model *solver.Model, o runOptions) {
+func (p *program) tellPlan(s *settled, o runOptions) {
 	d := s.decision
-	fmt.Fprintf(p.err, "%d rows, %d candidates; %d draws (%s), seed %d, %d at a time\n",
+	fmt.Fprintf(p.err, "rows: %d, candidates: %d, draws: %d (%s), seed: %d, workers: %d\n",
 		len(s.data.Outcome), len(s.fitted), s.plan.Number, s.plan.Design, s.plan.Seed, o.workers)
 	fmt.Fprintf(p.err, "decided before the first draw: %s\n", inWords(d))
 	for _, n := range d.Notes {
