@@ -33,7 +33,6 @@ race:
 # Build tags for systems that the tests do not run on.
 cross:
 	GOOS=darwin GOARCH=arm64 $(GO) vet ./resample ./selection ./solver/...
-	GOOS=windows GOARCH=amd64 $(GO) vet ./resample ./selection ./solver/...
 
 # Products and additions that the compiler fuses on some processors only.
 fused:
