@@ -35,9 +35,6 @@ func (t Table) check(f *faults) {
 	if t.Path == "" {
 		f.add("table.path", "is missing: name the table's file")
 	}
-	if t.AcceptLoss && t.Missing != DropRows {
-		f.add("table.accept_loss", `is for table.missing = "drop-rows" only`)
-	}
 }
 
 func (o Outcome) check(f *faults) {
@@ -181,10 +178,9 @@ func (d Decision) check(f *faults, draws Draws) {
 // user can say how many predictors count.
 func (d Decision) checkBootstrap(f *faults) {
 	switch {
-	case d.FalseSelections != nil && (d.Selected != nil || f.places["decision.false_selections"] != place{}),
-		d.Replace != nil && d.Replace.FalseSelections != nil:
+	case d.FalseSelections != nil && (d.Selected != nil || f.places["decision.false_selections"] != place{}):
 		f.add("decision.false_selections", `draws.design = "bootstrap" has no bound on false selections: give threshold and selected in its place`)
-	case d.Selected == nil || d.Threshold == nil || d.Replace != nil:
+	case d.Selected == nil || d.Threshold == nil: // so it is wherever a replacement waits
 		f.value("draws.design", quoted(Bootstrap.String()), "needs decision.selected: there is no bound to derive it from")
 	}
 }

@@ -61,7 +61,7 @@ func TestRoundTripOfKinds(t *testing.T) {
 
 // oddText makes names of the characters that could break a TOML text.
 func oddText(rng *rand.Rand) string {
-	odd := []rune("ab.=#[]{}\"'\\,\n\r\t\x00\x1b\x7f \u00a0\u202e\ufeffé漢😀*?")
+	odd := []rune("ab.=#[]{}\"'\\,\n\r\t\x00\x1b\x7f \u00a0\u202e\ufeff\U000e0001é漢😀*?")
 	r := make([]rune, 1+rng.IntN(6))
 	for i := range r {
 		r[i] = odd[rng.IntN(len(odd))]
@@ -81,8 +81,7 @@ func oddTexts(rng *rand.Rand) []string {
 func randomStudy(rng *rand.Rand) *Study {
 	s := Default()
 	unit := func() float64 { return 1 - rng.Float64()*0.999 } // (0.001, 1]
-	s.Table = Table{Path: oddText(rng), Missing: Missing(rng.IntN(4))}
-	s.Table.AcceptLoss = s.Table.Missing == DropRows && rng.IntN(2) == 0
+	s.Table = Table{Path: oddText(rng), Missing: Missing(rng.IntN(4)), AcceptLoss: rng.IntN(2) == 0}
 	s.Outcome.Column, s.Outcome.Offset, s.Outcome.CaseWeight = "y"+oddText(rng), "o"+oddText(rng), "w"+oddText(rng)
 	s.Candidates.Take = append(oddTexts(rng), "*")
 	s.Candidates.Leave, s.Candidates.Always, s.Candidates.Categories = oddTexts(rng), oddTexts(rng), oddTexts(rng)

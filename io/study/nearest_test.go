@@ -66,7 +66,7 @@ func TestNearest(t *testing.T) {
 	if got := nearest("x", nil); got != "" {
 		t.Errorf("of nothing: %q", got)
 	}
-	if got := nearest("ab", []string{"b", "a", "ab"}); got != "ab" {
+	if got := nearest("ab", []string{"b", "a", "AB", "ab"}); got != "ab" {
 		t.Errorf("the name itself is nearest: %q", got)
 	}
 }

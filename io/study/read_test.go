@@ -157,7 +157,7 @@ func TestDefaultWithin(t *testing.T) {
 var values = map[string]struct{ good, bad []string }{
 	"table.path":                {[]string{`"a.csv"`, `'C:\t.csv'`}, []string{`1`, `true`, `["a"]`, `""`}},
 	"table.missing":             {[]string{`"refuse"`, `"drop-rows"`, `"fill-mean"`, `"own-level"`}, []string{`"drop"`, `"Refuse"`, `0`, `true`}},
-	"table.accept_loss":         {[]string{`false`}, []string{`"true"`, `1`}},
+	"table.accept_loss":         {[]string{`false`, `true`}, []string{`"true"`, `1`}},
 	"outcome.kind":              {[]string{`"number"`, `"yes-no"`, `"count"`, `"classes"`}, []string{`"gaussian"`, `1`, `[]`}},
 	"outcome.column":            {[]string{`"y"`}, []string{`1`, `""`, `["y"]`}},
 	"outcome.success":           {[]string{`""`}, []string{`["alive"]`, `{}`, `"alive"`}}, // of another kind
@@ -248,6 +248,8 @@ func checkNames(t *testing.T, ps Problems, name, bad string, line int) {
 func TestMessages(t *testing.T) {
 	for _, c := range []struct{ text, want string }{
 		{small + "[penalty]\nmix = 2\n", "study: dir/s.toml:6: penalty.mix = 2.0: must be above 0 and at most 1"},
+		{small + "[penalty]\nmix = nan\n", "study: dir/s.toml:6: penalty.mix = nan: must be a finite number"},
+		{small + "[draws]\nseed = -1\n", "study: dir/s.toml:6: draws.seed = -1: must not be negative"},
 		{small + "[decision]\ntreshold = 0.9\n", "study: dir/s.toml:6: decision.treshold: is not a key of a study; the nearest is decision.threshold"},
 		{small + "[desision]\nthreshold = 0.9\nx = 1\n", "study: dir/s.toml:5: desision: there is no section [desision]; the nearest is [decision]"},
 		{small + "threshold = 0.9\n", "study: dir/s.toml:5: outcome.threshold: is not a key of [outcome]; threshold belongs to [decision]"},

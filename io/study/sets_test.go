@@ -39,6 +39,7 @@ func TestSets(t *testing.T) {
 		{"penalty.relative={ph=0.5}", relative, map[string]float64{"ph": 0.5}},
 		{"penalty.relative={}", relative, map[string]float64{}},
 		{`penalty.relative."a=b.c"=2`, relative, map[string]float64{"a=b.c": 2, "old": 3}},
+		{`penalty.relative.'a=b'=2`, relative, map[string]float64{"a=b": 2, "old": 3}},
 		{"penalty.relative.a.b=2", relative, map[string]float64{"a.b": 2, "old": 3}},
 		{"penalty.relative.Ca²⁺ (mmol)=2", relative, map[string]float64{"Ca²⁺ (mmol)": 2, "old": 3}},
 		{"penalty.relative.d'x=2", relative, map[string]float64{"d'x": 2, "old": 3}},

@@ -198,9 +198,7 @@ func (w *walker) value(node *unstable.Node) value {
 func (w *walker) listOf(node *unstable.Node) value {
 	list := value{shape: listShape}
 	for it := node.Children(); it.Next(); {
-		if it.Node().Kind != unstable.Comment {
-			list.list = append(list.list, w.value(it.Node()))
-		}
+		list.list = append(list.list, w.value(it.Node()))
 	}
 	return list
 }
