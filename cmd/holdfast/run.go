@@ -110,6 +110,7 @@ func (p *program) makeDraws(ctx context.Context, s *settled, o runOptions) (*run
 		return nil, err
 	}
 	p.tellPlan(s, o)
+	boundGarbage()
 	start := time.Now()
 	m := newMeter(p.err, s.plan.Number)
 	err = resample.Run(ctx, s.plan, model, dir, resample.Options{
