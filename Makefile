@@ -4,9 +4,9 @@
 GO  ?= go
 DIR ?= .
 
-.PHONY: test format vet unit portable race cross fused demo build bench
+.PHONY: test format vet unit portable race cross bits fused demo build bench
 
-test: format vet unit portable race cross fused
+test: format vet unit portable race cross bits fused
 
 # Fails where gofmt would change a file, where a file cannot be parsed, and
 # where gofmt itself is missing. DIR=folder looks at another folder.
@@ -33,6 +33,10 @@ race:
 # Build tags for systems that the tests do not run on.
 cross:
 	GOOS=darwin GOARCH=arm64 $(GO) vet ./resample ./selection ./solver/...
+
+# The same bits on other instruction sets of this architecture.
+bits:
+	.ci/bits
 
 # Products and additions that the compiler fuses on some processors only.
 fused:

@@ -2,6 +2,8 @@ package resample_test
 
 import (
 	"context"
+	"crypto/sha256"
+	"fmt"
 	"math/rand/v2"
 	"reflect"
 	"sync/atomic"
@@ -15,6 +17,14 @@ import (
 // neighbours are alike.
 func model(t *testing.T, rows, cols int) *solver.Model {
 	t.Helper()
+	m, err := solver.NewModel(context.Background(), problem(rows, cols))
+	if err != nil {
+		t.Fatal(err)
+	}
+	return m
+}
+
+func problem(rows, cols int) solver.Problem {
 	r := rand.New(rand.NewPCG(7, uint64(rows)))
 	table := make([][]float64, cols)
 	outcome := make([]float64, rows)
@@ -44,11 +54,7 @@ func model(t *testing.T, rows, cols int) *solver.Model {
 		outcome[i] += 2 * r.NormFloat64()
 	}
 	p.Design, p.Outcome = solver.NewDense(rows, table, nil), outcome
-	m, err := solver.NewModel(context.Background(), p)
-	if err != nil {
-		t.Fatal(err)
-	}
-	return m
+	return p
 }
 
 // every is a sink that keeps all paths.
@@ -151,3 +157,57 @@ func TestEngineStops(t *testing.T) {
 type putter func(first int, paths []solver.Path) error
 
 func (f putter) Put(first int, paths []solver.Path) error { return f(first, paths) }
+
+// awkward fits draws whose weights and penalties are no short binary
+// fractions, so that hardly any product is exact.
+func awkward(t *testing.T, rows, cols int, mix float64, weighted bool, block int) []solver.Path {
+	t.Helper()
+	p := problem(rows, cols)
+	p.Mix = mix
+	p.Relative = make([]float64, cols)
+	for j := range p.Relative {
+		p.Relative[j] = 1 + float64(j%5)/7
+	}
+	if weighted {
+		p.Case = make([]float64, rows)
+		for i := range p.Case {
+			p.Case[i] = 1 + float64(i%7)/3
+		}
+	}
+	m, err := solver.NewModel(context.Background(), p)
+	if err != nil {
+		t.Fatal(err)
+	}
+	plan, err := resample.NewPlan(resample.Plan{Rows: rows, Number: 24, Seed: 6, Case: p.Case})
+	if err != nil {
+		t.Fatal(err)
+	}
+	var got every
+	if err := resample.Run(context.Background(), plan, m, &got, resample.Options{Workers: 2, Block: block}); err != nil {
+		t.Fatal(err)
+	}
+	return got.paths
+}
+
+// The bits of all draws of a lasso and an elastic net, with case weights and
+// without, as one number. `make bits` runs this test on other instruction
+// sets and holds the numbers together; in one process there is nothing to
+// compare them with but themselves, from other blocks.
+func TestEngineDigest(t *testing.T) {
+	digests := make([]string, 2)
+	for k, block := range []int{2, 12} {
+		h := sha256.New()
+		for _, mix := range []float64{1, 0.7} {
+			for _, size := range [][2]int{{60, 130}, {400, 25}} {
+				for _, weighted := range []bool{false, true} {
+					fmt.Fprintf(h, "%+v", awkward(t, size[0], size[1], mix, weighted, block)) // shortest digits that tell floats apart
+				}
+			}
+		}
+		digests[k] = fmt.Sprintf("%x", h.Sum(nil))
+	}
+	if digests[0] != digests[1] {
+		t.Error("blocks of 2 and 12 draws differ")
+	}
+	t.Logf("bits of all draws: %s", digests[0])
+}
