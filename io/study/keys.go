@@ -118,11 +118,11 @@ var sections = []section{
 		{name: "region", about: anyOf(regions),
 			field: wordField[selection.Region]{regions, func(s *Study) *selection.Region { return &s.Decision.Region }}},
 		{name: "threshold", about: "share of draws from which a predictor is stable",
-			field: numberField{func(s *Study) **float64 { return &s.Decision.Threshold }}},
+			field: numberField{func(s *Study) **float64 { return &s.Decision.Threshold }, false}},
 		{name: "selected", about: "most predictors that count in a draw",
-			field: numberField{func(s *Study) **float64 { return &s.Decision.Selected }}},
+			field: numberField{func(s *Study) **float64 { return &s.Decision.Selected }, true}},
 		{name: "false_selections", about: "expected by luck, at most; two of threshold, selected, false_selections",
-			field: numberField{func(s *Study) **float64 { return &s.Decision.FalseSelections }}},
+			field: numberField{func(s *Study) **float64 { return &s.Decision.FalseSelections }, false}},
 		{name: "bound", about: anyOf(bounds),
 			field: wordField[selection.BoundName]{bounds, func(s *Study) *selection.BoundName { return &s.Decision.Bound }}},
 	}},
@@ -286,7 +286,10 @@ func realText(x float64) string {
 }
 
 // numberField is a finite number that may be left out.
-type numberField struct{ at func(*Study) **float64 }
+type numberField struct {
+	at    func(*Study) **float64
+	whole bool // written without a point where it has no fraction
+}
 
 func (f numberField) set(s *Study, v value) error {
 	x, err := finite(v)
@@ -300,6 +303,9 @@ func (f numberField) toml(s *Study) (string, bool) {
 	x := *f.at(s)
 	if x == nil {
 		return "", false
+	}
+	if f.whole {
+		return strconv.FormatFloat(*x, 'f', -1, 64), true
 	}
 	return realText(*x), true
 }

@@ -176,6 +176,17 @@ func TestWrittenStudyIsClean(t *testing.T) {
 	}
 }
 
+// Numbers are written as a user would: selected as a count, the rest as
+// numbers with a point.
+func TestWrittenNumbers(t *testing.T) {
+	_, text := again(t, parse(t, small+"[decision]\nselected = 38.0\nthreshold = 1\n"))
+	for _, want := range []string{"\nselected = 38 #", "\nthreshold = 1.0 #", "\nseed = 1 #", "\nmix = 1.0 #"} {
+		if !strings.Contains(string(text), want) {
+			t.Errorf("no %q in\n%s", want, text)
+		}
+	}
+}
+
 // A decision that waits for the number of candidates cannot be written.
 func TestMarshalRefusesUnsettled(t *testing.T) {
 	s := parse(t, small, "decision.threshold=0.9")
