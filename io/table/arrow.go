@@ -249,11 +249,9 @@ func (a *arrowFile) readDictionary(b arrowBatch, layout *batchLayout, cols []int
 			continue
 		}
 		field.dictionary = false
-		if need := b.rows * int64(max(field.width(), 8)) / 8; layout.codec == arrowRaw && need > b.size {
+		need := b.rows * int64(field.width()) / 8
+		if layout.codec == arrowRaw && need > b.size || tooDense(need, b.size, false) {
 			return damagedf("a dictionary claims %d values in %d bytes", b.rows, b.size)
-		}
-		if err := checkMemory(a.path, int(b.rows), 1, 0); err != nil {
-			return err
 		}
 		values := make([]float64, b.rows)
 		if _, err := r.column(layout, layout.fields[0], field, values, 0, nil); err != nil {

@@ -91,7 +91,7 @@ func (r *bufferReader) buffer(l *batchLayout, b arrowBuffer, need int64, keep []
 		return keep, nil
 	}
 	const padding = 1 << 12 // writers round buffers up, by 64 bytes mostly
-	if plain < need || plain > 2*need+padding {
+	if plain < need || plain > 2*need+padding || tooDense(plain, b.length, false) {
 		return nil, damagedf("a column needs %d bytes and claims %d", need, plain)
 	}
 	keep = grow(keep, int(plain))

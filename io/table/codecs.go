@@ -27,6 +27,16 @@ const (
 
 var codecNames = [codecNameTooBig]string{"none", "snappy", "gzip", "lzo", "brotli", "lz4 (old framing)", "zstd", "lz4"}
 
+// tooDense reports a claim that no codec can keep: zstd stores at best 128 KB
+// in 4 bytes, brotli at best 16 MB in about as many, the others less.
+func tooDense(plain, packed int64, brotli bool) bool {
+	const slack = 1 << 16
+	if brotli {
+		return packed < 1<<20 && plain > packed<<22+slack
+	}
+	return plain > packed<<15+slack
+}
+
 // zstdBlocks decompresses whole blocks and never writes past the room given,
 // so that a small block cannot fill the memory.
 var zstdBlocks = sync.OnceValue(func() *zstd.Decoder {

@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"os"
+	"runtime"
 	"strconv"
 	"strings"
 )
@@ -89,7 +90,11 @@ func inFile(path string, err error) error {
 // guard turns a panic of a library that met damaged bytes into an error.
 // Use: defer guard(&err).
 func guard(err *error) {
-	if r := recover(); r != nil {
+	switch r := recover().(type) {
+	case nil:
+	case runtime.Error:
+		*err = damagedf("its parts do not fit together (%s)", strings.TrimPrefix(firstLine(r.Error()), "runtime error: "))
+	default:
 		*err = damagedf("%s", strings.TrimSpace(firstLine(fmt.Sprint(r))))
 	}
 }

@@ -242,8 +242,8 @@ func (p *pages) claim(h pageHeader) error {
 	if w := p.leaf.width(); w > 0 {
 		most = 2*int64(h.values)*w + int64(h.values)/4 + slack
 	}
-	if int64(h.plain) > most {
-		return damagedf("a page of %d values claims %d bytes", h.values, h.plain)
+	if int64(h.plain) > most || tooDense(int64(h.plain), int64(h.packed), p.codec == codecBrotli) {
+		return damagedf("a page of %d values and %d bytes claims %d bytes", h.values, h.packed, h.plain)
 	}
 	return nil
 }
@@ -273,9 +273,12 @@ func grow(b []byte, n int) []byte {
 // dictionary queues a dictionary page. Its bytes outlive the page, so they
 // are not taken from the kept buffer.
 func (p *pages) dictionary(h pageHeader) error {
-	if w := p.leaf.width(); w > 0 && p.leaf.physical != physicalBoolean && int64(h.values)*w > int64(h.plain) ||
-		w == 0 && int64(h.values)*4 > int64(h.plain) {
-		return damagedf("a dictionary of %d values claims %d bytes", h.values, h.plain)
+	least := max(p.leaf.width(), 1) // bytes of a value; byte arrays have their length in front
+	if p.leaf.physical == physicalByteArray {
+		least = 4
+	}
+	if int64(h.values) > p.rows || int64(h.values)*least > int64(h.plain) {
+		return damagedf("a dictionary of %d values and %d bytes for %d rows", h.values, h.plain, p.rows)
 	}
 	stored, err := p.stored(h)
 	if err != nil {
