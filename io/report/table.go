@@ -273,8 +273,10 @@ func (p *page) bar(r *selection.Row, cells int) string {
 	}
 	length := int(math.Round(r.Frequency * float64(cells)))
 	at := int(math.Ceil(p.j.Attained*float64(cells))) - 1
-	if !r.Stable {
-		length = min(length, at) // never past the threshold for the sake of rounding
+	if r.Stable {
+		length = max(length, at+1) // rounding puts nobody on the wrong side of the threshold
+	} else {
+		length = min(length, at)
 	}
 	line := strings.Repeat(full, length)
 	if length <= at {

@@ -256,3 +256,21 @@ func TestClean(t *testing.T) {
 		}
 	}
 }
+
+// The bar of a predictor that is not stable ends before the tick, however
+// close it came; that of a stable one covers it.
+func TestBarAgainstTheThreshold(t *testing.T) {
+	for _, cells := range []int{6, 7, 10, 24} {
+		for need := 101; need <= 200; need++ {
+			p := &page{j: &selection.Judgement{Attained: float64(need) / 200}, info: Info{ASCII: true}}
+			below := p.bar(&selection.Row{Frequency: float64(need-1) / 200}, cells)
+			above := p.bar(&selection.Row{Frequency: float64(need) / 200, Stable: true}, cells)
+			if !strings.HasSuffix(below, "|") || width(below) > cells {
+				t.Fatalf("%d of %d cells, below: %q", need, cells, below)
+			}
+			if strings.Contains(above, "|") || strings.Trim(above, "#") != "" || width(above) < width(below) {
+				t.Fatalf("%d of %d cells: %q below, %q above", need, cells, below, above)
+			}
+		}
+	}
+}
