@@ -146,7 +146,7 @@ func (f flat) tables(slot int, each func(flat)) {
 // parseSchema reads a Schema table.
 func parseSchema(s flat) ([]arrowField, error) {
 	if s.int16(0, 0) != 0 {
-		return nil, damagedf("numbers are stored highest byte first, which is not read: write the file on a common machine")
+		return nil, refusef("numbers are stored highest byte first, which is not read: write the file on a common machine")
 	}
 	var fields []arrowField
 	s.tables(1, func(f flat) { fields = append(fields, parseField(f, 0)) })

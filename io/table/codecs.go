@@ -70,7 +70,7 @@ func unpack(codec int32, dst, src []byte) error {
 		if codec >= 0 && codec < codecNameTooBig {
 			name = codecNames[codec]
 		}
-		return damagedf("compression %d (%s) is not read: write the file with zstd or snappy", codec, name)
+		return refusef("compression %d (%s) is not read: write the file with zstd or snappy", codec, name)
 	}
 	if err != nil {
 		return damagedf("a page does not decompress: %v", err)
@@ -147,7 +147,7 @@ func unpackFrame(codec int8, dst, src []byte) error {
 	case arrowZstd:
 		n, err = unpackZstd(dst, src)
 	default:
-		return damagedf("compression %d is not read", codec)
+		return refusef("compression %d is not read", codec)
 	}
 	if err != nil || n != len(dst) {
 		return damagedf("a buffer of %d bytes does not decompress: %v", len(dst), err)

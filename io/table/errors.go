@@ -73,13 +73,22 @@ func (d damaged) Error() string { return d.why }
 
 func damagedf(format string, args ...any) error { return damaged{fmt.Sprintf(format, args...)} }
 
+// refusef makes an Error of something that is in order but not read here; its
+// file is filled in by inFile.
+func refusef(format string, args ...any) error { return &Error{Why: fmt.Sprintf(format, args...)} }
+
 // inFile adds the file name to an error found inside a file. Errors of the
 // machine keep their type; everything else is the table's fault.
 func inFile(path string, err error) error {
 	var e *Error
 	var p *os.PathError
 	switch {
-	case err == nil, errors.As(err, &e):
+	case err == nil:
+		return nil
+	case errors.As(err, &e):
+		if e.Path == "" {
+			e.Path = path
+		}
 		return err
 	case errors.As(err, &p), isCancel(err):
 		return fmt.Errorf("table: %s: %w", path, err)

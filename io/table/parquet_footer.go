@@ -105,7 +105,7 @@ func footerBytes(f *os.File) (raw []byte, before int64, err error) {
 	switch string(tail[4:]) {
 	case "PAR1":
 	case "PARE":
-		return nil, 0, damagedf("the file is encrypted: write a copy that is not")
+		return nil, 0, refusef("the file is encrypted: write a copy that is not")
 	default:
 		return nil, 0, damagedf("it does not end with PAR1: was it copied whole?")
 	}
@@ -295,7 +295,7 @@ func parseChunkMeta(t *thrift, c *columnChunk) {
 // is not that of rows and is checked where a column is read.
 func (pf *parquetFile) check() error {
 	if pf.sealed {
-		return damagedf("the file is encrypted: write a copy that is not")
+		return refusef("the file is encrypted: write a copy that is not")
 	}
 	if len(pf.schema) == 0 {
 		return damagedf("the footer holds no schema")

@@ -3,6 +3,7 @@ package table
 import (
 	"bufio"
 	"encoding/binary"
+	"hash/crc32"
 	"io"
 	"math/bits"
 	"os"
@@ -45,9 +46,11 @@ type pageHeader struct {
 	values, nulls    int32
 	encoding         int32
 	levelEncoding    int32
-	defBytes         int32 // version 2 only
+	checksum         uint32 // of the page as stored, if hasChecksum
+	defBytes         int32  // version 2 only
 	repBytes         int32
 	storedUnpacked   bool // version 2: is_compressed = false
+	hasChecksum      bool
 	hasDataHeader    bool
 	hasDictionary    bool
 	hasDataHeaderTwo bool
@@ -147,6 +150,8 @@ func parsePageHeader(t *thrift) pageHeader {
 			h.plain = t.i32()
 		case id == 3 && typ == thriftI32:
 			h.packed = t.i32()
+		case id == 4 && typ == thriftI32:
+			h.hasChecksum, h.checksum = true, uint32(t.i32())
 		case id == 5 && typ == thriftStruct:
 			h.hasDataHeader = true
 			parseDataHeader(t, &h)
@@ -258,6 +263,9 @@ func (p *pages) stored(h pageHeader) ([]byte, error) {
 	p.left -= int64(n)
 	if err == io.EOF || err == io.ErrUnexpectedEOF {
 		return nil, damagedf("a page ends too early")
+	}
+	if err == nil && h.hasChecksum && crc32.ChecksumIEEE(p.packed) != h.checksum {
+		return nil, damagedf("the checksum of a page is wrong")
 	}
 	return p.packed, err
 }

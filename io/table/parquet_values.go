@@ -29,9 +29,9 @@ func (r *chunkReader) read(f *os.File, c columnChunk, l *leaf, dst []float64, fi
 	defer guard(&err)
 	switch {
 	case c.elsewhere:
-		return rd, damagedf("the column lies in another file, which is not read")
+		return rd, refusef("the column lies in another file, which is not read")
 	case c.sealed:
-		return rd, damagedf("the column is encrypted: write a copy that is not")
+		return rd, refusef("the column is encrypted: write a copy that is not")
 	case c.values != int64(len(dst)):
 		return rd, damagedf("a column chunk claims %d values for %d rows", c.values, len(dst))
 	}
