@@ -100,7 +100,7 @@ func unimodalExists(theta float64, need, pairs int) error {
 
 // unimodalFloor is what the attained threshold must exceed.
 func unimodalFloor(theta, b float64) float64 {
-	return math.Min(0.5+theta*theta, 0.5+1/(2*b)+0.75*theta*theta)
+	return math.Min(0.5+float64(theta*theta), 0.5+1/(2*b)+float64(0.75*theta*theta))
 }
 
 func checkBudget(q, p float64) error {

@@ -82,7 +82,7 @@ func rConcaveSelected(p, target float64, need, pairs int) float64 {
 func lastWhere(high float64, ok func(float64) bool) float64 {
 	low := 0.0
 	for high-low > 1e-14*high {
-		mid := low + (high-low)/2
+		mid := low + float64((high-low)/2)
 		if mid == low || mid == high {
 			break
 		}

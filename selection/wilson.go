@@ -76,7 +76,7 @@ func wilson(count, n int, size, z float64) (lo, hi float64) {
 	f := float64(count) / float64(n)
 	shrink := 1 + z*z/size
 	centre := (f + z*z/(2*size)) / shrink
-	half := z / shrink * math.Sqrt(float64(f*(1-f))/size+z*z/(4*size*size))
+	half := float64(z / shrink * math.Sqrt(float64(f*(1-f))/size+z*z/(4*size*size)))
 	lo, hi = math.Max(0, centre-half), math.Min(1, centre+half)
 	if count == 0 {
 		lo = 0

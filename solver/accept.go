@@ -154,10 +154,10 @@ func (f *fitting) suspects(r *record) []int32 {
 			continue
 		}
 		norm := f.normOf(c)
-		value, slack := (1-a)*v, math.Abs(1-a)*reach(first, f.end.ref[c], endD, norm)+norm*e
+		value, slack := float64((1-a)*v), float64(math.Abs(1-a)*reach(first, f.end.ref[c], endD, norm))+float64(norm*e)
 		if a != 0 {
-			value += a * f.start0.value[c]
-			slack += math.Abs(a) * reach(first, f.start0.ref[c], f.distance[0], norm)
+			value += float64(a * f.start0.value[c])
+			slack += float64(math.Abs(a) * reach(first, f.start0.ref[c], f.distance[0], norm))
 		}
 		if math.Abs(value)+slack < least {
 			continue
@@ -187,8 +187,8 @@ func (f *fitting) between(r *record) float64 {
 	num, den := 0.0, 0.0
 	for k, e := range f.endU {
 		d := f.startU[k] - e
-		num += d * (r.u[k] - e)
-		den += d * d
+		num += float64(d * (r.u[k] - e))
+		den += float64(d * d)
 	}
 	if den == 0 {
 		return 0
@@ -206,7 +206,7 @@ func (f *fitting) distanceFrom(u []float64, a float64) float64 {
 	f.distance[0] = f.snaps.distances(f.distance[0], f.startU, f.d.total)
 	f.fit = resize(f.fit, len(u))
 	for k, e := range f.endU {
-		f.fit[k] = a*f.startU[k] + (1-a)*e
+		f.fit[k] = float64(a*f.startU[k]) + float64((1-a)*e)
 	}
 	return math.Sqrt(kernel.SquaredDistance(u, f.fit)/f.d.total) * (1 + 1e-9)
 }
@@ -217,7 +217,7 @@ func (f *fitting) screened(c int32, sum float64) float64 {
 	if holes != nil {
 		sum -= f.d.overHoles(holes, f.lane)
 	}
-	return (kernel.DotRows(x, f.d.rows, f.lane) - f.mean[c]*sum) * f.inverse[c] / f.d.total
+	return (kernel.DotRows(x, f.d.rows, f.lane) - float64(f.mean[c]*sum)) * f.inverse[c] / f.d.total
 }
 
 // take makes a record the certified step, and hands it on.

@@ -130,7 +130,7 @@ func (a *activeSet) step(w *working, p *penalty, lambda float64) (dropped, stuck
 	}
 	a.b = resize(a.b, len(a.members))
 	for k, i := range a.members {
-		a.b[k] = w.c[i] - a.sign[k]*p.threshold(w.units[i], lambda)
+		a.b[k] = w.c[i] - float64(a.sign[k]*p.threshold(w.units[i], lambda))
 	}
 	a.chol.solve(a.b)
 	length, hit := 1.0, -1
@@ -147,7 +147,7 @@ func (a *activeSet) step(w *working, p *penalty, lambda float64) (dropped, stuck
 		}
 	}
 	for k, i := range a.members {
-		a.beta[i] += length * (a.b[k] - a.beta[i])
+		a.beta[i] += float64(length * (a.b[k] - a.beta[i]))
 	}
 	if hit < 0 {
 		return false, false
@@ -247,7 +247,7 @@ func (a *activeSet) exchange(w *working, p *penalty, lambda float64, i int) bool
 		return false
 	}
 	for k, j := range a.members {
-		a.beta[j] -= length * sign * a.b[k]
+		a.beta[j] -= float64(length * sign * a.b[k])
 	}
 	a.drop(hit)
 	if !a.push(w, p, lambda, i, sign) {

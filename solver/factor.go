@@ -66,7 +66,7 @@ func (f *factor) remove(k int) {
 // rotate clears entry (c, c+1) of rows that are one entry too long.
 func (f *factor) rotate(c, n int) {
 	a, b := f.row[c][c], f.row[c][c+1]
-	h := math.Sqrt(a*a + b*b)
+	h := math.Sqrt(float64(a*a) + float64(b*b))
 	cos, sin := a/h, b/h
 	f.row[c][c] = h
 	for i := c + 1; i < n; i++ {

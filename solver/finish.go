@@ -125,7 +125,7 @@ func (r *record) solve(f *fitting) {
 	w, p := &f.work, f.m.penalty
 	r.beta = make([]float64, len(r.members))
 	for k, i := range r.members {
-		r.beta[k] = w.c[i] - r.sign[k]*p.threshold(w.units[i], r.lambda)
+		r.beta[k] = w.c[i] - float64(r.sign[k]*p.threshold(w.units[i], r.lambda))
 	}
 	r.chol.solve(r.beta)
 	r.u = f.residual()
@@ -214,7 +214,7 @@ func (r *record) worst(f *fitting) float64 {
 func (r *record) worstUnpenalised(f *fitting) float64 {
 	size := math.Sqrt(kernel.Dot(f.d.y, f.d.y))
 	for k, i := range r.members {
-		size += math.Abs(r.beta[k]) * math.Sqrt(f.work.h.row[i][i]*f.d.total)
+		size += float64(math.Abs(r.beta[k]) * math.Sqrt(f.work.h.row[i][i]*f.d.total))
 	}
 	length := max(math.Sqrt(kernel.Dot(r.u, r.u)), size*0x1p-50/certified)
 	v := 0.0

@@ -168,7 +168,7 @@ func (f *fitting) measureOne(c int32, sum float64) {
 	mean, sd := 0.0, 0.0
 	if filled > 0 {
 		mean = sx / filled
-		if v := sxx - mean*mean*filled; v > cancelShare*sxx && v > stillShare*f.m.table[c]*f.d.total {
+		if v := sxx - float64(mean*mean*filled); v > cancelShare*sxx && v > stillShare*f.m.table[c]*f.d.total {
 			sd = math.Sqrt(v / f.d.total)
 		} else {
 			mean, sd = f.careful(c, x, holes)
@@ -184,7 +184,7 @@ func (f *fitting) measureOne(c int32, sum float64) {
 	if f.norm != nil {
 		f.norm[c] = sd * f.inverse[c]
 	}
-	f.end.value[c] = (sxy - mean*sum) * f.inverse[c] / f.d.total
+	f.end.value[c] = (sxy - float64(mean*sum)) * f.inverse[c] / f.d.total
 }
 
 // careful is the two-pass mean and sd, 0 where the exact test finds that the
@@ -251,7 +251,7 @@ func (f *fitting) gradient(unit int32, u []float64) float64 {
 // excluded at lambda.
 func (f *fitting) least(lambda float64, u []float64) float64 {
 	spread := math.Sqrt(kernel.Dot(u, u) / f.d.total)
-	return lambda*(1-screenMargin) - screenRounding*spread*f.mostNorm
+	return float64(lambda*(1-screenMargin)) - float64(screenRounding*spread*f.mostNorm)
 }
 
 // travel sets where the path goes: from step first to last.

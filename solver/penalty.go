@@ -20,12 +20,12 @@ type penalty struct {
 
 // threshold is the size that a unit's gradient must exceed to enter.
 func (p *penalty) threshold(unit int32, lambda float64) float64 {
-	return lambda * p.mix * p.weight[unit]
+	return float64(lambda * p.mix * p.weight[unit])
 }
 
 // ridge is what the quadratic part adds to the Hessian's diagonal.
 func (p *penalty) ridge(unit int32, lambda float64) float64 {
-	return lambda * (1 - p.mix) * p.weight[unit]
+	return float64(lambda * (1 - p.mix) * p.weight[unit])
 }
 
 func (p *penalty) always(unit int32) bool { return p.weight[unit] == 0 }

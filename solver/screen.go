@@ -216,7 +216,7 @@ func (s *productScreen) column(reqs []*request, c int) {
 		if holes != nil {
 			sum -= f.d.overHoles(holes, s.lane[l])
 		}
-		f.end.value[c] = (raw - f.mean[c]*sum) * f.inverse[c] / f.d.total
+		f.end.value[c] = (raw - float64(f.mean[c]*sum)) * f.inverse[c] / f.d.total
 		f.end.ref[c] = r.number
 	}
 }

@@ -26,7 +26,7 @@ func newSource(seed uint64, name string) source {
 func (s source) normal() float64 {
 	sum := -6.0
 	for range 12 {
-		sum += float64(s.rng.Uint64()>>11) * 0x1p-53
+		sum += float64(float64(s.rng.Uint64()>>11) * 0x1p-53)
 	}
 	return sum
 }

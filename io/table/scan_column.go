@@ -250,7 +250,7 @@ func (t *target) auc(v, scratch []float64) float64 {
 		for upTo = max(upTo, below); upTo < len(low) && low[upTo] == x; {
 			upTo++
 		}
-		wins += float64(below) + float64(upTo-below)/2
+		wins += float64(below) + float64(float64(upTo-below)/2)
 	}
 	return wins / (float64(len(low)) * float64(len(high)))
 }

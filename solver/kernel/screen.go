@@ -127,7 +127,7 @@ func momentsChunk(x []float64, rows []int32, wy []float64) (sx, sxx, sxy float64
 func weightedMomentsChunk(x []float64, rows []int32, w, wy []float64) (sx, sxx, sxy float64) {
 	for k, r := range rows {
 		v := x[r]
-		t := w[k] * v
+		t := float64(w[k] * v)
 		sx += t
 		sxx += float64(t * v)
 		sxy += float64(v * wy[k])
