@@ -15,10 +15,15 @@ const blockBytes = 192 << 20
 // BlockLimit returns how many draws of the given number of rows one worker
 // should fit together: as many as one pass over a column serves, fewer where
 // their gathered columns would take much memory, at least a pair.
-func (m *Model) BlockLimit(drawRows int) int {
-	gathered := 8 * max(drawRows, 1) * min(m.candidates(), max(drawRows, 1), 100)
+func (m *Model) BlockLimit(drawRows int) int { return blockLimit(m.candidates(), drawRows) }
+
+func blockLimit(candidates, drawRows int) int {
+	gathered := 8 * max(drawRows, 1) * min(candidates, max(drawRows, 1), 100)
 	return max(2, min(kernel.MaxLanes, blockBytes/gathered))
 }
+
+// longWindow is the window on a long table.
+const longWindow = 8
 
 // window is how many lattice steps a fitting looks ahead. On a table with many
 // more rows than candidates the passes over the table cost most, and solutions
@@ -29,7 +34,7 @@ func (m *Model) window() int {
 		return m.whim.window()
 	}
 	if m.rows >= 2*m.candidates() {
-		return 8
+		return longWindow
 	}
 	return 1
 }

@@ -1,0 +1,65 @@
+package solver
+
+import "math"
+
+// Shape is what the memory that fits take depends on.
+type Shape struct {
+	Rows       int // of the table
+	DrawRows   int // of a draw
+	Candidates int
+	Always     int
+	Steps      int // lattice steps of a complete path
+	StopAfter  int // distinct candidates that end a path; 0: none
+}
+
+// Shape returns that of the model's draws of so many rows.
+func (m *Model) Shape(drawRows int) Shape {
+	return Shape{
+		Rows: m.rows, DrawRows: drawRows, Candidates: m.candidates(), Always: len(m.p.Always),
+		Steps: m.last + 1, StopAfter: m.p.StopAfter,
+	}
+}
+
+// Steps is how many lattice steps lie from 1 down to floor.
+func Steps(ratio, floor float64) int {
+	return 1 + max(0, lattice{top: 1, ratio: ratio}.lastAbove(floor))
+}
+
+// BlockLimit is that of a model of this shape.
+func (s Shape) BlockLimit() int { return blockLimit(s.Candidates, s.DrawRows) }
+
+// Bytes and counts that were fitted to measurements (TestWorkspace holds them
+// to live memory).
+const (
+	perCandidate = 32  // screening numbers of one candidate in one draw
+	perWindow    = 12  // more of them where the window is longer than a step
+	workingShare = 1.6 // working set over candidates that entered
+	perPlace     = 18  // Gram matrix, factor and records, per place squared
+	perDraw      = 16 << 10
+	vectors      = 11 // of a draw's rows: outcome, residuals, lanes
+)
+
+// Workspace estimates the bytes that one worker holds at the end of a block of
+// so many draws, beside the table: for each draw the screening numbers of all
+// candidates, the gathered columns and the Gram matrix of its working set, and
+// the score vectors kept as references.
+func (s Shape) Workspace(draws int) int64 {
+	entered := float64(min(s.Candidates, s.DrawRows))
+	steps := float64(s.Steps)
+	if s.StopAfter > 0 && float64(s.StopAfter) < entered {
+		entered, steps = float64(s.StopAfter), steps/2 // such paths end about half way
+	} else {
+		entered /= 2 // far fewer fit the noise down to a usual floor
+	}
+	places := float64(s.Always) + min(float64(s.Candidates), workingShare*entered)
+	row := 8 * float64(s.DrawRows)
+	candidate, references := float64(perCandidate), steps
+	if s.Rows >= 2*s.Candidates {
+		candidate += perWindow
+		references /= longWindow
+	}
+	snapshot := min(snapshotBytes, row*references)
+	draw := candidate*float64(s.Candidates) + row*(places+vectors) + snapshot +
+		perPlace*places*places + 8*entered*steps
+	return int64(math.Ceil((draw + perDraw) * float64(draws)))
+}
