@@ -197,6 +197,38 @@ func TestHugeClaimsOfRows(t *testing.T) {
 	wantError(t, err, "the table has 3,000,000,000 rows: at most 2,147,483,647 can be used")
 }
 
+func TestClaimsOfPages(t *testing.T) {
+	number, text := &leaf{physical: physicalDouble}, &leaf{physical: physicalByteArray}
+	for name, c := range map[string]struct {
+		p  pages
+		h  pageHeader
+		ok bool
+	}{
+		"in order":        {pages{left: 1000, codec: codecZstd, leaf: number}, pageHeader{packed: 900, plain: 8000, values: 1000}, true},
+		"equal values":    {pages{left: 1000, codec: codecZstd, leaf: number}, pageHeader{packed: 300, plain: 8e6, values: 1e6}, true},
+		"brotli":          {pages{left: 1000, codec: codecBrotli, leaf: number}, pageHeader{packed: 30, plain: 8e6, values: 1e6}, true},
+		"beyond zstd":     {pages{left: 1000, codec: codecZstd, leaf: number}, pageHeader{packed: 300, plain: 8e8, values: 1e8}, false},
+		"beyond brotli":   {pages{left: 1000, codec: codecBrotli, leaf: number}, pageHeader{packed: 30, plain: 8e8, values: 1e8}, false},
+		"beyond values":   {pages{left: 1e6, codec: codecZstd, leaf: number}, pageHeader{packed: 1e5, plain: 1e8, values: 1000}, false},
+		"beyond chunk":    {pages{left: 10, codec: codecZstd, leaf: number}, pageHeader{packed: 900, plain: 8000, values: 1000}, false},
+		"large text":      {pages{left: 1e8, codec: codecZstd, leaf: text}, pageHeader{packed: 1e8, plain: 1e9, values: 1000}, false},
+		"negative":        {pages{left: 10, codec: codecZstd, leaf: number}, pageHeader{packed: -1, plain: 8}, false},
+		"negative values": {pages{left: 10, codec: codecZstd, leaf: number}, pageHeader{packed: 1, plain: 8, values: -1}, false},
+	} {
+		if err := c.p.claim(c.h); (err == nil) != c.ok {
+			t.Errorf("%s: %v", name, err)
+		}
+	}
+	if checkDelta([]byte{0x80, 1, 4, 3, 0}, 3) != nil {
+		t.Error("packed differences in order are refused")
+	}
+	for _, b := range [][]byte{{}, {0x80}, {0, 4, 3}, {0x80, 1, 0, 3}, {0x80, 1, 4, 4}, {0x80, 0x80, 0x80, 0x80, 1, 4, 3}, {0x80, 1, 3, 3}} {
+		if checkDelta(b, 3) == nil {
+			t.Errorf("packed differences % x are accepted", b)
+		}
+	}
+}
+
 func TestOpenQuoteDoesNotTakeTheWholeFile(t *testing.T) {
 	// A quote that is never closed in a large file must not hang or eat memory.
 	text := "a,b\n1,\"2\n" + strings.Repeat("3,4\n", 1<<20)

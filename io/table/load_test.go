@@ -9,6 +9,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"testing"
 
@@ -89,6 +90,52 @@ func exactMoments(cells []any) (mean, sd float64) {
 	mean, _ = m.Float64()
 	sd, _ = num().Sqrt(square.Quo(square, n)).Float64()
 	return mean, sd
+}
+
+func TestConstantColumnsCentreExactly(t *testing.T) {
+	// The rounded mean of equal values is often not that value.
+	for _, x := range []float64{0.1, 1.0 / 3, 1e8 + 0.1, -7e-5} {
+		for n := 2; n < 300; n++ {
+			v := make([]float64, n)
+			for i := range v {
+				v[i] = x
+			}
+			if c, _ := centreOf(v); c != x {
+				t.Fatalf("%d times %v has the centre %v", n, x, c)
+			}
+		}
+	}
+}
+
+func TestDecimalsRoundOnce(t *testing.T) {
+	// The same as reading the number as text (strconv).
+	for scale := range 25 {
+		for _, u := range []int64{0, 1, 3, -7, 123456789, 1<<53 - 1, 1<<53 + 1, math.MaxInt64, math.MinInt64} {
+			want, _ := strconv.ParseFloat(fmt.Sprintf("%de-%d", u, scale), 64)
+			if got := decimalSmall(u, scale); got != want {
+				t.Errorf("%d with scale %d is %v, want %v", u, scale, got, want)
+			}
+			if got, _ := decimal(big.NewInt(u), scale); got != want {
+				t.Errorf("%d with scale %d is %v as a large number, want %v", u, scale, got, want)
+			}
+		}
+	}
+}
+
+func TestRolesEnterTheFingerprint(t *testing.T) {
+	path := writeText(t, tempFile(t, "t.csv"), "y,a,b\n1,1,2\n2,2,3\n3,5,1\n")
+	seen := map[string]bool{}
+	for _, r := range []Request{
+		{Outcome: "y", Candidates: []string{"a", "b"}},
+		{Outcome: "y", Candidates: []string{"a"}, Always: []string{"b"}},
+		{Weight: "y", Candidates: []string{"a", "b"}},
+		{Candidates: []string{"a", "b", "y"}},
+	} {
+		seen[load(t, path, r).Fingerprint] = true
+	}
+	if len(seen) != 4 {
+		t.Errorf("four requests have %d fingerprints", len(seen))
+	}
 }
 
 func TestCentreAtTheEdgesOfFloat64(t *testing.T) {
@@ -300,6 +347,7 @@ func TestRoundedIntegersAreSaid(t *testing.T) {
 	dir := t.TempDir()
 	for _, path := range []string{
 		writeParquet(t, filepath.Join(dir, "t.parquet"), cols, 2),
+		writeParquet(t, filepath.Join(dir, "one.parquet"), cols, 4),
 		writeArrow(t, filepath.Join(dir, "t.arrow"), cols, 3, false),
 		writeCSV(t, filepath.Join(dir, "t.csv"), cols),
 	} {

@@ -16,7 +16,7 @@ import (
 func scanned(t testing.TB) []testColumn {
 	r := rand.New(rand.NewPCG(11, 12))
 	const n = 400
-	names := []string{"alive", "id", "count_up", "day", "second", "constant", "noise", "ties", "close", "inverse", "holes", "series", "feed", "inf"}
+	names := []string{"alive", "id", "count_up", "day", "second", "constant", "noise", "ties", "close", "inverse", "holes", "series", "feed", "inf", "order"}
 	cols := make([]testColumn, len(names))
 	for k, name := range names {
 		cols[k] = testColumn{name, arrow.PrimitiveTypes.Float64, nil}
@@ -28,7 +28,7 @@ func scanned(t testing.TB) []testColumn {
 		y := float64(r.IntN(2))
 		walk = 0.95*walk + r.NormFloat64()
 		cells := []any{y, float64(ids[i]), float64(i + 7), float64(20240100 + 1 + i%28), float64(1700000000 + 60*i), 3.5, r.NormFloat64() * 10,
-			float64(r.IntN(5)) + y, y*3 + 0.1*r.NormFloat64(), -y*2 + 0.8*r.NormFloat64(), r.Float64(), walk, fmt.Sprint("feed ", i%3), r.Float64()}
+			float64(r.IntN(5)) + y, y*3 + 0.1*r.NormFloat64(), -y*2 + 0.6*r.NormFloat64(), r.Float64(), walk, fmt.Sprint("feed ", i%3), r.Float64(), y*2 + 0.6*r.NormFloat64()}
 		if i%8 == 0 {
 			cells[10] = nil
 		}
@@ -80,7 +80,7 @@ func checkFlags(t *testing.T, at map[string]ColumnSummary) {
 	want := map[string]string{
 		"alive": "whole two ", "id": "whole unique ", "count_up": "whole unique row monotone ", "day": "whole date ",
 		"second": "whole unique monotone date ", "constant": "constant ", "noise": "", "ties": "whole ", "close": "leak ",
-		"inverse": "leak ", "holes": "", "series": "", "feed": "", "inf": "",
+		"inverse": "leak ", "holes": "", "series": "", "feed": "", "inf": "", "order": "leak ",
 	}
 	for name, w := range want {
 		if got := flags(at[name]); got != w {

@@ -94,10 +94,21 @@ func appendCell(t testing.TB, b array.Builder, v any) {
 		must(t, b.Append(v.(float64)))
 	case *array.Int32DictionaryBuilder:
 		must(t, b.Append(int32(v.(int))))
+	case *array.DenseUnionBuilder:
+		if n, ok := v.(int); ok {
+			b.Append(0)
+			b.Child(0).(*array.Int32Builder).Append(int32(n))
+		} else {
+			b.Append(1)
+			b.Child(1).(*array.Float64Builder).Append(v.(float64))
+		}
 	default:
 		must(t, b.AppendValueFromString(fmt.Sprint(v)))
 	}
 }
+
+// eitherType is a union of two types, stored densely.
+var eitherType = arrow.DenseUnionOf([]arrow.Field{{Name: "n", Type: arrow.PrimitiveTypes.Int32}, {Name: "v", Type: arrow.PrimitiveTypes.Float64}}, []arrow.UnionTypeCode{0, 1})
 
 func must(t testing.TB, err error) {
 	t.Helper()
