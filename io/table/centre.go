@@ -30,21 +30,19 @@ func meanOf(v []float64, scale float64) (mean, lo, hi float64, count int) {
 }
 
 // centreOf returns what is subtracted from a column: its mean over the filled
-// cells, and for a column that does not vary its one value, so that the
-// centred column is exactly 0. ok is false if float64 cannot hold the distance
+// cells, and for a column that does not vary exactly its one value. ok is false if float64 cannot hold the distance
 // of a value from it.
 func centreOf(v []float64) (c float64, ok bool) {
 	c, lo, hi, count := meanOf(v, 1)
 	switch {
 	case count == 0:
 		return 0, true
-	case lo == hi:
-		return lo, true
 	case c != c || math.IsInf(c, 0): // the sum is too large
 		c, _, _, _ = meanOf(v, 0x1p-40)
 		c *= 0x1p40
 	}
-	// The mean of numbers lies between them; rounding must not take it out.
+	// The mean of numbers lies between them; rounding must not take it out. A
+	// column that does not vary is then centred at its value.
 	c = min(max(c, lo), hi)
 	return c, !math.IsInf(hi-c, 0) && !math.IsInf(lo-c, 0)
 }
