@@ -136,6 +136,36 @@ func TestParquetDurationsOfOtherWriters(t *testing.T) {
 	}
 }
 
+func TestParquetTypesOldAndNew(t *testing.T) {
+	// Parquet names types twice: ConvertedType until 2.3, LogicalType since
+	// 2.4 (parquet.thrift). Either alone must do.
+	plain := func(physical int32) schemaElement { return schemaElement{physical: physical, converted: -1} }
+	with := func(e schemaElement, change func(*schemaElement)) schemaElement { change(&e); return e }
+	for want, e := range map[string]schemaElement{
+		"uint16 integer":       with(plain(physicalInt32), func(e *schemaElement) { e.logical, e.bits = logicalInteger, 16 }),
+		"int8 integer":         with(plain(physicalInt32), func(e *schemaElement) { e.logical, e.bits, e.signed = logicalInteger, 8, true }),
+		"uint32 integer":       with(plain(physicalInt32), func(e *schemaElement) { e.converted = convertedUint32 }),
+		"int64 integer":        with(plain(physicalInt64), func(e *schemaElement) { e.converted = convertedInt64 }),
+		"uint64 integer":       with(plain(physicalInt64), func(e *schemaElement) { e.logical, e.bits = logicalInteger, 64 }),
+		"int32 integer":        plain(physicalInt32),
+		"decimal(9,2) number":  with(plain(physicalInt32), func(e *schemaElement) { e.converted, e.precision, e.scale = convertedDecimal, 9, 2 }),
+		"date date":            with(plain(physicalInt32), func(e *schemaElement) { e.logical = logicalDate }),
+		"time date":            with(plain(physicalInt64), func(e *schemaElement) { e.converted = convertedTimeUS }),
+		"timestamp date":       plain(physicalInt96),
+		"string text":          with(plain(physicalByteArray), func(e *schemaElement) { e.converted = convertedUTF8 }),
+		"binary binary":        with(plain(physicalFixed), func(e *schemaElement) { e.logical, e.length = logicalUUID, 16 }),
+		"float16 number":       with(plain(physicalFixed), func(e *schemaElement) { e.logical, e.length = logicalFloat16, 2 }),
+		"list of int32 nested": with(plain(physicalInt32), func(e *schemaElement) { e.repetition = repetitionRepeated }),
+	} {
+		if kind, _ := e.kind(); e.typeName()+" "+kind.String() != want {
+			t.Errorf("%+v is %s %v, want %s", e, e.typeName(), kind, want)
+		}
+	}
+	if l, err := with(plain(physicalInt64), func(e *schemaElement) { e.logical, e.bits = logicalInteger, 64 }).leaf(); err != nil || !l.unsigned {
+		t.Errorf("unsigned is %v, %v", l.unsigned, err)
+	}
+}
+
 // checkReasons expects every unusable column of the table above to say why.
 func checkReasons(t *testing.T, cols []Column) {
 	t.Helper()

@@ -169,6 +169,16 @@ func TestScanInManyBatches(t *testing.T) {
 	}
 }
 
+func TestLeakOfANumberOutcome(t *testing.T) {
+	s, err := Open(writeText(t, tempFile(t, "t.csv"), "y,copy,other\n1,-2.1,4\n2,-4,1\n3,-6.1,3\n5,-10,2\n8,-16,9\n9,-18.1,0\n"))
+	must(t, err)
+	sum, err := s.Scan(t.Context(), "y")
+	must(t, err)
+	if c := sum.Columns; !c[1].Leak || c[2].Leak || c[0].Leak || !math.IsNaN(c[1].AUC) {
+		t.Errorf("leaks %v %v %v, AUC %v", c[0].Leak, c[1].Leak, c[2].Leak, c[1].AUC)
+	}
+}
+
 func TestScanErrors(t *testing.T) {
 	s, err := Open(writeText(t, tempFile(t, "t.csv"), "y,feed\n1,a\n2,b\n"))
 	must(t, err)
