@@ -1,5 +1,5 @@
 // Package resample says which rows are in which draw, and has a pool of
-// workers that fits the draws in blocks and hands the outcomes on in order.
+// workers that fits the draws in blocks and hands the outcomes on.
 //
 // # Vocabulary
 //
@@ -9,7 +9,10 @@
 //     floor(n/2) of the n units each. Where n is odd, one unit, chosen at
 //     random, is in neither.
 //   - A bootstrap draw takes n units with replacement.
-//   - A block is a run of neighbouring draws that one worker fits together.
+//   - A block is the draws that one worker fits together; both halves of a pair
+//     are in the same one.
+//   - A part is a share of the draws: pair k (bootstrap: draw k) is in part
+//     k mod N.
 //
 // # Sameness
 //
@@ -23,13 +26,23 @@
 //
 // # The pool
 //
-// [Run] cuts the draws into blocks, lets each worker take the next block
-// when it is free, and gives the outcomes to one [Sink] in draw order,
-// whichever worker was first. Blocks that wait for an earlier one are
-// bounded in number. The first failure, or the end of the context, stops the
-// handing out of blocks and cancels the fits that are under way; blocks that
-// are whole by then still reach the sink, in draw order, so that the work
-// in them is not lost.
+// [Run] deals out blocks of the draws that are to be made, lets each worker
+// take the next block when it is free, and gives every block to one [Sink] as
+// soon as it is finished. The order in which blocks come means nothing: a draw
+// is known by its number, and whoever adds draws up does so in the order of
+// numbers. Nothing finished waits for anything but the sink, so that as little
+// as possible is lost when the process is killed.
+//
+// The first blocks are a pair for each worker. From the time they take follows
+// how large the later ones may be ([Sizing]): large enough that draws share
+// their passes over the table, and so small that a block is finished within
+// five minutes, or a tenth of the run, whichever is more. Sizes change what is
+// at risk and how fast it goes, never a bit of a draw.
+//
+// A run ends early in two ways. [Options].Stop is the gentle one: nothing new
+// is begun, blocks in work are finished and put. The end of the context is the
+// hard one, and the first failure acts alike: fits under way are cancelled, and
+// only blocks that are whole by then still reach the sink.
 //
 // A [Plan] is read-only and may be shared by goroutines; a Sample belongs to
 // whoever asked for it, save its case weights, which all draws share.

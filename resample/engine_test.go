@@ -57,11 +57,14 @@ func problem(rows, cols int) solver.Problem {
 	return p
 }
 
-// every is a sink that keeps all paths.
+// every is a sink that keeps all paths under their numbers.
 type every struct{ paths []solver.Path }
 
-func (e *every) Put(_ int, paths []solver.Path) error {
-	e.paths = append(e.paths, paths...)
+func (e *every) Put(draws []int, paths []solver.Path) error {
+	e.paths = append(e.paths, make([]solver.Path, max(0, draws[len(draws)-1]+1-len(e.paths)))...)
+	for i, d := range draws {
+		e.paths[d] = paths[i]
+	}
 	return nil
 }
 
@@ -121,9 +124,9 @@ func TestEngineStops(t *testing.T) {
 	defer cancel()
 	var after atomic.Int32
 	got := make(map[int][]solver.Path)
-	sink := putter(func(first int, paths []solver.Path) error {
-		got[first] = paths
-		if first == 20 {
+	sink := putter(func(draws []int, paths []solver.Path) error {
+		got[draws[0]] = paths
+		if len(got) == 11 {
 			cancel()
 		}
 		return nil
@@ -136,7 +139,7 @@ func TestEngineStops(t *testing.T) {
 	if err := resample.Run(ctx, plan, m, sink, resample.Options{Workers: 2, Block: 2, Progress: progress}); err == nil {
 		t.Fatal("no error")
 	}
-	if len(got) < 11 || len(got) > 11+8 {
+	if len(got) < 11 || len(got) > 11+4 {
 		t.Errorf("%d of 200 blocks were kept", len(got))
 	}
 	for first, paths := range got {
@@ -154,9 +157,9 @@ func TestEngineStops(t *testing.T) {
 	}
 }
 
-type putter func(first int, paths []solver.Path) error
+type putter func(draws []int, paths []solver.Path) error
 
-func (f putter) Put(first int, paths []solver.Path) error { return f(first, paths) }
+func (f putter) Put(draws []int, paths []solver.Path) error { return f(draws, paths) }
 
 // awkward fits draws whose weights and penalties are no short binary
 // fractions, so that hardly any product is exact.

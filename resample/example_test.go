@@ -23,9 +23,9 @@ func (counter) FitBlock(_ context.Context, samples []*solver.Sample, progress fu
 // printer stands for a run directory.
 type printer struct{}
 
-func (printer) Put(first int, paths []solver.Path) error {
+func (printer) Put(draws []int, paths []solver.Path) error {
 	for i, p := range paths {
-		fmt.Printf("draw %d: %d tanks\n", first+i, p.Last)
+		fmt.Printf("draw %d: %d tanks\n", draws[i], p.Last)
 	}
 	return nil
 }
@@ -39,7 +39,7 @@ func Example() {
 	}
 	err = resample.Run(context.Background(), plan, counter{}, printer{}, resample.Options{Workers: 2})
 	fmt.Println(err)
-	// Output:
+	// Unordered output:
 	// draw 0: 4 tanks
 	// draw 1: 4 tanks
 	// draw 2: 4 tanks

@@ -132,15 +132,16 @@ func (p Plan) Sample(draw int) *solver.Sample {
 	return pair[draw%2]
 }
 
-// samples makes draws first to last-1; both halves of a pair come from one
+// samples makes the draws of a block; both halves of a pair come from one
 // shuffle.
-func (p Plan) samples(first, last int) []*solver.Sample {
-	out := make([]*solver.Sample, 0, last-first)
-	for d := first; d < last; d++ {
-		if p.Design == Halves && d%2 == 0 && d+1 < last {
+func (p Plan) samples(draws []int) []*solver.Sample {
+	out := make([]*solver.Sample, 0, len(draws))
+	for i := 0; i < len(draws); i++ {
+		d := draws[i]
+		if p.Design == Halves && d%2 == 0 && i+1 < len(draws) && draws[i+1] == d+1 {
 			pair := p.pair(newGenerator(p.Design.String(), p.Seed, uint64(d/2)))
 			out = append(out, pair[:]...)
-			d++
+			i++
 			continue
 		}
 		out = append(out, p.Sample(d))

@@ -142,14 +142,23 @@ func TestSameDrawHoweverAsked(t *testing.T) {
 			backward[d] = short.Sample(d)
 		}
 		for first := 0; first < 20; first += 3 { // odd starts split pairs on purpose
-			last := min(first+3, 20)
-			for i, s := range long.samples(first, last) {
-				if !sameSample(s, backward[first+i]) {
-					t.Errorf("%v: draw %d differs", design, first+i)
+			draws := upTo(first, min(first+3, 20))
+			for i, s := range long.samples(draws) {
+				if !sameSample(s, backward[draws[i]]) {
+					t.Errorf("%v: draw %d differs", design, draws[i])
 				}
 			}
 		}
 	}
+}
+
+// upTo lists the numbers first to last-1.
+func upTo(first, last int) []int {
+	var list []int
+	for d := first; d < last; d++ {
+		list = append(list, d)
+	}
+	return list
 }
 
 func sameSample(a, b *solver.Sample) bool {

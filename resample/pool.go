@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"sync/atomic"
+	"time"
 
 	"golang.org/x/sync/errgroup"
 
@@ -19,50 +20,52 @@ type Fitter interface {
 	FitBlock(ctx context.Context, samples []*solver.Sample, progress func(steps int)) ([]solver.Path, error)
 }
 
-// Sink takes finished draws: paths[i] is draw first+i. Run calls Put from
-// one goroutine at a time and with rising first.
+// Sink takes finished draws: paths[i] is draw draws[i], and the numbers rise.
+// Run calls Put from one goroutine at a time, for each block as soon as it is
+// finished: blocks come in any order, each draw once.
 type Sink interface {
-	Put(first int, paths []solver.Path) error
+	Put(draws []int, paths []solver.Path) error
 }
 
 // Options sets how a run goes, never what comes out of it.
 type Options struct {
-	Workers  int            // goroutines that fit; 0: Workers()
-	Block    int            // draws in a block, even for Halves; 0: BlockSize
-	Progress func(Progress) // called now and then, from one goroutine at a time; it must be quick. nil: none
+	Workers  int             // goroutines that fit; 0: Workers()
+	Block    int             // draws in every block, even for Halves; 0: by the time that draws take, see Sizing
+	Limit    int             // most draws in a block where Block is 0; 0: MaxLanes
+	Risk     time.Duration   // see Sizing; 0: DefaultRisk
+	Draws    []int           // draws to make, rising, whole pairs for Halves; nil: all of the plan. Kept, not copied
+	Stop     <-chan struct{} // closed: nothing new is begun, the blocks in work are finished and put. nil: never
+	Progress func(Progress)  // called now and then, from one goroutine at a time; it must be quick. nil: none
+
+	clock func() time.Time // nil: time.Now
 }
 
-// window is how many blocks per worker may be under way or waiting for an
-// earlier one. It bounds memory; the work is lost only beyond it.
-const window = 4
+// ErrStop is the cause in a *StoppedError where Options.Stop ended the run.
+var ErrStop = errors.New("asked to stop")
 
-// Run makes all draws of the plan, fits them and puts the outcomes into the
-// sink in draw order. It returns when nothing of it runs any more. The error
-// is that of the first failure, and names its draws; where ctx ended first it
-// is a *StoppedError. In both cases the blocks that were whole have been put,
-// so the sink may have gaps. A panic in the fitter or the sink becomes a
-// *PanicError.
+// Run makes draws of the plan, fits them, and puts each block into the sink
+// as soon as it is finished. It returns when nothing of it runs any more. The
+// error is that of the first failure, and names its draws; where ctx or
+// Options.Stop ended the run before the last draw it is a *StoppedError. The
+// blocks that were whole have been put in every case, so the sink may have
+// gaps. A panic in the fitter or the sink becomes a *PanicError.
 func Run(ctx context.Context, plan Plan, f Fitter, sink Sink, opt Options) error {
 	opt, err := opt.resolve(plan)
 	if err != nil {
 		return err
 	}
 	group, inner := errgroup.WithContext(ctx)
-	r := &run{
-		plan:     plan,
-		fitter:   f,
-		block:    opt.Block,
-		blocks:   (plan.Number + opt.Block - 1) / opt.Block,
-		tokens:   make(chan struct{}, window*opt.Workers),
-		finished: make(chan outcome, window*opt.Workers),
-		tally:    &tally{total: plan.Number, report: opt.Progress},
-	}
-	workers := min(opt.Workers, r.blocks)
-	r.active.Store(int32(workers))
-	for range workers {
+	r := newRun(plan, f, opt)
+	for range r.workers {
 		group.Go(func() error { return r.work(inner) })
 	}
-	group.Go(func() error { return r.write(sink) })
+	group.Go(func() error {
+		err := r.write(sink)
+		if err != nil {
+			group.Go(r.drop)
+		}
+		return err
+	})
 	return r.verdict(ctx, group.Wait())
 }
 
@@ -71,47 +74,82 @@ func (o Options) resolve(plan Plan) (Options, error) {
 	if plan.units == nil {
 		return o, errors.New("resample: the plan did not come from NewPlan")
 	}
-	if o.Workers < 0 {
-		return o, fmt.Errorf("resample: workers %d: at least 1 is needed, or 0 for as many as this process may use", o.Workers)
+	if err := o.checkNumbers(plan.Design); err != nil {
+		return o, err
 	}
-	if o.Block < 0 {
-		return o, fmt.Errorf("resample: block of %d draws: at least 1 is needed, or 0 to have it chosen", o.Block)
+	if err := plan.checkDraws(o.Draws); err != nil {
+		return o, err
 	}
-	if plan.Design == Halves && o.Block%2 != 0 {
-		return o, fmt.Errorf("resample: block of %d draws: it would split a pair: take %d", o.Block, o.Block+1)
+	if o.Draws == nil {
+		o.Draws = plan.all()
 	}
 	if o.Workers == 0 {
 		o.Workers = Workers()
 	}
-	if o.Block == 0 {
-		o.Block = BlockSize(plan.Number, o.Workers, MaxLanes)
+	if o.clock == nil {
+		o.clock = time.Now
 	}
 	return o, nil
 }
 
+// checkNumbers refuses numbers outside their ranges.
+func (o Options) checkNumbers(design Design) error {
+	switch {
+	case o.Workers < 0:
+		return fmt.Errorf("resample: workers %d: at least 1 is needed, or 0 for as many as this process may use", o.Workers)
+	case o.Block < 0:
+		return fmt.Errorf("resample: block of %d draws: at least 1 is needed, or 0 to have it chosen", o.Block)
+	case design == Halves && o.Block%2 != 0:
+		return fmt.Errorf("resample: block of %d draws: it would split a pair: take %d", o.Block, o.Block+1)
+	case o.Limit < 0:
+		return fmt.Errorf("resample: limit of %d draws in a block: at least 1 is needed, or 0 for %d", o.Limit, MaxLanes)
+	case o.Risk < 0:
+		return fmt.Errorf("resample: risk %v: a block cannot take less than no time", o.Risk)
+	}
+	return nil
+}
+
 // run is what the goroutines of one Run share.
 type run struct {
-	plan   Plan
-	fitter Fitter
-	block  int // draws in a block
-	blocks int
+	plan    Plan
+	fitter  Fitter
+	workers int
+	stop    <-chan struct{}
+	clock   func() time.Time
+	dealer  *dealer
 
-	next     atomic.Int64  // next block to hand out
-	active   atomic.Int32  // workers that have not ended
-	tokens   chan struct{} // one for each block handed out and not yet put
-	finished chan outcome  // closed by the last worker
+	active   atomic.Int32 // workers that have not ended
+	finished chan outcome // closed by the last worker
 	tally    *tally
+}
+
+func newRun(plan Plan, f Fitter, opt Options) *run {
+	sizing := Sizing{Design: plan.Design, Draws: len(opt.Draws), Workers: opt.Workers, Limit: opt.Limit, Risk: opt.Risk}
+	r := &run{
+		plan:    plan,
+		fitter:  f,
+		workers: max(1, min(opt.Workers, len(opt.Draws)/sizing.Unit())),
+		stop:    opt.Stop,
+		clock:   opt.clock,
+		dealer:  newDealer(opt.Draws, opt.Block, sizing),
+		// One finished block for each worker may wait for the writer, and
+		// bounds what is in memory and not yet safe.
+		finished: make(chan outcome, opt.Workers),
+		tally:    &tally{total: len(opt.Draws), report: opt.Progress},
+	}
+	r.active.Store(int32(r.workers))
+	return r
 }
 
 // outcome is one fitted block.
 type outcome struct {
-	block int
+	draws []int
 	paths []solver.Path
 }
 
-// work fits one block after the other until there are none, one fails, or
-// ctx ends. A token is taken before a block, so the block that the writer
-// waits for is always with a worker and the tokens cannot run out for good.
+// work fits one block after the other until there are none, one fails, ctx
+// ends, or the run is asked to stop. A block that is whole goes to the writer
+// in every case.
 func (r *run) work(ctx context.Context) error {
 	defer func() {
 		if r.active.Add(-1) == 0 {
@@ -119,64 +157,56 @@ func (r *run) work(ctx context.Context) error {
 		}
 	}()
 	for {
-		select {
-		case r.tokens <- struct{}{}:
-		case <-ctx.Done():
+		if ctx.Err() != nil {
 			return ctx.Err()
 		}
-		if ctx.Err() != nil { // both may have been ready
-			return ctx.Err()
-		}
-		block := int(r.next.Add(1)) - 1
-		if block >= r.blocks {
-			<-r.tokens
+		if r.stopped() {
 			return nil
 		}
-		paths, err := r.fit(ctx, block)
+		draws := r.dealer.take()
+		if len(draws) == 0 {
+			return nil
+		}
+		start := r.clock()
+		paths, err := r.fit(ctx, draws)
 		if err != nil {
 			return err
 		}
-		r.finished <- outcome{block, paths} // has room for every token
+		r.dealer.took(len(draws), r.clock().Sub(start))
+		r.finished <- outcome{draws, paths} // until this is closed somebody takes from it
 	}
 }
 
-// bounds returns the draws of a block, first to last-1.
-func (r *run) bounds(block int) (first, last int) {
-	return block * r.block, min((block+1)*r.block, r.plan.Number)
+// stopped reports whether the run was asked to begin nothing new.
+func (r *run) stopped() bool {
+	select {
+	case <-r.stop:
+		return true
+	default:
+		return false
+	}
 }
 
 // fit makes the draws of a block and fits them.
-func (r *run) fit(ctx context.Context, block int) (paths []solver.Path, err error) {
-	first, last := r.bounds(block)
+func (r *run) fit(ctx context.Context, draws []int) (paths []solver.Path, err error) {
 	err = guard(func() error {
-		paths, err = r.fitter.FitBlock(ctx, r.plan.samples(first, last), r.tally.steps)
+		paths, err = r.fitter.FitBlock(ctx, r.plan.samples(draws), r.tally.steps)
 		return err
 	})
-	if err == nil && len(paths) != last-first {
+	if err == nil && len(paths) != len(draws) {
 		err = fmt.Errorf("the fitter returned %d paths", len(paths))
 	}
 	if err != nil {
-		return nil, fmt.Errorf("resample: %s: %w", drawRange(first, last), err)
+		return nil, fmt.Errorf("resample: %s: %w", drawList(draws), err)
 	}
 	return paths, nil
 }
 
-// write puts blocks in draw order. After a failure or the end of the context
-// the workers stop handing in; what was whole by then and waits behind a
-// block that will not come is put too, still in draw order. A failing sink is
-// not asked again.
+// write puts blocks as they come. After a failure or the end of the context
+// the workers begin nothing new, and what was whole by then is put. A sink
+// that fails ends the run and is not asked again.
 func (r *run) write(sink Sink) error {
-	var q queue
 	for o := range r.finished {
-		q.add(o)
-		for o, ok := q.next(); ok; o, ok = q.next() {
-			if err := r.put(sink, o); err != nil {
-				return err
-			}
-			<-r.tokens
-		}
-	}
-	for _, o := range q.rest() {
 		if err := r.put(sink, o); err != nil {
 			return err
 		}
@@ -184,30 +214,40 @@ func (r *run) write(sink Sink) error {
 	return nil
 }
 
-// put hands one block to the sink and counts its draws as done.
-func (r *run) put(sink Sink, o outcome) error {
-	first, last := r.bounds(o.block)
-	if err := guard(func() error { return sink.Put(first, o.paths) }); err != nil {
-		return fmt.Errorf("resample: keeping %s: %w", drawRange(first, last), err)
+// drop takes what no writer takes any more, so that no worker waits for ever.
+func (r *run) drop() error {
+	for range r.finished {
 	}
-	r.tally.draws(last - first)
 	return nil
 }
 
-// verdict tells an end of the caller's context from a failure of the run's
-// own: workers that were stopped from outside report nothing of theirs.
+// put hands one block to the sink and counts its draws as done.
+func (r *run) put(sink Sink, o outcome) error {
+	if err := guard(func() error { return sink.Put(o.draws, o.paths) }); err != nil {
+		return fmt.Errorf("resample: keeping %s: %w", drawList(o.draws), err)
+	}
+	r.tally.draws(len(o.draws))
+	return nil
+}
+
+// verdict tells an end from outside from a failure of the run's own: workers
+// that were stopped report nothing of theirs.
 func (r *run) verdict(ctx context.Context, err error) error {
-	if err != nil && ctx.Err() != nil && errors.Is(err, ctx.Err()) {
-		return &StoppedError{Draws: r.tally.done.Draws, Total: r.plan.Number, Cause: context.Cause(ctx), end: ctx.Err()}
+	done, total := r.tally.done.Draws, r.tally.total
+	switch {
+	case err != nil && ctx.Err() != nil && errors.Is(err, ctx.Err()):
+		return &StoppedError{Draws: done, Total: total, Cause: context.Cause(ctx), end: ctx.Err()}
+	case err == nil && done < total:
+		return &StoppedError{Draws: done, Total: total, Cause: ErrStop, end: ErrStop}
 	}
 	return err
 }
 
-// StoppedError says that the caller's context ended before the last draw.
-// errors.Is finds the context's error and its cause in it.
+// StoppedError says that the run was ended from outside before the last draw.
+// errors.Is finds the context's error and its cause in it, or ErrStop.
 type StoppedError struct {
-	Draws, Total int   // draws put into the sink, draws of the plan
-	Cause        error // context.Cause of the caller's context
+	Draws, Total int   // draws put into the sink, draws that were to be made
+	Cause        error // context.Cause of the caller's context, or ErrStop
 	end          error
 }
 
@@ -218,10 +258,14 @@ func (e *StoppedError) Error() string {
 // Unwrap serves errors.Is and errors.As.
 func (e *StoppedError) Unwrap() []error { return []error{e.end, e.Cause} }
 
-// drawRange names draws first to last-1.
-func drawRange(first, last int) string {
-	if last-first == 1 {
+// drawList names the draws of a block.
+func drawList(draws []int) string {
+	first, last := draws[0], draws[len(draws)-1]
+	switch {
+	case len(draws) == 1:
 		return fmt.Sprintf("draw %d", first)
+	case last-first == len(draws)-1:
+		return fmt.Sprintf("draws %d to %d", first, last)
 	}
-	return fmt.Sprintf("draws %d to %d", first, last-1)
+	return fmt.Sprintf("%d draws from %d to %d", len(draws), first, last)
 }

@@ -4,7 +4,9 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"math/rand/v2"
 	"reflect"
+	"slices"
 	"strings"
 	"sync"
 	"sync/atomic"
@@ -37,45 +39,97 @@ func trace(_ context.Context, samples []*solver.Sample, progress func(int)) ([]s
 	return paths, nil
 }
 
-// ledger is a Sink that keeps what it is given.
+// ledger is a Sink that keeps what it is given and notes what must not be: a
+// draw that comes twice, and numbers that do not rise.
 type ledger struct {
-	firsts []int
-	paths  []solver.Path
+	blocks [][]int
+	paths  map[int]solver.Path
+	wrong  []string
 }
 
-func (l *ledger) Put(first int, paths []solver.Path) error {
-	l.firsts = append(l.firsts, first)
-	l.paths = append(l.paths, paths...)
+func (l *ledger) Put(draws []int, paths []solver.Path) error {
+	if l.paths == nil {
+		l.paths = make(map[int]solver.Path)
+	}
+	l.blocks = append(l.blocks, slices.Clone(draws))
+	if len(draws) != len(paths) || !slices.IsSorted(draws) {
+		l.wrong = append(l.wrong, fmt.Sprintf("%d paths for draws %v", len(paths), draws))
+	}
+	for i, d := range draws {
+		if _, ok := l.paths[d]; ok {
+			l.wrong = append(l.wrong, fmt.Sprintf("draw %d came twice", d))
+		}
+		l.paths[d] = paths[i]
+	}
 	return nil
 }
 
-// The sink sees the same sequence for any number of workers and any block.
-func TestSameSequenceForAnyWorkersAndBlock(t *testing.T) {
+// sorted lists the blocks by their first draw, as text.
+func (l *ledger) sorted() string {
+	list := slices.Clone(l.blocks)
+	slices.SortFunc(list, slices.Compare)
+	return fmt.Sprint(list)
+}
+
+// The sink gets exactly the draws that were asked for, each once and equal to
+// the bit, for any number of workers, any block, and any choice of draws.
+func TestExactlyTheDrawsAskedFor(t *testing.T) {
+	r := rand.New(rand.NewPCG(11, 3))
 	for _, design := range []Design{Halves, Bootstrap} {
 		plan := mustPlan(t, Plan{Rows: 30, Number: 60, Seed: 4, Design: design})
-		want := make([]solver.Path, plan.Number)
-		for d := range want {
-			got, err := trace(context.Background(), []*solver.Sample{plan.Sample(d)}, func(int) {})
-			if err != nil {
-				t.Fatal(err)
+		all := traces(t, plan)
+		for _, choice := range [][]int{nil, {}, {0, 1}, {58, 59}, Part(plan, 2, 3), someUnits(r, plan), someUnits(r, plan)} {
+			want := all
+			if choice != nil {
+				want = make(map[int]solver.Path)
+				for _, d := range choice {
+					want[d] = all[d]
+				}
 			}
-			want[d] = got[0]
-		}
-		for _, workers := range []int{1, 2, 7, 100} {
-			for _, block := range []int{0, 2, 4, 16, 64} {
-				var l ledger
-				if err := Run(context.Background(), plan, fitFunc(trace), &l, Options{Workers: workers, Block: block}); err != nil {
-					t.Fatal(err)
-				}
-				if !reflect.DeepEqual(l.paths, want) {
-					t.Errorf("%v, %d workers, block %d: another sequence", design, workers, block)
-				}
-				if block > 0 && len(l.firsts) != (plan.Number+block-1)/block {
-					t.Errorf("%d workers, block %d: %d blocks", workers, block, len(l.firsts))
+			for _, workers := range []int{1, 2, 7, 100} {
+				for _, block := range []int{0, 2, 4, 16, 64} {
+					var l ledger
+					if err := Run(context.Background(), plan, fitFunc(trace), &l, Options{Workers: workers, Block: block, Draws: choice}); err != nil {
+						t.Fatal(err)
+					}
+					if len(l.wrong) > 0 || len(l.paths) != len(want) || len(want) > 0 && !reflect.DeepEqual(l.paths, want) {
+						t.Errorf("%v, %d workers, block %d, draws %v: %d draws of %d; %v", design, workers, block, choice, len(l.paths), len(want), l.wrong)
+					}
+					if block > 0 && len(l.blocks) != (len(want)+block-1)/block {
+						t.Errorf("%d workers, block %d: %d blocks", workers, block, len(l.blocks))
+					}
 				}
 			}
 		}
 	}
+}
+
+// traces fits every draw of a plan alone.
+func traces(t *testing.T, plan Plan) map[int]solver.Path {
+	t.Helper()
+	all := make(map[int]solver.Path)
+	for d := range plan.Number {
+		got, err := trace(context.Background(), []*solver.Sample{plan.Sample(d)}, func(int) {})
+		if err != nil {
+			t.Fatal(err)
+		}
+		all[d] = got[0]
+	}
+	return all
+}
+
+// someUnits chooses about half of the pairs, or of the bootstrap draws.
+func someUnits(r *rand.Rand, plan Plan) []int {
+	draws, take := []int{}, false
+	for d := range plan.Number {
+		if plan.Design == Bootstrap || d%2 == 0 {
+			take = r.IntN(2) == 0
+		}
+		if take {
+			draws = append(draws, d)
+		}
+	}
+	return draws
 }
 
 func TestOddBootstrapHasAShortLastBlock(t *testing.T) {
@@ -84,8 +138,8 @@ func TestOddBootstrapHasAShortLastBlock(t *testing.T) {
 	if err := Run(context.Background(), plan, fitFunc(trace), &l, Options{Workers: 2, Block: 3}); err != nil {
 		t.Fatal(err)
 	}
-	if fmt.Sprint(l.firsts) != "[0 3 6]" || len(l.paths) != 7 {
-		t.Errorf("blocks from %v, %d paths", l.firsts, len(l.paths))
+	if l.sorted() != "[[0 1 2] [3 4 5] [6]]" {
+		t.Errorf("blocks %v", l.sorted())
 	}
 }
 
@@ -99,7 +153,15 @@ func TestRunRefuses(t *testing.T) {
 		"split pair":       {halves, Options{Block: 3}, "take 4"},
 		"negative block":   {halves, Options{Block: -2}, "block of -2"},
 		"negative workers": {halves, Options{Workers: -1}, "workers -1"},
+		"negative limit":   {halves, Options{Limit: -1}, "limit of -1"},
+		"negative risk":    {halves, Options{Risk: -time.Second}, "risk -1s"},
 		"unchecked plan":   {Plan{Rows: 30, Number: 8}, Options{}, "NewPlan"},
+		"beyond the plan":  {halves, Options{Draws: []int{6, 7, 8, 9}}, "draw 8: the plan has draws 0 to 7"},
+		"negative draw":    {halves, Options{Draws: []int{-1, 0}}, "draw -1"},
+		"twice":            {halves, Options{Draws: []int{2, 3, 2, 3}}, "draw 2 comes after draw 3"},
+		"second half only": {halves, Options{Draws: []int{0, 1, 3}}, "draw 3: halves are made in pairs, and the list has one half of pair 1 only"},
+		"first half only":  {halves, Options{Draws: []int{2, 4, 5}}, "one half of pair 1 only"},
+		"last half only":   {halves, Options{Draws: []int{0, 1, 4}}, "one half of pair 2 only"},
 	} {
 		err := Run(context.Background(), c.plan, fitFunc(trace), &ledger{}, c.opt)
 		if err == nil || !strings.Contains(err.Error(), c.says) {
@@ -141,8 +203,7 @@ func TestFirstFailureStopsPromptly(t *testing.T) {
 	}
 }
 
-// Blocks that are whole when another fails are kept, in order, even behind
-// the gap.
+// Blocks that are whole when another fails are kept.
 func TestWholeBlocksSurviveAFailure(t *testing.T) {
 	plan := mustPlan(t, Plan{Rows: 30, Number: 8})
 	var others sync.WaitGroup
@@ -161,68 +222,188 @@ func TestWholeBlocksSurviveAFailure(t *testing.T) {
 	if err == nil || err.Error() != "resample: draws 2 to 3: tank 7 leaks" {
 		t.Errorf("error %v", err)
 	}
-	if fmt.Sprint(l.firsts) != "[0 4 6]" {
-		t.Errorf("kept blocks from %v", l.firsts)
+	if l.sorted() != "[[0 1] [4 5] [6 7]]" {
+		t.Errorf("kept blocks %v", l.sorted())
 	}
 }
 
 // sinkFunc is a Sink made of a function.
-type sinkFunc func(first int, paths []solver.Path) error
+type sinkFunc func(draws []int, paths []solver.Path) error
 
-func (f sinkFunc) Put(first int, paths []solver.Path) error { return f(first, paths) }
+func (f sinkFunc) Put(draws []int, paths []solver.Path) error { return f(draws, paths) }
 
+// A sink that fails is not asked again, nothing new is begun, and the fits
+// under way are cancelled.
 func TestSinkFailureStopsAndIsNotAskedAgain(t *testing.T) {
+	const workers = 2
 	plan := mustPlan(t, Plan{Rows: 30, Number: 400})
-	var asked, fitted atomic.Int32
-	sink := sinkFunc(func(first int, _ []solver.Path) error {
-		asked.Add(1)
-		if first == 10 {
+	var asked, after, cancelled atomic.Int32
+	var failed atomic.Bool
+	sink := sinkFunc(func([]int, []solver.Path) error {
+		if asked.Add(1) == 6 {
+			failed.Store(true)
 			return errTank
 		}
 		return nil
 	})
-	fit := func(ctx context.Context, samples []*solver.Sample, progress func(int)) ([]solver.Path, error) {
-		fitted.Add(1)
-		return trace(ctx, samples, progress)
+	fit := func(ctx context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+		if failed.Load() {
+			after.Add(1)
+			<-ctx.Done() // an hour of work, unless cancelled
+			cancelled.Add(1)
+			return nil, ctx.Err()
+		}
+		return make([]solver.Path, len(samples)), nil
 	}
-	err := Run(context.Background(), plan, fitFunc(fit), sink, Options{Workers: 2, Block: 2})
-	if !errors.Is(err, errTank) || !strings.HasPrefix(err.Error(), "resample: keeping draws 10 to 11: ") {
+	err := Run(context.Background(), plan, fitFunc(fit), sink, Options{Workers: workers, Block: 2})
+	if !errors.Is(err, errTank) || !strings.HasPrefix(err.Error(), "resample: keeping draws ") {
 		t.Errorf("error %v", err)
 	}
 	if asked.Load() != 6 {
 		t.Errorf("the sink was asked %d times", asked.Load())
 	}
-	if n := fitted.Load(); n > 6+2*window+2 {
-		t.Errorf("%d of 200 blocks were fitted", n)
+	if n := after.Load(); n > workers || n != cancelled.Load() {
+		t.Errorf("%d blocks were begun after the failure, %d of them cancelled", n, cancelled.Load())
 	}
 }
 
-// A slow block holds the others back: what waits for it is bounded.
-func TestWaitingBlocksAreBounded(t *testing.T) {
-	const workers, bound = 3, window*3 - 1
-	plan := mustPlan(t, Plan{Rows: 30, Number: 400})
+// A block is put as soon as it is finished, and not held back by an earlier
+// one: the first block waits here until all others are in the sink.
+func TestFinishedBlocksDoNotWait(t *testing.T) {
+	plan := mustPlan(t, Plan{Rows: 30, Number: 100})
 	first := plan.Sample(0)
-	var fitted, peak atomic.Int32
-	fit := func(ctx context.Context, samples []*solver.Sample, progress func(int)) ([]solver.Path, error) {
+	others := make(chan struct{})
+	fit := func(_ context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
 		if sameSample(samples[0], first) {
-			for end := time.Now().Add(10 * time.Second); fitted.Load() < bound && time.Now().Before(end); {
-				time.Sleep(time.Millisecond)
+			select {
+			case <-others:
+			case <-time.After(20 * time.Second):
+				return nil, errors.New("finished blocks were held back")
 			}
-			time.Sleep(20 * time.Millisecond) // time to go beyond the bound
-			peak.Store(fitted.Load())
 		}
-		fitted.Add(1)
 		return make([]solver.Path, len(samples)), nil
 	}
 	var l ledger
-	if err := Run(context.Background(), plan, fitFunc(fit), &l, Options{Workers: workers, Block: 2}); err != nil {
+	sink := sinkFunc(func(draws []int, paths []solver.Path) error {
+		defer func() {
+			if len(l.paths) == 98 {
+				close(others)
+			}
+		}()
+		return l.Put(draws, paths)
+	})
+	if err := Run(context.Background(), plan, fitFunc(fit), sink, Options{Workers: 2, Block: 2}); err != nil {
 		t.Fatal(err)
 	}
-	if n := peak.Load(); n != bound {
-		t.Errorf("%d blocks waited for the first; the bound is %d", n, bound)
+	if len(l.paths) != 100 || l.blocks[49][0] != 0 {
+		t.Errorf("%d draws, the last block %v", len(l.paths), l.blocks[len(l.blocks)-1])
 	}
-	if len(l.paths) != 400 {
-		t.Errorf("%d draws", len(l.paths))
+}
+
+// A slow sink holds the workers back: what is finished and not yet safe is
+// bounded by one block for each worker, and one more in each worker's hands.
+func TestUnsafeBlocksAreBounded(t *testing.T) {
+	const workers = 3
+	plan := mustPlan(t, Plan{Rows: 30, Number: 400})
+	var fitted, put, peak atomic.Int32
+	fit := func(_ context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+		fitted.Add(1)
+		return make([]solver.Path, len(samples)), nil
+	}
+	sink := sinkFunc(func([]int, []solver.Path) error {
+		time.Sleep(200 * time.Microsecond)
+		peak.Store(max(peak.Load(), fitted.Load()-put.Load()))
+		put.Add(1)
+		return nil
+	})
+	if err := Run(context.Background(), plan, fitFunc(fit), sink, Options{Workers: workers, Block: 2}); err != nil {
+		t.Fatal(err)
+	}
+	if n := peak.Load(); n > 2*workers+1 || n < workers {
+		t.Errorf("%d finished blocks waited for the sink", n)
+	}
+}
+
+// The graceful stop: nothing is begun after it, what is in work is finished
+// and put, and the error says how many draws there are.
+func TestStopFinishesWhatIsInWork(t *testing.T) {
+	const workers = 3
+	plan := mustPlan(t, Plan{Rows: 30, Number: 400})
+	stop := make(chan struct{})
+	var begun, late atomic.Int32
+	fit := func(ctx context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+		n := begun.Add(1)
+		select {
+		case <-stop:
+			late.Add(1)
+		default:
+		}
+		if n == 20 {
+			close(stop)
+		}
+		time.Sleep(2 * time.Millisecond)
+		return make([]solver.Path, len(samples)), ctx.Err()
+	}
+	var l ledger
+	err := Run(context.Background(), plan, fitFunc(fit), &l, Options{Workers: workers, Block: 2, Stop: stop})
+	var stopped *StoppedError
+	if !errors.As(err, &stopped) || !errors.Is(err, ErrStop) || errors.Is(err, context.Canceled) {
+		t.Fatalf("error %v", err)
+	}
+	if n := late.Load(); n > workers-1 {
+		t.Errorf("%d blocks were begun after the stop", n)
+	}
+	if len(l.blocks) != int(begun.Load()) || stopped.Draws != len(l.paths) || stopped.Total != 400 {
+		t.Errorf("%d blocks were begun, %d are whole; the error says %d of %d draws", begun.Load(), len(l.blocks), stopped.Draws, stopped.Total)
+	}
+	if want := fmt.Sprintf("resample: stopped after %d of 400 draws: asked to stop", len(l.paths)); err.Error() != want {
+		t.Errorf("error %q", err)
+	}
+}
+
+// A stop before the first block begins nothing; one that comes when all
+// blocks are in work changes nothing.
+func TestStopAtTheEnds(t *testing.T) {
+	plan := mustPlan(t, Plan{Rows: 30, Number: 4})
+	stop := make(chan struct{})
+	both := make(chan struct{}, 2)
+	fit := func(_ context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+		both <- struct{}{}
+		<-stop
+		return make([]solver.Path, len(samples)), nil
+	}
+	go func() {
+		for len(both) < 2 {
+			time.Sleep(time.Millisecond)
+		}
+		close(stop)
+	}()
+	var l ledger
+	if err := Run(context.Background(), plan, fitFunc(fit), &l, Options{Workers: 2, Block: 2, Stop: stop}); err != nil || len(l.paths) != 4 {
+		t.Errorf("stopped in the last blocks: %d draws, %v", len(l.paths), err)
+	}
+	err := Run(context.Background(), plan, fitFunc(fit), &ledger{}, Options{Workers: 2, Stop: stop})
+	var stopped *StoppedError
+	if !errors.As(err, &stopped) || stopped.Draws != 0 || len(both) != 2 {
+		t.Errorf("stopped before the first block: %v, %d blocks begun", err, len(both)-2)
+	}
+}
+
+// The second signal: the context ends what the graceful stop let go on.
+func TestContextEndsWhatStopLeft(t *testing.T) {
+	plan := mustPlan(t, Plan{Rows: 30, Number: 40})
+	stop := make(chan struct{})
+	ctx, cancel := context.WithCancel(context.Background())
+	defer cancel()
+	var once sync.Once
+	fit := func(ctx context.Context, _ []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+		once.Do(func() { close(stop); cancel() })
+		<-ctx.Done() // an hour of work, unless cancelled
+		return nil, ctx.Err()
+	}
+	err := Run(ctx, plan, fitFunc(fit), &ledger{}, Options{Workers: 2, Stop: stop})
+	if !errors.Is(err, context.Canceled) {
+		t.Errorf("error %v", err)
 	}
 }
 
@@ -232,11 +413,11 @@ func TestCallerStops(t *testing.T) {
 	defer cancel(nil)
 	stop := errors.New("interrupted from the keyboard")
 	var l ledger
-	sink := sinkFunc(func(first int, paths []solver.Path) error {
-		if first == 20 {
+	sink := sinkFunc(func(draws []int, paths []solver.Path) error {
+		if len(l.blocks) == 10 {
 			cancel(stop)
 		}
-		return l.Put(first, paths)
+		return l.Put(draws, paths)
 	})
 	err := Run(ctx, plan, fitFunc(trace), sink, Options{Workers: 2, Block: 2})
 	var stopped *StoppedError
@@ -281,7 +462,7 @@ func TestPanicsBecomeErrorsThatNameTheDraws(t *testing.T) {
 	if strings.Contains(err.Error(), "goroutine") || !strings.Contains(string(p.Stack), "TestPanics") {
 		t.Errorf("the stack belongs into the field, not into the text: %v", err)
 	}
-	sink := sinkFunc(func(int, []solver.Path) error { panic("no ink") })
+	sink := sinkFunc(func([]int, []solver.Path) error { panic("no ink") })
 	err = Run(context.Background(), plan, fitFunc(trace), sink, Options{Workers: 2, Block: 2})
 	if !errors.As(err, &p) || !strings.Contains(err.Error(), "no ink") {
 		t.Errorf("error %v", err)
@@ -325,8 +506,8 @@ func TestNoProgressCallback(t *testing.T) {
 	plan := mustPlan(t, Plan{Rows: 30, Number: 40})
 	ctx, cancel := context.WithCancel(context.Background())
 	defer cancel()
-	sink := sinkFunc(func(first int, _ []solver.Path) error {
-		if first == 4 {
+	sink := sinkFunc(func(draws []int, _ []solver.Path) error {
+		if draws[0] == 4 {
 			cancel()
 		}
 		return nil

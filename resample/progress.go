@@ -5,7 +5,7 @@ import "sync"
 // Progress is how far a run has come.
 type Progress struct {
 	Draws int // draws fitted and put into the sink
-	Total int // draws of the plan
+	Total int // draws that the run makes
 	Steps int // lattice steps done, summed over draws, those under way included
 }
 

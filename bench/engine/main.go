@@ -161,19 +161,18 @@ func (s settings) fit(model *solver.Model) ([]solver.Path, error) {
 		}
 		defer pprof.StopCPUProfile()
 	}
-	var kept memory
+	kept := memory{make([]solver.Path, s.draws)}
 	err = resample.Run(context.Background(), plan, model, &kept, resample.Options{Workers: s.workers})
 	return kept.paths, err
 }
 
-// memory is a sink that keeps the draws.
+// memory is a sink that keeps the draws under their numbers.
 type memory struct{ paths []solver.Path }
 
-func (m *memory) Put(first int, paths []solver.Path) error {
-	if first != len(m.paths) {
-		return fmt.Errorf("draw %d came after %d draws", first, len(m.paths))
+func (m *memory) Put(draws []int, paths []solver.Path) error {
+	for i, d := range draws {
+		m.paths[d] = paths[i]
 	}
-	m.paths = append(m.paths, paths...)
 	return nil
 }
 

@@ -24,8 +24,8 @@ func typed(args ...string) (code int, stdout, stderr string) {
 }
 
 // TestWorkers: the stability table is the same byte for byte, and every draw
-// on disk to the bit, for 1, 2 and 7 workers, which make blocks of 12, 6 and 2
-// draws.
+// on disk to the bit, for 1, 2 and 7 workers, which make other
+// blocks.
 func TestWorkers(t *testing.T) {
 	gasoline, err := filepath.Abs(filepath.Join("..", "..", "testdata", "data", "gasoline.csv"))
 	if err != nil {

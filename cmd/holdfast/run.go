@@ -115,7 +115,7 @@ func (p *program) makeDraws(ctx context.Context, s *settled, o runOptions) (*run
 	m := newMeter(p.err, s.plan.Number)
 	err = resample.Run(ctx, s.plan, model, dir, resample.Options{
 		Workers:  o.workers,
-		Block:    resample.BlockSize(s.plan.Number, o.workers, model.BlockLimit(s.plan.Half())),
+		Limit:    model.BlockLimit(s.plan.Half()),
 		Progress: m.show,
 	})
 	m.end()

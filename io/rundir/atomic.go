@@ -34,6 +34,7 @@ type files interface {
 	MkdirAll(path string) error
 	Create(path string) (handle, error) // must not exist yet
 	Rename(from, to string) error
+	Link(from, to string) error // must not exist yet
 	Remove(path string) error
 	SyncFolder(path string) error
 }
@@ -48,6 +49,7 @@ func (disk) Create(path string) (handle, error) {
 }
 
 func (disk) Rename(from, to string) error { return os.Rename(from, to) }
+func (disk) Link(from, to string) error   { return os.Link(from, to) }
 func (disk) Remove(path string) error     { return os.Remove(path) }
 
 // SyncFolder makes a rename in the folder durable. Some network file systems
@@ -75,23 +77,63 @@ func WriteFile(path string, write func(io.Writer) error) error {
 }
 
 func writeFile(fsys files, path string, write func(io.Writer) error) error {
+	return appear(fsys, path, write, fsys.Rename)
+}
+
+// writeNew is writeFile for a name that must not be there yet; if it is, the
+// error is fs.ErrExist and nothing has changed.
+func writeNew(fsys files, path string, write func(io.Writer) error) error {
+	return appear(fsys, path, write, func(from, to string) error { return claim(fsys, from, to) })
+}
+
+// appear writes a temporary file, puts it in its place and syncs the folder.
+func appear(fsys files, path string, write func(io.Writer) error, place func(from, to string) error) error {
 	folder, name := filepath.Split(path)
 	if folder == "" {
 		folder = "."
 	}
 	temp := filepath.Join(folder, tempName(name))
-	if err := fill(fsys, temp, write); err != nil {
-		fsys.Remove(temp) // the first error says more than this one could
-		return fmt.Errorf("rundir: write %s: %w", path, err)
+	err := fill(fsys, temp, write)
+	if err == nil {
+		err = place(temp, path)
 	}
-	if err := fsys.Rename(temp, path); err != nil {
-		fsys.Remove(temp)
+	if err != nil {
+		fsys.Remove(temp) // the first error says more than this one could
 		return fmt.Errorf("rundir: write %s: %w", path, err)
 	}
 	if err := fsys.SyncFolder(folder); err != nil {
 		return fmt.Errorf("rundir: sync folder %s: %w", folder, err)
 	}
 	return nil
+}
+
+// claim gives a temporary file its name unless the name is taken. A link does
+// that in one step; where the file system has none, the name is looked up
+// first, and two processes that do so at the same moment write one file over
+// the other.
+func claim(fsys files, from, to string) error {
+	err := fsys.Link(from, to)
+	switch {
+	case err == nil:
+		fsys.Remove(from) // a second name of a finished file does no harm
+		return nil
+	case !noLinks(err):
+		return err
+	}
+	if _, err := os.Lstat(to); err == nil {
+		return &fs.PathError{Op: "link", Path: to, Err: fs.ErrExist}
+	}
+	return fsys.Rename(from, to)
+}
+
+// noLinks tells a file system without links from a failure.
+func noLinks(err error) bool {
+	for _, e := range []error{syscall.EPERM, syscall.ENOTSUP, syscall.ENOSYS, syscall.EMLINK} {
+		if errors.Is(err, e) {
+			return true
+		}
+	}
+	return false
 }
 
 // fill creates the temporary file, writes, syncs and closes it.

@@ -36,7 +36,7 @@ func BenchmarkDraws(b *testing.B) {
 		for i := range paths {
 			paths[i] = path
 		}
-		if err := d.Put(first, paths); err != nil {
+		if err := d.Put(upTo(first, first+len(paths)), paths); err != nil {
 			b.Fatal(err)
 		}
 	}

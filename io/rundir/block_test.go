@@ -20,7 +20,7 @@ func TestPathsAreReadBackToTheBit(t *testing.T) {
 	paths := randomPaths(r, 60)
 	for first := 0; first < 60; {
 		n := min(1+r.IntN(9), 60-first)
-		if err := d.Put(first, paths[first:first+n]); err != nil {
+		if err := d.Put(upTo(first, first+n), paths[first:first+n]); err != nil {
 			t.Fatal(err)
 		}
 		first += n
@@ -48,7 +48,7 @@ func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
 		First: 18, Last: 20, Stop: solver.StopUncertified, Why: "gap 2e-9", Intercepts: []float64{1, 2, 3},
 		Always: []float64{1, 2, 3, 4, 5, 6}, Gap: 1e-13, Borderline: 3, Twins: 1,
 	}}
-	if err := d.Put(0, paths); err != nil {
+	if err := d.Put(upTo(0, 2), paths); err != nil {
 		t.Fatal(err)
 	}
 	f, err := d.Read()
@@ -77,7 +77,7 @@ func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
 func encoded(t testing.TB, run Run, block []numbered) []byte {
 	t.Helper()
 	var b bytes.Buffer
-	if err := encodeBlock(&b, run.Digest, block); err != nil {
+	if err := encodeBlock(&b, run.Digest, block, sumsOf(block)); err != nil {
 		t.Fatal(err)
 	}
 	return b.Bytes()
@@ -223,20 +223,20 @@ func TestBadBlocksAreRefused(t *testing.T) {
 		"absurd step":                 func(p *solver.Path) { p.Last = 1 << 40 },
 	}
 	d := hatcheryRun(t, 4)
-	if err := d.Put(0, []solver.Path{good()}); err != nil {
+	if err := d.Put([]int{0}, []solver.Path{good()}); err != nil {
 		t.Fatalf("the good path: %v", err)
 	}
 	for name, spoil := range cases {
 		p := good()
 		spoil(&p)
-		if err := d.Put(1, []solver.Path{p}); err == nil {
+		if err := d.Put([]int{1}, []solver.Path{p}); err == nil {
 			t.Errorf("%s: written", name)
 		}
 	}
-	if err := d.Put(4, []solver.Path{good()}); err == nil {
+	if err := d.Put([]int{4}, []solver.Path{good()}); err == nil {
 		t.Error("draw 4 of 4 was written")
 	}
-	if err := d.Put(0, nil); err == nil {
+	if err := d.Put(nil, nil); err == nil {
 		t.Error("an empty block was written")
 	}
 }
@@ -246,7 +246,7 @@ func TestMissingDamagedForeignAndDoubleBlocks(t *testing.T) {
 	d := hatcheryRun(t, 12)
 	paths := randomPaths(r, 12)
 	for first := 0; first < 12; first += 4 {
-		if err := d.Put(first, paths[first:first+4]); err != nil {
+		if err := d.Put(upTo(first, first+4), paths[first:first+4]); err != nil {
 			t.Fatal(err)
 		}
 	}
@@ -262,7 +262,7 @@ func TestMissingDamagedForeignAndDoubleBlocks(t *testing.T) {
 	}
 
 	// A draw that a second block holds with the same bits counts once.
-	if err := d.Put(2, paths[2:6]); err != nil {
+	if err := d.Put(upTo(2, 6), paths[2:6]); err != nil {
 		t.Fatal(err)
 	}
 	draws, err := d.Draws()
@@ -278,13 +278,15 @@ func TestMissingDamagedForeignAndDoubleBlocks(t *testing.T) {
 	// One that differs is an error that names both files.
 	other := append([]solver.Path{}, paths[2:6]...)
 	other[0].Violation = 5e-11
-	if err := d.Put(2, other); err != nil {
+	if err := d.Put(upTo(2, 6), other); err != nil {
 		t.Fatal(err)
 	}
 	_, err = d.Draws()
-	if err == nil || !strings.Contains(err.Error(), block(0)) || !strings.Contains(err.Error(), block(2)) {
+	differs := d.join(drawsFolder, otherName(2, blockDigest(d.Run().Digest, sumsOf(numberedFrom(2, other)))))
+	if err == nil || !strings.Contains(err.Error(), block(0)) || !strings.Contains(err.Error(), differs) {
 		t.Errorf("blocks that disagree: %v", err)
 	}
+	os.Remove(differs)
 	os.Remove(block(2))
 
 	// A block under another name is a copy that somebody made.
@@ -328,7 +330,7 @@ func TestMissingDamagedForeignAndDoubleBlocks(t *testing.T) {
 	if err := foreign.SetDecision(hatcheryDecision()); err != nil {
 		t.Fatal(err)
 	}
-	if err := foreign.Put(8, paths[8:]); err != nil {
+	if err := foreign.Put(upTo(8, 12), paths[8:]); err != nil {
 		t.Fatal(err)
 	}
 	copyFile(foreign.join(drawsFolder, blockName(8)), block(8))
@@ -343,7 +345,11 @@ func TestBlockNames(t *testing.T) {
 			t.Errorf("%s is read as %d, %v", blockName(first), got, ok)
 		}
 	}
-	for _, name := range []string{"block-1.parquet", "block-0000001.parquet", "block-+00001.parquet", "block-000001.parquet.bak", "block--00001.parquet", ""} {
+	tagged := otherName(12, strings.Repeat("0a", 32))
+	if got, ok := blockNumber(tagged); !ok || got != 12 {
+		t.Errorf("%s is read as %d, %v", tagged, got, ok)
+	}
+	for _, name := range []string{"block-000012-.parquet", "block-000012-0a.parquet", "block-12-0a0a0a0a0a0a0a0a.parquet", "block-1.parquet", "block-0000001.parquet", "block-+00001.parquet", "block-000001.parquet.bak", "block--00001.parquet", ""} {
 		if _, ok := blockNumber(name); ok {
 			t.Errorf("%q is taken for a block", name)
 		}

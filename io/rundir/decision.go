@@ -3,8 +3,6 @@ package rundir
 import (
 	"errors"
 	"fmt"
-	"io/fs"
-	"syscall"
 
 	"holdfast/selection"
 )
@@ -31,9 +29,6 @@ type Judged struct {
 	Stable   int                `json:"stable"` // predictors found stable
 	Saved    bool               `json:"saved"`  // its tables replaced those of the directory
 }
-
-// ErrReadOnly is what errors.Is finds where the directory cannot be written.
-var ErrReadOnly = errors.New("rundir: the directory cannot be written")
 
 // ErrDecided is what errors.Is finds where a decision of record is set again,
 // or after the first draw.
@@ -100,16 +95,8 @@ func same(a, b Judged) bool {
 // saveRun replaces run.json and what is held of it. The caller holds d.mu.
 func (d *Dir) saveRun(next Run) error {
 	if err := writeFile(d.fs, d.join(runFile), next.encode); err != nil {
-		return readOnly(err)
+		return troubled(err)
 	}
 	d.run = next
 	return nil
-}
-
-// readOnly marks the errors of a directory that cannot be written.
-func readOnly(err error) error {
-	if errors.Is(err, fs.ErrPermission) || errors.Is(err, syscall.EROFS) {
-		return fmt.Errorf("%w: %w", ErrReadOnly, err)
-	}
-	return err
 }

@@ -51,14 +51,14 @@ func create(fsys files, dir string, id Identity, study []byte, meta Meta) (*Dir,
 	d := &Dir{path: dir, fs: fsys, run: run}
 	for _, folder := range []string{drawsFolder, partsFolder} {
 		if err := fsys.MkdirAll(d.join(folder)); err != nil {
-			return nil, fmt.Errorf("rundir: create %s: %w", dir, readOnly(err))
+			return nil, fmt.Errorf("rundir: create %s: %w", dir, troubled(err))
 		}
 	}
 	if err := writeFile(fsys, d.join(studyFile), writes(study)); err != nil {
-		return nil, readOnly(err)
+		return nil, troubled(err)
 	}
 	if err := writeFile(fsys, d.join(runFile), run.encode); err != nil {
-		return nil, readOnly(err)
+		return nil, troubled(err)
 	}
 	if err := fsys.SyncFolder(filepath.Dir(filepath.Clean(dir))); err != nil {
 		return nil, fmt.Errorf("rundir: sync folder above %s: %w", dir, err)
@@ -163,7 +163,7 @@ func (d *Dir) Write(name string, write func(io.Writer) error) error {
 	if filepath.Base(name) != name || name == runFile || name == studyFile || name == "." || name == ".." {
 		return fmt.Errorf("rundir: write %q: not the name of a result file", name)
 	}
-	return readOnly(writeFile(d.fs, d.join(name), write))
+	return troubled(writeFile(d.fs, d.join(name), write))
 }
 
 func (d *Dir) join(names ...string) string {

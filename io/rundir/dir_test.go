@@ -126,8 +126,8 @@ func wholeRun(fsys files, dir string, paths []solver.Path) error {
 	other.Selected = 2
 	for _, step := range []func() error{
 		func() error { return d.SetDecision(hatcheryDecision()) },
-		func() error { return d.Put(0, paths[:2]) },
-		func() error { return d.Put(2, paths[2:]) },
+		func() error { return d.Put(upTo(0, 2), paths[:2]) },
+		func() error { return d.Put(upTo(2, 4), paths[2:]) },
 		func() error { return d.WritePart(Part{State: "done"}) },
 		func() error { return d.LogJudgement(Judged{Time: "2031-05-01T08:00:00Z", Draws: 4, Decision: other}) },
 		func() error {
@@ -203,6 +203,13 @@ func (f *failing) Rename(from, to string) error {
 	return f.disk.Rename(from, to)
 }
 
+func (f *failing) Link(from, to string) error {
+	if f.fails("link to " + to) {
+		return errInjected
+	}
+	return f.disk.Link(from, to)
+}
+
 func (f *failing) Remove(path string) error { return f.disk.Remove(path) }
 
 func (f *failing) SyncFolder(path string) error {
@@ -248,7 +255,7 @@ func TestFailedWritesOfABlockSurface(t *testing.T) {
 	block := numberedFrom(0, randomPaths(source(t), 4))
 	size := len(encoded(t, run, block))
 	for n := 0; n < size; n += 7 {
-		if err := encodeBlock(&short{left: n}, run.Digest, block); err == nil {
+		if err := encodeBlock(&short{left: n}, run.Digest, block, sumsOf(block)); err == nil {
 			t.Fatalf("a disk that was full after %d of %d bytes was not noticed", n, size)
 		}
 	}
@@ -286,7 +293,7 @@ func TestDecisionOfRecordComesFirstAndOnce(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if err := d.Put(0, paths); !errors.Is(err, ErrNoDecision) {
+	if err := d.Put(upTo(0, 2), paths); !errors.Is(err, ErrNoDecision) {
 		t.Errorf("draws before the decision: %v", err)
 	}
 	bad := hatcheryDecision()
@@ -302,7 +309,7 @@ func TestDecisionOfRecordComesFirstAndOnce(t *testing.T) {
 	}
 	undecided := d.Run()
 	undecided.Decision = nil
-	if err := d.Put(0, paths); err != nil {
+	if err := d.Put(upTo(0, 2), paths); err != nil {
 		t.Fatal(err)
 	}
 	d.run = undecided
@@ -355,7 +362,7 @@ func TestJudgementsAreLoggedOnce(t *testing.T) {
 // may write anywhere.
 func TestReadOnlyCopyIsRead(t *testing.T) {
 	d := hatcheryRun(t, 2)
-	if err := d.Put(0, randomPaths(source(t), 2)); err != nil {
+	if err := d.Put(upTo(0, 2), randomPaths(source(t), 2)); err != nil {
 		t.Fatal(err)
 	}
 	before := listing(t, d.Path())
@@ -388,6 +395,7 @@ func (sealed) Create(string) (handle, error) {
 	return nil, &fs.PathError{Op: "open", Err: syscall.EROFS}
 }
 func (sealed) Rename(string, string) error { return syscall.EROFS }
+func (sealed) Link(string, string) error   { return syscall.EROFS }
 func (sealed) Remove(string) error         { return syscall.EROFS }
 
 // listing names every file with size and time of change.
@@ -476,7 +484,7 @@ func TestPutFromManyWorkers(t *testing.T) {
 		wg.Add(1)
 		go func() {
 			defer wg.Done()
-			if err := d.Put(first, paths[first:first+4]); err != nil {
+			if err := d.Put(upTo(first, first+4), paths[first:first+4]); err != nil {
 				t.Error(err)
 			}
 		}()

@@ -36,7 +36,7 @@ func Example() {
 	chosen := solver.Path{First: 3, Last: 3, Intercepts: []float64{70},
 		Entries: []solver.Entry{{Candidate: 1, Step: 3, Negative: true}},
 		Coefs:   []solver.Coef{{Candidate: 1, Step: 3, Value: -0.5}}}
-	if err := d.Put(0, []solver.Path{chosen, {First: 3, Last: 3, Intercepts: []float64{71}}}); err != nil {
+	if err := d.Put([]int{0, 1}, []solver.Path{chosen, {First: 3, Last: 3, Intercepts: []float64{71}}}); err != nil {
 		panic(err)
 	}
 

@@ -100,15 +100,31 @@ func blockProperties() *parquet.WriterProperties {
 // blockName is the file name of the block whose first draw is given.
 func blockName(first int) string { return fmt.Sprintf("block-%06d.parquet", first) }
 
+// tagLength is how much of a block's digest stands in its other name.
+const tagLength = 16
+
+// otherName is the name of a block where another one that begins with the same
+// draw has the first name. It follows from what is in it.
+func otherName(first int, digest string) string {
+	return fmt.Sprintf("block-%06d-%s.parquet", first, digest[:tagLength])
+}
+
 // blockNumber reads a block's first draw from its file name.
 func blockNumber(name string) (first int, ok bool) {
-	digits, ok := strings.CutPrefix(name, "block-")
+	text, ok := strings.CutPrefix(name, "block-")
 	if !ok {
 		return 0, false
 	}
-	if digits, ok = strings.CutSuffix(digits, ".parquet"); !ok {
+	if text, ok = strings.CutSuffix(text, ".parquet"); !ok {
 		return 0, false
 	}
+	digits, tag, tagged := strings.Cut(text, "-")
 	first, err := strconv.Atoi(digits)
-	return first, err == nil && first >= 0 && blockName(first) == name
+	if err != nil || first < 0 {
+		return 0, false
+	}
+	if tagged {
+		return first, len(tag) == tagLength && otherName(first, tag) == name
+	}
+	return first, blockName(first) == name
 }

@@ -36,7 +36,7 @@ func (d *Dir) WritePart(p Part) error {
 		return fmt.Errorf("rundir: part %d: parts are numbered from 0", p.Part)
 	}
 	p.Uncertified = append([]int{}, p.Uncertified...)
-	return readOnly(writeFile(d.fs, d.partPath(p.Part), func(w io.Writer) error {
+	return troubled(writeFile(d.fs, d.partPath(p.Part), func(w io.Writer) error {
 		e := json.NewEncoder(w)
 		e.SetIndent("", " ")
 		return e.Encode(p)

@@ -104,6 +104,15 @@ func value(r *rand.Rand) float64 {
 	return r.NormFloat64()
 }
 
+// upTo lists the numbers first to last-1.
+func upTo(first, last int) []int {
+	var list []int
+	for d := first; d < last; d++ {
+		list = append(list, d)
+	}
+	return list
+}
+
 func randomPaths(r *rand.Rand, n int) []solver.Path {
 	paths := make([]solver.Path, n)
 	for i := range paths {

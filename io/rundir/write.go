@@ -7,6 +7,8 @@ import (
 	"fmt"
 	"hash"
 	"io"
+	"io/fs"
+	"slices"
 
 	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/file"
@@ -18,23 +20,43 @@ import (
 // of record.
 var ErrNoDecision = errors.New("rundir: the decision of record must be set before the first draw")
 
-// Put writes one block of finished draws: path i is that of draw first+i. It
-// keeps nothing of paths. Equal draws give equal bytes.
-func (d *Dir) Put(first int, paths []solver.Path) error {
+// Put writes one block of finished draws: path i is that of draw draws[i], and
+// the numbers rise. It keeps nothing of its arguments. Equal draws give equal
+// bytes. A file that is there is never replaced: if another block begins with
+// the same draw, this one gets a name of its own, so that writers who do not
+// know of each other lose nothing.
+func (d *Dir) Put(draws []int, paths []solver.Path) error {
 	run := d.Run()
 	if run.Decision == nil {
 		return ErrNoDecision
 	}
+	if len(draws) != len(paths) {
+		return fmt.Errorf("rundir: put: %d draws and %d paths", len(draws), len(paths))
+	}
 	block := make([]numbered, len(paths))
 	for i := range paths {
-		block[i] = numbered{first + i, paths[i]}
+		block[i] = numbered{draws[i], paths[i]}
 	}
 	if err := run.checkBlock(block); err != nil {
 		return fmt.Errorf("rundir: put: %w", err)
 	}
-	return readOnly(writeFile(d.fs, d.join(drawsFolder, blockName(first)), func(w io.Writer) error {
-		return encodeBlock(w, run.Digest, block)
-	}))
+	return troubled(d.putBlock(&run, block))
+}
+
+// putBlock writes the file of a block under a name that is free, or finds
+// that it is there already.
+func (d *Dir) putBlock(run *Run, block []numbered) error {
+	sums := sumsOf(block)
+	write := func(w io.Writer) error { return encodeBlock(w, run.Digest, block, sums) }
+	plain := d.join(drawsFolder, blockName(block[0].number))
+	err := writeNew(d.fs, plain, write)
+	if !errors.Is(err, fs.ErrExist) {
+		return err
+	}
+	if _, there, err := run.readBlock(plain); err == nil && slices.Equal(there, sums) {
+		return d.fs.SyncFolder(d.join(drawsFolder)) // whoever wrote it may not have come so far
+	}
+	return writeFile(d.fs, d.join(drawsFolder, otherName(block[0].number, blockDigest(run.Digest, sums))), write)
 }
 
 // checkBlock checks each draw of a block and their order.
@@ -54,7 +76,7 @@ func (r *Run) checkBlock(block []numbered) error {
 }
 
 // encodeBlock writes a block file.
-func encodeBlock(w io.Writer, identity string, block []numbered) (err error) {
+func encodeBlock(w io.Writer, identity string, block []numbered, sums []sum) (err error) {
 	defer recovered(&err)
 	out := &tally{w: w, hash: sha256.New()}
 	pw := file.NewParquetWriter(out, blockSchema(), file.WithWriterProps(blockProperties()))
@@ -65,7 +87,7 @@ func encodeBlock(w io.Writer, identity string, block []numbered) (err error) {
 		{keyFormat, fmt.Sprint(Format)},
 		{keyIdentity, identity},
 		{keyPages, hex.EncodeToString(out.hash.Sum(nil))},
-		{keyDraws, blockDigest(identity, sumsOf(block))},
+		{keyDraws, blockDigest(identity, sums)},
 	} {
 		if err := pw.AppendKeyValueMetadata(kv[0], kv[1]); err != nil {
 			return err

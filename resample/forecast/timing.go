@@ -1,0 +1,165 @@
+package forecast
+
+import (
+	"context"
+	"errors"
+	"time"
+
+	"holdfast/resample"
+	"holdfast/solver"
+)
+
+// Options say how long timing may take, and what the run will be like.
+type Options struct {
+	Workers int           // of the run
+	Block   int           // draws that a worker of the run fits together
+	Limit   time.Duration // more rounds are begun only within it; the first pair is always fitted
+	Clock   Clock         // zero: SystemClock
+}
+
+// Timing is what a few draws took.
+type Timing struct {
+	First    Round // the first pair, with what a model does only once
+	Alone    Round // rounds of one worker; Draws 0: there was no time for any
+	Together Round // rounds of all workers; Draws 0: likewise
+	Block    int   // draws of a block in Together, or in Alone
+	Paths    []solver.Path
+}
+
+// steady is how long rounds of one kind are repeated where they are short, so
+// that the clock and the machine's moods count little.
+const steady = 2 * time.Second
+
+// Time fits the first pair and, within the limit, rounds of one worker and of
+// all workers. The draws are the plan's own, from number 0.
+func Time(ctx context.Context, plan resample.Plan, f resample.Fitter, o Options) (*Timing, error) {
+	if o.Workers < 1 || o.Block < 2 || o.Block%2 != 0 {
+		return nil, errors.New("forecast: at least one worker and blocks of whole pairs are needed")
+	}
+	if o.Clock.Now == nil {
+		o.Clock = SystemClock()
+	}
+	t := &timer{plan: plan, fitter: f, clock: o.Clock}
+	first, err := t.round(ctx, 1, 2)
+	if err != nil {
+		return nil, err
+	}
+	r := &Timing{First: first, Block: 2}
+	left := o.Limit - first.Wall
+	if left < first.Wall {
+		r.Paths = t.paths
+		return r, nil
+	}
+	// A pair once more, without what is done once: what later rounds cost.
+	if r.Alone, err = t.round(ctx, 1, 2); err != nil {
+		return nil, err
+	}
+	left -= r.Alone.Wall
+	r.Block = blockWithin(o.Block, r.Alone.PerDraw(), left/2)
+	if r.Together, err = t.rounds(ctx, o.Workers, r.Block, left/2); err != nil {
+		return nil, err
+	}
+	if o.Workers > 1 {
+		alone, err := t.rounds(ctx, 1, r.Block, left/2)
+		if err != nil {
+			return nil, err
+		}
+		if alone.Draws > 0 {
+			r.Alone = alone
+		}
+	} else if r.Together.Draws > 0 {
+		r.Alone = r.Together
+	}
+	r.Paths = t.paths
+	return r, nil
+}
+
+// blockWithin is the largest block of whole pairs, up to most, that takes no
+// longer than left.
+func blockWithin(most int, perDraw, left time.Duration) int {
+	block := most
+	for block > 2 && time.Duration(block)*perDraw > left {
+		block -= 2
+	}
+	return block
+}
+
+// rounds repeats a round until it is steady or the time is up. Not even one is
+// begun where it would take longer than left.
+func (t *timer) rounds(ctx context.Context, workers, block int, left time.Duration) (sum Round, err error) {
+	last := time.Duration(0)
+	for sum.Wall+last <= left && sum.Wall < steady {
+		r, err := t.round(ctx, workers, block)
+		if err != nil {
+			return sum, err
+		}
+		sum, last = sum.plus(r), r.Wall
+	}
+	return sum, nil
+}
+
+// Once is what the first draws took beyond their share: done once by every
+// process.
+func (t *Timing) Once() time.Duration {
+	if t.Alone.Draws == 0 {
+		return 0
+	}
+	return max(0, t.First.Busy-2*t.Alone.PerDraw())
+}
+
+// Busiest is the round that says most about a run: that of all workers where
+// there is one.
+func (t *Timing) Busiest() Round {
+	for _, r := range []Round{t.Together, t.Alone} {
+		if r.Draws > 0 {
+			return r
+		}
+	}
+	return t.First
+}
+
+// PerDraw is the time that one of so many workers needs for a draw.
+func (t *Timing) PerDraw(workers int) time.Duration {
+	few, many := t.Alone, t.Together
+	if few.Draws == 0 {
+		few = t.First
+	}
+	if many.Draws == 0 || many.Workers <= few.Workers || workers <= few.Workers {
+		if workers <= few.Workers || many.Draws == 0 {
+			return few.PerDraw()
+		}
+		return many.PerDraw()
+	}
+	// Per draw, workers w finish in offset + gain/w, so one of them takes
+	// w*offset + gain.
+	offset := (many.PerDraw() - few.PerDraw()) / time.Duration(many.Workers-few.Workers)
+	return few.PerDraw() + max(0, offset)*time.Duration(workers-few.Workers)
+}
+
+// Measured reports whether that many workers were timed.
+func (t *Timing) Measured(workers int) bool {
+	for _, r := range []Round{t.First, t.Alone, t.Together} {
+		if r.Draws > 0 && r.Workers == workers {
+			return true
+		}
+	}
+	return false
+}
+
+// Wall is what so many draws take with so many workers, without what is fixed.
+// Draws come in blocks, and the last blocks leave workers idle for half a block
+// on average.
+func (t *Timing) Wall(draws, workers, block int) time.Duration {
+	if draws == 0 {
+		return 0
+	}
+	per := t.PerDraw(workers)
+	blocks := (draws + block - 1) / block
+	workers = min(workers, blocks)
+	even := time.Duration(draws) * per / time.Duration(workers)
+	whole := per * time.Duration(block)
+	if blocks%workers != 0 && workers > 1 {
+		even += whole / 2 * time.Duration(workers-blocks%workers) / time.Duration(workers)
+	}
+	return t.Once() + even
+}
