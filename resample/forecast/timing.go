@@ -11,10 +11,12 @@ import (
 
 // Options say how long timing may take, and what the run will be like.
 type Options struct {
-	Workers int           // of the run
-	Block   int           // draws that a worker of the run fits together
-	Limit   time.Duration // more rounds are begun only within it; the first pair is always fitted
-	Clock   Clock         // zero: SystemClock
+	Workers int // of the run
+	// Block returns how many draws a worker of the run fits together where a
+	// draw takes so long: whole pairs, as resample.Sizing has it.
+	Block func(perDraw time.Duration) int
+	Limit time.Duration // more rounds are begun only within it; the first pair is always fitted
+	Clock Clock         // zero: SystemClock
 }
 
 // Timing is what a few draws took.
@@ -33,8 +35,8 @@ const steady = 2 * time.Second
 // Time fits the first pair and, within the limit, rounds of one worker and of
 // all workers. The draws are the plan's own, from number 0.
 func Time(ctx context.Context, plan resample.Plan, f resample.Fitter, o Options) (*Timing, error) {
-	if o.Workers < 1 || o.Block < 2 || o.Block%2 != 0 {
-		return nil, errors.New("forecast: at least one worker and blocks of whole pairs are needed")
+	if o.Workers < 1 || o.Block == nil {
+		return nil, errors.New("forecast: at least one worker and the size of its blocks are needed")
 	}
 	if o.Clock.Now == nil {
 		o.Clock = SystemClock()
@@ -55,7 +57,7 @@ func Time(ctx context.Context, plan resample.Plan, f resample.Fitter, o Options)
 		return nil, err
 	}
 	left -= r.Alone.Wall
-	r.Block = blockWithin(o.Block, r.Alone.PerDraw(), left/2)
+	r.Block = blockWithin(o.Block(r.Alone.PerDraw()), r.Alone.PerDraw(), left/2)
 	if r.Together, err = t.rounds(ctx, o.Workers, r.Block, left/2); err != nil {
 		return nil, err
 	}
@@ -146,20 +148,15 @@ func (t *Timing) Measured(workers int) bool {
 	return false
 }
 
-// Wall is what so many draws take with so many workers, without what is fixed.
-// Draws come in blocks, and the last blocks leave workers idle for half a block
-// on average.
-func (t *Timing) Wall(draws, workers, block int) time.Duration {
-	if draws == 0 {
+// Wall is what so many draws take with so many workers, without what is fixed:
+// blocks shrink towards the end, so that all workers end within a pair of each
+// other.
+func (t *Timing) Wall(draws, workers int) time.Duration {
+	if draws < 1 {
 		return 0
 	}
-	per := t.PerDraw(workers)
-	blocks := (draws + block - 1) / block
-	workers = min(workers, blocks)
-	even := time.Duration(draws) * per / time.Duration(workers)
-	whole := per * time.Duration(block)
-	if blocks%workers != 0 && workers > 1 {
-		even += whole / 2 * time.Duration(workers-blocks%workers) / time.Duration(workers)
-	}
-	return t.Once() + even
+	pairs := (draws + 1) / 2
+	workers = max(1, min(workers, pairs))
+	each := (pairs + workers - 1) / workers
+	return t.Once() + time.Duration(2*each)*t.PerDraw(workers)
 }
