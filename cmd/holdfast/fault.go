@@ -66,7 +66,11 @@ func (p *program) finish(ctx context.Context, err error) int {
 	if hint != "" {
 		fmt.Fprintln(p.err, "hint: "+oneLine(hint))
 	}
-	return exitCode(ctx, err)
+	code := exitCode(ctx, err)
+	if s := p.signals.cause(); s != nil && code != exitWrong {
+		code = s.code() // it was only asked to begin nothing new
+	}
+	return code
 }
 
 // exitCode is the code of an error: its own, that of the signal that ended

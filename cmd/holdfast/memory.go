@@ -1,21 +1,197 @@
 package main
 
 import (
+	"errors"
+	"fmt"
+	"math"
+	"os"
 	"runtime"
 	"runtime/debug"
+	"strconv"
+	"strings"
+
+	"holdfast/solver"
 )
 
-// garbage is how much unused memory may pile up beside what is in use before
-// the collector runs.
-const garbage = 128 << 20
+// memorySize is an amount of memory on the command line: 500M, 8G. Units are
+// powers of 1024, as schedulers count.
+type memorySize int64
 
-// boundGarbage stops the collector from letting the heap grow to twice the
-// table, as it would by itself: a table of numbers costs nothing to mark, so
-// that collecting often is cheap.
+const memoryUnits = "KMGT"
+
+func (m *memorySize) Set(text string) error {
+	digits := strings.TrimRight(strings.ToUpper(strings.TrimSpace(text)), "IB")
+	unit := 1.0
+	if n := len(digits); n > 0 {
+		if k := strings.IndexByte(memoryUnits, digits[n-1]); k >= 0 {
+			unit, digits = math.Pow(1024, float64(k+1)), digits[:n-1]
+		}
+	}
+	x, err := strconv.ParseFloat(digits, 64)
+	if err != nil || !(x > 0) || x*unit >= math.MaxInt64 {
+		return fmt.Errorf("%q is no amount of memory: write 500M or 8G", text)
+	}
+	*m = memorySize(x * unit)
+	return nil
+}
+
+func (m *memorySize) Type() string { return "size" }
+
+func (m *memorySize) String() string {
+	if *m == 0 {
+		return ""
+	}
+	return sizeText(int64(*m))
+}
+
+// sizeText writes an amount of memory as Set reads it, rounded up to three
+// digits.
+func sizeText(n int64) string {
+	x, unit := float64(n), ""
+	for _, u := range memoryUnits {
+		if x < 1024 {
+			break
+		}
+		x, unit = x/1024, string(u)
+	}
+	if x < 100 && unit != "" {
+		return strconv.FormatFloat(math.Ceil(x*10)/10, 'f', -1, 64) + unit
+	}
+	return strconv.FormatFloat(math.Ceil(x), 'f', -1, 64) + unit
+}
+
+const (
+	// garbage is how much unused memory may pile up beside the table before
+	// the collector runs.
+	garbage = 128 << 20
+	// programBytes is what the program takes before it has read anything:
+	// its code, the libraries' tables, the runtime.
+	programBytes = 24 << 20
+	// slack is the share that a limit must leave over what is needed, or the
+	// collector runs all the time.
+	slack = 1.0 / 16
+)
+
+// footprint is what a run holds in memory, in bytes.
+type footprint struct {
+	table int64        // values, outcome, missing cells
+	shape solver.Shape // of a draw's fit
+	draws int          // that are judged in the end
+}
+
+// tableBytes is what a table takes in memory.
+func tableBytes(rows, columns int) int64 { return 8 * int64(rows) * int64(columns+1) }
+
+// live is what is in use at once: the table and either the workers' fits or
+// the draws that are judged.
+func (f footprint) live(workers, block int) int64 {
+	return programBytes + f.table + max(int64(workers)*f.shape.Workspace(block), f.judging())
+}
+
+// judging is what the draws take when they are judged: 24 bytes a coefficient,
+// on half the steps as many as enter.
+func (f footprint) judging() int64 {
+	entered := min(f.shape.Candidates, f.shape.DrawRows)
+	if s := f.shape.StopAfter; s > 0 {
+		entered = min(entered, s)
+	}
+	return 24*int64(f.draws)*int64(entered)*int64(f.shape.Steps)/4 + 512*int64(f.shape.Candidates)
+}
+
+// peak is what the process takes at most where no limit is set: what is in use,
+// and what the collector lets pile up beside it.
+func (f footprint) peak(workers, block int) int64 {
+	live := f.live(workers, block)
+	return live + (live-programBytes)*garbagePercent(f.table)/100
+}
+
+// least is the smallest limit at which so many workers with such blocks run
+// well.
+func (f footprint) least(workers, block int) int64 {
+	live := f.live(workers, block)
+	return live + int64(slack*float64(live))
+}
+
+// errMemory says that a limit is too small.
+var errMemory = errors.New("too little memory")
+
+// fit returns the largest block, and then the most workers, with which the run
+// keeps the limit (0: none): first smaller blocks, then fewer workers, then an
+// error that says what is needed.
+func (f footprint) fit(limit int64, workers int) (int, int, error) {
+	most := f.shape.BlockLimit()
+	if limit <= 0 {
+		return workers, most, nil
+	}
+	for w := workers; w >= 1; w-- {
+		for block := most; block >= 2; block -= 2 {
+			if f.least(w, block) <= limit {
+				return w, block, nil
+			}
+		}
+	}
+	return 0, 0, fmt.Errorf("%w: the limit is %s, and one worker that fits a pair of draws needs %s (program %s, table %s, fits %s)",
+		errMemory, sizeText(limit), sizeText(f.least(1, 2)), sizeText(programBytes), sizeText(f.table),
+		sizeText(max(f.shape.Workspace(2), f.judging())))
+}
+
+// memoryLimit is the smaller of what was asked and what GOMEMLIMIT says; 0:
+// none.
+func memoryLimit(asked memorySize) int64 {
+	limit := debug.SetMemoryLimit(-1)
+	if limit == math.MaxInt64 {
+		limit = 0
+	}
+	if asked > 0 && (limit == 0 || int64(asked) < limit) {
+		limit = int64(asked)
+	}
+	return limit
+}
+
+// outside is the part of the program's memory that the runtime's limit does
+// not count: its code.
+const outside = 12 << 20
+
+// boundMemory holds the runtime to a limit (0: none), and stops the collector
+// from letting the heap grow to twice the table, as it would by itself: a table
+// of numbers costs nothing to mark, so that collecting often is cheap.
+func boundMemory(limit, table int64) {
+	if limit > 0 {
+		debug.SetMemoryLimit(max(limit-outside, 1))
+	}
+	runtime.GC()
+	debug.SetGCPercent(int(garbagePercent(table)))
+}
+
+// garbagePercent is the collector's setting beside a table of so many bytes.
+func garbagePercent(table int64) int64 {
+	return min(100, max(100*garbage/max(table, 1), 2))
+}
+
+// memoryNow returns the resident size of this process and its largest so far,
+// in bytes; 0 where the system does not say. The kernel's record for children
+// (getrusage) will not do: it holds what the starting process had before.
+func memoryNow() (now, peak int64) {
+	text, err := os.ReadFile("/proc/self/status")
+	if err != nil {
+		return 0, 0
+	}
+	for line := range strings.Lines(string(text)) {
+		var kilobytes int64
+		if _, err := fmt.Sscanf(line, "VmRSS: %d kB", &kilobytes); err == nil {
+			now = kilobytes * 1024
+		}
+		if _, err := fmt.Sscanf(line, "VmHWM: %d kB", &kilobytes); err == nil {
+			peak = kilobytes * 1024
+		}
+	}
+	return now, peak
+}
+
+// boundGarbage is boundMemory without a limit, beside what is in memory now.
 func boundGarbage() {
 	runtime.GC()
 	var m runtime.MemStats
 	runtime.ReadMemStats(&m)
-	percent := 100 * garbage / max(int64(m.HeapAlloc), 1)
-	debug.SetGCPercent(int(min(100, max(percent, 2))))
+	boundMemory(0, int64(m.HeapAlloc))
 }

@@ -9,18 +9,20 @@ import (
 	"github.com/spf13/cobra"
 )
 
-// program holds what every command needs: the streams. Data goes to out, talk
-// to err.
+// program holds what every command needs: the streams, the signals, and the
+// words that were typed. Data goes to out, talk to err.
 type program struct {
 	out, err io.Writer
+	signals  *watch
+	typed    []string // arguments, without the program's name
 }
 
 // run is the whole program: it runs the command that args name and returns
 // the exit code.
 func run(args []string, stdout, stderr io.Writer) int {
-	p := &program{out: stdout, err: stderr}
-	ctx, stop := watchSignals(stderr)
-	defer stop()
+	signals, ctx, end := watchSignals(stderr)
+	defer end()
+	p := &program{out: stdout, err: stderr, signals: signals, typed: args}
 	root := p.root()
 	root.SetArgs(args)
 	root.SetOut(stdout)

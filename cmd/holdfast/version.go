@@ -2,14 +2,20 @@ package main
 
 import "runtime/debug"
 
-// version is the module version the program was built as, with the revision
-// where the build recorded one.
+// release is the version that `make release` builds: the linker sets it.
+var release string
+
+// version is the release, or the module version the program was built as,
+// with the revision where the build recorded one.
 func version() string {
 	info, ok := debug.ReadBuildInfo()
 	if !ok {
-		return "unknown"
+		info = &debug.BuildInfo{}
 	}
 	v := info.Main.Version
+	if release != "" {
+		v = release
+	}
 	if v == "" {
 		v = "(devel)"
 	}

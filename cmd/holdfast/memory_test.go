@@ -1,0 +1,90 @@
+package main
+
+import (
+	"errors"
+	"math"
+	"strings"
+	"testing"
+
+	"holdfast/solver"
+)
+
+func TestMemorySize(t *testing.T) {
+	for text, want := range map[string]int64{
+		"500M": 500 << 20, "8G": 8 << 30, "1.5g": 3 << 29, "2GiB": 2 << 30, "1024k": 1 << 20, "64MB": 64 << 20, "1T": 1 << 40, "100": 100,
+	} {
+		var m memorySize
+		if err := m.Set(text); err != nil || int64(m) != want {
+			t.Errorf("%s: %d, %v; want %d", text, m, err, want)
+		}
+	}
+	for _, text := range []string{"", "G", "-1G", "0", "much", "1e30G", "NaN", "inf", "8X"} {
+		var m memorySize
+		if err := m.Set(text); err == nil {
+			t.Errorf("%q was read as %d", text, m)
+		}
+	}
+}
+
+// TestSizeText: what is printed can be typed, and is never too little.
+func TestSizeText(t *testing.T) {
+	for n := int64(1); n < math.MaxInt64/3; n = n*3 + 1 {
+		var m memorySize
+		if err := m.Set(sizeText(n)); err != nil {
+			t.Fatal(err)
+		}
+		if got := float64(m) / float64(n); got < 1 || got > 1.11 {
+			t.Errorf("%d is written as %s, which is %d", n, sizeText(n), m)
+		}
+	}
+}
+
+// TestFit: less memory first means smaller blocks, then fewer workers, then a
+// refusal whose number is enough.
+func TestFit(t *testing.T) {
+	f := footprint{
+		table: tableBytes(2000, 5000), draws: 20,
+		shape: solver.Shape{Rows: 2000, DrawRows: 1000, Candidates: 5000, Steps: 104, StopAfter: 100},
+	}
+	const workers = 8
+	w, block, err := f.fit(0, workers)
+	if err != nil || w != workers || block != f.shape.BlockLimit() {
+		t.Fatalf("without a limit: %d workers, blocks of %d, %v", w, block, err)
+	}
+	before := workers * block
+	seenSmaller, seenFewer := false, false
+	for limit := f.least(workers, block); ; limit -= 1 << 20 {
+		nw, nb, err := f.fit(limit, workers)
+		if err != nil {
+			if !errors.Is(err, errMemory) || nw != 0 {
+				t.Fatalf("%d: %v", limit, err)
+			}
+			break
+		}
+		if f.least(nw, nb) > limit {
+			t.Fatalf("limit %d: %d workers with blocks of %d need %d", limit, nw, nb, f.least(nw, nb))
+		}
+		if nw < workers && f.least(nw+1, 2) <= limit {
+			t.Fatalf("limit %d: %d workers where %d would do", limit, nw, nw+1)
+		}
+		if nw*nb > before {
+			t.Fatalf("limit %d: more at a time with less memory", limit)
+		}
+		before = nw * nb
+		seenSmaller = seenSmaller || nw == workers && nb < block
+		seenFewer = seenFewer || nw < workers
+	}
+	if !seenSmaller || !seenFewer {
+		t.Errorf("smaller blocks: %v, fewer workers: %v", seenSmaller, seenFewer)
+	}
+	_, _, err = f.fit(1<<20, workers)
+	var named memorySize
+	_, text, _ := strings.Cut(err.Error(), "a pair of draws needs ")
+	text, _, _ = strings.Cut(text, " ")
+	if setErr := named.Set(text); setErr != nil {
+		t.Fatalf("%v: %v", err, setErr)
+	}
+	if w, block, err := f.fit(int64(named), workers); err != nil || w != 1 || block != 2 {
+		t.Errorf("the %s that the refusal names: %d workers, blocks of %d, %v", text, w, block, err)
+	}
+}

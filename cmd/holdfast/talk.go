@@ -1,0 +1,85 @@
+package main
+
+import (
+	"bytes"
+	"io"
+	"sync"
+	"time"
+)
+
+// talk is what a run says to people: on the terminal as long as there is one,
+// and, once there is a run directory, in its log with the time before each
+// line. Neither can fail the run.
+type talk struct {
+	mu   sync.Mutex
+	term io.Writer      // nil once the terminal was closed
+	log  io.WriteCloser // nil: no log
+	open bool           // the log's last line has no end yet
+}
+
+// Write never fails.
+func (t *talk) Write(b []byte) (int, error) {
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	if t.term != nil {
+		_, _ = t.term.Write(b)
+	}
+	t.note(b)
+	return len(b), nil
+}
+
+// logged returns the writer for what goes to the log alone.
+func (t *talk) logged() io.Writer { return (*logOnly)(t) }
+
+type logOnly talk
+
+func (l *logOnly) Write(b []byte) (int, error) {
+	t := (*talk)(l)
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	t.note(b)
+	return len(b), nil
+}
+
+// note writes to the log. Empty lines say nothing there. The caller holds mu.
+func (t *talk) note(b []byte) {
+	if t.log == nil {
+		return
+	}
+	var out bytes.Buffer
+	for line := range bytes.Lines(b) {
+		if !t.open && len(bytes.TrimSpace(line)) > 0 {
+			out.WriteString(time.Now().UTC().Format(time.RFC3339) + " ")
+		} else if !t.open {
+			continue
+		}
+		out.Write(line)
+		t.open = line[len(line)-1] != '\n'
+	}
+	// Where the disk is full, the draws say so; a log line is not worth more.
+	_, _ = t.log.Write(out.Bytes())
+}
+
+// keep opens the log: from now on everything is in it too.
+func (t *talk) keep(log io.WriteCloser) {
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	t.log, t.open = log, false
+}
+
+// hangUp lets the terminal go.
+func (t *talk) hangUp() {
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	t.term = nil
+}
+
+// end closes the log.
+func (t *talk) end() {
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	if t.log != nil {
+		_ = t.log.Close()
+		t.log = nil
+	}
+}
