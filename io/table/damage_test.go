@@ -4,6 +4,7 @@ import (
 	"encoding/binary"
 	"errors"
 	"fmt"
+	"math"
 	"os"
 	"path/filepath"
 	"runtime"
@@ -179,6 +180,29 @@ func allocated() uint64 {
 	var m runtime.MemStats
 	runtime.ReadMemStats(&m)
 	return m.TotalAlloc
+}
+
+func TestRoomInControlGroups(t *testing.T) {
+	// A limit two levels up counts; cached files are given back (kernel
+	// documentation, cgroup-v2).
+	root := t.TempDir()
+	inner := filepath.Join(root, "batch", "job")
+	must(t, os.MkdirAll(inner, 0o755))
+	writeText(t, filepath.Join(inner, "memory.max"), "max\n")
+	writeText(t, filepath.Join(inner, "memory.current"), "5000\n")
+	outer := filepath.Join(root, "batch")
+	writeText(t, filepath.Join(outer, "memory.max"), "9000\n")
+	writeText(t, filepath.Join(outer, "memory.current"), "6000\n")
+	writeText(t, filepath.Join(outer, "memory.stat"), "anon 4000\ninactive_file 700\nactive_file 300\n")
+	if got := groupMemory(root, "1:name=x:/old\n0::/batch/job\n"); got != 4000 {
+		t.Errorf("%d bytes are left, want 4000", got)
+	}
+	if got := groupMemory(root, "0::/elsewhere\n"); got != math.MaxInt64 {
+		t.Errorf("%d bytes are left where nothing is limited", got)
+	}
+	if freeMemory() < 1<<20 {
+		t.Errorf("this machine has %d bytes free", freeMemory())
+	}
 }
 
 func TestHugeClaimsOfRows(t *testing.T) {

@@ -146,3 +146,18 @@ func TestEncryptedColumnsAreRefused(t *testing.T) {
 	err := second(Open(foreignFile("encrypted_columns.parquet")))
 	wantError(t, err, "encrypted_columns.parquet: the file is encrypted: write a copy that is not")
 }
+
+func TestLevelsOfTheOldestFiles(t *testing.T) {
+	// Before runs there were packed levels, highest bit first (Parquet format,
+	// Encodings.md, BIT_PACKED): 1011 0001 and 10.
+	p := &pages{leaf: &leaf{optional: true, physical: physicalDouble}, count: 10}
+	h := pageHeader{plain: 5, levelEncoding: encodingBitPacked}
+	values, err := p.splitOne(h, []byte{0b10110001, 0b10000000, 7, 8, 9})
+	must(t, err)
+	if string(values) != "\x07\x08\x09" || p.filled != 5 || len(p.valid) != 2 || p.valid[0] != 0b10001101 || p.valid[1] != 1 {
+		t.Errorf("values %v, %d filled, levels %b", values, p.filled, p.valid)
+	}
+	if _, err := p.splitOne(h, []byte{1}); err == nil {
+		t.Error("a page shorter than its levels is accepted")
+	}
+}

@@ -298,6 +298,9 @@ func TestFolderAndGlob(t *testing.T) {
 		t.Errorf("the glob has %d rows, want 29", n)
 	}
 
+	writeText(t, filepath.Join(dir, "part-4.csv"), "a,b\n1,2\n3,4\n")
+	wantError(t, second(Open(filepath.Join(dir, "*.csv"))), "part-4.csv: this is not a Parquet file (folders and globs are read as Parquet files)")
+
 	other := part(0, 13)
 	other[1].typ = arrow.PrimitiveTypes.Float64
 	writeParquet(t, filepath.Join(dir, "part-4.parquet"), other, 100)

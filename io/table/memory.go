@@ -58,18 +58,16 @@ func freeMemory() int64 {
 			}
 		}
 	}
-	return min(free, groupMemory("/sys/fs/cgroup"))
+	own, _ := os.ReadFile("/proc/self/cgroup")
+	return min(free, groupMemory("/sys/fs/cgroup", string(own)))
 }
 
 // groupMemory returns the room left in the control groups above this process
-// (version 2: every level may have a limit).
-func groupMemory(root string) int64 {
+// (version 2: every level may have a limit). own is what the kernel says of
+// this process in /proc/self/cgroup.
+func groupMemory(root, own string) int64 {
 	free := int64(math.MaxInt64)
-	text, err := os.ReadFile("/proc/self/cgroup")
-	if err != nil {
-		return free
-	}
-	for _, line := range strings.Split(string(text), "\n") {
+	for _, line := range strings.Split(own, "\n") {
 		group, ok := strings.CutPrefix(line, "0::")
 		if !ok {
 			continue

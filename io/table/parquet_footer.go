@@ -98,6 +98,13 @@ func footerBytes(f *os.File) (raw []byte, before int64, err error) {
 	if size < 12 {
 		return nil, 0, damagedf("a Parquet file has at least 12 bytes, this one has %d", size)
 	}
+	var head [4]byte
+	if _, err := f.ReadAt(head[:], 0); err != nil {
+		return nil, 0, err
+	}
+	if string(head[:]) != "PAR1" && string(head[:]) != "PARE" {
+		return nil, 0, refusef("this is not a Parquet file (folders and globs are read as Parquet files): it does not begin with PAR1")
+	}
 	var tail [8]byte
 	if _, err := f.ReadAt(tail[:], size-8); err != nil {
 		return nil, 0, err
