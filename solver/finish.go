@@ -261,21 +261,30 @@ func (r *record) certify(f *fitting) {
 	}
 }
 
-// check says why a record may not be kept, or nil.
+// check says why a record may not be kept, or nil. Units in which a gradient
+// cannot be resolved come first: they are the cause of a violation then.
 func (r *record) check(f *fitting) error {
+	if err := r.resolvable(f); err != nil {
+		return err
+	}
 	if !(r.cert.violation <= certified) || !(r.cert.gap <= certified) {
 		return fmt.Errorf("violation %.1e, gap %.1e: above %.0e", r.cert.violation, r.cert.gap, certified)
 	}
+	return nil
+}
+
+// resolvable checks that rounding of the members' gradients is small beside
+// their thresholds. sum |x u| / (N s) is at most the spread of the residual
+// times sqrt(mean^2 + sd^2) / s.
+func (r *record) resolvable(f *fitting) error {
 	if r.lambda == 0 {
 		return nil
 	}
-	spread := math.Sqrt(kernel.Dot(r.u, r.u) / f.d.total)
+	w, spread := &f.work, math.Sqrt(kernel.Dot(r.u, r.u)/f.d.total)
 	for k, i := range r.members {
 		if r.sign[k] == 0 {
 			continue
 		}
-		// sum |x u| / (N s) is at most spread * sqrt(mean^2 + sd^2) / s.
-		w := &f.work
 		size := math.Sqrt(float64(w.mean[i]*w.mean[i])/float64(w.scale[i]*w.scale[i]) + w.h.row[i][i])
 		if 8*0x1p-52*spread*size > unresolved*f.m.penalty.threshold(w.units[i], r.lambda) {
 			return errors.New(f.m.name(w.units[i]) + ": not resolvable in these units")
