@@ -31,8 +31,9 @@ type handle interface {
 // files are the operations by which this package changes a disk. Tests put a
 // version in its place that fails at a chosen operation.
 type files interface {
-	MkdirAll(path string) error
+	Mkdir(path string) error
 	Create(path string) (handle, error) // must not exist yet
+	Append(path string) (handle, error) // made where it is missing
 	Rename(from, to string) error
 	Link(from, to string) error // must not exist yet
 	Remove(path string) error
@@ -42,10 +43,14 @@ type files interface {
 // disk is the real file system.
 type disk struct{}
 
-func (disk) MkdirAll(path string) error { return os.MkdirAll(path, 0o755) }
+func (disk) Mkdir(path string) error { return os.Mkdir(path, 0o755) }
 
 func (disk) Create(path string) (handle, error) {
 	return os.OpenFile(path, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o644)
+}
+
+func (disk) Append(path string) (handle, error) {
+	return os.OpenFile(path, os.O_WRONLY|os.O_CREATE|os.O_APPEND, 0o644)
 }
 
 func (disk) Rename(from, to string) error { return os.Rename(from, to) }
@@ -154,10 +159,13 @@ func fill(fsys files, temp string, write func(io.Writer) error) error {
 }
 
 // tempName returns a name that no other process picks, in the same folder.
-func tempName(name string) string {
+func tempName(name string) string { return tempPrefix + name + "-" + unique() + tempSuffix }
+
+// unique is a word that nobody else has.
+func unique() string {
 	var b [8]byte
 	rand.Read(b[:])
-	return tempPrefix + name + "-" + hex.EncodeToString(b[:]) + tempSuffix
+	return hex.EncodeToString(b[:])
 }
 
 func isTemp(name string) bool {

@@ -17,8 +17,8 @@ type numbered struct {
 // program wrote.
 func (r *Run) checkPath(n *numbered) error {
 	p := &n.path
-	if n.number < 0 || n.number >= r.Meta.Number {
-		return fmt.Errorf("draw %d: the run has draws 0 to %d", n.number, r.Meta.Number-1)
+	if n.number < 0 || n.number >= maxDraws {
+		return fmt.Errorf("draw %d: no run has such a draw", n.number)
 	}
 	steps, err := stepsOf(p)
 	if err != nil {

@@ -35,26 +35,29 @@ type Judged struct {
 var ErrDecided = errors.New("rundir: the decision of record is already set")
 
 // SetDecision writes the decision of record. It must come before the first
-// draw, and once.
+// draw, and once; to set the same one again changes nothing, as parts that
+// start together do.
 func (d *Dir) SetDecision(dec selection.Decision) error {
 	if err := checkDecision(&dec); err != nil {
 		return fmt.Errorf("rundir: decision: %w", err)
 	}
-	d.mu.Lock()
-	defer d.mu.Unlock()
-	if d.run.Decision != nil {
-		return ErrDecided
-	}
-	blocks, err := d.blocks()
-	if err != nil {
-		return err
-	}
-	if len(blocks) > 0 {
-		return fmt.Errorf("%w: draws are already there", ErrDecided)
-	}
-	next := d.run
-	next.Decision = &dec
-	return d.saveRun(next)
+	return d.edit(func(r *Run) (bool, error) {
+		if r.Decision != nil {
+			if r.Decision.Same(dec) {
+				return false, nil
+			}
+			return false, ErrDecided
+		}
+		blocks, err := d.blocks()
+		if err != nil {
+			return false, err
+		}
+		if len(blocks) > 0 {
+			return false, fmt.Errorf("%w: draws are already there", ErrDecided)
+		}
+		r.Decision = &dec
+		return true, nil
+	})
 }
 
 // LogJudgement adds a judgement that is not the one of record to run.json. A
@@ -65,38 +68,21 @@ func (d *Dir) LogJudgement(j Judged) error {
 	if err := checkDecision(&j.Decision); err != nil {
 		return fmt.Errorf("rundir: judgement: %w", err)
 	}
-	d.mu.Lock()
-	defer d.mu.Unlock()
-	now, err := readRun(d.path) // another process may have added to it
-	if err != nil {
-		return err
-	}
-	if now.Digest != d.run.Digest {
-		return fmt.Errorf("rundir: %s: run.json now belongs to another run (identity %.12s, not %.12s)", d.path, now.Digest, d.run.Digest)
-	}
-	d.run = *now
-	if now.Decision != nil && now.Decision.Same(j.Decision) && j.Draws == now.Meta.Number {
-		return nil
-	}
-	for i := range now.Judgements {
-		if same(now.Judgements[i], j) {
-			return nil
+	return d.edit(func(r *Run) (bool, error) {
+		if r.Decision != nil && r.Decision.Same(j.Decision) && j.Draws == r.Meta.Number {
+			return false, nil
 		}
-	}
-	now.Judgements = append(now.Judgements, j)
-	return d.saveRun(*now)
+		for i := range r.Judgements {
+			if same(r.Judgements[i], j) {
+				return false, nil
+			}
+		}
+		r.Judgements = append(r.Judgements, j)
+		return true, nil
+	})
 }
 
 // same reports whether b says nothing that a does not.
 func same(a, b Judged) bool {
 	return a.Decision.Same(b.Decision) && a.Draws == b.Draws && a.Stable == b.Stable && (a.Saved || !b.Saved)
-}
-
-// saveRun replaces run.json and what is held of it. The caller holds d.mu.
-func (d *Dir) saveRun(next Run) error {
-	if err := writeFile(d.fs, d.join(runFile), next.encode); err != nil {
-		return troubled(err)
-	}
-	d.run = next
-	return nil
 }

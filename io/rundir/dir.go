@@ -7,8 +7,10 @@ import (
 	"io/fs"
 	"os"
 	"path/filepath"
+	"runtime"
 	"sort"
 	"sync"
+	"syscall"
 )
 
 const (
@@ -16,12 +18,14 @@ const (
 	studyFile   = "study.toml"
 	drawsFolder = "draws"
 	partsFolder = "parts"
+	logsFolder  = "logs"
 )
 
 // Dir is an open run directory.
 type Dir struct {
 	path string
 	fs   files
+	env  *environment
 
 	mu  sync.Mutex
 	run Run
@@ -40,30 +44,64 @@ func Create(dir string, id Identity, study []byte, meta Meta) (*Dir, error) {
 }
 
 func create(fsys files, dir string, id Identity, study []byte, meta Meta) (*Dir, error) {
-	run := Run{Format: Format, Digest: id.Digest(), Identity: id, Meta: meta, Judgements: []Judged{}}
-	run.Meta.Excluded = append([]Excluded{}, meta.Excluded...)
+	run := Run{Format: Format, Digest: id.Digest(), Identity: id, Meta: meta.resolved(), Judgements: []Judged{}, Extensions: []Extension{}}
 	if err := run.check(); err != nil {
 		return nil, fmt.Errorf("rundir: create %s: %w", dir, err)
 	}
 	if err := refuseFull(dir, study); err != nil {
 		return nil, fmt.Errorf("rundir: create %s: %w", dir, err)
 	}
-	d := &Dir{path: dir, fs: fsys, run: run}
-	for _, folder := range []string{drawsFolder, partsFolder} {
-		if err := fsys.MkdirAll(d.join(folder)); err != nil {
+	d := &Dir{path: dir, fs: fsys, env: machine, run: run}
+	for _, folder := range []string{drawsFolder, partsFolder, logsFolder} {
+		if err := makeFolder(fsys, d.join(folder)); err != nil {
 			return nil, fmt.Errorf("rundir: create %s: %w", dir, troubled(err))
 		}
 	}
 	if err := writeFile(fsys, d.join(studyFile), writes(study)); err != nil {
 		return nil, troubled(err)
 	}
-	if err := writeFile(fsys, d.join(runFile), run.encode); err != nil {
+	// Parts that start together all come here; one of them makes the run.
+	err := writeNew(fsys, d.join(runFile), run.encode)
+	if errors.Is(err, fs.ErrExist) {
+		return nil, fmt.Errorf("rundir: create %s: %w: another process made the run at this moment", dir, ErrExists)
+	}
+	if err != nil {
 		return nil, troubled(err)
 	}
-	if err := fsys.SyncFolder(filepath.Dir(filepath.Clean(dir))); err != nil {
-		return nil, fmt.Errorf("rundir: sync folder above %s: %w", dir, err)
-	}
 	return d, nil
+}
+
+// resolved fills in what zero values stand for.
+func (m Meta) resolved() Meta {
+	m.Excluded = append([]Excluded{}, m.Excluded...)
+	if m.Architecture == "" {
+		m.Architecture = runtime.GOARCH
+	}
+	m.Parts = max(m.Parts, 1)
+	return m
+}
+
+// makeFolder makes a folder, with those above it where they are missing, and
+// syncs the folder above each one that it makes: a folder that is not synced
+// takes all that is in it along when the power fails.
+func makeFolder(fsys files, path string) error {
+	info, err := os.Stat(path)
+	if err == nil && !info.IsDir() {
+		return &fs.PathError{Op: "mkdir", Path: path, Err: syscall.ENOTDIR}
+	}
+	if err == nil {
+		return nil
+	}
+	above := filepath.Dir(filepath.Clean(path))
+	if above != path {
+		if err := makeFolder(fsys, above); err != nil {
+			return err
+		}
+	}
+	if err := fsys.Mkdir(path); err != nil && !errors.Is(err, fs.ErrExist) {
+		return err
+	}
+	return fsys.SyncFolder(above)
 }
 
 func writes(text []byte) func(io.Writer) error {
@@ -105,7 +143,7 @@ func leftover(dir string, e fs.DirEntry, study []byte) bool {
 	case e.Name() == studyFile:
 		text, err := readLimited(path, maxRunJSON)
 		return err == nil && string(text) == string(study)
-	case e.Name() == drawsFolder || e.Name() == partsFolder:
+	case e.Name() == drawsFolder || e.Name() == partsFolder || e.Name() == logsFolder:
 		inside, err := os.ReadDir(path)
 		return err == nil && len(inside) == 0
 	}
@@ -118,7 +156,7 @@ func Open(dir string) (*Dir, error) {
 	if err != nil {
 		return nil, err
 	}
-	return &Dir{path: dir, fs: disk{}, run: *run}, nil
+	return &Dir{path: dir, fs: disk{}, env: machine, run: *run}, nil
 }
 
 func readRun(dir string) (*Run, error) {

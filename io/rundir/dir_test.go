@@ -13,7 +13,6 @@ import (
 	"testing"
 
 	"holdfast/selection"
-	"holdfast/solver"
 )
 
 func TestCreateRefusesAFullDirectory(t *testing.T) {
@@ -94,160 +93,6 @@ func TestCreateRefusesBadContent(t *testing.T) {
 	}
 }
 
-// HOUSE-STYLE 8: fail the n-th file operation until all succeed; each time
-// the error surfaces, and what is on disk is whole or absent.
-func TestEveryFailedOperationSurfaces(t *testing.T) {
-	paths := randomPaths(source(t), 4)
-	for n := 1; ; n++ {
-		dir := filepath.Join(t.TempDir(), "x.run")
-		fsys := &failing{left: n}
-		err := wholeRun(fsys, dir, paths)
-		if fsys.left > 0 {
-			if err != nil {
-				t.Fatalf("no operation failed, and yet: %v", err)
-			}
-			t.Logf("%d operations", n-1)
-			break
-		}
-		if !errors.Is(err, errInjected) {
-			t.Fatalf("operation %d (%s) failed, and the run said %v", n, fsys.last, err)
-		}
-		onlyWholeFiles(t, dir, fsys.last)
-	}
-}
-
-// wholeRun does everything that writes.
-func wholeRun(fsys files, dir string, paths []solver.Path) error {
-	d, err := create(fsys, dir, hatcheryIdentity(), []byte("[table]\n"), hatcheryMeta(4))
-	if err != nil {
-		return err
-	}
-	other := hatcheryDecision()
-	other.Selected = 2
-	for _, step := range []func() error{
-		func() error { return d.SetDecision(hatcheryDecision()) },
-		func() error { return d.Put(upTo(0, 2), paths[:2]) },
-		func() error { return d.Put(upTo(2, 4), paths[2:]) },
-		func() error { return d.WritePart(Part{State: "done"}) },
-		func() error { return d.LogJudgement(Judged{Time: "2031-05-01T08:00:00Z", Draws: 4, Decision: other}) },
-		func() error {
-			return d.Write("stability.csv", func(w io.Writer) error { _, err := io.WriteString(w, "predictor\n"); return err })
-		},
-	} {
-		if err := step(); err != nil {
-			return err
-		}
-	}
-	return nil
-}
-
-// onlyWholeFiles checks that each file under its final name can be read.
-func onlyWholeFiles(t *testing.T, dir, what string) {
-	t.Helper()
-	d, err := Open(dir)
-	if errors.Is(err, fs.ErrNotExist) {
-		return
-	}
-	if err != nil {
-		t.Fatalf("after %s: %v", what, err)
-	}
-	f, err := d.Read()
-	if err != nil || len(f.Damaged) > 0 {
-		t.Fatalf("after %s: %v, damaged %v", what, err, f.Damaged)
-	}
-	if _, err := d.Parts(); err != nil {
-		t.Fatalf("after %s: %v", what, err)
-	}
-}
-
-var errInjected = errors.New("injected")
-
-// failing is a disk whose left-th operation fails, and with it a write of
-// which half arrived.
-type failing struct {
-	disk disk
-	left int
-	last string
-	mu   sync.Mutex
-}
-
-func (f *failing) fails(what string) bool {
-	f.mu.Lock()
-	defer f.mu.Unlock()
-	f.left--
-	if f.left == 0 {
-		f.last = what
-	}
-	return f.left == 0
-}
-
-func (f *failing) MkdirAll(path string) error {
-	if f.fails("mkdir " + path) {
-		return errInjected
-	}
-	return f.disk.MkdirAll(path)
-}
-
-func (f *failing) Create(path string) (handle, error) {
-	if f.fails("create " + path) {
-		return nil, errInjected
-	}
-	h, err := f.disk.Create(path)
-	return &failingHandle{h, f, path}, err
-}
-
-func (f *failing) Rename(from, to string) error {
-	if f.fails("rename to " + to) {
-		return errInjected
-	}
-	return f.disk.Rename(from, to)
-}
-
-func (f *failing) Link(from, to string) error {
-	if f.fails("link to " + to) {
-		return errInjected
-	}
-	return f.disk.Link(from, to)
-}
-
-func (f *failing) Remove(path string) error { return f.disk.Remove(path) }
-
-func (f *failing) SyncFolder(path string) error {
-	if f.fails("sync folder " + path) {
-		return errInjected
-	}
-	return f.disk.SyncFolder(path)
-}
-
-type failingHandle struct {
-	handle
-	f    *failing
-	path string
-}
-
-func (h *failingHandle) Write(b []byte) (int, error) {
-	if h.f.fails("write " + h.path) {
-		n, _ := h.handle.Write(b[:len(b)/2])
-		return n, errInjected
-	}
-	return h.handle.Write(b)
-}
-
-func (h *failingHandle) Sync() error {
-	if h.f.fails("sync " + h.path) {
-		return errInjected
-	}
-	return h.handle.Sync()
-}
-
-func (h *failingHandle) Close() error {
-	err := h.handle.Close()
-	if h.f.fails("close " + h.path) {
-		return errInjected
-	}
-	return err
-}
-
 // A write that fails inside the Parquet library, at any byte, is an error: the
 // library itself loses that of the footer.
 func TestFailedWritesOfABlockSurface(t *testing.T) {
@@ -304,7 +149,12 @@ func TestDecisionOfRecordComesFirstAndOnce(t *testing.T) {
 	if err := d.SetDecision(hatcheryDecision()); err != nil {
 		t.Fatal(err)
 	}
-	if err := d.SetDecision(hatcheryDecision()); !errors.Is(err, ErrDecided) {
+	if err := d.SetDecision(hatcheryDecision()); err != nil {
+		t.Errorf("the same decision again: %v", err)
+	}
+	other := hatcheryDecision()
+	other.Threshold = 0.9
+	if err := d.SetDecision(other); !errors.Is(err, ErrDecided) {
 		t.Errorf("second decision: %v", err)
 	}
 	undecided := d.Run()
@@ -312,7 +162,9 @@ func TestDecisionOfRecordComesFirstAndOnce(t *testing.T) {
 	if err := d.Put(upTo(0, 2), paths); err != nil {
 		t.Fatal(err)
 	}
-	d.run = undecided
+	if err := writeFile(disk{}, d.join(runFile), undecided.encode); err != nil {
+		t.Fatal(err)
+	}
 	if err := d.SetDecision(hatcheryDecision()); !errors.Is(err, ErrDecided) {
 		t.Errorf("decision after draws: %v", err)
 	}
@@ -387,17 +239,6 @@ func TestReadOnlyCopyIsRead(t *testing.T) {
 	}
 }
 
-// sealed is a disk that refuses to change.
-type sealed struct{ disk }
-
-func (sealed) MkdirAll(string) error { return syscall.EROFS }
-func (sealed) Create(string) (handle, error) {
-	return nil, &fs.PathError{Op: "open", Err: syscall.EROFS}
-}
-func (sealed) Rename(string, string) error { return syscall.EROFS }
-func (sealed) Link(string, string) error   { return syscall.EROFS }
-func (sealed) Remove(string) error         { return syscall.EROFS }
-
 // listing names every file with size and time of change.
 func listing(t *testing.T, dir string) string {
 	t.Helper()
@@ -433,7 +274,12 @@ func TestResultFilesStayInTheirPlace(t *testing.T) {
 }
 
 func TestParts(t *testing.T) {
-	d := hatcheryRun(t, 2)
+	meta := hatcheryMeta(2)
+	meta.Parts = 11
+	d, err := Create(t.TempDir(), hatcheryIdentity(), nil, meta)
+	if err != nil {
+		t.Fatal(err)
+	}
 	for _, part := range []int{10, 2, 0} {
 		if err := d.WritePart(Part{Part: part, State: "done", Host: "tank-3", Draws: 2, Violation: 1e-12}); err != nil {
 			t.Fatal(err)
@@ -445,6 +291,9 @@ func TestParts(t *testing.T) {
 	}
 	if err := d.WritePart(Part{Part: -1}); err == nil {
 		t.Error("part -1 was written")
+	}
+	if err := d.WritePart(Part{Part: 11}); err == nil || !strings.Contains(err.Error(), "parts 0 to 10") {
+		t.Errorf("part 11 of 11: %v", err)
 	}
 }
 

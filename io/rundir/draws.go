@@ -3,8 +3,10 @@ package rundir
 import (
 	"errors"
 	"fmt"
+	"io/fs"
 	"slices"
 	"strings"
+	"syscall"
 
 	"holdfast/selection"
 	"holdfast/solver"
@@ -12,8 +14,9 @@ import (
 
 // Damage is a block that cannot be used, and why. Err names the file.
 type Damage struct {
-	Path string
-	Err  error
+	Path  string
+	First int // its first draw, from its name
+	Err   error
 }
 
 // Uncertified is a draw whose path ended before a step that could not be
@@ -26,8 +29,10 @@ type Uncertified struct {
 
 // Finished is what is on disk.
 type Finished struct {
-	Draws   []selection.Draw // ordered by number
+	Draws   []selection.Draw // ordered by number; nil from Survey
+	Count   int              // draws that are there
 	Missing []int            // numbers of draws that no readable block holds, ascending
+	Beyond  int              // draws that are there and beyond the run's number: an extension that run.json does not know
 	Damaged []Damage
 
 	Violation   float64 // worst over all draws
@@ -47,18 +52,18 @@ func (d *Dir) Draws() ([]selection.Draw, error) {
 	if err != nil {
 		return nil, err
 	}
-	if err := f.complete(d); err != nil {
+	if err := f.complete(d.path); err != nil {
 		return nil, err
 	}
 	return f.Draws, nil
 }
 
 // complete returns an error if anything is missing or damaged.
-func (f *Finished) complete(d *Dir) error {
+func (f *Finished) complete(path string) error {
 	if len(f.Missing) == 0 && len(f.Damaged) == 0 {
 		return nil
 	}
-	list := []error{fmt.Errorf("rundir: %s: %w: %s of %d", d.path, ErrIncomplete, ranges(f.Missing), d.Run().Meta.Number)}
+	list := []error{fmt.Errorf("rundir: %s: %w: %s of %d", path, ErrIncomplete, ranges(f.Missing), f.Count+len(f.Missing))}
 	for _, b := range f.Damaged {
 		list = append(list, b.Err)
 	}
@@ -69,25 +74,48 @@ func (f *Finished) complete(d *Dir) error {
 // missing draws are listed; a block of another run, and two blocks that
 // disagree about a draw, are errors. A draw that two blocks hold with equal
 // bits counts once: two processes may have made it.
-func (d *Dir) Read() (*Finished, error) {
-	run := d.Run()
+func (d *Dir) Read() (*Finished, error) { return read(true, d) }
+
+// Survey is Read without the draws: what is there, what is missing or damaged,
+// and the certificates, in little memory.
+func (d *Dir) Survey() (*Finished, error) { return read(false, d) }
+
+// read reads the draws of one or more directories of one run. The number of
+// draws is the largest of theirs.
+func read(keep bool, dirs ...*Dir) (*Finished, error) {
+	number := 0
+	for _, d := range dirs {
+		number = max(number, d.Run().Meta.Number)
+	}
 	f := &Finished{}
-	byNumber := make([]*selection.Draw, run.Meta.Number)
-	err := d.scan(&f.Damaged, func(n *numbered) {
-		byNumber[n.number] = f.add(n, run.Meta.LastStep)
+	byNumber := make([]*selection.Draw, number)
+	err := scan(dirs, &f.Damaged, func(d *Dir, n *numbered) {
+		if n.number >= number {
+			f.Beyond++
+			return
+		}
+		byNumber[n.number] = f.add(n, d.Run().Meta.LastStep, keep)
 	})
 	if err != nil {
 		return nil, err
 	}
+	f.collect(byNumber, keep)
+	f.sortUncertified()
+	return f, nil
+}
+
+// collect lists the draws in order, and those that are missing.
+func (f *Finished) collect(byNumber []*selection.Draw, keep bool) {
 	for number, draw := range byNumber {
 		if draw == nil {
 			f.Missing = append(f.Missing, number)
 			continue
 		}
-		f.Draws = append(f.Draws, *draw)
+		f.Count++
+		if keep {
+			f.Draws = append(f.Draws, *draw)
+		}
 	}
-	f.sortUncertified()
-	return f, nil
 }
 
 // ReadPaths returns the full record of every draw, ordered by number, and
@@ -96,8 +124,11 @@ func (d *Dir) ReadPaths() ([]solver.Path, error) {
 	f := &Finished{}
 	paths := make([]solver.Path, d.Run().Meta.Number)
 	seen := make([]bool, len(paths))
-	err := d.scan(&f.Damaged, func(n *numbered) {
-		paths[n.number], seen[n.number] = n.path, true
+	err := scan([]*Dir{d}, &f.Damaged, func(_ *Dir, n *numbered) {
+		if n.number < len(paths) {
+			paths[n.number], seen[n.number] = n.path, true
+			f.Count++
+		}
 	})
 	if err != nil {
 		return nil, err
@@ -107,48 +138,72 @@ func (d *Dir) ReadPaths() ([]solver.Path, error) {
 			f.Missing = append(f.Missing, number)
 		}
 	}
-	return paths, f.complete(d)
+	return paths, f.complete(d.path)
+}
+
+// origin is where a draw was read, and its digest.
+type origin struct {
+	sum  sum
+	path string
 }
 
 // scan calls each for every draw on disk, once.
-func (d *Dir) scan(damaged *[]Damage, each func(*numbered)) error {
-	run := d.Run()
-	blocks, err := d.blocks()
-	if err != nil {
-		return err
-	}
-	type seen struct {
-		sum  sum
-		path string
-	}
-	draws := make(map[int]seen, run.Meta.Number)
-	for _, file := range blocks {
-		block, sums, err := run.readBlock(file.path)
-		if errors.Is(err, ErrForeign) {
+func scan(dirs []*Dir, damaged *[]Damage, each func(*Dir, *numbered)) error {
+	draws := make(map[int]origin)
+	for _, d := range dirs {
+		run := d.Run()
+		blocks, err := d.blocks()
+		if err != nil {
 			return err
 		}
-		if err != nil {
-			*damaged = append(*damaged, Damage{file.path, err})
-			continue
-		}
-		for i := range block {
-			number := block[i].number
-			if other, ok := draws[number]; ok {
-				if other.sum != sums[i] {
-					return fmt.Errorf("rundir: blocks %s and %s disagree about draw %d: remove the wrong one", other.path, file.path, number)
-				}
+		for _, file := range blocks {
+			block, sums, err := run.readBlock(file.path)
+			switch {
+			case errors.Is(err, fs.ErrNotExist):
+				continue // another process set it aside since the folder was listed
+			case errors.Is(err, ErrForeign), noAnswer(err):
+				return err
+			case err != nil:
+				*damaged = append(*damaged, Damage{file.path, file.first, err})
 				continue
 			}
-			draws[number] = seen{sums[i], file.path}
-			each(&block[i])
+			for i := range block {
+				if isNew, err := note(draws, block[i].number, origin{sums[i], file.path}); err != nil {
+					return err
+				} else if isNew {
+					each(d, &block[i])
+				}
+			}
 		}
 	}
 	return nil
 }
 
-// add turns a draw's record into what a judgement needs, and takes note of
-// its certificate.
-func (f *Finished) add(n *numbered, lastStep int) *selection.Draw {
+// note keeps where a draw was found, and reports whether it is new. Two draws
+// of one number that differ are an error.
+func note(draws map[int]origin, number int, found origin) (isNew bool, err error) {
+	other, ok := draws[number]
+	if !ok {
+		draws[number] = found
+		return true, nil
+	}
+	if other.sum != found.sum {
+		return false, fmt.Errorf("rundir: blocks %s and %s disagree about draw %d: remove the wrong one", other.path, found.path, number)
+	}
+	return false, nil
+}
+
+// noAnswer tells a file that the system did not let us read, which says
+// nothing about what is in it, from a damaged one. A medium that cannot be
+// read any more is damage.
+func noAnswer(err error) bool {
+	var failed *fs.PathError
+	return errors.As(err, &failed) && !errors.Is(err, syscall.EIO)
+}
+
+// add takes note of a draw's certificate, and turns its record into what a
+// judgement needs, if that is to be kept.
+func (f *Finished) add(n *numbered, lastStep int, keep bool) *selection.Draw {
 	p := &n.path
 	f.Violation = max(f.Violation, p.Violation)
 	f.Gap = max(f.Gap, p.Gap)
@@ -157,12 +212,16 @@ func (f *Finished) add(n *numbered, lastStep int) *selection.Draw {
 	if p.Stop == solver.StopUncertified {
 		f.Uncertified = append(f.Uncertified, Uncertified{n.number, p.Last + 1, p.Why})
 	}
+	if !keep {
+		return &selection.Draw{}
+	}
 	draw := &selection.Draw{
 		Number: n.number, First: p.First, Last: p.Last,
 		Uncertified: p.Stop == solver.StopUncertified,
 		Complete:    p.Last >= p.First && p.Last >= lastStep,
 		Always:      p.Always,
 		Still:       p.Still,
+		Twins:       p.Twins,
 	}
 	for _, e := range p.Entries {
 		draw.Entries = append(draw.Entries, selection.Entry{Predictor: e.Candidate, Step: e.Step, Negative: e.Negative})

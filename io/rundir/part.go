@@ -13,7 +13,7 @@ import (
 // makes.
 type Part struct {
 	Part       int     `json:"part"`
-	State      string  `json:"state"` // done or failed
+	State      string  `json:"state"` // running, done, stopped or failed
 	Failure    string  `json:"failure,omitempty"`
 	Host       string  `json:"host"`
 	Workers    int     `json:"workers"`
@@ -26,14 +26,53 @@ type Part struct {
 	Gap        float64 `json:"gap"`
 	Borderline int     `json:"borderline"`
 	Twins      int     `json:"twins"`
+	// What the process was and took; 0 where it was not told.
+	PID        int     `json:"pid,omitempty"`
+	Restart    int     `json:"restart,omitempty"`     // how often the scheduler started it again
+	PeakBytes  int64   `json:"peak_bytes,omitempty"`  // resident
+	CPUSeconds float64 `json:"cpu_seconds,omitempty"` // of all processors together
 	// Uncertified are the draws whose path ended early.
 	Uncertified []int `json:"uncertified"`
 }
 
+// States of a part.
+const (
+	StateRunning = "running"
+	StateDone    = "done"
+	StateStopped = "stopped" // asked to end before its last draw
+	StateFailed  = "failed"
+)
+
+// PartOf returns the part that a draw belongs to: pair k, or bootstrap draw k,
+// is of part k mod N.
+func (r *Run) PartOf(draw int) int {
+	if r.halves() {
+		draw /= 2
+	}
+	return draw % r.Meta.parts()
+}
+
+// PartCount returns the number of parts that the draws are shared out to.
+func (d *Dir) PartCount() int {
+	run := d.Run()
+	return run.Meta.parts()
+}
+
+// parts is Parts with its zero value resolved: a run.json that says nothing.
+func (m *Meta) parts() int { return max(m.Parts, 1) }
+
+// checkPart refuses a part that the run does not have.
+func (d *Dir) checkPart(part int) error {
+	if n := d.PartCount(); part < 0 || part >= n {
+		return fmt.Errorf("rundir: %s: part %d: the run has parts 0 to %d", d.path, part, n-1)
+	}
+	return nil
+}
+
 // WritePart writes parts/I.json.
 func (d *Dir) WritePart(p Part) error {
-	if p.Part < 0 {
-		return fmt.Errorf("rundir: part %d: parts are numbered from 0", p.Part)
+	if err := d.checkPart(p.Part); err != nil {
+		return err
 	}
 	p.Uncertified = append([]int{}, p.Uncertified...)
 	return troubled(writeFile(d.fs, d.partPath(p.Part), func(w io.Writer) error {

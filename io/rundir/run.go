@@ -55,6 +55,9 @@ type Draws struct {
 
 // Digest returns the SHA-256 of the identity in hexadecimal.
 func (id Identity) Digest() string {
+	if len(id.Always) == 0 {
+		id.Always = nil // a list without names is no list
+	}
 	text, err := json.Marshal(id)
 	if err != nil {
 		return "" // only a value that check refuses gets here
@@ -65,16 +68,18 @@ func (id Identity) Digest() string {
 
 // Meta is what run.json holds beside the identity.
 type Meta struct {
-	Tool      string     `json:"tool"`       // version of the program
-	Kernel    string     `json:"kernel"`     // inner loops in use when the run began
-	TableRows int        `json:"table_rows"` // rows of the table
-	Rows      int        `json:"rows"`       // rows used
-	Number    int        `json:"number"`     // draws asked for
-	LambdaMax float64    `json:"lambda_max"`
-	LastStep  int        `json:"last_step"` // last lattice step of a complete path
-	Centre    []float64  `json:"centre"`    // means: candidates, then always-in columns
-	Deviation []float64  `json:"deviation"` // standard deviations over the rows used, likewise
-	Excluded  []Excluded `json:"excluded"`
+	Tool         string     `json:"tool"`                   // version of the program
+	Kernel       string     `json:"kernel"`                 // inner loops in use when the run began
+	Architecture string     `json:"architecture,omitempty"` // as Go names it; "": that of this program
+	TableRows    int        `json:"table_rows"`             // rows of the table
+	Rows         int        `json:"rows"`                   // rows used
+	Number       int        `json:"number"`                 // draws asked for
+	Parts        int        `json:"parts,omitempty"`        // parts that the draws are shared out to; 0: 1, all in one
+	LambdaMax    float64    `json:"lambda_max"`
+	LastStep     int        `json:"last_step"` // last lattice step of a complete path
+	Centre       []float64  `json:"centre"`    // means: candidates, then always-in columns
+	Deviation    []float64  `json:"deviation"` // standard deviations over the rows used, likewise
+	Excluded     []Excluded `json:"excluded"`
 }
 
 // Excluded is a column that was asked for and is no candidate.
@@ -92,6 +97,7 @@ type Run struct {
 	Meta       Meta                `json:"made"`
 	Decision   *selection.Decision `json:"decision"`   // of record; nil until SetDecision
 	Judgements []Judged            `json:"judgements"` // every other one, oldest first
+	Extensions []Extension         `json:"extensions"` // of the number of draws, oldest first
 }
 
 // encode writes run.json.
@@ -142,6 +148,11 @@ func (r *Run) check() error {
 	for i := range r.Judgements {
 		if err := checkDecision(&r.Judgements[i].Decision); err != nil {
 			return fmt.Errorf("judgement %d: %w", i, err)
+		}
+	}
+	for i, e := range r.Extensions {
+		if e.From < 1 || e.To <= e.From || e.To > r.Meta.Number || i > 0 && e.From != r.Extensions[i-1].To {
+			return fmt.Errorf("extension %d: from %d to %d draws of %d: makes no sense", i, e.From, e.To, r.Meta.Number)
 		}
 	}
 	return nil
@@ -196,6 +207,9 @@ func (m *Meta) check(columns int) error {
 	}
 	if m.Number < 1 || m.Number > maxDraws {
 		return fmt.Errorf("number of draws: %d is not between 1 and %d", m.Number, maxDraws)
+	}
+	if m.Parts < 0 || m.Parts > maxDraws {
+		return fmt.Errorf("parts: %d is not between 1 and %d", m.Parts, maxDraws)
 	}
 	if !(m.LambdaMax >= 0) || math.IsInf(m.LambdaMax, 0) {
 		return fmt.Errorf("lambda_max: %v is not a finite number", m.LambdaMax)

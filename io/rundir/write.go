@@ -40,6 +40,9 @@ func (d *Dir) Put(draws []int, paths []solver.Path) error {
 	if err := run.checkBlock(block); err != nil {
 		return fmt.Errorf("rundir: put: %w", err)
 	}
+	if last := block[len(block)-1].number; last >= run.Meta.Number {
+		return fmt.Errorf("rundir: put: draw %d: the run has draws 0 to %d", last, run.Meta.Number-1)
+	}
 	return troubled(d.putBlock(&run, block))
 }
 
