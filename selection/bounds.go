@@ -88,6 +88,8 @@ func unimodalFactor(need, pairs int) float64 {
 func unimodalExists(theta float64, need, pairs int) error {
 	b := float64(pairs)
 	switch tau := float64(need) / (2 * b); {
+	case pairs < 2:
+		return &noBound{"the unimodal bound needs at least 2 pairs of draws"}
 	case need-pairs < 2:
 		return &noBound{fmt.Sprintf("the unimodal bound needs a count of at least %d of %d draws, half of them and 2 more", pairs+2, 2*pairs)}
 	case theta > 1/math.Sqrt(3):

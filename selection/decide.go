@@ -210,12 +210,12 @@ func (d *Decision) deriveSelected(target float64, f frame) error {
 	if d.Selected = int(floorSnap(q)); d.Selected < 1 {
 		return d.selectedBelowOne(target, need, f)
 	}
-	if limited {
-		d.note("selected is %d: with more the %s bound does not exist at threshold %s", d.Selected, d.Bound, show(d.Threshold))
-	}
-	if most := f.mostSelected(); d.Selected > most {
+	switch most := f.mostSelected(); {
+	case d.Selected > most:
 		d.note("selected is lowered from %d to %d, where the paths end (stop_after)", d.Selected, most)
 		d.Selected = most
+	case limited:
+		d.note("selected is %d: with more the %s bound does not exist at threshold %s", d.Selected, d.Bound, show(d.Threshold))
 	}
 	return nil
 }

@@ -232,6 +232,9 @@ func (j *Judgement) listDraws(t *tally) {
 		}
 		if r.bound && r.entered == 0 {
 			j.EmptyRegion = append(j.EmptyRegion, d.Number)
+			if d.Twins > 0 {
+				j.emptyTwins++
+			}
 		}
 		if d.Uncertified {
 			j.Uncertified = append(j.Uncertified, d.Number)

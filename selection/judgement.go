@@ -32,6 +32,8 @@ type Judgement struct {
 	LowCeiling   []int    // positions in Rows of candidates with a ceiling under 95 %
 	Warnings     []string // footnotes, in order
 
+	emptyTwins int // of EmptyRegion: draws in which columns coincide
+
 	draws  []*Draw
 	names  []string
 	sd     []float64

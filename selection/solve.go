@@ -24,11 +24,13 @@ func solveNeed(b BoundName, q, p, target float64, pairs int) (int, error) {
 // needImpossible says that even all draws are not enough, and what would be.
 func needImpossible(b BoundName, q, p, target float64, pairs int) error {
 	e := &ImpossibleError{Change: "false_selections"}
+	join := ", or "
 	least, err := b.at(q, p, 2*pairs, pairs)
 	if err != nil {
 		e.Change = "selected"
 		e.What = fmt.Sprintf("selected = %s gives no %s bound at any threshold", show(q), b)
 		e.Advice = why(err)
+		join = "; "
 	} else {
 		e.Nearest = roundUp(least)
 		e.What = fmt.Sprintf("with selected = %s of %s candidates the %s bound is %s even at threshold 1, above false_selections = %s",
@@ -39,7 +41,7 @@ func needImpossible(b BoundName, q, p, target float64, pairs int) error {
 		if e.Change == "selected" {
 			e.Nearest = roundDown(most)
 		}
-		e.Advice += fmt.Sprintf(", or lower selected to %s", show(roundDown(most)))
+		e.Advice += join + "lower selected to " + show(roundDown(most))
 	}
 	return e
 }

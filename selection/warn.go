@@ -3,6 +3,7 @@ package selection
 import (
 	"fmt"
 	"strconv"
+	"strings"
 )
 
 // mostNamed is how many names or numbers a warning lists; the Judgement has all.
@@ -13,19 +14,46 @@ func (j *Judgement) warn() {
 	if n := len(j.Uncertified); n > 0 {
 		j.add("in %s a fit could not be certified and the path ends before it; they count with what they have: %s", drawsOf(n, j.Draws), listInts(j.Uncertified))
 	}
-	if n := len(j.EmptyRegion); n > 0 {
-		j.add("in %s more than %d predictors entered at the first step with any, so that none could be counted (columns that coincide within the draw): %s",
-			drawsOf(n, j.Draws), j.Decision.Selected, listInts(j.EmptyRegion))
-	}
+	j.warnEmpty()
 	j.warnCeilings()
+	j.warnNoBound()
+	if j.Decision.Region == Common {
+		j.warnCommon()
+	}
+}
+
+// warnEmpty lists the draws whose first step with any predictor had too many.
+// Columns that coincide within a draw enter together on every lattice; others
+// do so only where the lattice is too coarse to tell them apart.
+func (j *Judgement) warnEmpty() {
+	n := len(j.EmptyRegion)
+	if n == 0 {
+		return
+	}
+	why := "a penalty.ratio nearer to 1 separates them"
+	switch k := j.emptyTwins; {
+	case k == n:
+		why = "columns coincide within these draws"
+	case k > 0:
+		why = fmt.Sprintf("columns coincide within %d of them; in the others a penalty.ratio nearer to 1 separates them", k)
+	}
+	j.add("in %s more than %s entered at the first step with any, so that none could be counted (%s): %s",
+		drawsOf(n, j.Draws), predictors(j.Decision.Selected), why, listInts(j.EmptyRegion))
+}
+
+// warnNoBound says why there is no bound, unless the decision's notes do.
+func (j *Judgement) warnNoBound() {
+	reason := j.Bounds.Of(j.Decision.Bound).Why
+	for _, n := range j.Decision.Notes {
+		if strings.Contains(n, reason) {
+			return
+		}
+	}
 	switch {
 	case j.Bootstrap:
 		j.add("%s", noBootstrapBound)
 	case j.Decision.FalseSelections == nil:
-		j.add("this decision has no bound: %s", j.Bounds.Of(j.Decision.Bound).Why)
-	}
-	if j.Decision.Region == Common {
-		j.warnCommon()
+		j.add("this decision has no bound: %s", reason)
 	}
 }
 
@@ -59,11 +87,22 @@ func (j *Judgement) warnCommon() {
 		j.add("no step was reached by all draws with anything chosen, so the common region is empty")
 		return
 	}
-	j.add("selected is estimated (%.4g on average, at most %d), and the region's end was chosen from these draws; the bound is an estimate here", j.MeanSelected, j.Decision.Selected)
+	estimate := ""
+	if j.Decision.FalseSelections != nil {
+		estimate = "; the bound is an estimate here"
+	}
+	j.add("selected is estimated (%.4g on average, at most %d), and the region's end was chosen from these draws%s", j.MeanSelected, j.Decision.Selected, estimate)
 }
 
 func (j *Judgement) add(format string, args ...any) {
 	j.Warnings = append(j.Warnings, fmt.Sprintf(format, args...))
+}
+
+func predictors(n int) string {
+	if n == 1 {
+		return "1 predictor"
+	}
+	return strconv.Itoa(n) + " predictors"
 }
 
 func drawsOf(n, all int) string { return fmt.Sprintf("%d of %d draws", n, all) }

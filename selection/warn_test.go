@@ -34,7 +34,7 @@ func TestWarnings(t *testing.T) {
 			d.Entries = append(d.Entries, Entry{Predictor: 1, Step: 1})
 		}
 	})
-	for _, want := range []string{"14 of 40 draws a fit could not be certified", "0, 3, 6, 9, 12, 15, 18, 21, 24, 27 and 4 more", "2 of 40 draws more than 1 predictors", ": 0, 1"} {
+	for _, want := range []string{"14 of 40 draws a fit could not be certified", "0, 3, 6, 9, 12, 15, 18, 21, 24, 27 and 4 more", "2 of 40 draws more than 1 predictor entered", "(a penalty.ratio nearer to 1 separates them): 0, 1"} {
 		if !strings.Contains(w, want) {
 			t.Errorf("%q, want %q", w, want)
 		}
@@ -57,6 +57,80 @@ func TestWarnings(t *testing.T) {
 	decision.Threshold = 0.51
 	if _, w = warnings(t, decision, 10, func(int, *Draw) {}); !strings.Contains(w, "this decision has no bound: the unimodal bound needs") {
 		t.Errorf("%q does not say why there is no bound", w)
+	}
+}
+
+// Predictors that enter together coincide within the draw only where the fit
+// found them to.
+func TestEmptyRegionSaysWhy(t *testing.T) {
+	together := func(twins ...int) string {
+		_, w := warnings(t, Decision{Region: Cap, Bound: Unimodal, Threshold: 0.8, Selected: 1}, 10, func(i int, d *Draw) {
+			if i < len(twins) {
+				d.Entries = append(d.Entries, Entry{Predictor: 1, Step: 1})
+				d.Twins = twins[i]
+			}
+		})
+		return w
+	}
+	for want, twins := range map[string][]int{
+		"(a penalty.ratio nearer to 1 separates them): 0, 1":                                               {0, 0},
+		"(columns coincide within these draws): 0, 1":                                                      {2, 2},
+		"(columns coincide within 1 of them; in the others a penalty.ratio nearer to 1 separates them): 0": {2, 0},
+	} {
+		if w := together(twins...); !strings.Contains(w, want) {
+			t.Errorf("twins %v: %q, want %q", twins, w, want)
+		}
+	}
+}
+
+// The reason why there is no bound is given once, and nothing speaks of a
+// bound that is not there.
+func TestNoBoundIsSaidOnce(t *testing.T) {
+	for _, region := range []Region{Cap, Common} {
+		threshold, selected := 0.51, 1.0
+		ask := Ask{Region: region, Threshold: &threshold, Selected: &selected}
+		d, err := Decide(ask, 10, 40, false, 0)
+		if err != nil {
+			t.Fatal(err)
+		}
+		j, w := warnings(t, d, 10, func(int, *Draw) {})
+		all := w + "\n" + strings.Join(j.Decision.Notes, "\n")
+		if strings.Count(all, j.Bounds.Of(Unimodal).Why) != 1 || strings.Contains(all, "bound is an estimate") {
+			t.Errorf("%s region: %q", region, all)
+		}
+		ask.Threshold = nil
+		if d, err = Decide(ask, 10, 40, true, 0); err != nil {
+			t.Fatal(err)
+		}
+		draws := make([]Draw, 40)
+		for i := range draws {
+			draws[i] = Draw{Number: i, Last: 1, Complete: true, Entries: []Entry{{Predictor: 0, Step: 1}}}
+		}
+		if j, err = Judge(draws, true, plain(10), d); err != nil {
+			t.Fatal(err)
+		}
+		all = strings.Join(append(j.Warnings, j.Decision.Notes...), "\n")
+		if strings.Count(all, noBootstrapBound) != 1 || strings.Contains(all, "bound is an estimate") {
+			t.Errorf("bootstrap, %s region: %q", region, all)
+		}
+	}
+}
+
+// Where the paths limit selected, what the bound would allow is of no use; and
+// what an error asks for can be had.
+func TestMessagesThatCanBeMet(t *testing.T) {
+	threshold, luck := 0.8, 5.0
+	d, err := Decide(Ask{Threshold: &threshold, FalseSelections: &luck}, 7, 10, false, 2)
+	if err != nil || len(d.Notes) != 1 || !strings.Contains(d.Notes[0], "lowered from 3 to 2") {
+		t.Errorf("%v, %q", err, d.Notes)
+	}
+	if _, err := UnimodalBound(1, 10, 2, 1); err == nil || strings.Contains(err.Error(), "3 of 2") {
+		t.Errorf("one pair: %v", err)
+	}
+	luck, selected := 0.1, 900.0
+	_, err = Decide(Ask{Selected: &selected, FalseSelections: &luck}, 1000, 200, false, 0)
+	if err == nil || !strings.Contains(err.Error(), "it is 0.9; lower selected to ") {
+		t.Errorf("%v", err)
 	}
 }
 
