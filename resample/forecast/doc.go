@@ -13,11 +13,9 @@
 // # Steps
 //
 // Time fits the first pair alone, which tells whether more can be afforded, then
-// rounds with one worker and with all of them. Workers share the path to memory,
-// so a draw takes longer the more of them there are: the time per draw is taken as
-// slope and offset through the two measured points (a part that does not gain from
-// workers, and a part that does), and what lies beyond the measured workers is
-// marked as extrapolated.
+// rounds with one worker and with all of them. For other numbers of workers the
+// processor time of a draw is taken as a line through the two that were timed:
+// workers share the path to memory, so a draw costs more the more of them there are.
 //
 // Parts recommends few fat parts: each reads the table, which pays only where the
 // draws of a part take much longer.

@@ -37,6 +37,11 @@ func (r Round) Share() float64 {
 	return min(1, float64(r.Processor)/float64(r.Busy))
 }
 
+// free is the time for one draw on processors that do nothing else.
+func (r Round) free() time.Duration {
+	return time.Duration(float64(r.PerDraw()) * r.Share())
+}
+
 // plus adds another round of the same workers.
 func (r Round) plus(o Round) Round {
 	r.Workers = o.Workers

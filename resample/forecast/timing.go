@@ -86,11 +86,11 @@ func blockWithin(most int, perDraw, left time.Duration) int {
 	return block
 }
 
-// rounds repeats a round until it is steady or the time is up. Not even one is
-// begun where it would take longer than left.
+// rounds repeats a round until it is steady, has as many draws as the plan, or
+// the time is up. Not even one is begun where it would take longer than left.
 func (t *timer) rounds(ctx context.Context, workers, block int, left time.Duration) (sum Round, err error) {
 	last := time.Duration(0)
-	for sum.Wall+last <= left && sum.Wall < steady {
+	for sum.Wall+last <= left && sum.Wall < steady && sum.Draws < t.plan.Number {
 		r, err := t.round(ctx, workers, block)
 		if err != nil {
 			return sum, err
@@ -120,22 +120,26 @@ func (t *Timing) Busiest() Round {
 	return t.First
 }
 
-// PerDraw is the time that one of so many workers needs for a draw.
+// PerDraw is the time that one of so many workers needs for a draw: as timed,
+// or where so many were not timed as on a machine with so many free processors.
+// Workers that share the path to memory slow each other down, which shows in
+// their processor time: it is taken as a line through the two numbers of workers
+// that were timed.
 func (t *Timing) PerDraw(workers int) time.Duration {
+	for _, r := range []Round{t.Together, t.Alone} {
+		if r.Draws > 0 && r.Workers == workers {
+			return r.PerDraw()
+		}
+	}
 	few, many := t.Alone, t.Together
 	if few.Draws == 0 {
 		few = t.First
 	}
-	if many.Draws == 0 || many.Workers <= few.Workers || workers <= few.Workers {
-		if workers <= few.Workers || many.Draws == 0 {
-			return few.PerDraw()
-		}
-		return many.PerDraw()
+	slope := time.Duration(0)
+	if many.Draws > 0 && many.Workers > few.Workers {
+		slope = (many.free() - few.free()) / time.Duration(many.Workers-few.Workers)
 	}
-	// Per draw, workers w finish in offset + gain/w, so one of them takes
-	// w*offset + gain.
-	offset := (many.PerDraw() - few.PerDraw()) / time.Duration(many.Workers-few.Workers)
-	return few.PerDraw() + max(0, offset)*time.Duration(workers-few.Workers)
+	return few.free() + max(0, slope)*time.Duration(workers-few.Workers)
 }
 
 // Measured reports whether that many workers were timed.

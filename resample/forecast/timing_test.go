@@ -144,6 +144,20 @@ func TestFailureWhileTiming(t *testing.T) {
 	}
 }
 
+// What was not timed is foretold for free processors: a machine whose other work
+// took half of the time of five workers tells the truth for five, and for nine
+// goes by the processor time.
+func TestPerDrawOfABusyMachine(t *testing.T) {
+	alone := forecast.Round{Workers: 1, Draws: 10, Busy: time.Second, Processor: time.Second}
+	together := forecast.Round{Workers: 5, Draws: 10, Busy: 2800 * time.Millisecond, Processor: 1400 * time.Millisecond}
+	timing := forecast.Timing{First: alone, Alone: alone, Together: together}
+	for workers, want := range map[int]time.Duration{1: 100, 5: 280, 9: 180} {
+		if got := timing.PerDraw(workers); got != want*time.Millisecond {
+			t.Errorf("%d workers: %v, want %d ms", workers, got, int(want))
+		}
+	}
+}
+
 // Workers that share what is slow gain less than their number: two points of
 // a machine where w workers take alone + (w-1)*crowd per draw give it at any
 // other w. One where the measured pair is faster together is not promised to
