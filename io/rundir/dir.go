@@ -195,6 +195,12 @@ func (d *Dir) Study() ([]byte, error) {
 	return text, nil
 }
 
+// SetStudy replaces study.toml: after an extension it says the new number of
+// draws, so that it makes the run as it is.
+func (d *Dir) SetStudy(text []byte) error {
+	return troubled(writeFile(d.fs, d.join(studyFile), writes(text)))
+}
+
 // Write writes a result file of that name into the directory, whole or not at
 // all, replacing an older one. The name has no folder in it.
 func (d *Dir) Write(name string, write func(io.Writer) error) error {

@@ -40,6 +40,8 @@ type Finished struct {
 	Borderline  int // steps redone at the border
 	Twins       int // entries that coincided within a draw
 	Uncertified []Uncertified
+
+	Certificates []Certificate // of the draws that are there, ordered by number
 }
 
 // ErrIncomplete is what errors.Is finds where draws are missing or damaged.
@@ -205,6 +207,7 @@ func noAnswer(err error) bool {
 // judgement needs, if that is to be kept.
 func (f *Finished) add(n *numbered, lastStep int, keep bool) *selection.Draw {
 	p := &n.path
+	f.Certificates = append(f.Certificates, CertificateOf(n.number, p))
 	f.Violation = max(f.Violation, p.Violation)
 	f.Gap = max(f.Gap, p.Gap)
 	f.Borderline += p.Borderline
@@ -257,7 +260,8 @@ func ranges(list []int) string {
 	return fmt.Sprintf("%d (numbers %s)", len(list), strings.Join(words, ", "))
 }
 
-// sortUncertified puts the list in draw order, whatever the order of blocks.
+// sortUncertified puts the lists in draw order, whatever the order of blocks.
 func (f *Finished) sortUncertified() {
 	slices.SortFunc(f.Uncertified, func(a, b Uncertified) int { return a.Draw - b.Draw })
+	slices.SortFunc(f.Certificates, func(a, b Certificate) int { return a.Draw - b.Draw })
 }

@@ -65,13 +65,15 @@ func (d *Dir) Lock(part int, o LockOptions) (*Lock, error) {
 	if err := d.checkPart(part); err != nil {
 		return nil, err
 	}
-	l, err := acquire(d.fs, d.env, d.join(partsFolder, fmt.Sprintf("%d.lock", part)), part, o)
+	l, err := acquire(d.fs, d.env, d.lockPath(part), part, o)
 	if err != nil {
 		return nil, err
 	}
 	l.keep(d.env.beat)
 	return l, nil
 }
+
+func (d *Dir) lockPath(part int) string { return d.join(partsFolder, fmt.Sprintf("%d.lock", part)) }
 
 // Lost is closed when another process has taken the lock over. Both may go
 // on; the draws that both make are equal.

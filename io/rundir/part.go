@@ -21,7 +21,8 @@ type Part struct {
 	Started    string  `json:"started"` // RFC 3339
 	Ended      string  `json:"ended"`
 	Seconds    float64 `json:"seconds"` // spent on draws
-	Draws      int     `json:"draws"`   // finished by this part
+	Draws      int     `json:"draws"`   // of the part on disk
+	Before     int     `json:"before"`  // of them, those that were there when the process started
 	Violation  float64 `json:"violation"`
 	Gap        float64 `json:"gap"`
 	Borderline int     `json:"borderline"`

@@ -1,0 +1,20 @@
+package rundir
+
+import "holdfast/solver"
+
+// Certificate is how well one draw was fitted.
+type Certificate struct {
+	Draw           int
+	Violation, Gap float64 // worst over its steps
+	Borderline     int     // steps redone at the border
+	Twins          int     // entries that coincided
+	Uncertified    bool    // its path ended before a step that could not be certified
+}
+
+// CertificateOf returns the certificate of a draw's path.
+func CertificateOf(draw int, p *solver.Path) Certificate {
+	return Certificate{
+		Draw: draw, Violation: p.Violation, Gap: p.Gap, Borderline: p.Borderline, Twins: p.Twins,
+		Uncertified: p.Stop == solver.StopUncertified,
+	}
+}
