@@ -3,6 +3,7 @@ package report
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"holdfast/selection"
@@ -60,6 +61,13 @@ func (p *page) table() {
 	p.below(end)
 }
 
+// sharesASign reports whether a sign among the first rows has a share beside it.
+func sharesASign(rows []selection.Row) bool {
+	return slices.ContainsFunc(rows, func(r selection.Row) bool {
+		return r.PositiveShare != nil && *r.PositiveShare > 0 && *r.PositiveShare < 1
+	})
+}
+
 // below says what the table leaves out and what its marks mean.
 func (p *page) below(end int) {
 	full := p.info.Full
@@ -70,6 +78,9 @@ func (p *page) below(end int) {
 		p.line("No candidate was chosen in any draw; all stand in " + clean(full))
 	} else if more > 0 {
 		p.line(fmt.Sprintf("%s and %d more, see %s", p.dots(), more, clean(full)))
+	}
+	if sharesASign(p.j.Rows[:end]) {
+		p.item("", "% ", "share of the draws that chose it in which it entered with this sign")
 	}
 	if p.j.CouldChange > 0 {
 		p.item("", "~ ", fmt.Sprintf("could change sides with other draws (%d in all): the interval covers the threshold, %d of %d.",
@@ -85,6 +96,7 @@ type grid struct {
 	wMedian, wSpread                             int
 	chosenHead, intervalHead, spreadHead         string
 	coefMark                                     string
+	narrow                                       bool // there is no room for the spread
 }
 
 const (
@@ -125,6 +137,10 @@ func (p *page) newGrid(rows []selection.Row) *grid {
 func (g *grid) share(cells int) {
 	rest := cells - gap - (g.wChosen + g.wInterval + g.wSign + g.wMedian + g.wSpread) - 5*gap
 	need := min(g.widestName(), mostName)
+	if rest < min(need, leastName) {
+		g.narrow = true
+		rest += gap + g.wSpread
+	}
 	g.wName = min(need, max(leastName, (rest-gap)*2/3))
 	g.wBar = min(mostBar, rest-gap-g.wName)
 	if g.wBar < leastBar {
@@ -205,15 +221,31 @@ func (p *page) heading(g *grid) {
 		unit = " per standard deviation"
 	}
 	over := g.join("", "", chosenOver, intervalOver)
-	title := "description, not a confidence interval " + g.coefMark
-	p.line(p.paint(dim, spaces(g.total()-width(title))+"coefficient"+unit+" where chosen:"))
-	p.line(p.paint(dim, over+spaces(gap)+padLeft(title, g.total()-width(over)-gap)))
+	title := g.title(p.cells - width(over) - gap)
+	room := max(g.total()-width(over)-gap, width(title))
+	what := "coefficient" + unit + " where chosen:"
+	p.line(p.paint(dim, spaces(width(over)+gap+room-max(width(title), width(what)))+what))
+	p.line(p.paint(dim, over+spaces(gap)+padLeft(title, room)))
 	heads := []string{g.join("", nameHead, g.chosenHead, g.intervalHead)}
 	if g.wBar > 0 {
 		heads = append(heads, spaces(g.wBar))
 	}
-	heads = append(heads, padRight(signHead, g.wSign), padLeft(medianHead, g.wMedian), g.spreadHead)
+	heads = append(heads, padRight(signHead, g.wSign), padLeft(medianHead, g.wMedian))
+	if !g.narrow {
+		heads = append(heads, g.spreadHead)
+	}
 	p.line(p.paint(dim, strings.Join(heads, spaces(gap))))
+}
+
+// title is what stands over the coefficients, as far as there is room; the note
+// says it in full.
+func (g *grid) title(room int) string {
+	for _, text := range []string{"description, not a confidence interval " + g.coefMark, "no confidence interval " + g.coefMark, "a description " + g.coefMark} {
+		if width(text) <= room {
+			return text
+		}
+	}
+	return g.coefMark
 }
 
 // join lays out the left part of a line.
@@ -236,7 +268,10 @@ func (p *page) row(g *grid, i int) {
 	if g.wBar > 0 {
 		parts = append(parts, p.paint(cyan, padRight(p.bar(r, g.wBar), g.wBar)))
 	}
-	parts = append(parts, padRight(g.sign[i], g.wSign), padLeft(g.median[i], g.wMedian), g.spread[i])
+	parts = append(parts, padRight(g.sign[i], g.wSign), padLeft(g.median[i], g.wMedian))
+	if !g.narrow {
+		parts = append(parts, g.spread[i])
+	}
 	p.line(strings.Join(parts, spaces(gap)))
 }
 
@@ -257,7 +292,10 @@ func (p *page) border(g *grid) {
 
 // total is the width of a full line.
 func (g *grid) total() int {
-	w := gap + g.wName + g.wChosen + g.wInterval + g.wSign + g.wMedian + g.wSpread + 5*gap
+	w := gap + g.wName + g.wChosen + g.wInterval + g.wSign + g.wMedian + 4*gap
+	if !g.narrow {
+		w += gap + g.wSpread
+	}
 	if g.wBar > 0 {
 		w += gap + g.wBar
 	}

@@ -3,7 +3,6 @@ package report
 import (
 	"fmt"
 	"io"
-	"math"
 	"strconv"
 	"strings"
 
@@ -121,9 +120,9 @@ func (p *page) luck() {
 		}
 	} else {
 		mark := p.note(bound.Assumes() + " " + bound.Without())
-		p.prose(bold, fmt.Sprintf("Expected by luck: at most %s (%s) %s", roundUp(*v.FalseSelections), bound.Label(), mark))
+		p.prose(bold, fmt.Sprintf("Expected by luck: at most %s (%s) %s", selection.AtMost(*v.FalseSelections), bound.Label(), mark))
 		if worst := j.Bounds.Of(selection.WorstCase); bound != selection.WorstCase && worst.FalseSelections != nil {
-			p.prose("", fmt.Sprintf("Without that assumption: at most %s", roundUp(*worst.FalseSelections)))
+			p.prose("", fmt.Sprintf("Without that assumption: at most %s", selection.AtMost(*worst.FalseSelections)))
 		}
 	}
 	p.line("")
@@ -139,7 +138,7 @@ func (p *page) boundLine(b selection.BoundValue, decided bool) {
 		text += " (the decision's)"
 	}
 	if b.FalseSelections != nil {
-		value = roundUp(*b.FalseSelections)
+		value = selection.AtMost(*b.FalseSelections)
 	} else {
 		text += ": " + clean(b.Why)
 	}
@@ -179,7 +178,7 @@ func (p *page) alwaysIn() {
 		return
 	}
 	p.line("")
-	p.line("In every model, not judged (coefficient: median, 2.5 to 97.5 % of the draws):")
+	p.prose("", "In every model, not judged (coefficient: median, 2.5 to 97.5 % of the draws):")
 	for i, a := range p.j.Always {
 		if i == mostAlways {
 			p.line(fmt.Sprintf("  %s and %d more", p.dots(), len(p.j.Always)-i))
@@ -189,7 +188,8 @@ func (p *page) alwaysIn() {
 		if a.Draws > 0 {
 			value = fmt.Sprintf("%s, %s to %s", number3(a.CoefMedian), number3(a.CoefLow), number3(a.CoefHigh))
 		}
-		p.line("  " + shorten(clean(a.Predictor), p.cells/2, p.dots()) + "  " + value)
+		room := min(p.cells/2, p.cells-2*gap-width(value))
+		p.line(spaces(gap) + shorten(clean(a.Predictor), room, p.dots()) + spaces(gap) + value)
 	}
 }
 
@@ -232,25 +232,5 @@ func plural(n int, word string) string {
 // number3 writes a number with three significant digits.
 func number3(v float64) string { return short(v, 3) }
 
-// short writes a number with so many significant digits, without an exponent
-// where it can be read at a glance.
-func short(v float64, digits int) string {
-	rounded, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', digits-1, 64), 64) // reads back what it wrote
-	if a := math.Abs(rounded); a >= 10 && a < 1e7 && math.Log10(a) >= float64(digits) {
-		return strconv.FormatFloat(rounded, 'f', 0, 64)
-	}
-	return strconv.FormatFloat(rounded, 'g', digits, 64)
-}
-
-// roundUp writes a bound with three significant digits, never below the bound
-// itself; what is within 1e-9 of a shorter number is that number.
-func roundUp(v float64) string {
-	if v <= 0 || math.IsInf(v, 0) || math.IsNaN(v) {
-		return number3(v)
-	}
-	rounded, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 2, 64), 64) // reads back what it wrote
-	if rounded < v*(1-1e-9) {
-		rounded += math.Pow(10, math.Floor(math.Log10(v))-2)
-	}
-	return number3(rounded)
-}
+// short writes a number with so many significant digits.
+func short(v float64, digits int) string { return selection.Figure(v, digits) }
