@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"unicode/utf8"
 
 	"github.com/klauspost/compress/gzip"
 )
@@ -85,6 +86,9 @@ func (c *csvFile) header() ([]string, error) {
 		}
 		if !ok {
 			return names, nil
+		}
+		if !utf8.Valid(field) {
+			return nil, damagedf("header line, column %d: %s is not UTF-8: save the file as UTF-8", len(names)+1, quote(string(field)))
 		}
 		names = append(names, string(bytes.TrimSpace(field)))
 	}

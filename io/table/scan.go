@@ -10,7 +10,14 @@ type Summary struct {
 	Rows    int64
 	Outcome string // column that correlations and AUCs refer to; empty: none
 	Columns []ColumnSummary
+
+	Incomplete  int64 // rows with a gap in a column that is neither the outcome, nor empty, nor a suspected leak
+	Repeats     int64 // rows equal to an earlier one in every column but labels and dates, where chance makes none
+	OutcomeGaps []int // first rows without a finite value of the outcome, from 0
 }
+
+// mostGapRows is how many rows OutcomeGaps names.
+const mostGapRows = 10
 
 // ColumnSummary describes one column. Figures other than counts are NaN where
 // they do not exist; they are taken over the finite values. For columns that
@@ -70,14 +77,14 @@ func (s *Source) scan(ctx context.Context, outcome string, limit int64) (*Summar
 	if err := s.unchanged(); err != nil {
 		return nil, err
 	}
-	sc := &scan{src: s, n: s.format.rows(), workers: workersOr(0)}
+	sc := newScan(s, workersOr(0))
 	if sc.n == 0 {
 		return nil, faultf(s.path, "the table has no rows")
 	}
 	if sc.n > 1<<31-1 {
 		return nil, faultf(s.path, "the table has %s rows: at most %s can be used", grouped(sc.n), grouped(1<<31-1))
 	}
-	if err := checkMemory(s.path, int(sc.n), 3*sc.workers+2, limit); err != nil {
+	if err := checkMemory(s.path, int(sc.n), 4*sc.workers+3, limit); err != nil {
 		return nil, err
 	}
 	out := &Summary{Rows: sc.n, Outcome: outcome, Columns: make([]ColumnSummary, len(s.format.columns()))}
@@ -94,7 +101,12 @@ func (s *Source) scan(ctx context.Context, outcome string, limit int64) (*Summar
 			numeric = append(numeric, k)
 		}
 	}
-	return out, sc.columns(ctx, numeric, out)
+	if err := sc.columns(ctx, numeric, out); err != nil {
+		return nil, err
+	}
+	summarise(out, sc.marks)
+	out.OutcomeGaps = sc.target.gaps(mostGapRows)
+	return out, nil
 }
 
 // scan is a Scan under way.
@@ -102,7 +114,12 @@ type scan struct {
 	src     *Source
 	n       int64
 	workers int
-	target  *target // nil without an outcome
+	target  *target     // nil without an outcome
+	marks   []*rowMarks // per worker; nil: it had no column
+}
+
+func newScan(s *Source, workers int) *scan {
+	return &scan{src: s, n: s.format.rows(), workers: workers, marks: make([]*rowMarks, workers)}
 }
 
 // columns reads the columns in batches.
@@ -128,10 +145,14 @@ func (sc *scan) columns(ctx context.Context, numeric []int, out *Summary) error 
 			if scratch[w] == nil {
 				scratch[w] = make([]float64, sc.n)
 			}
+			if sc.marks[w] == nil {
+				sc.marks[w] = newRowMarks(sc.n)
+			}
 			c := &out.Columns[cols[i]]
 			c.Rounded = rd[i].count
 			describe(c, values[i], scratch[w])
 			sc.compare(c, values[i], scratch[w])
+			sc.marks[w].add(cols[i], c, values[i], c.Name == out.Outcome)
 			return nil
 		})
 		if err != nil {

@@ -177,6 +177,22 @@ func newTarget(name string, v []float64) *target {
 	return t
 }
 
+// gaps lists the first rows in which the outcome has no finite value.
+func (t *target) gaps(most int) []int {
+	if t == nil {
+		return nil
+	}
+	var rows []int
+	for i, x := range t.values {
+		if notFinite(x) {
+			if rows = append(rows, i); len(rows) == most {
+				break
+			}
+		}
+	}
+	return rows
+}
+
 // compare sets a column's correlation with the outcome and its AUC.
 func (sc *scan) compare(c *ColumnSummary, v, scratch []float64) {
 	if sc.target == nil || c.Name == sc.target.name || c.Constant {

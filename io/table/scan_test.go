@@ -154,7 +154,7 @@ func TestScanInManyBatches(t *testing.T) {
 	must(t, err)
 	whole, err := s.Scan(t.Context(), "alive")
 	must(t, err)
-	sc := &scan{src: s, n: 400, workers: 1}
+	sc := newScan(s, 1)
 	must(t, sc.readOutcome(t.Context(), "alive"))
 	parts := &Summary{Rows: 400, Outcome: "alive", Columns: make([]ColumnSummary, len(cols))}
 	for k := range parts.Columns {
@@ -164,6 +164,7 @@ func TestScanInManyBatches(t *testing.T) {
 			must(t, sc.columns(t.Context(), []int{k}, parts))
 		}
 	}
+	summarise(parts, sc.marks)
 	if a, b := fmt.Sprintf("%v", whole), fmt.Sprintf("%v", parts); a != b {
 		t.Errorf("two ways of scanning differ:\n%s\n%s", a, b)
 	}

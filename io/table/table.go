@@ -10,6 +10,7 @@ import (
 	"sort"
 	"strconv"
 	"strings"
+	"unicode/utf8"
 )
 
 // Kind is what a column holds, as far as a fit needs to know.
@@ -231,13 +232,17 @@ func fileHead(path string) ([]byte, error) {
 	return head[:n], nil
 }
 
-// checkColumns refuses tables without columns and names that occur twice.
+// checkColumns refuses tables without columns, names that occur twice and
+// names that no study and no result can hold.
 func checkColumns(path string, cols []Column) error {
 	if len(cols) == 0 {
 		return faultf(path, "the table has no columns")
 	}
 	at := make(map[string]int, len(cols))
 	for i, c := range cols {
+		if !utf8.ValidString(c.Name) {
+			return faultf(path, "the name of column %d, %s, is not UTF-8: write the table again with another name", i+1, quote(c.Name))
+		}
 		if j, twice := at[c.Name]; twice {
 			return faultf(path, "two columns are called %s (columns %d and %d): rename one", quote(c.Name), j+1, i+1)
 		}
