@@ -4,6 +4,8 @@ import (
 	"bytes"
 	"fmt"
 	"strings"
+
+	"holdfast/selection"
 )
 
 // Draft proposes a study for a table and an outcome: a commented text that
@@ -60,6 +62,7 @@ func (d *drafter) writeHead(t *draftText) {
 	t.comment("Which columns of %s matter for %s? Drafted from the table's shape; every line may be changed.", quoted(d.facts.Path), quoted(d.facts.Outcome))
 	t.comment("%d rows, %d columns: %s, %d left out, %d not usable.", d.facts.Rows, len(d.facts.Columns),
 		numberOf(len(d.candidates), "candidate"), len(d.left), len(d.unusable))
+	t.comment("A run also leaves out candidates that are copies of others, so that it may count fewer and state a larger bound.")
 	first := true
 	for _, f := range d.flags {
 		if f.Left || f.Kind == FlagUnusable || f.Kind == FlagUnique || f.Kind == FlagConstant {
@@ -171,7 +174,7 @@ func (d *drafter) writeDecision(t *draftText) {
 // promise is the comment on what threshold and selected come to.
 func (d *drafter) promise() string {
 	s := d.shape
-	text := fmt.Sprintf("false_selections = %.3g: so many are expected by luck at most, among %s (%s bound)", s.luck, numberOf(s.candidates, "candidate"), s.bound)
+	text := fmt.Sprintf("false_selections = %s: so many are expected by luck at most, among %s (%s bound)", selection.AtMost(s.luck), numberOf(s.candidates, "candidate"), s.bound)
 	if s.luck > s.asked*(1+1e-9) {
 		text += fmt.Sprintf("; %.3g was aimed at, but cannot be had with one predictor in a draw", s.asked)
 	}

@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"math"
 	"regexp"
+	"strconv"
+	"strings"
 	"unicode/utf8"
 
 	"holdfast/selection"
@@ -16,8 +18,11 @@ type Facts struct {
 	Source     string // name of the study, for its messages and Dir; may be empty
 	Outcome    string // column to be explained
 	Rows       int64  // rows of the table
-	Incomplete int64  // rows with a gap in a usable column; negative: not counted
+	Incomplete int64  // rows with a gap in a column that can be a candidate; negative: not counted
+	Repeats    int64  // rows equal to an earlier one, labels aside, where chance makes none
 	Columns    []Fact // in table order
+
+	OutcomeGaps []int // first rows without a finite value of the outcome, from 0
 }
 
 // Fact is what a scan found in one column. What it could not find is zero.
@@ -35,6 +40,7 @@ type Fact struct {
 	Min, Max  float64  // over the values there are
 	R         *float64 // correlation with the outcome; nil: not defined
 	AUC       *float64 // of this column alone for a two-valued outcome; nil: not defined
+	Serial    *float64 // correlation of each value with that of the row before; nil: not defined
 }
 
 // gaps is the number of cells without a finite value.
@@ -60,11 +66,13 @@ const (
 	FlagEmpty                      // no value at all
 	FlagGaps                       // gaps that decide how missing values are treated
 	FlagShape                      // the size of the table limits the answer
+	FlagSeries                     // neighbouring rows are alike
+	FlagRepeats                    // rows stand there several times
 )
 
 // String names the kind in one or two words.
 func (k FlagKind) String() string {
-	return word([]string{"outcome", "leak", "identifier", "unique numbers", "date", "not usable", "constant", "empty", "gaps", "shape"}, k)
+	return word([]string{"outcome", "leak", "identifier", "unique numbers", "date", "not usable", "constant", "empty", "gaps", "shape", "series", "repeats"}, k)
 }
 
 // Flag is something that would mislead, or that was decided for the user.
@@ -166,7 +174,7 @@ type drafter struct {
 
 func newDrafter(f Facts) (*drafter, error) {
 	d := &drafter{facts: f}
-	for _, step := range []func() error{d.checkOutcome, d.sortColumns, d.chooseMissing, d.chooseShape, d.checkNames} {
+	for _, step := range []func() error{d.checkOutcome, d.sortColumns, d.chooseMissing, d.chooseShape, d.checkRows, d.checkNames} {
 		if err := step(); err != nil {
 			return nil, err
 		}
@@ -197,16 +205,16 @@ func (d *drafter) checkOutcome() error {
 	case f.Outcome == "":
 		return d.refuse("name the column to be explained: --outcome COLUMN")
 	case found < 0:
-		return d.refuse("the table has no column %s to be explained; the nearest is %s", shown, quoted(nearest(f.Outcome, names)))
+		return d.refuse("the table has no column %s to be explained%s", shown, NearHint(f.Outcome, names))
 	}
 	d.outcome = f.Columns[found]
 	switch o := d.outcome; {
 	case !o.Usable:
 		return d.refuse("column %s cannot be the outcome: %s", shown, o.Reason)
 	case o.gaps() > 0:
-		return d.refuse("the outcome %s has no value in %d of %d rows, and an outcome is never filled: take these rows out of the table", shown, o.gaps(), f.Rows)
+		return d.refuse("the outcome %s has no value in %d of %d rows%s, and an outcome is never filled: take these rows out of the table", shown, o.gaps(), f.Rows, f.gapRows(o.gaps()))
 	case f.Rows < 4:
-		return d.refuse("the table has %d rows, and two halves take at least 4", f.Rows)
+		return d.refuse("the table has %s, and two halves take at least 4", numberOf(int(f.Rows), "row"))
 	case o.Constant:
 		return d.refuse("the outcome %s has one value in all rows: there is nothing to explain", shown)
 	case o.TwoValued:
@@ -247,7 +255,7 @@ func (d *drafter) chooseMissing() error {
 		return nil
 	case lost*20 <= d.facts.Rows && d.facts.Rows-lost >= 4:
 		d.missing, d.rows = DropRows, d.facts.Rows-lost
-		d.missingWhy = fmt.Sprintf("gaps in %s take out at most %d of %d rows", numberOf(gappy, "candidate"), lost, d.facts.Rows)
+		d.missingWhy = fmt.Sprintf("gaps in %s take out %s%d of %d rows", numberOf(gappy, "candidate"), d.unlessCounted("at most "), lost, d.facts.Rows)
 		d.flags = append(d.flags, Flag{Kind: FlagGaps, Text: d.missingWhy + `: missing = "drop-rows"`})
 		return nil
 	}
@@ -258,7 +266,7 @@ func (d *drafter) chooseMissing() error {
 		return nil
 	}
 	d.missing = FillMean
-	d.missingWhy = fmt.Sprintf("gaps in %s; without the rows that have one, up to %d of %d rows would be lost", numberOf(gappy, "candidate"), lost, d.facts.Rows)
+	d.missingWhy = fmt.Sprintf("gaps in %s; without the rows that have one, %s%d of %d rows would be lost", numberOf(gappy, "candidate"), d.unlessCounted("up to "), lost, d.facts.Rows)
 	d.flags = append(d.flags, Flag{Kind: FlagGaps, Text: d.missingWhy + `: missing = "fill-mean", which weakens candidates with many gaps`})
 	return nil
 }
@@ -276,6 +284,20 @@ func (d *drafter) lost() (rows int64, gappy int) {
 		rows = min(rows, d.facts.Incomplete)
 	}
 	return rows, gappy
+}
+
+// unlessCounted is words, or nothing where the rows with gaps were counted over
+// the very candidates that are left.
+func (d *drafter) unlessCounted(words string) string {
+	for _, l := range d.left {
+		if l.Kind == FlagGaps {
+			return words
+		}
+	}
+	if d.facts.Incomplete < 0 {
+		return words
+	}
+	return ""
 }
 
 // leaveInfinite leaves out candidates with infinite values, which are never
@@ -313,6 +335,67 @@ func (d *drafter) chooseShape() error {
 	}
 	d.flags = append(d.flags, d.shape.flags()...)
 	return nil
+}
+
+// From where on neighbouring rows are called alike: a correlation that
+// matters, and one that chance does not make (for independent rows it is about
+// normal with deviation 1/sqrt(rows)).
+const (
+	alikeR      = 0.5
+	alikeSigmas = 4
+)
+
+// series reports whether a column's values resemble those of the row before.
+func (f Fact) series(rows int64) bool {
+	return f.Serial != nil && *f.Serial >= alikeR && *f.Serial*math.Sqrt(float64(rows)) >= alikeSigmas
+}
+
+// checkRows says where rows seem to depend on each other.
+func (d *drafter) checkRows() error {
+	alike := 0
+	for _, c := range d.candidates {
+		if c.series(d.facts.Rows) {
+			alike++
+		}
+	}
+	if outcome := d.outcome.series(d.facts.Rows); outcome || alike > 0 && 2*alike >= len(d.candidates) {
+		what := fmt.Sprintf("%d of %s", alike, numberOf(len(d.candidates), "candidate"))
+		if outcome {
+			what = "the outcome and " + what
+		}
+		d.flags = append(d.flags, Flag{Kind: FlagSeries, Text: "neighbouring rows are alike in " + what +
+			": where rows follow each other in time, or share a tank, they are not independent, and the bounds do not hold" +
+			" (a table that was only sorted is fine)"})
+	}
+	if n := d.facts.Repeats; n > 0 {
+		are := "are"
+		if n == 1 {
+			are = "is"
+		}
+		d.flags = append(d.flags, Flag{Kind: FlagRepeats, Text: fmt.Sprintf("%s %s equal to an earlier one, labels aside: "+
+			"the two halves of a pair then share what they should not; take repeats out", numberOf(int(n), "row"), are)})
+	}
+	return nil
+}
+
+// gapRows names the first of n rows without an outcome, where they are known.
+func (f Facts) gapRows(n int64) string {
+	if len(f.OutcomeGaps) == 0 {
+		return ""
+	}
+	word := "rows"
+	if n == 1 {
+		word = "row"
+	}
+	list := make([]string, len(f.OutcomeGaps))
+	for i, row := range f.OutcomeGaps {
+		list[i] = strconv.Itoa(row)
+	}
+	more := ""
+	if rest := n - int64(len(list)); rest > 0 {
+		more = fmt.Sprintf(" and %d more", rest)
+	}
+	return fmt.Sprintf(" (%s %s%s, counted from 0)", word, strings.Join(list, ", "), more)
 }
 
 // checkNames refuses names that a study cannot write.

@@ -1,6 +1,7 @@
 package study
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"sort"
@@ -314,12 +315,12 @@ func (f numberField) toml(s *Study) (string, bool) {
 type wholeField[T int | uint64] struct{ at func(*Study) *T }
 
 func (f wholeField[T]) set(s *Study, v value) error {
-	if v.shape != wholeShape {
-		return fmt.Errorf("must be a whole number")
-	}
 	x, err := v.whole()
-	if err != nil {
-		return fmt.Errorf("must be a whole number of at most 9223372036854775807")
+	switch {
+	case v.shape == wholeShape && err != nil, v.shape == textShape && errors.Is(err, strconv.ErrRange):
+		return fmt.Errorf("must be a whole number of at most %d", math.MaxInt64)
+	case v.shape != wholeShape:
+		return fmt.Errorf("must be a whole number")
 	}
 	if x < 0 {
 		return fmt.Errorf("must not be negative")

@@ -29,6 +29,29 @@ func nearest(name string, known []string) string {
 	return best
 }
 
+// near is nearest, empty where even that is another word: it takes more edits
+// than half of the name's letters, and neither name is a part of the other.
+func near(name string, known []string) string {
+	best := nearest(name, known)
+	a, b := strings.ToLower(name), strings.ToLower(best)
+	letters := utf8.RuneCountInString(a)
+	const part = 3 // letters of a name that say something in a longer one
+	within := min(len(a), len(b)) >= part && (strings.Contains(a, b) || strings.Contains(b, a))
+	if best == "" || !within && edits(a, b) > (letters+1)/2 {
+		return ""
+	}
+	return best
+}
+
+// NearHint names the column that was perhaps meant, as the end of a sentence;
+// empty where none is near.
+func NearHint(name string, columns []string) string {
+	if best := near(name, columns); best != "" {
+		return "; the nearest is " + quoted(best)
+	}
+	return ""
+}
+
 // edits is the number of insertions, deletions, replacements and swaps of
 // neighbours that turn a into b, no part edited twice (the restricted
 // distance of Damerau 1964, CACM 7:171-176, by the recurrence of Wagner and

@@ -71,6 +71,20 @@ func TestNearest(t *testing.T) {
 	}
 }
 
+// A name that shares little with all others has no near one.
+func TestNear(t *testing.T) {
+	for name, want := range map[string]string{
+		"nope": "", "survivel_d21": "survival_d21", "survival": "survival_d21", "hp": "", "ph": "+ph", "x": "", "": "", "SALT": "salt_d3",
+	} {
+		if got := near(name, []string{"+pos", "survival_d21", "+ph", "salt_d3"}); got != want {
+			t.Errorf("near(%q) = %q, want %q", name, got, want)
+		}
+	}
+	if got := near("a", nil); got != "" || NearHint("nope", []string{"+pos"}) != "" || NearHint("po", []string{"pos"}) != `; the nearest is "pos"` {
+		t.Errorf("of nothing: %q", got)
+	}
+}
+
 // The shortcut by length must not change the answer.
 func TestNearestWithoutShortcut(t *testing.T) {
 	rng := rand.New(rand.NewPCG(3, 4))

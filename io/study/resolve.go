@@ -145,10 +145,10 @@ func (r *resolver) unknown(key, name string) {
 // hint names the nearest column. Past the problems that are shown it is not
 // worth the search: a list may hold as many wrong names as a table columns.
 func (r *resolver) hint(name string) string {
-	if len(r.names) == 0 || len(r.faults.found) >= mostShown {
+	if len(r.faults.found) >= mostShown {
 		return ""
 	}
-	return "; the nearest is " + quoted(nearest(name, r.names))
+	return NearHint(name, r.names)
 }
 
 // read marks the columns that a list names or matches.
@@ -296,6 +296,6 @@ func (r *resolver) notCandidate(name string) {
 	case known:
 		r.faults.add(key, "is a column of the table but no candidate: take its line out, or the column in")
 	case len(r.roles.Candidates) > 0:
-		r.faults.add(key, "is no candidate; the nearest is %s", quoted(nearest(name, r.roles.Candidates)))
+		r.faults.add(key, "is no candidate%s", NearHint(name, r.roles.Candidates))
 	}
 }

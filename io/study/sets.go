@@ -105,7 +105,7 @@ func splitKey(text string) ([]string, error) {
 // setLeaves reads the value of an argument as TOML, or as a text without its
 // quotes.
 func setLeaves(path []string, raw string) ([]leaf, error) {
-	if found, err := tomlLeaves(raw); err == nil {
+	if found, err := tomlLeaves(leadingZero(raw)); err == nil {
 		for i := range found {
 			found[i].path = append(append([]string{}, path...), found[i].path[1:]...)
 		}
@@ -120,6 +120,16 @@ func setLeaves(path []string, raw string) ([]leaf, error) {
 		return nil, fmt.Errorf("the value is not TOML: %v (in most shells put the whole argument in single quotes)", err)
 	}
 	return []leaf{{path: path, value: value{shape: textShape, text: raw}}}, nil
+}
+
+// leadingZero completes a number that begins with its point, which TOML does
+// not know.
+func leadingZero(raw string) string {
+	digits := strings.TrimLeft(raw, "+-")
+	if sign := len(raw) - len(digits); sign <= 1 && len(digits) > 1 && digits[0] == '.' && digits[1] >= '0' && digits[1] <= '9' {
+		return raw[:sign] + "0" + digits
+	}
+	return raw
 }
 
 // allowBare lets a value without quotes be a text where a key wants one: a
