@@ -12,7 +12,6 @@ import (
 	"github.com/spf13/cobra"
 
 	"holdfast/io/demo"
-	"holdfast/selection"
 )
 
 // demoSeed makes the table of the demonstration.
@@ -76,11 +75,11 @@ func (p *program) demo(ctx context.Context, dir string) error {
 // closeDemo compares what was found with what matters, which only invented
 // data can tell, and says what to type next.
 func (p *program) closeDemo(path, studyPath, runPath string) error {
-	dir, err := openRun(runPath)
+	e, err := gather([]string{runPath}, false)
 	if err != nil {
 		return err
 	}
-	j, err := judgeDraws(dir, selection.Ask{})
+	j, err := e.judge(judgeOptions{})
 	if err != nil {
 		return err
 	}

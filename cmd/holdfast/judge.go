@@ -28,9 +28,11 @@ func (v *view) addFlags(f *pflag.FlagSet) {
 // judgeOptions is another decision, and what is done with it.
 type judgeOptions struct {
 	view        view
-	change      selection.Ask // zero: the decision of record
-	save        bool          // write the tables of the run directory
-	spreadsheet string        // file for a copy that spreadsheets read safely
+	decision    *selection.Decision // nil: the decision of record, changed by
+	change      selection.Ask       // zero: nothing
+	partial     bool                // judge what is there
+	save        bool                // write the tables of the run directory
+	spreadsheet string              // file for a copy that spreadsheets read safely
 }
 
 func (p *program) judgeCommand() *cobra.Command {
@@ -38,14 +40,18 @@ func (p *program) judgeCommand() *cobra.Command {
 	var threshold, selected, falseSelections optional
 	var bound, region string
 	c := &cobra.Command{
-		Use:   "judge RUN [--threshold T] [--false-selections V] [--selected Q] [--bound NAME] [--region NAME] [--save]",
+		Use:   "judge RUN... [--threshold T] [--false-selections V] [--selected Q] [--bound NAME] [--region NAME] [--partial] [--save]",
 		Short: "the decision on finished draws, without fitting again",
-		Long: `judge applies a decision to the draws of a run directory. Without options it is
-the one that was written down before the first draw. Any other one is marked as
-explored after seeing the result, and logged in the directory. One of threshold,
-selected and false-selections keeps what it can of the others; two fix the third.`,
+		Long: `judge applies a decision to the draws of a run directory, or to those of several
+that hold parts of one run. Without options it is the one that was written down
+before the first draw. Any other one is marked as explored after seeing the
+result, and logged in the (first) directory. One of threshold, selected and
+false-selections keeps what it can of the others; two fix the third.
+
+A run with draws missing is not judged; --partial judges the draws that are
+there, says which they are, and exits 3.`,
 		Example: "  holdfast demo demo\n  holdfast judge demo/study.run --threshold 0.9",
-		Args:    exactly("RUN"),
+		Args:    atLeastOne("RUN"),
 	}
 	f := c.Flags()
 	f.Var(&threshold, "threshold", "share of draws from which a predictor is stable, in (0.5,1]")
@@ -53,6 +59,7 @@ selected and false-selections keeps what it can of the others; two fix the third
 	f.Var(&selected, "selected", "predictors that one draw may contribute")
 	f.StringVar(&bound, "bound", "", "worst-case, unimodal or r-concave")
 	f.StringVar(&region, "region", "", "cap or common")
+	f.BoolVar(&o.partial, "partial", false, "judge the draws that are there although others are missing")
 	f.BoolVar(&o.save, "save", false, "write the tables of the run directory with this decision")
 	f.StringVar(&o.spreadsheet, "spreadsheet", "", "write the table to this CSV file with leading = + - @ made harmless")
 	o.view.addFlags(f)
@@ -61,13 +68,19 @@ selected and false-selections keeps what it can of the others; two fix the third
 		if err := parseNames(&o.change, bound, region); err != nil {
 			return wrong(err, "")
 		}
-		dir, err := openRun(args[0])
-		if err != nil {
-			return err
-		}
-		return p.judgeRun(dir, o)
+		return p.judgeRun(args, o)
 	}
 	return c
+}
+
+// atLeastOne is a check that one argument or more are there.
+func atLeastOne(word string) cobra.PositionalArgs {
+	return func(c *cobra.Command, args []string) error {
+		if len(args) == 0 {
+			return misuse(fmt.Sprintf("%s: %s is missing", c.CommandPath(), word), "usage: "+c.UseLine())
+		}
+		return nil
+	}
 }
 
 // parseNames reads the words for bound and region; empty ones change nothing.
@@ -83,32 +96,22 @@ func parseNames(a *selection.Ask, bound, region string) (err error) {
 	return err
 }
 
-// openRun opens a run directory to judge it.
-func openRun(path string) (*rundir.Dir, error) {
-	info, err := os.Stat(path)
-	switch {
-	case err != nil:
-		return nil, wrong(fmt.Errorf("holdfast: %w", err), "judge takes the directory that holdfast run made, such as study.run")
-	case !info.IsDir():
-		return nil, misuse("holdfast judge: "+path+" is a file and no run directory", "give the directory that holdfast run made, such as study.run")
-	}
-	dir, err := rundir.Open(path)
-	return dir, wrong(err, "")
-}
-
 // judged is a run's judgement with what belongs beside it.
 type judged struct {
-	dir       *rundir.Dir
-	run       rundir.Run
+	*evidence
 	judgement *selection.Judgement
 	explored  bool // not the decision of record
 	saved     bool // the tables of the directory are those of this judgement
 }
 
-// judgeRun judges the draws of a run directory, shows the outcome and keeps
+// judgeRun judges the draws of run directories, shows the outcome and keeps
 // what is to be kept.
-func (p *program) judgeRun(dir *rundir.Dir, o judgeOptions) error {
-	j, err := judgeDraws(dir, o.change)
+func (p *program) judgeRun(paths []string, o judgeOptions) error {
+	e, err := gather(paths, o.partial)
+	if err != nil {
+		return err
+	}
+	j, err := e.judge(o)
 	if err != nil {
 		return err
 	}
@@ -129,6 +132,14 @@ func (p *program) judgeRun(dir *rundir.Dir, o judgeOptions) error {
 	if err := p.show(j, o.view); err != nil {
 		return err
 	}
+	return j.verdict()
+}
+
+// verdict says what is missing from a judgement that was made.
+func (j *judged) verdict() error {
+	if note := j.partial(); note != "" {
+		return incomplete("holdfast: "+note, "")
+	}
 	if n := len(j.judgement.Uncertified); n > 0 {
 		return incomplete(fmt.Sprintf("holdfast: %d of %d draws end early, at a fit that could not be certified", n, j.judgement.Draws),
 			"they count with what they have; the footnotes say what that means")
@@ -136,43 +147,49 @@ func (p *program) judgeRun(dir *rundir.Dir, o judgeOptions) error {
 	return nil
 }
 
-// judgeDraws reads the draws and applies a decision.
-func judgeDraws(dir *rundir.Dir, change selection.Ask) (*judged, error) {
-	run := dir.Run()
-	if run.Decision == nil {
-		return nil, incomplete("holdfast: "+dir.Path()+" has no decision and no draws: the run was ended before its first draw",
-			"remove the directory and run again")
-	}
-	bootstrap := run.Identity.Draws.Design == "bootstrap"
-	decision := *run.Decision
-	if change != (selection.Ask{}) {
-		var err error
-		decision, err = run.Decision.Change(change, len(run.Identity.Candidates), run.Meta.Number, bootstrap, run.Identity.Penalty.StopAfter)
-		if err != nil {
-			return nil, wrong(err, "")
-		}
-	}
-	draws, err := dir.Draws()
-	if errors.Is(err, rundir.ErrIncomplete) {
-		return nil, &fault{exitIncomplete, err, "a run that did not end is not judged by this version: remove the directory and run again"}
-	}
+// judge applies a decision to the draws.
+func (e *evidence) judge(o judgeOptions) (*judged, error) {
+	bootstrap := e.bootstrap()
+	decision, err := e.decide(o)
 	if err != nil {
 		return nil, err
 	}
-	n := len(run.Identity.Candidates)
-	judgement, err := selection.Judge(draws, bootstrap, selection.Predictors{
-		Names: run.Identity.Candidates, Deviations: run.Meta.Deviation[:n],
-		Always: run.Identity.Always, AlwaysDeviations: run.Meta.Deviation[n:],
+	n := len(e.run.Identity.Candidates)
+	judgement, err := selection.Judge(e.draws, bootstrap, selection.Predictors{
+		Names: e.run.Identity.Candidates, Deviations: e.run.Meta.Deviation[:n],
+		Always: e.run.Identity.Always, AlwaysDeviations: e.run.Meta.Deviation[n:],
 	}, decision)
 	if err != nil {
 		return nil, wrong(err, "")
 	}
-	return &judged{dir: dir, run: run, judgement: judgement, explored: !decision.Same(*run.Decision)}, nil
+	if how := e.followed(); how != "" {
+		judgement.NumberFollowed(how)
+	}
+	return &judged{evidence: e, judgement: judgement, explored: !decision.Same(*e.run.Decision)}, nil
+}
+
+// decide is the decision that is asked for.
+func (e *evidence) decide(o judgeOptions) (selection.Decision, error) {
+	if o.decision != nil {
+		return *o.decision, nil
+	}
+	if o.change == (selection.Ask{}) {
+		return *e.run.Decision, nil
+	}
+	d, err := e.run.Decision.Change(o.change, len(e.run.Identity.Candidates), len(e.draws), e.bootstrap(), e.run.Identity.Penalty.StopAfter)
+	if err != nil {
+		return d, wrong(err, "")
+	}
+	if how := e.followed(); how != "" && o.change.FalseSelections != nil && d.Bound != selection.WorstCase {
+		return d, misuse(fmt.Sprintf("holdfast judge: --false-selections: %s, so there is no %s bound to solve for", how, d.Bound),
+			"add --bound worst-case, or give --threshold or --selected")
+	}
+	return d, nil
 }
 
 // log notes a decision other than the one of record in the directory.
 func (p *program) log(j *judged) error {
-	if !j.explored {
+	if !j.explored && j.partial() == "" {
 		return nil
 	}
 	err := j.dir.LogJudgement(rundir.Judged{

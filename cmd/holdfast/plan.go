@@ -284,7 +284,7 @@ func (s *settled) diskOf(model *solver.Model, paths []solver.Path, block int) (i
 		return 0, err
 	}
 	defer os.RemoveAll(folder)
-	dir, err := s.makeDir(filepath.Join(folder, "run"), model)
+	dir, err := s.makeDir(filepath.Join(folder, "run"), model, 1)
 	if err != nil {
 		return 0, err
 	}

@@ -19,12 +19,26 @@ type meter interface {
 	end()
 }
 
-// newMeter returns a bar on a terminal, and elsewhere a line now and then.
-func newMeter(w io.Writer, draws int) meter {
-	if isTerminal(w) {
-		return newBar(w, draws)
+// newMeter returns a bar on a terminal (over the draws that are to be made) with
+// lines in the log, and elsewhere lines on both. before is the number of draws that were there already.
+func newMeter(term io.Writer, t *talk, before, total int) meter {
+	if isTerminal(term) {
+		return both{newBar(term, total-before), newLines(t.logged(), before, total)}
 	}
-	return &lines{w: w, start: time.Now(), wait: firstLine}
+	return newLines(t, before, total)
+}
+
+// both is two meters.
+type both [2]meter
+
+func (b both) show(p resample.Progress) {
+	b[0].show(p)
+	b[1].show(p)
+}
+
+func (b both) end() {
+	b[0].end()
+	b[1].end()
 }
 
 // isTerminal reports whether w is a terminal that can redraw a line.
@@ -100,24 +114,30 @@ const (
 
 // lines writes a line after ten seconds, and then after ever longer pauses.
 type lines struct {
-	w     io.Writer
-	start time.Time
-	last  time.Time
-	wait  time.Duration
+	w             io.Writer
+	before, total int
+	start, last   time.Time
+	wait          time.Duration
+}
+
+func newLines(w io.Writer, before, total int) *lines {
+	now := time.Now()
+	return &lines{w: w, before: before, total: total, start: now, last: now, wait: firstLine}
 }
 
 func (l *lines) show(p resample.Progress) {
 	now := time.Now()
-	if l.last.IsZero() {
-		l.last = l.start
-	}
 	if now.Sub(l.last) < l.wait || p.Draws == 0 || p.Draws == p.Total {
 		return
 	}
 	l.last, l.wait = now, min(2*l.wait, longest)
 	rate := float64(p.Draws) / now.Sub(l.start).Seconds()
 	left := time.Duration(float64(p.Total-p.Draws) / rate * float64(time.Second))
-	fmt.Fprintf(l.w, "%d of %d draws, %.3g per second, about %s left\n", p.Draws, p.Total, rate, left.Round(time.Second))
+	memory := ""
+	if used, _ := memoryNow(); used > 0 {
+		memory = ", memory " + sizeText(used)
+	}
+	fmt.Fprintf(l.w, "%d of %d draws, %.3g per second, about %s left%s\n", l.before+p.Draws, l.total, rate, left.Round(time.Second), memory)
 }
 
 func (l *lines) end() {}

@@ -80,7 +80,7 @@ the number of false selections.`,
 		return misuse(c.CommandPath()+": "+err.Error(), c.CommandPath()+" --help lists the options")
 	})
 	root.SetHelpCommand(p.helpCommand())
-	root.AddCommand(p.demoCommand(), p.draftCommand(), p.planCommand(), p.runCommand(), p.judgeCommand(),
+	root.AddCommand(p.demoCommand(), p.draftCommand(), p.planCommand(), p.runCommand(), p.judgeCommand(), p.statusCommand(),
 		p.inspectCommand(), p.budgetCommand(), p.fitCommand(), p.rowsCommand())
 	for _, c := range root.Commands() {
 		c.Flags().SortFlags = false

@@ -38,6 +38,10 @@ func TestScripts(t *testing.T) {
 			"exits":     exits,
 			"disjoint":  disjoint,
 			"interrupt": interrupt,
+			"damage":    damage,
+			"appendrow": appendRow,
+			"killlog":   killLog,
+			"unset":     unset,
 		},
 	})
 }
@@ -119,4 +123,46 @@ func interrupt(ts *testscript.TestScript, neg bool, args []string) {
 	if code != args[2] {
 		ts.Fatalf("exit code %s, want %s", code, args[2])
 	}
+}
+
+// change rewrites a file.
+func change(ts *testscript.TestScript, args []string, how func(text string) string) {
+	if len(args) != 1 {
+		ts.Fatalf("one file is needed")
+	}
+	path := ts.MkAbs(args[0])
+	text, err := os.ReadFile(path)
+	ts.Check(err)
+	ts.Check(os.WriteFile(path, []byte(how(string(text))), 0o644))
+}
+
+// damage flips a bit in the middle of a file.
+func damage(ts *testscript.TestScript, neg bool, args []string) {
+	change(ts, args, func(text string) string {
+		b := []byte(text)
+		b[len(b)/2] ^= 4
+		return string(b)
+	})
+}
+
+// appendRow repeats the last line of a CSV file.
+func appendRow(ts *testscript.TestScript, neg bool, args []string) {
+	change(ts, args, func(text string) string {
+		lines := strings.Split(strings.TrimRight(text, "\n"), "\n")
+		return strings.Join(append(lines, lines[len(lines)-1]), "\n") + "\n"
+	})
+}
+
+// killLog takes the last line off a log, as if the process had been killed
+// before it wrote one.
+func killLog(ts *testscript.TestScript, neg bool, args []string) {
+	change(ts, args, func(text string) string {
+		lines := strings.SplitAfter(text, "\n")
+		return strings.Join(lines[:len(lines)-2], "")
+	})
+}
+
+// unset takes a variable out of the environment.
+func unset(ts *testscript.TestScript, neg bool, args []string) {
+	ts.Setenv(args[0], "")
 }

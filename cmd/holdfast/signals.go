@@ -29,9 +29,9 @@ func (i *interrupted) code() int {
 	return exitFailed
 }
 
-// patience is how long the second signal leaves the program to put things in
+// grace is how long the second signal leaves the program to put things in
 // order: a log line, a lock.
-const patience = time.Second
+const grace = time.Second
 
 // watch listens to signals while a command runs. The first SIGINT or SIGTERM
 // ends the command's context, or, while it works in an orderly way, only asks
@@ -69,7 +69,7 @@ func (w *watch) listen(signals <-chan os.Signal, done <-chan struct{}) {
 				continue
 			}
 			select {
-			case <-time.After(patience):
+			case <-time.After(grace):
 				os.Exit((&interrupted{s}).code())
 			case <-done:
 				return

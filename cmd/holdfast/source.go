@@ -32,6 +32,7 @@ type asked struct {
 	study   *study.Study
 	source  *table.Source
 	drafted []byte // text of the study where it was drafted for a table
+	memory  int64  // bytes that the table may take; 0: what the machine has free
 }
 
 // isStudy reports whether path names a study file and not a table.
