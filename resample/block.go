@@ -70,7 +70,8 @@ func (s Sizing) Allowed(perDraw time.Duration) time.Duration {
 
 // Whole is the time of the whole run, its draws shared evenly by the workers.
 func (s Sizing) Whole(perDraw time.Duration) time.Duration {
-	return time.Duration(float64(perDraw) * float64(s.Draws) / float64(max(s.Workers, 1)))
+	const longest = 1 << 62 // 146 years; beyond it a Duration has no room
+	return time.Duration(min(float64(perDraw)*float64(s.Draws)/float64(max(s.Workers, 1)), longest))
 }
 
 // AtRisk is the running time that is lost when the process is killed at the

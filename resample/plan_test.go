@@ -142,10 +142,11 @@ func TestSameDrawHoweverAsked(t *testing.T) {
 			backward[d] = short.Sample(d)
 		}
 		for first := 0; first < 20; first += 3 { // odd starts split pairs on purpose
-			draws := upTo(first, min(first+3, 20))
-			for i, s := range long.samples(draws) {
-				if !sameSample(s, backward[draws[i]]) {
-					t.Errorf("%v: draw %d differs", design, draws[i])
+			for _, draws := range [][]int{upTo(first, min(first+3, 20)), {first, 19}} {
+				for i, s := range long.samples(draws) {
+					if !sameSample(s, backward[draws[i]]) {
+						t.Errorf("%v: draw %d differs", design, draws[i])
+					}
 				}
 			}
 		}

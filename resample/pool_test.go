@@ -267,6 +267,36 @@ func TestSinkFailureStopsAndIsNotAskedAgain(t *testing.T) {
 	}
 }
 
+// Workers that have blocks in their hands when the sink fails do not wait for
+// it for ever.
+func TestFailingSinkLeavesNoWorkerWaiting(t *testing.T) {
+	const workers = 3
+	plan := mustPlan(t, Plan{Rows: 30, Number: 400})
+	var fitted atomic.Int32
+	fit := func(_ context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+		fitted.Add(1)
+		return make([]solver.Path, len(samples)), nil
+	}
+	sink := sinkFunc(func([]int, []solver.Path) error {
+		for fitted.Load() < 2*workers+1 { // one each waits, one each is in hand
+			time.Sleep(time.Millisecond)
+		}
+		return errTank
+	})
+	ended := make(chan error, 1)
+	go func() {
+		ended <- Run(context.Background(), plan, fitFunc(fit), sink, Options{Workers: workers, Block: 2})
+	}()
+	select {
+	case err := <-ended:
+		if !errors.Is(err, errTank) {
+			t.Errorf("error %v", err)
+		}
+	case <-time.After(20 * time.Second):
+		t.Fatal("a worker still waits for the sink")
+	}
+}
+
 // A block is put as soon as it is finished, and not held back by an earlier
 // one: the first block waits here until all others are in the sink.
 func TestFinishedBlocksDoNotWait(t *testing.T) {
