@@ -1,7 +1,6 @@
 package main
 
 import (
-	"context"
 	"fmt"
 	"strings"
 	"text/tabwriter"
@@ -23,7 +22,10 @@ third, before any row is read. All three bounds are shown; the assumption that
 each needs is said beside it.`,
 		Example: "  holdfast budget --candidates 1000 --threshold 0.9 --selected 20",
 		Args:    exactly(),
-		RunE: action(func(context.Context, []string) error {
+		RunE: func(c *cobra.Command, _ []string) error {
+			if !c.Flags().Changed("candidates") {
+				return misuse("holdfast budget: --candidates is missing", "--candidates P is the number of predictors that can be chosen")
+			}
 			b, err := selection.SolveBudget(selection.Request{
 				Candidates: candidates, Draws: draws,
 				Threshold: threshold.value, Selected: selected.value, FalseSelections: falseSelections.value,
@@ -35,7 +37,7 @@ each needs is said beside it.`,
 				return p.writeJSON(b)
 			}
 			return p.printBudget(b)
-		}),
+		},
 	}
 	f := c.Flags()
 	f.IntVar(&candidates, "candidates", 0, "predictors that can be chosen")
@@ -51,16 +53,16 @@ each needs is said beside it.`,
 func (p *program) printBudget(b *selection.Budget) error {
 	fmt.Fprintf(p.out, "%d candidates, %d draws\n", b.Candidates, b.Draws)
 	if b.Threshold != nil {
-		fmt.Fprintf(p.out, "threshold %.4g\n", *b.Threshold)
+		fmt.Fprintf(p.out, "threshold %s\n", full(*b.Threshold))
 	}
 	if b.Need != nil {
 		fmt.Fprintf(p.out, "stable: chosen in at least %d of %d draws\n", *b.Need, b.Draws)
 	}
 	if b.Selected != nil {
-		fmt.Fprintf(p.out, "selected %.4g: the most predictors that a draw contributes\n", *b.Selected)
+		fmt.Fprintf(p.out, "selected %s: the most predictors that a draw contributes\n", full(*b.Selected))
 	}
 	if b.FalseSelections != nil {
-		fmt.Fprintf(p.out, "false selections %.4g, as asked\n", *b.FalseSelections)
+		fmt.Fprintf(p.out, "false selections %s, as asked\n", full(*b.FalseSelections))
 	}
 	fmt.Fprintln(p.out)
 	w := tabwriter.NewWriter(p.out, 0, 0, 3, ' ', 0)
@@ -95,24 +97,24 @@ func budgetHead(b *selection.Budget) []string {
 }
 
 func budgetCells(b *selection.Budget, v selection.BoundValue) []string {
-	luck := number(v.FalseSelections)
+	luck := number(v.FalseSelections, selection.AtMost)
 	switch {
 	case b.Threshold == nil:
 		need := "none"
 		if v.Need != nil {
 			need = fmt.Sprintf("%d of %d", *v.Need, b.Draws)
 		}
-		return []string{number(v.Threshold), need, luck}
+		return []string{number(v.Threshold, full), need, luck}
 	case b.Selected == nil:
-		return []string{number(v.Selected), luck}
+		return []string{number(v.Selected, selection.AtLeast), luck}
 	}
 	return []string{luck}
 }
 
-// number shows a number in four digits, none where it does not exist.
-func number(x *float64) string {
+// number shows a number as show does, none where it does not exist.
+func number(x *float64, show func(float64) string) string {
 	if x == nil {
 		return "none"
 	}
-	return fmt.Sprintf("%.4g", *x)
+	return show(*x)
 }

@@ -66,6 +66,7 @@ func (p *program) demo(ctx context.Context, dir string) error {
 		return err
 	}
 	q := question{path: studyPath}
+	p.typed = []string{"run", studyPath} // what goes on with this run: a demo of its own would begin anew
 	if err := p.run(ctx, q, runOptions{}); err != nil {
 		return err
 	}

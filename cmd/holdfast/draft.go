@@ -24,7 +24,7 @@ func (p *program) draftCommand() *cobra.Command {
 		Long: `draft looks at a table and writes a commented study that runs unchanged: settings
 by the table's shape, identifiers and suspected leaks of the outcome left out,
 the reason beside each. Without --out the study goes to stdout.`,
-		Example: "  holdfast demo demo\n  holdfast draft demo/hatchery.parquet --outcome survival_d21",
+		Example: "  holdfast draft demo/hatchery.parquet --outcome survival_d21",
 		Args:    exactly("TABLE"),
 	}
 	f := c.Flags()
@@ -51,7 +51,7 @@ func (p *program) draft(ctx context.Context, q question, out string) error {
 		if _, err := os.Lstat(out); err == nil {
 			return misuse("holdfast draft: "+out+" exists, and is not written over", "give --out another name, or remove the file")
 		}
-		if info, err := os.Stat(dir); err != nil || !info.IsDir() {
+		if !isFolder(dir) {
 			return misuse("holdfast draft: "+dir+": there is no such folder to write "+filepath.Base(out)+" into", "make the folder first")
 		}
 	}
@@ -73,11 +73,20 @@ func (p *program) draft(ctx context.Context, q question, out string) error {
 	return err
 }
 
+// isFolder reports whether a path is that of a folder.
+func isFolder(path string) bool {
+	info, err := os.Stat(path)
+	return err == nil && info.IsDir()
+}
+
 // draft drafts the study of a table, to stand in the folder dir.
 func (q question) draft(ctx context.Context, dir string) ([]byte, *table.Source, error) {
 	source, err := table.Open(q.path)
 	if err != nil {
 		return nil, nil, wrong(err, "")
+	}
+	if err := checkOutcome(source, q.outcome); err != nil {
+		return nil, nil, err
 	}
 	summary, err := source.Scan(ctx, q.outcome)
 	if err != nil {
@@ -89,6 +98,22 @@ func (q question) draft(ctx context.Context, dir string) ([]byte, *table.Source,
 	}
 	text, _, err := study.Draft(facts)
 	return text, source, wrong(err, "")
+}
+
+// checkOutcome refuses an outcome that no column is, and names the nearest.
+func checkOutcome(source *table.Source, outcome string) error {
+	var names []string
+	for _, c := range source.Columns() {
+		if c.Name == outcome {
+			return nil
+		}
+		names = append(names, c.Name)
+	}
+	if outcome == "" {
+		return nil
+	}
+	return misuse(fmt.Sprintf("holdfast: %s: there is no column %q%s", source.Path(), outcome, study.NearHint(outcome, names)),
+		"holdfast inspect "+shellWord(source.Path())+" --json lists the columns")
 }
 
 // pathFrom is the table's path as a study in dir writes it.
@@ -110,14 +135,17 @@ func pathFrom(dir, path string) (string, error) {
 
 // factsOf puts a scan into the words of package study.
 func factsOf(s *table.Summary) study.Facts {
-	f := study.Facts{Outcome: s.Outcome, Rows: s.Rows, Incomplete: -1}
+	f := study.Facts{
+		Outcome: s.Outcome, Rows: s.Rows, Incomplete: s.Incomplete,
+		Repeats: s.Repeats, OutcomeGaps: s.OutcomeGaps,
+	}
 	for _, c := range s.Columns {
 		f.Columns = append(f.Columns, study.Fact{
 			Column:  study.Column{Name: c.Name, Usable: c.Usable, Reason: c.Reason},
 			Missing: c.Missing + c.NaN, Infinite: c.Infinite,
 			Constant: c.Constant, TwoValued: len(c.Values) == 2, Whole: c.Whole, Unique: c.Unique,
 			Rising: c.Monotone, Date: c.Dates != "", Min: c.Min, Max: c.Max,
-			R: defined(c.Correlation), AUC: defined(c.AUC),
+			R: defined(c.Correlation), AUC: defined(c.AUC), Serial: defined(c.Serial),
 		})
 	}
 	return f

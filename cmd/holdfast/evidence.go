@@ -3,6 +3,7 @@ package main
 import (
 	"errors"
 	"fmt"
+	"io/fs"
 	"os"
 	"slices"
 	"strings"
@@ -26,6 +27,8 @@ type evidence struct {
 func openRun(path string) (*rundir.Dir, error) {
 	info, err := os.Stat(path)
 	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return nil, misuse("holdfast: "+path+": there is no such directory", "that takes the directory that holdfast run made, such as study.run")
 	case err != nil:
 		return nil, wrong(fmt.Errorf("holdfast: %w", err), "that takes the directory that holdfast run made, such as study.run")
 	case !info.IsDir():

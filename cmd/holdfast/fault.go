@@ -104,13 +104,21 @@ func oneLine(text string) string {
 		if b.Len() > 0 {
 			b.WriteString("; ")
 		}
-		for _, r := range strings.TrimSpace(line) {
-			if unicode.IsControl(r) || unicode.Is(unicode.Bidi_Control, r) {
-				fmt.Fprintf(&b, "\\u%04x", r)
-				continue
-			}
-			b.WriteRune(r)
+		b.WriteString(visible(strings.TrimSpace(line)))
+	}
+	return b.String()
+}
+
+// visible is text with the escapes of its control characters, and of the marks
+// that turn the writing direction, in their place.
+func visible(text string) string {
+	var b strings.Builder
+	for _, r := range text {
+		if unicode.IsControl(r) || unicode.Is(unicode.Bidi_Control, r) {
+			fmt.Fprintf(&b, "\\u%04x", r)
+			continue
 		}
+		b.WriteRune(r)
 	}
 	return b.String()
 }

@@ -5,9 +5,11 @@ import (
 	"encoding/csv"
 	"encoding/json"
 	"fmt"
+	"os"
 	"strconv"
 
 	"github.com/spf13/cobra"
+	"golang.org/x/term"
 
 	"holdfast/solver"
 )
@@ -29,7 +31,7 @@ func (p *program) fitCommand() *cobra.Command {
 		Long: `fit prints the fit on all rows at the lambdas given: the intercept first, then
 every coefficient that is not zero, on the original scale. Without --lambda it
 prints a summary of the whole path. Lambda 0 is the fit without a penalty.`,
-		Example: "  holdfast demo demo\n  holdfast fit demo/study.toml --lambda 2.5",
+		Example: "  holdfast fit demo/study.toml --lambda 2.5",
 		Args:    exactly("STUDY"),
 	}
 	f := c.Flags()
@@ -122,7 +124,7 @@ func (p *program) printCoefficients(l *loaded, fits []solver.Fit, all bool) erro
 		lambda := full(f.Lambda)
 		w.Write([]string{lambda, "intercept", "", full(f.Intercept)})
 		for _, t := range l.terms(f, all) {
-			w.Write([]string{lambda, t.kind, t.name, full(t.value)})
+			w.Write([]string{lambda, t.kind, p.shown(t.name), full(t.value)})
 		}
 	}
 	w.Flush()
@@ -150,6 +152,15 @@ func (l *loaded) terms(f solver.Fit, all bool) []coefficient {
 		}
 	}
 	return list
+}
+
+// shown is a name as it is written to stdout: as it is, but on a terminal
+// without what would command it.
+func (p *program) shown(name string) string {
+	if f, ok := p.out.(*os.File); ok && term.IsTerminal(int(f.Fd())) {
+		return visible(name)
+	}
+	return name
 }
 
 // objectiveText says what is minimised, and so on which scale lambda is.

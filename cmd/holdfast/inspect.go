@@ -26,7 +26,7 @@ func (p *program) inspectCommand() *cobra.Command {
 columns, copies, columns that are nearly the same, and, with an outcome, what
 looks like the outcome in other clothes. For a study it also says whether a run
 would be refused.`,
-		Example: "  holdfast demo demo\n  holdfast inspect demo/hatchery.parquet --outcome survival_d21",
+		Example: "  holdfast inspect demo/hatchery.parquet --outcome survival_d21",
 		Args:    exactly("TABLE"),
 	}
 	f := c.Flags()
@@ -79,7 +79,9 @@ func (p *program) inspect(ctx context.Context, q question, o inspectOptions) err
 		}
 	}
 	if isStudy(q.path) {
-		q.outcome = ""
+		q.outcome = "" // it came from the study
+	}
+	if isStudy(q.path) || len(q.sets) > 0 {
 		if err := i.tryStudy(ctx, q); err != nil {
 			return err
 		}
@@ -103,21 +105,26 @@ func (i *inspection) openFor(q *question) (*table.Source, error) {
 			_, err := q.openStudy()
 			return nil, err
 		}
-		s, err := study.Read(q.path, q.sets)
+		s, err := q.readStudy()
 		if err != nil {
-			return nil, wrong(err, "")
+			return nil, err
 		}
 		path, q.outcome = s.TablePath(), s.Outcome.Column
 	} else if len(q.sets) > 0 {
-		return nil, misuse("holdfast inspect: --set goes with a study, and "+q.path+" is a table", "holdfast draft makes a study for it")
+		if err := q.check(); err != nil {
+			return nil, err
+		}
 	}
 	source, err := table.Open(path)
-	return source, wrong(err, "")
+	if err != nil {
+		return nil, wrong(err, "")
+	}
+	return source, checkOutcome(source, q.outcome)
 }
 
 // tryStudy does what a run does before its first fit.
 func (i *inspection) tryStudy(ctx context.Context, q question) error {
-	a, err := q.openStudy()
+	a, err := q.open(ctx)
 	if err != nil {
 		return i.found(ctx, err)
 	}

@@ -2,6 +2,7 @@ package main
 
 import (
 	"fmt"
+	"math"
 	"slices"
 	"strings"
 	"text/tabwriter"
@@ -11,7 +12,7 @@ import (
 
 // printInspection prints an inspection for people.
 func (p *program) printInspection(i *inspection) error {
-	fmt.Fprintf(p.out, "%s: %d rows, %d columns\n\n", oneLine(i.path), i.summary.Rows, len(i.summary.Columns))
+	fmt.Fprintf(p.out, "%s: %s, %s\n\n", oneLine(i.path), count(i.summary.Rows, "row"), count(int64(len(i.summary.Columns)), "column"))
 	w := tabwriter.NewWriter(p.out, 0, 0, 2, ' ', 0)
 	line := func(label, text string) {
 		if text == "" {
@@ -22,7 +23,7 @@ func (p *program) printInspection(i *inspection) error {
 	line("kinds", i.kinds())
 	line("not usable", listed(i.columns(func(c table.ColumnSummary) string { return unless(c.Usable, c.Reason) })))
 	line("missing", listed(i.columns(gaps)))
-	line("constant", listed(i.columns(func(c table.ColumnSummary) string { return unless(!c.Constant, fmt.Sprintf("%.6g", c.Min)) })))
+	line("constant", listed(i.columns(func(c table.ColumnSummary) string { return unless(!c.Constant, fmt.Sprintf("%.6g", c.Min+0)) })))
 	line("look like labels", listed(i.columns(label)))
 	line("rounded", listed(i.columns(func(c table.ColumnSummary) string {
 		return unless(c.Rounded == 0, fmt.Sprintf("%d integers too large for an exact number", c.Rounded))
@@ -54,8 +55,16 @@ func (i *inspection) printOutcome(line func(label, text string)) {
 		}
 	}
 	line("suspected leaks", listed(i.columns(func(c table.ColumnSummary) string {
-		return unless(!c.Leak || c.Name == i.summary.Outcome, fmt.Sprintf("r = %.3f", c.Correlation))
+		return unless(!c.Leak || c.Name == i.summary.Outcome, leakReason(c))
 	})))
+}
+
+// leakReason is the figure by which a column looks like the outcome.
+func leakReason(c table.ColumnSummary) string {
+	if math.Abs(c.Correlation) >= table.LeakCorrelation || math.IsNaN(c.AUC) {
+		return fmt.Sprintf("r = %.3f", c.Correlation)
+	}
+	return fmt.Sprintf("AUC = %.3f", c.AUC)
 }
 
 // printFindings prints what a draft would say and what would be refused.
@@ -83,6 +92,14 @@ func (p *program) printFindings(i *inspection) {
 	for _, r := range i.refusals {
 		fmt.Fprintf(p.out, "\na run would be refused: %s\n", oneLine(r))
 	}
+}
+
+// count writes a number and its noun.
+func count(n int64, noun string) string {
+	if n == 1 {
+		return "1 " + noun
+	}
+	return fmt.Sprintf("%d %ss", n, noun)
 }
 
 // mostFlags is how many lines of a draft are shown.

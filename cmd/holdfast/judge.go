@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"path/filepath"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -50,7 +51,7 @@ false-selections keeps what it can of the others; two fix the third.
 
 A run with draws missing is not judged; --partial judges the draws that are
 there, says which they are, and exits 3.`,
-		Example: "  holdfast demo demo\n  holdfast judge demo/study.run --threshold 0.9",
+		Example: "  holdfast judge demo/study.run --threshold 0.9",
 		Args:    atLeastOne("RUN"),
 	}
 	f := c.Flags()
@@ -217,6 +218,9 @@ func (j *judged) save() error {
 func (j *judged) saveSpreadsheet(path string, v view) error {
 	if _, err := os.Lstat(path); err == nil {
 		return misuse("holdfast judge: "+path+" exists, and is not written over", "give --spreadsheet another name")
+	}
+	if folder := filepath.Dir(path); !isFolder(folder) {
+		return misuse("holdfast judge: "+folder+": there is no such folder to write "+filepath.Base(path)+" into", "make the folder first")
 	}
 	return rundir.WriteFile(path, func(w io.Writer) error { return j.writeSpreadsheet(w, v) })
 }

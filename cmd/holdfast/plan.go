@@ -37,7 +37,7 @@ time by number of workers, peak memory, disk, the work that is lost if the run i
 killed, and into how many parts it is worth dividing. It ends with the error
 budget: threshold, selected, all three bounds. With --no-fit nothing but the
 table's shape is read: memory is exact from it, wall time is not known.`,
-		Example: "  holdfast demo demo\n  holdfast plan demo/study.toml",
+		Example: "  holdfast plan demo/study.toml",
 		Args:    exactly("STUDY"),
 	}
 	f := c.Flags()

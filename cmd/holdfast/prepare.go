@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"slices"
 	"strings"
 
 	"holdfast/io/rundir"
@@ -55,12 +56,30 @@ func (a *asked) tableFault(err error) error {
 	if !errors.As(err, &e) {
 		return err
 	}
-	hint := ""
-	if len(e.Gaps) > 0 && a.study.Table.Missing == study.Refuse {
-		hint = "add --set table.missing=drop-rows or --set table.missing=fill-mean, or name columns in candidates.leave"
-	}
-	return wrong(err, hint)
+	return wrong(err, gapHint(e))
 }
+
+// gapHint says what can be typed where cells are missing: only what works.
+func gapHint(e *table.Error) string {
+	if len(e.Gaps) == 0 {
+		return ""
+	}
+	var ways []string
+	switch {
+	case e.Rows-e.Lost < fewestRows:
+	case e.Lost*10 > e.Rows:
+		ways = append(ways, fmt.Sprintf("add --set table.missing=drop-rows --set table.accept_loss=true (without %d of %d rows)", e.Lost, e.Rows))
+	default:
+		ways = append(ways, "add --set table.missing=drop-rows")
+	}
+	if !slices.ContainsFunc(e.Gaps, func(g table.Gaps) bool { return g.Infinite > 0 }) {
+		ways = append(ways, "add --set table.missing=fill-mean")
+	}
+	return strings.Join(append(ways, "name columns in candidates.leave"), ", or ")
+}
+
+// fewestRows is what two halves take.
+const fewestRows = 4
 
 // examine finds constant columns and copies among the candidates.
 func (l *loaded) examine(ctx context.Context) error {
@@ -186,7 +205,7 @@ func (p *program) tell(l *loaded) {
 		fmt.Fprintln(p.err, oneLine(n))
 	}
 	if len(l.excluded) > 0 {
-		fmt.Fprintf(p.err, "no candidates: %s\n", oneLine(exclusions(l.excluded)))
+		fmt.Fprintf(p.err, "left out by themselves: %s\n", oneLine(exclusions(l.excluded)))
 	}
 }
 

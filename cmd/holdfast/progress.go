@@ -5,6 +5,7 @@ import (
 	"io"
 	"os"
 	"sync"
+	"sync/atomic"
 	"time"
 
 	"github.com/schollz/progressbar/v3"
@@ -63,12 +64,13 @@ func colour(w io.Writer) bool {
 	return isTerminal(w) && os.Getenv("NO_COLOR") == ""
 }
 
-// bar is the progress bar of a terminal. It is drawn again every second even
+// bar is the progress bar of a terminal. It appears with the first draw, and is drawn again every second even
 // when no draw was finished, so that the time left stays true.
 type bar struct {
-	bar  *progressbar.ProgressBar
-	stop chan struct{}
-	once sync.Once
+	bar   *progressbar.ProgressBar
+	begun atomic.Bool // a draw is done: until then there is no rate to show
+	stop  chan struct{}
+	once  sync.Once
 }
 
 func newBar(w io.Writer, draws int) *bar {
@@ -90,6 +92,9 @@ func newBar(w io.Writer, draws int) *bar {
 		for {
 			select {
 			case <-tick.C:
+				if !b.begun.Load() {
+					continue
+				}
 				// A bar that cannot be drawn is no reason to end a run.
 				_ = b.bar.RenderBlank()
 			case <-b.stop:
@@ -100,7 +105,12 @@ func newBar(w io.Writer, draws int) *bar {
 	return b
 }
 
-func (b *bar) show(p resample.Progress) { _ = b.bar.Set(p.Draws) }
+func (b *bar) show(p resample.Progress) {
+	if p.Draws > 0 {
+		b.begun.Store(true)
+		_ = b.bar.Set(p.Draws)
+	}
+}
 
 func (b *bar) end() {
 	b.once.Do(func() { close(b.stop) })

@@ -2,11 +2,14 @@ package main
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"io"
+	"strconv"
 	"strings"
 
 	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
 )
 
 // program holds what every command needs: the streams, the signals, and the
@@ -15,6 +18,7 @@ type program struct {
 	out, err io.Writer
 	signals  *watch
 	typed    []string // arguments, without the program's name
+	told     []string // notes on a decision that were said already
 }
 
 // run is the whole program: it runs the command that args name and returns
@@ -50,7 +54,7 @@ Exit codes:
 Options:
 {{.LocalFlags.FlagUsages | trimTrailingWhitespaces}}
 {{end}}{{if .HasExample}}
-Example:
+Example{{with .Annotations.after}}, after {{.}}{{end}}:
 {{.Example}}
 {{end}}`
 
@@ -77,13 +81,16 @@ the number of false selections.`,
 	root.SuggestionsMinimumDistance = 2
 	root.CompletionOptions.DisableDefaultCmd = true
 	root.SetFlagErrorFunc(func(c *cobra.Command, err error) error {
-		return misuse(c.CommandPath()+": "+err.Error(), c.CommandPath()+" --help lists the options")
+		return misuse(c.CommandPath()+": "+flagFault(err), c.CommandPath()+" --help lists the options")
 	})
 	root.SetHelpCommand(p.helpCommand())
 	root.AddCommand(p.demoCommand(), p.draftCommand(), p.planCommand(), p.runCommand(), p.judgeCommand(), p.statusCommand(),
 		p.inspectCommand(), p.budgetCommand(), p.fitCommand(), p.rowsCommand())
 	for _, c := range root.Commands() {
 		c.Flags().SortFlags = false
+		if strings.Contains(c.Example, " demo/") {
+			c.Annotations = map[string]string{"after": "holdfast demo"}
+		}
 		c.DisableFlagsInUseLine = true
 	}
 	return root
@@ -121,6 +128,25 @@ func unknownCommand(root *cobra.Command, word string) error {
 		hint = "nearest: holdfast " + strings.Join(near, ", holdfast ")
 	}
 	return misuse(fmt.Sprintf("holdfast: no command %q", word), hint)
+}
+
+// flagFault says what is wrong with an option, without the words of the
+// library that parses numbers.
+func flagFault(err error) string {
+	var e *pflag.InvalidValueError
+	if !errors.As(err, &e) {
+		return err.Error()
+	}
+	why := errors.Unwrap(err)
+	switch {
+	case errors.Is(err, strconv.ErrRange):
+		why = errors.New("is too large")
+	case e.GetFlag().Value.Type() == "int":
+		why = errors.New("is not a whole number")
+	default:
+		return fmt.Sprintf("--%s: %v", e.GetFlag().Name, why)
+	}
+	return fmt.Sprintf("--%s: %q %v", e.GetFlag().Name, e.GetValue(), why)
 }
 
 // exactly returns a check that n arguments named in words are there.

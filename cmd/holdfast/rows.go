@@ -20,7 +20,7 @@ func (p *program) rowsCommand() *cobra.Command {
 		Long: `rows prints which rows of the table a draw holds and how often: their positions
 in the table as read, from 0. Draws are numbered from 0; draws 2k and 2k+1 are
 the two halves of pair k.`,
-		Example: "  holdfast demo demo\n  holdfast rows demo/study.toml --draw 0",
+		Example: "  holdfast rows demo/study.toml --draw 0",
 		Args:    exactly("STUDY"),
 	}
 	f := c.Flags()

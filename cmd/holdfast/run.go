@@ -6,7 +6,6 @@ import (
 	"fmt"
 	"io"
 	"os"
-	"strconv"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -44,7 +43,7 @@ The same command goes on with a run that was interrupted or killed: it makes
 what is missing, and the result is the same to the last byte. A larger number of
 draws extends a run. With --part it makes the draws of that part only, for one
 of several machines; holdfast judge then takes them together.`,
-		Example: "  holdfast demo demo\n  holdfast run demo/study.toml --out demo/again.run",
+		Example: "  holdfast run demo/study.toml --out demo/again.run",
 		Args:    exactly("STUDY"),
 	}
 	f := c.Flags()
@@ -61,7 +60,7 @@ of several machines; holdfast judge then takes them together.`,
 	c.RunE = func(c *cobra.Command, args []string) (err error) {
 		q.path = args[0]
 		if c.Flags().Changed("draws") {
-			q.sets = append(q.sets, "draws.number="+strconv.Itoa(draws))
+			q.setDraws(draws)
 		}
 		if c.Flags().Changed("workers") && o.workers < 1 {
 			return misuse(fmt.Sprintf("holdfast run: --workers %d: must be at least 1", o.workers), "leave it out to use what the machine allows")
@@ -119,6 +118,9 @@ func newRunner(p *program, o runOptions) *runner {
 
 // do is the run from start to end.
 func (r *runner) do(ctx context.Context, q question) (err error) {
+	if err := q.check(); err != nil {
+		return err
+	}
 	if r.dir, err = openExisting(r.o.out); err != nil {
 		return err
 	}
@@ -340,7 +342,7 @@ func (r *runner) tellPlan(there, missing int) {
 		fmt.Fprintf(r.talk, "decided before the first draw: %s\nthe study now says: %s\n", inWords(*record), inWords(d))
 	}
 	for _, n := range d.Notes {
-		fmt.Fprintln(r.talk, oneLine(n))
+		r.p.note(n)
 	}
 }
 
@@ -348,7 +350,7 @@ func (r *runner) tellPlan(there, missing int) {
 func inWords(d selection.Decision) string {
 	luck := "no bound on false selections"
 	if d.FalseSelections != nil {
-		luck = fmt.Sprintf("expected by luck at most %.4g (%s)", *d.FalseSelections, d.Bound.Label())
+		luck = fmt.Sprintf("expected by luck at most %s (%s)", selection.AtMost(*d.FalseSelections), d.Bound.Label())
 	}
 	return fmt.Sprintf("threshold %.4g, selected %d, region %s, %s", d.Threshold, d.Selected, d.Region, luck)
 }

@@ -50,10 +50,20 @@ func (p *program) show(j *judged, v view) error {
 	if j.explored {
 		fmt.Fprintln(p.err, "warning: explored after seeing the result: the decision of record is "+inWords(*j.run.Decision))
 	}
+	said := slices.Clone(p.told)
 	for _, w := range slices.Concat(j.judgement.Warnings, j.judgement.Decision.Notes) {
-		fmt.Fprintln(p.err, "warning: "+oneLine(w))
+		if !slices.Contains(said, w) {
+			said = append(said, w)
+			fmt.Fprintln(p.err, "warning: "+oneLine(w))
+		}
 	}
 	return nil
+}
+
+// note says a note on a decision that the judgement need not repeat on stderr.
+func (p *program) note(text string) {
+	fmt.Fprintln(p.err, oneLine(text))
+	p.told = append(p.told, text)
 }
 
 // resultFile is a file of the run directory that a judgement writes.

@@ -2,8 +2,11 @@ package main
 
 import (
 	"context"
+	"errors"
+	"io/fs"
 	"os"
 	"path/filepath"
+	"strconv"
 	"strings"
 
 	"github.com/spf13/pflag"
@@ -18,6 +21,8 @@ type question struct {
 	path    string
 	outcome string
 	sets    []string
+
+	drawsTyped string // value of --draws, which stands in sets too; empty: none
 }
 
 // addFlags adds the flags that go with STUDY|TABLE.
@@ -51,9 +56,9 @@ func (q question) openStudy() (*asked, error) {
 		return nil, misuse("holdfast: --outcome goes with a table, and "+q.path+" is a study",
 			"--set outcome.column="+q.outcome+" changes the study's outcome")
 	}
-	s, err := study.Read(q.path, q.sets)
+	s, err := q.readStudy()
 	if err != nil {
-		return nil, wrong(err, "")
+		return nil, err
 	}
 	if err := s.CheckReady(); err != nil {
 		return nil, wrong(err, "")
@@ -65,10 +70,50 @@ func (q question) openStudy() (*asked, error) {
 	return &asked{question: q, study: s, source: source}, nil
 }
 
+// readStudy reads the study file.
+func (q question) readStudy() (*study.Study, error) {
+	s, err := study.Read(q.path, q.sets)
+	if errors.Is(err, fs.ErrNotExist) {
+		return nil, misuse("holdfast: "+q.path+": there is no such file",
+			"holdfast draft TABLE --outcome COLUMN --out "+q.path+" writes a study for a table")
+	}
+	return s, q.asTyped(wrong(err, ""))
+}
+
+// asTyped names the option where a message names the --set that stands for it.
+func (q question) asTyped(err error) error {
+	var problems study.Problems
+	if !errors.As(err, &problems) || q.drawsTyped == "" {
+		return err
+	}
+	for _, p := range problems {
+		if p.Set == q.drawsSet() {
+			return misuse("holdfast: --draws "+q.drawsTyped+": "+p.Why, "")
+		}
+	}
+	return err
+}
+
+// setDraws takes --draws N in place of the study's number.
+func (q *question) setDraws(n int) {
+	q.drawsTyped = strconv.Itoa(n)
+	q.sets = append(q.sets, q.drawsSet())
+}
+
+func (q question) drawsSet() string { return "draws.number=" + q.drawsTyped }
+
+// check refuses early what needs no file to be read.
+func (q question) check() error {
+	if isStudy(q.path) || q.outcome != "" {
+		return nil
+	}
+	return misuse("holdfast: "+q.path+" is a table, so the outcome's column must be said",
+		"add --outcome COLUMN, or give a study file (.toml)")
+}
+
 func (q question) openTable(ctx context.Context) (*asked, error) {
-	if q.outcome == "" {
-		return nil, misuse("holdfast: "+q.path+" is a table, so the outcome's column must be said",
-			"add --outcome COLUMN, or give a study file (.toml)")
+	if err := q.check(); err != nil {
+		return nil, err
 	}
 	text, source, err := q.draft(ctx, filepath.Dir(q.path))
 	if err != nil {
@@ -78,7 +123,7 @@ func (q question) openTable(ctx context.Context) (*asked, error) {
 	// have.
 	s, err := study.Parse(filepath.Join(filepath.Dir(q.path), q.name()+".toml"), text, q.sets)
 	if err != nil {
-		return nil, wrong(err, "")
+		return nil, q.asTyped(wrong(err, ""))
 	}
 	if err := s.CheckReady(); err != nil {
 		return nil, wrong(err, "")

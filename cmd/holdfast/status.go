@@ -20,7 +20,7 @@ func (p *program) statusCommand() *cobra.Command {
 		Long: `status reads every finished block of a run directory and says how many draws are
 whole, what each part does and on which machine, how long the rest will take,
 and what went wrong last. It changes nothing.`,
-		Example: "  holdfast demo demo\n  holdfast status demo/study.run",
+		Example: "  holdfast status demo/study.run",
 		Args:    exactly("RUN"),
 	}
 	c.Flags().BoolVar(&asJSON, "json", false, "print JSON")

@@ -43,9 +43,14 @@ func readWeights(path string) ([]float64, error) {
 	}
 	defer f.Close()
 	r := csv.NewReader(f)
-	r.FieldsPerRecord = 1
-	if _, err := r.Read(); err != nil {
-		return nil, fmt.Errorf("holdfast: %s: no header line: %w", path, err)
+	r.FieldsPerRecord = -1
+	switch head, err := r.Read(); {
+	case errors.Is(err, io.EOF):
+		return nil, fmt.Errorf("holdfast: %s: the file is empty: case weights are one column under a header", path)
+	case err != nil:
+		return nil, fmt.Errorf("holdfast: %s: %w", path, err)
+	case len(head) != 1:
+		return nil, fmt.Errorf("holdfast: %s: the header has %d columns: case weights are one column under a header", path, len(head))
 	}
 	var all []float64
 	for {
@@ -55,6 +60,10 @@ func readWeights(path string) ([]float64, error) {
 		}
 		if err != nil {
 			return nil, fmt.Errorf("holdfast: %s: %w", path, err)
+		}
+		if len(cells) != 1 {
+			line, _ := r.FieldPos(0)
+			return nil, fmt.Errorf("holdfast: %s:%d: %d columns: case weights are one column under a header", path, line, len(cells))
 		}
 		w, err := strconv.ParseFloat(strings.TrimSpace(cells[0]), 64)
 		if err != nil || !(w >= 0) || math.IsInf(w, 0) {

@@ -17,6 +17,8 @@ type Error struct {
 	Column string // column in question; empty if it is not about one
 	Why    string // what is wrong and what to do
 	Gaps   []Gaps // columns with missing, NaN or infinite values, worst first, if that is what is wrong
+	Rows   int    // with Gaps: rows in use
+	Lost   int    // with Gaps: rows that DropRows leaves out
 	Err    error  // underlying error, if any
 }
 

@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math/bits"
+	"slices"
 	"sort"
 	"strconv"
 	"strings"
@@ -113,7 +114,7 @@ func (l *loading) applyPolicy(context.Context) error {
 	case FillMean:
 		return l.fillMean(worst)
 	}
-	return &Error{Path: l.path(), Why: l.refusal(worst), Gaps: worst}
+	return l.gapFault(worst, l.refusal(worst))
 }
 
 // worstFirst returns the columns with gaps, most gaps first, table order
@@ -131,21 +132,20 @@ func (l *loading) worstFirst() []Gaps {
 
 // dropRows takes the rows with gaps out of use.
 func (l *loading) dropRows(worst []Gaps) error {
-	before := l.n - l.zero
-	lost := 0
-	for _, w := range l.holed {
-		lost += bits.OnesCount64(w)
-	}
+	before, lost := l.n-l.zero, l.lost()
 	share := 100 * float64(lost) / float64(before)
+	fill := ", use missing = \"fill-mean\""
+	if slices.ContainsFunc(worst, func(g Gaps) bool { return g.Infinite > 0 }) {
+		fill = "" // infinite values are never filled
+	}
 	switch {
 	case before-lost < 2:
-		return &Error{Path: l.path(), Gaps: worst, Why: fmt.Sprintf(
-			"missing = \"drop-rows\" keeps %d of %d rows: leave out the columns with the most gaps (%s), or use missing = \"fill-mean\"",
-			before-lost, before, gapList(worst))}
+		return l.gapFault(worst, fmt.Sprintf("missing = \"drop-rows\" keeps %d of %d rows: leave out the columns with the most gaps (%s)%s",
+			before-lost, before, gapList(worst), fill))
 	case lost*10 > before && !l.req.AcceptLoss:
-		return &Error{Path: l.path(), Gaps: worst, Why: fmt.Sprintf(
-			"missing = \"drop-rows\" leaves out %d of %d rows (%.1f %%), more than a tenth: leave out the columns with the most gaps (%s), use missing = \"fill-mean\", or confirm with [table] accept_loss = true",
-			lost, before, share, gapList(worst))}
+		return l.gapFault(worst, fmt.Sprintf(
+			"missing = \"drop-rows\" leaves out %d of %d rows (%.1f %%), more than a tenth: leave out the columns with the most gaps (%s)%s, or confirm with [table] accept_loss = true",
+			lost, before, share, gapList(worst), fill))
 	}
 	for i, w := range l.holed {
 		if l.used == nil {
@@ -156,6 +156,20 @@ func (l *loading) dropRows(worst []Gaps) error {
 	l.data.Notes = append(l.data.Notes, fmt.Sprintf(
 		"drop-rows left out %d of %d rows (%.1f %%) because of gaps in %s: %s", lost, before, share, plural(int64(len(worst)), "column"), gapList(worst)))
 	return nil
+}
+
+// lost is the number of rows with a gap.
+func (l *loading) lost() int {
+	lost := 0
+	for _, w := range l.holed {
+		lost += bits.OnesCount64(w)
+	}
+	return lost
+}
+
+// gapFault is an error about gaps, with what a caller needs to advise.
+func (l *loading) gapFault(gaps []Gaps, why string) error {
+	return &Error{Path: l.path(), Why: why, Gaps: gaps, Rows: l.n - l.zero, Lost: l.lost()}
 }
 
 // fillMean keeps the gaps, except infinite values.
@@ -170,8 +184,8 @@ func (l *loading) fillMean(worst []Gaps) error {
 	}
 	if len(infinite) > 0 {
 		sort.SliceStable(infinite, func(a, b int) bool { return infinite[a].Infinite > infinite[b].Infinite })
-		return &Error{Path: l.path(), Gaps: infinite, Why: fmt.Sprintf(
-			"infinite values are never filled: %s; correct them, leave these columns out, or use missing = \"drop-rows\"", gapList(infinite))}
+		return l.gapFault(infinite, fmt.Sprintf(
+			"infinite values are never filled: %s; correct them, leave these columns out, or use missing = \"drop-rows\"", gapList(infinite)))
 	}
 	l.data.Missing = worst
 	l.data.Notes = append(l.data.Notes, fmt.Sprintf("fill-mean: %s in %s take%s the mean of the draw",
@@ -182,11 +196,7 @@ func (l *loading) fillMean(worst []Gaps) error {
 // refusal is the text of the error under Refuse: which columns, and what each
 // way out would keep.
 func (l *loading) refusal(worst []Gaps) string {
-	rows := l.n - l.zero
-	lost := 0
-	for _, w := range l.holed {
-		lost += bits.OnesCount64(w)
-	}
+	rows, lost := l.n-l.zero, l.lost()
 	var b strings.Builder
 	fmt.Fprintf(&b, "%s missing, NaN or infinite values: %s; ", plural(int64(len(worst)), "column has", "columns have"), gapList(worst))
 	empty := 0

@@ -54,7 +54,7 @@ const DistinctLimit = 1000
 
 // Thresholds at which a candidate is suspected to be the outcome itself.
 const (
-	leakCorrelation = 0.98
+	LeakCorrelation = 0.98
 	leakAUC         = 0.95
 )
 

@@ -202,7 +202,7 @@ func (sc *scan) compare(c *ColumnSummary, v, scratch []float64) {
 	if sc.target.twofold {
 		c.AUC = sc.target.auc(v, scratch)
 	}
-	c.Leak = math.Abs(c.Correlation) >= leakCorrelation || c.AUC > leakAUC || c.AUC < 1-leakAUC
+	c.Leak = math.Abs(c.Correlation) >= LeakCorrelation || c.AUC > leakAUC || c.AUC < 1-leakAUC
 }
 
 // correlation is Pearson's, over the rows in which both are finite.
