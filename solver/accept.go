@@ -11,13 +11,10 @@ import (
 // attempts bounds the rounds of settling a support at the border.
 const attempts = 50
 
-// chosen is a selected candidate as recorded: where the coefficient stands in
-// the record, and its share of it where twins split it.
+// chosen is a selected candidate as recorded.
 type chosen struct {
 	unit  int32
-	place int
-	share float64 // sign relative to the record's member, over the number of twins
-	enter float64 // sign of the coefficient
+	place int // in the record
 }
 
 // acceptStep turns the working set's support at step cur into a record, if all
@@ -26,114 +23,112 @@ type chosen struct {
 func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 	lambda := f.lambda(f.cur)
 	support = slices.Clone(support)
-	redone := false
 	for range attempts {
-		f.canonical(support)
 		r, err := f.finish(f.rec, support, lambda)
 		if err != nil {
 			return nil, err
 		}
 		if weak := r.weak(f); len(weak) > 0 {
-			redone = true
 			f.dropResidual(r.u)
 			support = slices.DeleteFunc(support, func(c choice) bool { return slices.Contains(weak, c.place) })
 			continue
 		}
-		v := f.judge(r)
+		v, err := f.judge(r)
+		if err != nil {
+			return nil, err
+		}
 		if len(v.fresh) > 0 {
 			f.dropResidual(r.u)
 			return v.fresh, nil
 		}
-		redone = redone || v.border
-		if v.moved {
-			f.dropResidual(r.u)
-			continue
-		}
 		if v.violator != nil {
-			redone = true
 			f.dropResidual(r.u)
 			support = append(support, *v.violator)
 			continue
 		}
-		if err := r.check(f); err != nil {
-			return nil, err
-		}
-		f.take(r, v.twins, redone)
-		return nil, nil
+		return nil, f.conclude(r, v.near)
 	}
 	return nil, errors.New("candidates on the border could not be settled")
 }
 
-// canonical puts the lowest of coinciding units in a member's stead, so that
-// it does not matter which of them the working set met first.
-func (f *fitting) canonical(support []choice) {
-	w := &f.work
-	for k, c := range support {
-		if t := w.twin[c.place]; t != c.place {
-			if w.h.row[c.place][t] < 0 {
-				support[k].sign = -c.sign
+// conclude takes a record that no candidate violates: as it is, or with the
+// coefficients shared out where those at the border are linearly dependent.
+func (f *fitting) conclude(r *record, near []choice) error {
+	shared := false
+	if len(near) > 0 {
+		s, err := f.share(r, near)
+		if err != nil {
+			return err
+		}
+		if s != nil {
+			for _, i := range r.members {
+				near = append(near, choice{place: i})
 			}
-			support[k].place = t
+			f.dropResidual(r.u)
+			r, shared = s, true
+		}
+		r.cert.violation = max(r.cert.violation, f.excess(r, near))
+	}
+	if err := r.check(f); err != nil {
+		return err
+	}
+	f.take(r, shared, len(near) > 0 && !shared)
+	return nil
+}
+
+// excess is how far the largest gauge among places outside a record lies above
+// 1.
+func (f *fitting) excess(r *record, places []choice) float64 {
+	most := 0.0
+	for _, c := range places {
+		if u := f.work.units[c.place]; !slices.Contains(r.members, c.place) && !f.m.penalty.always(u) {
+			most = max(most, f.m.penalty.gauge(u, f.gradient(u, r.u), r.lambda)-1)
 		}
 	}
+	return most
 }
 
 // verdict is what the candidates outside a record's support say of it.
 type verdict struct {
-	fresh    []int32 // violators to be brought into the working set
-	violator *choice // the lowest violator that is in it already
-	moved    bool    // a lower twin of a member was found: canonical must run again
-	border   bool    // a candidate stands on the border
-	twins    [][2]int
+	fresh    []int32  // violators to be brought into the working set
+	violator *choice  // the lowest violator that is in it already
+	near     []choice // candidates on the border, that may stay out
 }
 
 // judge checks every candidate outside the support, by a proven margin or by a
 // record number.
-func (f *fitting) judge(r *record) verdict {
+func (f *fitting) judge(r *record) (verdict, error) {
 	var v verdict
 	outside := f.suspects(r)
 	known := len(f.work.units)
 	f.work.add(f, f.newcomers(outside))
 	f.qp.grow(len(f.work.units))
 	for _, c := range outside {
-		f.judgeOne(r, c, known, &v)
+		if err := f.judgeOne(r, c, known, &v); err != nil {
+			return v, err
+		}
 	}
-	return v
+	return v, nil
 }
 
-func (f *fitting) judgeOne(r *record, c int32, known int, v *verdict) {
+func (f *fitting) judgeOne(r *record, c int32, known int, v *verdict) error {
 	place := int(f.work.place[c])
 	g := f.gradient(c, r.u)
 	gauge := f.m.penalty.gauge(c, g, r.lambda)
-	if gauge < 1-border {
-		return
+	if blur := f.blur(r, place); blur > unresolved && gauge >= 1-blur {
+		return errors.New(f.m.name(c) + ": not resolvable in these units")
 	}
-	if k := f.twinMember(r, place); k >= 0 {
-		if f.work.units[place] < f.work.units[r.members[k]] {
-			v.moved = true
-		}
-		v.twins = append(v.twins, [2]int{k, place})
-		return
-	}
-	if isOut(gauge) {
-		v.border = true
-		return
-	}
-	if place >= known {
+	side := choice{place, math.Copysign(1, g)}
+	switch {
+	case gauge < 1-border:
+	case isOut(gauge):
+		v.near = append(v.near, side)
+	case place >= known:
 		v.fresh = append(v.fresh, c)
-	} else if v.violator == nil {
-		v.violator = &choice{place, math.Copysign(1, g)}
+	case v.violator == nil:
+		v.violator = &side
 	}
-}
-
-// twinMember returns the member that a unit coincides with in this draw, or -1.
-func (f *fitting) twinMember(r *record, place int) int {
-	for k, i := range r.members {
-		if r.sign[k] != 0 && f.work.twin[i] == f.work.twin[place] {
-			return k
-		}
-	}
-	return -1
+	return nil
 }
 
 // suspects lists the candidates outside a record that the screening numbers do
@@ -141,33 +136,77 @@ func (f *fitting) twinMember(r *record, place int) int {
 // record's residual from theirs, then by the gradient itself.
 func (f *fitting) suspects(r *record) []int32 {
 	least := f.least(r.lambda, r.u)
-	a := f.between(r)
-	e := f.distanceFrom(r.u, a)
-	first, endD := f.snaps.first, f.distance[1]
+	within := f.within(r)
 	f.lane = f.d.lane(f.lane, r.u)
 	sum := kernel.Sum(f.lane)
 	f.mark(r, true)
 	defer f.mark(r, false)
 	var out []int32
-	for c, v := range f.end.value {
-		if f.inverse[c] == 0 || f.inside[c] {
-			continue
-		}
-		norm := f.normOf(c)
-		value, slack := float64((1-a)*v), float64(math.Abs(1-a)*reach(first, f.end.ref[c], endD, norm))+float64(norm*e)
-		if a != 0 {
-			value += float64(a * f.start0.value[c])
-			slack += float64(math.Abs(a) * reach(first, f.start0.ref[c], f.distance[0], norm))
-		}
-		if math.Abs(value)+slack < least {
+	for c := range f.end.value {
+		if f.inverse[c] == 0 || f.inside[c] || within(int32(c)) < least {
 			continue
 		}
 		if math.Abs(f.screened(int32(c), sum)) >= least {
 			out = append(out, int32(c))
 		}
 	}
+	return f.addCoarse(r, out, within)
+}
+
+// within returns a function that gives an upper limit of the size of a
+// candidate's gradient at a record.
+func (f *fitting) within(r *record) func(c int32) float64 {
+	a := f.between(r)
+	e := f.distanceFrom(r.u, a)
+	end, start := &f.toEnd, &f.toStart
+	end.from(&f.snaps, f.endU, f.d.total)
+	start.from(&f.snaps, f.startU, f.d.total)
+	return func(c int32) float64 {
+		norm := f.normOf(int(c))
+		value, slack := float64((1-a)*f.end.value[c]), float64(math.Abs(1-a)*end.reach(f.end.ref[c]))
+		if a != 0 {
+			value += float64(a * f.start0.value[c])
+			slack += float64(math.Abs(a) * start.reach(f.start0.ref[c]))
+		}
+		return math.Abs(value) + float64(norm*(slack+e))
+	}
+}
+
+// coarse is a candidate whose values in the draw lie far from the centre of
+// the table for their spread, so that its gradient is known less well than
+// screening takes for granted.
+type coarse struct {
+	unit int32
+	size float64 // root mean square about the centre, in the penalty's units
+}
+
+// addCoarse adds the coarse candidates that the rounding of their gradient does
+// not let be excluded.
+func (f *fitting) addCoarse(r *record, out []int32, within func(int32) float64) []int32 {
+	if len(f.coarse) == 0 {
+		return out
+	}
+	spread := f.spread(r.u)
+	for _, c := range f.coarse {
+		if !f.inside[c.unit] && within(c.unit) >= r.lambda-float64(rounding*spread*c.size) && !slices.Contains(out, c.unit) {
+			out = append(out, c.unit)
+		}
+	}
+	slices.Sort(out)
 	return out
 }
+
+// blur is how far rounding may move a gauge (DESIGN 4: 8 eps sum|x u| over
+// N lambda v; sum|x u| is at most N times the spread of u times the root mean
+// square of x).
+func (f *fitting) blur(r *record, place int) float64 {
+	w := &f.work
+	size := math.Sqrt(float64(w.mean[place]*w.mean[place])/float64(w.scale[place]*w.scale[place]) + w.h.row[place][place])
+	return rounding * f.spread(r.u) * size / f.m.penalty.threshold(w.units[place], r.lambda)
+}
+
+// spread is the root mean square of a residual.
+func (f *fitting) spread(u []float64) float64 { return math.Sqrt(kernel.Dot(u, u) / f.d.total) }
 
 // mark notes in f.inside which candidates a record holds.
 func (f *fitting) mark(r *record, in bool) {
@@ -196,19 +235,16 @@ func (f *fitting) between(r *record) float64 {
 	return num / den
 }
 
-// distanceFrom returns the distance of u from the mixture, and leaves the
-// distances of the snapshots from the window's ends in f.distance.
+// distanceFrom returns the distance of u from the mixture of the window's ends.
 func (f *fitting) distanceFrom(u []float64, a float64) float64 {
-	f.distance[1] = f.snaps.distances(f.distance[1], f.endU, f.d.total)
 	if a == 0 {
-		return math.Sqrt(kernel.SquaredDistance(u, f.endU)/f.d.total) * (1 + 1e-9)
+		return distance(u, f.endU, f.d.total)
 	}
-	f.distance[0] = f.snaps.distances(f.distance[0], f.startU, f.d.total)
 	f.fit = resize(f.fit, len(u))
 	for k, e := range f.endU {
 		f.fit[k] = float64(a*f.startU[k]) + float64((1-a)*e)
 	}
-	return math.Sqrt(kernel.SquaredDistance(u, f.fit)/f.d.total) * (1 + 1e-9)
+	return distance(u, f.fit, f.d.total)
 }
 
 // screened is the screening gradient of a candidate at the residual in f.lane.
@@ -221,36 +257,26 @@ func (f *fitting) screened(c int32, sum float64) float64 {
 }
 
 // take makes a record the certified step, and hands it on.
-func (f *fitting) take(r *record, twins [][2]int, redone bool) {
+func (f *fitting) take(r *record, shared, settled bool) {
 	f.dropResidual(f.rec.u)
 	f.rec = r
-	list := f.chosen(r, twins)
-	if f.path != nil && redone {
+	list := f.chosen(r)
+	if f.path != nil && settled {
 		f.path.Borderline++
 	}
-	f.accept(r, list)
+	f.accept(r, list, shared)
 	for _, c := range list {
 		f.entered[c.unit] = true
 	}
 }
 
-// chosen lists the selected candidates in table order. Twins share the
-// coefficient of the one that stands for them in equal parts.
-func (f *fitting) chosen(r *record, twins [][2]int) []chosen {
-	count := make([]int, len(r.members))
-	for _, t := range twins {
-		count[t[0]]++
-	}
+// chosen lists the selected candidates in table order.
+func (f *fitting) chosen(r *record) []chosen {
 	var list []chosen
 	for k, i := range r.members {
 		if r.sign[k] != 0 {
-			list = append(list, chosen{f.work.units[i], k, 1 / float64(1+count[k]), r.sign[k]})
+			list = append(list, chosen{f.work.units[i], k})
 		}
-	}
-	for _, t := range twins {
-		k := t[0]
-		sign := math.Copysign(1, f.work.h.row[r.members[k]][t[1]])
-		list = append(list, chosen{f.work.units[t[1]], k, sign / float64(1+count[k]), sign * r.sign[k]})
 	}
 	slices.SortFunc(list, func(a, b chosen) int { return int(a.unit) - int(b.unit) })
 	return list

@@ -15,9 +15,10 @@ const (
 	// batch is how many members may enter in one iteration. A batch may step
 	// in a wrong direction; single adds follow as soon as one does.
 	batch = 16
-	// maxIterations is far above any count met (a few hundred for supports
-	// of 250): it turns an endless loop into a stated failure.
-	maxIterations = 20000
+	// iterations per member of the working set, and at least; far above any
+	// count met, they turn an endless loop into a stated failure.
+	iterations      = 20
+	leastIterations = 2000
 )
 
 // activeSet solves the penalised quadratic problem exactly on a working set:
@@ -32,6 +33,7 @@ type activeSet struct {
 	g       []float64 // c - H beta, per place
 	in      []bool    // per place
 	lambda  float64   // for which chol's diagonal was made
+	out     int       // place that the last exchange took out; -1: none
 	b, row  []float64 // scratch
 }
 
@@ -64,7 +66,7 @@ func (a *activeSet) save(s *state) {
 	}
 }
 
-func (a *activeSet) restore(s *state, w *working, p *penalty, lambda float64) error {
+func (a *activeSet) restore(s *state, w *working, p *penalty, lambda float64) {
 	for _, i := range a.members {
 		a.beta[i], a.in[i] = 0, false
 	}
@@ -72,19 +74,25 @@ func (a *activeSet) restore(s *state, w *working, p *penalty, lambda float64) er
 	for k, i := range a.members {
 		a.beta[i], a.in[i] = s.beta[k], true
 	}
-	return a.refactor(w, p, lambda)
+	a.refactor(w, p, lambda)
 }
 
-// refactor rebuilds the factor of the members, in their order.
-func (a *activeSet) refactor(w *working, p *penalty, lambda float64) error {
+// refactor rebuilds the factor of the members, in their order. A member that
+// depends on earlier ones is dropped: it is a start, not a solution, and
+// members that share a fit are dependent.
+func (a *activeSet) refactor(w *working, p *penalty, lambda float64) {
+	members, sign := a.members, a.sign
 	a.chol.truncate(0)
-	for k, i := range a.members {
-		if !a.chol.push(a.products(w, i, k), w.h.row[i][i]+p.ridge(w.units[i], lambda), dependent/100) {
-			return fmt.Errorf("the support became linearly dependent")
+	a.members, a.sign = a.members[:0], a.sign[:0]
+	for k, i := range members {
+		s := sign[k]
+		if a.chol.push(a.products(w, i, len(a.members)), w.h.row[i][i]+p.ridge(w.units[i], lambda), dependent) {
+			a.members, a.sign = append(a.members, i), append(a.sign, s)
+		} else {
+			a.beta[i], a.in[i] = 0, false
 		}
 	}
 	a.lambda = lambda
-	return nil
 }
 
 // products returns column i's products with the first k members.
@@ -100,12 +108,12 @@ func (a *activeSet) products(w *working, i, k int) []float64 {
 func (a *activeSet) solve(w *working, p *penalty, lambda float64) error {
 	a.grow(len(w.units))
 	if p.quadratic() && a.lambda != lambda {
-		if err := a.refactor(w, p, lambda); err != nil {
-			return err
-		}
+		a.refactor(w, p, lambda)
 	}
 	single := false
-	for range maxIterations {
+	a.out = -1
+	most := leastIterations + iterations*len(w.units)
+	for range most {
 		dropped, stuck := a.step(w, p, lambda)
 		if stuck {
 			single = true
@@ -118,7 +126,7 @@ func (a *activeSet) solve(w *working, p *penalty, lambda float64) error {
 			return nil
 		}
 	}
-	return fmt.Errorf("the active-set method made %d iterations", maxIterations)
+	return fmt.Errorf("the active-set method made %d iterations", most)
 }
 
 // step moves the members towards their joint optimum, as far as no sign
@@ -182,7 +190,7 @@ func (a *activeSet) enter(w *working, p *penalty, lambda float64, single bool) b
 	moved := false
 	for _, i := range worst {
 		if a.push(w, p, lambda, i, math.Copysign(1, a.g[i])) {
-			moved = true
+			moved, a.out = true, -1
 		} else if !moved {
 			return a.exchange(w, p, lambda, i)
 		}
@@ -228,8 +236,15 @@ func (a *activeSet) push(w *working, p *penalty, lambda float64, i int, sign flo
 
 // exchange brings in a column that depends linearly on the members: it moves
 // along the direction that leaves the fit as it is and lowers the penalty,
-// until a member reaches zero, and puts the column in that member's stead.
+// until a member reaches zero, and puts the column in that member's stead. It
+// reports false where that cannot lower the objective any more: where there is
+// no such member, or where the column was itself taken out by the exchange
+// before. What is left then is within rounding of the optimum, and the finish
+// decides.
 func (a *activeSet) exchange(w *working, p *penalty, lambda float64, i int) bool {
+	if i == a.out {
+		return false
+	}
 	sign := math.Copysign(1, a.g[i])
 	a.b = resize(a.b, len(a.members))
 	copy(a.b, a.products(w, i, len(a.members)))
@@ -249,10 +264,10 @@ func (a *activeSet) exchange(w *working, p *penalty, lambda float64, i int) bool
 	for k, j := range a.members {
 		a.beta[j] -= float64(length * sign * a.b[k])
 	}
+	a.out = a.members[hit]
 	a.drop(hit)
-	if !a.push(w, p, lambda, i, sign) {
-		return false
+	if a.push(w, p, lambda, i, sign) {
+		a.beta[i] = length * sign
 	}
-	a.beta[i] = length * sign
 	return true
 }

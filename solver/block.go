@@ -4,8 +4,6 @@ import (
 	"context"
 	"math"
 	"sync"
-
-	"holdfast/solver/kernel"
 )
 
 // blockBytes bounds the gathered columns of the draws that one worker fits
@@ -15,12 +13,7 @@ const blockBytes = 192 << 20
 // BlockLimit returns how many draws of the given number of rows one worker
 // should fit together: as many as one pass over a column serves, fewer where
 // their gathered columns would take much memory, at least a pair.
-func (m *Model) BlockLimit(drawRows int) int { return blockLimit(m.candidates(), drawRows) }
-
-func blockLimit(candidates, drawRows int) int {
-	gathered := 8 * max(drawRows, 1) * min(candidates, max(drawRows, 1), 100)
-	return max(2, min(kernel.MaxLanes, blockBytes/gathered))
-}
+func (m *Model) BlockLimit(drawRows int) int { return m.Shape(drawRows).BlockLimit() }
 
 // longWindow is the window on a long table.
 const longWindow = 8
@@ -43,12 +36,12 @@ func (m *Model) window() int {
 // samples. The draws share the passes over the table; each path depends on its
 // own sample only, to the bit. progress, which may be nil, is told of lattice
 // steps done. It is safe for concurrent use. A draw that cannot be certified
-// ends its path and says so in its Path; an error is returned only for a
-// cancelled context or a draw that cannot be fitted at all.
+// ends its path and says so in its Path, before its first step where it cannot
+// be fitted at all; an error is returned only for a cancelled context.
 func (m *Model) FitBlock(ctx context.Context, samples []*Sample, progress func(steps int)) ([]Path, error) {
 	m.seedFrom(ctx)
 	paths := make([]Path, len(samples))
-	fits := make([]*fitting, len(samples))
+	fits := make([]*fitting, 0, len(samples))
 	for k, s := range samples {
 		if err := ctx.Err(); err != nil {
 			return nil, err
@@ -56,10 +49,11 @@ func (m *Model) FitBlock(ctx context.Context, samples []*Sample, progress func(s
 		f := m.fitting()
 		defer m.release(f)
 		if err := f.start(m.weighted(s)); err != nil {
-			return nil, err
+			paths[k] = Path{First: m.last, Last: m.last - 1, Stop: StopUncertified, Why: err.Error()}
+			continue
 		}
 		f.record(&paths[k], progress)
-		fits[k] = f
+		fits = append(fits, f)
 	}
 	if err := m.lockstep(ctx, fits); err != nil {
 		return nil, err
@@ -116,8 +110,8 @@ func (f *fitting) record(p *Path, progress func(int)) {
 	}
 	*p = Path{First: first, Last: first - 1, Still: f.still}
 	f.path = p
-	f.accept = func(r *record, list []chosen) {
-		f.note(p, r, list)
+	f.accept = func(r *record, list []chosen, shared bool) {
+		f.note(p, r, list, shared)
 		if progress != nil {
 			progress(1)
 		}
@@ -126,12 +120,12 @@ func (f *fitting) record(p *Path, progress func(int)) {
 }
 
 // note appends a certified step to a path.
-func (f *fitting) note(p *Path, r *record, list []chosen) {
+func (f *fitting) note(p *Path, r *record, list []chosen, shared bool) {
 	step := f.cur
 	for _, c := range list {
 		if !f.entered[c.unit] {
-			p.Entries = append(p.Entries, Entry{Candidate: c.unit, Step: int32(step), Negative: c.enter < 0})
-			if math.Abs(c.share) < 1 {
+			p.Entries = append(p.Entries, Entry{Candidate: c.unit, Step: int32(step), Negative: r.sign[c.place] < 0})
+			if shared {
 				p.Twins++
 			}
 		}
@@ -147,7 +141,7 @@ func (f *fitting) note(p *Path, r *record, list []chosen) {
 
 // original is a coefficient in the column's own units.
 func (f *fitting) original(r *record, c chosen) float64 {
-	return r.beta[c.place] * c.share / f.work.scale[f.work.place[c.unit]]
+	return r.beta[c.place] / f.work.scale[r.members[c.place]]
 }
 
 // rest returns the intercept and the always-in coefficients in the columns'
@@ -162,7 +156,7 @@ func (f *fitting) rest(r *record, list []chosen) (intercept float64, always []fl
 	}
 	for k, i := range r.members {
 		if u := f.work.units[i]; f.m.penalty.always(u) {
-			b := r.beta[k] / f.work.scale[i]
+			b := (f.base[k] + r.beta[k]) / f.work.scale[i]
 			always[int(u)-f.m.candidates()] = b
 			subtract(u, b)
 		}

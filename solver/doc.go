@@ -40,8 +40,11 @@
 // A candidate is selected where its coefficient is not zero at a certified
 // optimum: the largest violation of the optimality conditions and the relative
 // duality gap are at most 1e-10. One margin (border) decides both sides of the
-// threshold. Candidates that coincide within a draw (|r| >= 1 - 1e-12) enter
-// together and share the coefficient in equal parts. A candidate that does not
+// threshold. Where the candidates at the border are linearly dependent within the
+// draw (columns that coincide there, indicators that add up) the optimum is not
+// unique: the one with the least sum of weight*b^2 is taken, so that candidates
+// that can stand in for each other enter together and share the fit, in equal
+// parts where they coincide (sharing). A candidate that does not
 // vary in a draw is never selected there. A step that cannot be certified ends
 // the path at the step before, and the Path says why.
 //

@@ -269,3 +269,202 @@ func TestCancelled(t *testing.T) {
 		t.Errorf("error %v after %d steps", err, steps)
 	}
 }
+
+// markedPairs is every pair of five marked rows: {1,2}+{3,4} = {1,3}+{2,4}, so
+// that many coefficients give the same fit.
+func markedPairs() Problem {
+	n := 40
+	var cols [][]float64
+	for a := range 5 {
+		for b := range a {
+			c := make([]float64, n)
+			c[a], c[b] = 1, 1
+			cols = append(cols, c)
+		}
+	}
+	_, y := invented(n, 1, 1)
+	for i := range 5 {
+		y[i] += 3
+	}
+	return problemOf(cols, y)
+}
+
+// TestWayDoesNotMatter: where the optimum is not unique, a single fit selects
+// what the path selects at the same lambda.
+func TestWayDoesNotMatter(t *testing.T) {
+	for name, p := range map[string]Problem{"pairs": markedPairs(), "rare": rareMarks(60, 90, ScaleDraw, func(v float64) float64 { return v })} {
+		m := mustModel(t, p)
+		n, _ := p.Design.Dims()
+		path := mustFit(t, m, []*Sample{AllRows(n)})[0]
+		if path.Twins == 0 {
+			t.Errorf("%s: the case does not occur", name)
+		}
+		for step := path.First; step <= path.Last; step += 7 {
+			fit, err := m.FitAt(context.Background(), AllRows(n), []float64{m.Lambda(step)})
+			if err != nil {
+				t.Fatal(err)
+			}
+			if fit[0].Selected != supportSize(path, step) {
+				t.Errorf("%s: step %d: path selects %d, single fit %d", name, step, supportSize(path, step), fit[0].Selected)
+			}
+			for _, c := range path.Coefs {
+				if int(c.Step) == step && math.Abs(fit[0].Coef[c.Candidate]-c.Value) > 1e-9 {
+					t.Errorf("%s: step %d: candidate %d is %g on the path, %g alone", name, step, c.Candidate, c.Value, fit[0].Coef[c.Candidate])
+				}
+			}
+		}
+	}
+}
+
+// TestLeastSquares: among the optima the one with the least sum of squares is
+// taken, which the elastic net comes to as mix goes to 1 (Zou & Hastie 2005,
+// section 2.2, for the strict convexity that makes it unique).
+func TestLeastSquares(t *testing.T) {
+	p := markedPairs()
+	lasso := mustModel(t, p)
+	p.Mix = 1 - 1e-7
+	net := mustModel(t, p)
+	at := []float64{lasso.LambdaMax() / 10}
+	a, err := lasso.FitAt(context.Background(), AllRows(40), at)
+	if err != nil {
+		t.Fatal(err)
+	}
+	b, err := net.FitAt(context.Background(), AllRows(40), at)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for c, v := range a[0].Coef {
+		if math.Abs(v-b[0].Coef[c]) > 1e-4 {
+			t.Errorf("candidate %d: %g, the elastic net's %g", c, v, b[0].Coef[c])
+		}
+	}
+}
+
+// TestSmallUnits: the elastic net's ridge is in the outcome's units; where it
+// is lost in rounding, coinciding columns share all the same.
+func TestSmallUnits(t *testing.T) {
+	for _, unit := range []float64{1, 1e-9, 1e-12} {
+		p := rareMarks(60, 90, ScaleDraw, func(v float64) float64 { return v * unit })
+		p.Mix, p.Ratio = 0.5, 0.9
+		for k, path := range mustFit(t, mustModel(t, p), halves(60, 3, 3)) {
+			if path.Stop == StopUncertified {
+				t.Errorf("outcome in units of %g: draw %d: %s", unit, k, path.Why)
+			}
+		}
+	}
+}
+
+// TestHopelessDraw: a draw whose always-in columns leave nothing ends its own
+// path, not the block.
+func TestHopelessDraw(t *testing.T) {
+	cols, y := invented(20, 20, 4)
+	p := problemOf(cols, y)
+	p.Always, p.Candidates = p.Candidates[:8], p.Candidates[8:]
+	few := make([]int32, 9)
+	for i := range few {
+		few[i] = int32(i)
+	}
+	paths := mustFit(t, mustModel(t, p), []*Sample{NewSample(20, few), AllRows(20)})
+	if paths[0].Stop != StopUncertified || !strings.Contains(paths[0].Why, "leave nothing") || len(paths[0].Entries) != 0 {
+		t.Errorf("the hopeless draw: %v %s", paths[0].Stop, paths[0].Why)
+	}
+	if paths[1].Stop != StopFloor {
+		t.Errorf("the other draw: %v %s", paths[1].Stop, paths[1].Why)
+	}
+}
+
+// TestLargeAlways: an always-in column a million times as large as the rest
+// does not drown it.
+func TestLargeAlways(t *testing.T) {
+	n := 60
+	cols, y := invented(n, 20, 5)
+	want := mustFit(t, mustModel(t, alwaysFirst(cols, y)), halves(n, 2, 1))
+	large := make([]float64, n)
+	for i := range y {
+		large[i] = y[i] + 1e6*cols[0][i]
+	}
+	for k, got := range mustFit(t, mustModel(t, alwaysFirst(cols, large)), halves(n, 2, 1)) {
+		for i := range got.Always {
+			got.Always[i] -= 1e6
+		}
+		if d := difference(want[k], got, 1e-7); d != "" {
+			t.Errorf("draw %d: other %s: %v %s", k, d, got.Stop, got.Why)
+		}
+	}
+}
+
+func alwaysFirst(cols [][]float64, y []float64) Problem {
+	p := problemOf(cols, y)
+	p.Always, p.Candidates = p.Candidates[:1], p.Candidates[1:]
+	return p
+}
+
+// TestFarCandidate: a candidate whose gradient cannot be resolved is not left
+// out in silence where it might belong in.
+func TestFarCandidate(t *testing.T) {
+	n := 400
+	cols, y := invented(n, 2, 6)
+	rows := make([]int32, n/2)
+	for i := range n {
+		if i < n/2 {
+			rows[i] = int32(i)
+		} else {
+			cols[1][i] += 1e10 // a clock that was set between the halves
+		}
+	}
+	p := problemOf(cols, y)
+	p.Relative = []float64{100, 1}
+	m := mustModel(t, p)
+	s := NewSample(n, rows)
+	f := m.fitting()
+	if err := f.start(s); err != nil {
+		t.Fatal(err)
+	}
+	f.work.add(f, []int32{1})
+	knot := math.Abs(f.gradient(1, f.rec.u))
+	fits, err := m.FitAt(context.Background(), s, []float64{knot * (1 - 1e-9), knot * (1 + 1e-9), 3 * knot})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for k, certified := range []bool{false, false, true} {
+		if fits[k].Certified != certified {
+			t.Errorf("at %g of the knot: certified %v %s", fits[k].Lambda/knot, fits[k].Certified, fits[k].Why)
+		}
+	}
+}
+
+// TestNotFinite: a cell that is not finite is named, not passed on.
+func TestNotFinite(t *testing.T) {
+	cols, y := invented(20, 4, 8)
+	cols[2][3] = math.NaN()
+	if _, err := NewModel(context.Background(), problemOf(cols, y)); err == nil || !strings.Contains(err.Error(), "x2") {
+		t.Errorf("error %v does not name the column", err)
+	}
+}
+
+// TestCopiesOfCopies: every copy is listed under a column that stays.
+func TestCopiesOfCopies(t *testing.T) {
+	n := 50
+	for seed := range uint64(30) {
+		noise, base := invented(n, 12, seed)
+		for j := range noise {
+			for i := range base {
+				noise[j][i] = base[i] + 1e-6*noise[j][i]
+			}
+		}
+		p := problemOf(noise, base)
+		e, err := Examine(context.Background(), p.Design, p.Candidates)
+		if err != nil {
+			t.Fatal(err)
+		}
+		gone := make(map[int32]bool)
+		for _, c := range e.Copies {
+			gone[c.Col] = true
+		}
+		for _, c := range e.Copies {
+			if gone[c.Of] {
+				t.Fatalf("seed %d: column %d is listed under %d, which is a copy itself", seed, c.Col, c.Of)
+			}
+		}
+	}
+}

@@ -19,6 +19,10 @@ type Examination struct {
 	Copies   []Copy  // design columns that equal an earlier one up to shift and scale, in the order asked
 }
 
+// coincide is how close to 1 a correlation over the table must be for two
+// columns to be the same predictor (DESIGN 4).
+const coincide = 1e-12
+
 // Copy says that column Col equals the earlier column Of up to shift and scale
 // (|r| >= 1 - 1e-12, missing in the same rows).
 type Copy struct{ Col, Of int32 }
@@ -146,6 +150,9 @@ func (e *examiner) copies() []Copy {
 	var out []Copy
 	for i := range e.marks {
 		if first, ok := of[i]; ok {
+			for next, more := of[first]; more; next, more = of[first] {
+				first = next
+			}
 			out = append(out, Copy{e.candidates[i], e.candidates[first]})
 		}
 	}

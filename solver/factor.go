@@ -6,9 +6,15 @@ import (
 	"holdfast/solver/kernel"
 )
 
-// dependent is the share of a column's own square that must remain after
-// projecting it on the support for the column to count as independent of it.
-const dependent = 1e-10
+const (
+	// dependent is the share of a column's own square that must remain after
+	// projecting it on others for it to count as independent of them. Rounding
+	// leaves about 1e-15 of a dependent one.
+	dependent = 1e-13
+	// breakdown is the share below which a factor of columns that passed that
+	// test, perhaps in another order, holds no digits any more.
+	breakdown = dependent / 100
+)
 
 // factor is a lower Cholesky factor held row by row.
 type factor struct {

@@ -20,6 +20,8 @@ const (
 	// unresolved is the share of the threshold that rounding of a gradient
 	// may amount to (DESIGN 4: "not resolvable in these units").
 	unresolved = 1e-8
+	// rounding of a sum of products, relative to the sum of their sizes.
+	rounding = 8 * 0x1p-52
 	// weakly is the size of a coefficient, relative to its threshold, below
 	// which its margin is computed in full.
 	weakly = 1e-3
@@ -102,6 +104,7 @@ func (r *record) order(f *fitting, prev *record, support []choice) (keep int) {
 // with lambda is factored anew.
 func (r *record) factorise(f *fitting, prev *record, keep int) error {
 	w, p := &f.work, f.m.penalty
+	keep = min(keep, prev.chol.size()) // a shared record has no factor
 	if p.quadratic() && prev.lambda != r.lambda {
 		keep = 0
 	}
@@ -112,7 +115,7 @@ func (r *record) factorise(f *fitting, prev *record, keep int) error {
 		for q, j := range r.members[:k] {
 			row[q] = w.h.row[i][j]
 		}
-		if !r.chol.push(row[:k], w.h.row[i][i]+p.ridge(w.units[i], r.lambda), dependent/100) {
+		if !r.chol.push(row[:k], w.h.row[i][i]+p.ridge(w.units[i], r.lambda), breakdown) {
 			return fmt.Errorf("the support became linearly dependent at %s", f.m.name(w.units[i]))
 		}
 	}
@@ -248,7 +251,11 @@ func (r *record) certify(f *fitting) {
 	c := 1 / most
 	gap := float64((1-c)*(1-c)*square) / (2 * n)
 	for k, i := range r.members {
-		if r.sign[k] == 0 || r.lambda == 0 {
+		if r.lambda == 0 {
+			continue
+		}
+		if r.sign[k] == 0 {
+			gap -= float64(c * r.beta[k] * r.grad[k])
 			continue
 		}
 		u := f.work.units[i]
@@ -274,20 +281,11 @@ func (r *record) check(f *fitting) error {
 }
 
 // resolvable checks that rounding of the members' gradients is small beside
-// their thresholds. sum |x u| / (N s) is at most the spread of the residual
-// times sqrt(mean^2 + sd^2) / s.
+// their thresholds.
 func (r *record) resolvable(f *fitting) error {
-	if r.lambda == 0 {
-		return nil
-	}
-	w, spread := &f.work, math.Sqrt(kernel.Dot(r.u, r.u)/f.d.total)
 	for k, i := range r.members {
-		if r.sign[k] == 0 {
-			continue
-		}
-		size := math.Sqrt(float64(w.mean[i]*w.mean[i])/float64(w.scale[i]*w.scale[i]) + w.h.row[i][i])
-		if 8*0x1p-52*spread*size > unresolved*f.m.penalty.threshold(w.units[i], r.lambda) {
-			return errors.New(f.m.name(w.units[i]) + ": not resolvable in these units")
+		if r.lambda > 0 && r.sign[k] != 0 && f.blur(r, i) > unresolved {
+			return errors.New(f.m.name(f.work.units[i]) + ": not resolvable in these units")
 		}
 	}
 	return nil

@@ -74,7 +74,7 @@ func (m *Model) FitPath(ctx context.Context, s *Sample) ([]Fit, error) {
 	var p Path
 	f.record(&p, nil)
 	var fits []Fit
-	f.accept = func(r *record, list []chosen) {
+	f.accept = func(r *record, list []chosen, _ bool) {
 		fits = append(fits, f.fitOf(r, list))
 	}
 	if err := m.lockstep(ctx, []*fitting{f}); err != nil {
@@ -101,7 +101,7 @@ func (m *Model) descend(ctx context.Context, s *Sample, lambda func(int) float64
 	var p Path
 	fits := make([]Fit, 0, last-first+1)
 	f.path = &p
-	f.accept = func(r *record, list []chosen) { fits = append(fits, f.fitOf(r, list)) }
+	f.accept = func(r *record, list []chosen, _ bool) { fits = append(fits, f.fitOf(r, list)) }
 	f.travel(lambda, first, last)
 	f.unlimited = true
 	defer func() { f.unlimited = false }()
@@ -156,7 +156,7 @@ func (m *Model) unpenalised(ctx context.Context, s *Sample) (Fit, error) {
 		return Fit{}, fmt.Errorf("solver: lambda 0 needs full column rank: %w: leave it out, or take a lambda above 0", err)
 	}
 	f.cur = 0
-	fit := f.fitOf(r, f.chosen(r, nil))
+	fit := f.fitOf(r, f.chosen(r))
 	if err := r.check(f); err != nil {
 		fit.Certified, fit.Why = false, err.Error()
 	}

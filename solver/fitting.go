@@ -47,18 +47,22 @@ type fitting struct {
 	failed   error      // why the working set could not be solved at step cur
 	stands   int        // the step whose solution qp holds
 
+	base      []float64 // coefficients of the always-in columns alone, per member of the null record
+	whole     float64   // sum of squares of the outcome before they were taken out
 	mostNorm  float64
 	unlimited bool // stop_after does not apply: single fits
 
-	entered  map[int32]bool
-	asked    bool // a request is out for the window
-	req      request
-	distance [2][]float64
-	lane     []float64
-	spareU   [][]float64 // residuals of dropped records
-	fit      []float64
-	accept   func(r *record, chosen []chosen)
-	path     *Path
+	entered map[int32]bool
+	asked   bool // a request is out for the window
+	req     request
+	toStart span
+	toEnd   span
+	coarse  []coarse
+	lane    []float64
+	spareU  [][]float64 // residuals of dropped records
+	fit     []float64
+	accept  func(r *record, chosen []chosen, shared bool)
+	path    *Path
 }
 
 // start makes the fitting ready for a draw: its rows, its always-in columns,
@@ -96,8 +100,7 @@ func (f *fitting) same() bool {
 
 // constant reports whether the always-in columns leave nothing to explain.
 func (f *fitting) constant() bool {
-	left, all := kernel.Dot(f.rec.u, f.rec.u), kernel.Dot(f.d.y, f.d.y)
-	return all == 0 || left <= 1e-24*all
+	return f.whole == 0 || kernel.Dot(f.rec.u, f.rec.u) <= 1e-24*f.whole
 }
 
 // startAlways fits the always-in columns. Those that depend on earlier ones
@@ -122,12 +125,25 @@ func (f *fitting) startAlways() error {
 		return err
 	}
 	null.solve(f)
+	f.deflate(null)
 	f.rec = null
 	if err := f.qp.solve(&f.work, f.m.penalty, 0); err != nil {
 		return err
 	}
 	f.qp.save(&f.before)
 	return nil
+}
+
+// deflate takes the always-in fit out of the outcome, so that a large part of
+// it does not drown the rest in its rounding; records hold what is added to it.
+func (f *fitting) deflate(null *record) {
+	f.whole = kernel.Dot(f.d.y, f.d.y)
+	f.base = append(f.base[:0], null.beta...)
+	clear(null.beta)
+	copy(f.d.y, null.u)
+	for i, z := range f.work.z {
+		f.work.c[i] = kernel.Dot(z, f.d.y) / f.d.total
+	}
 }
 
 // measure fills the screening state at the residual of the null record.
@@ -138,7 +154,7 @@ func (f *fitting) measure() {
 	if len(f.inside) != n {
 		f.inside = make([]bool, n)
 	}
-	f.still = nil
+	f.still, f.coarse = nil, f.coarse[:0]
 	f.norm = nil
 	if f.m.scale != nil || f.m.penalty.mix < 1 || f.m.p.Relative != nil {
 		f.norm = make([]float64, n)
@@ -183,6 +199,9 @@ func (f *fitting) measureOne(c int32, sum float64) {
 	f.inverse[c] = 1 / (f.m.scaleOf(c, sd) * f.m.penalty.mix * f.m.penalty.weight[c])
 	if f.norm != nil {
 		f.norm[c] = sd * f.inverse[c]
+	}
+	if math.Abs(mean) > farOff*sd {
+		f.coarse = append(f.coarse, coarse{c, math.Hypot(mean, sd) * f.inverse[c]})
 	}
 	f.end.value[c] = (sxy - float64(mean*sum)) * f.inverse[c] / f.d.total
 }
@@ -250,7 +269,7 @@ func (f *fitting) gradient(unit int32, u []float64) float64 {
 // least is the screening gradient that a candidate must stay below to be
 // excluded at lambda.
 func (f *fitting) least(lambda float64, u []float64) float64 {
-	spread := math.Sqrt(kernel.Dot(u, u) / f.d.total)
+	spread := f.spread(u)
 	return float64(lambda*(1-screenMargin)) - float64(screenRounding*spread*f.mostNorm)
 }
 
@@ -349,9 +368,7 @@ func (f *fitting) solveWindow() {
 	f.supports = f.supports[:0]
 	f.qp.grow(len(f.work.units))
 	p := f.m.penalty
-	if f.failed = f.goBack(); f.failed != nil {
-		return
-	}
+	f.goBack()
 	seen := make(map[int32]bool)
 	for k := f.cur; k <= f.to; k++ {
 		if err := f.qp.solve(&f.work, p, f.lambda(k)); err != nil {
@@ -374,16 +391,15 @@ func (f *fitting) solveWindow() {
 
 // goBack returns qp to the certified step before the window, unless it stands
 // there, or at the window's first step, already.
-func (f *fitting) goBack() error {
-	if f.stands == f.cur || f.stands == f.cur-1 {
-		return nil
+func (f *fitting) goBack() {
+	if f.stands != f.cur && f.stands != f.cur-1 {
+		f.qp.restore(&f.before, &f.work, f.m.penalty, f.lambda(f.cur))
 	}
-	return f.qp.restore(&f.before, &f.work, f.m.penalty, f.lambda(f.cur))
 }
 
 // resolve takes the working set down a window that was cut.
 func (f *fitting) resolve() {
-	f.failed = f.goBack()
+	f.goBack()
 	for k := f.cur; k <= f.to && f.failed == nil; k++ {
 		f.failed = f.qp.solve(&f.work, f.m.penalty, f.lambda(k))
 		f.stands = k

@@ -42,7 +42,7 @@ func mapCandidates(p Path, to []int32) Path {
 // columns coincide within draws.
 func TestColumnOrder(t *testing.T) {
 	n, p := 60, 90
-	for _, name := range []string{"lasso", "elastic net", "twins"} {
+	for _, name := range []string{"lasso", "elastic net", "twins", "rare marks", "near copies"} {
 		q := settings(n, p)[name]()
 		samples := halves(n, 4, 9)
 		want := mustFit(t, mustModel(t, q), samples)

@@ -22,6 +22,11 @@ const stillShare = 1e-10
 // about 1e-12); below it the two-pass record numbers are used.
 const cancelShare = 1e-4
 
+// farOff is how many standard deviations a column's mean in a draw may lie from
+// its centre before its gradient needs watching: rounding is then still 1e-12 of
+// the outcome's spread.
+const farOff = 1e3
+
 // Model is a Problem made ready: immutable, and safe for any number of
 // goroutines.
 type Model struct {
@@ -177,6 +182,11 @@ func (m *Model) measure(ctx context.Context) error {
 		m.scale = make([]float64, len(m.table))
 		for i := range m.scale {
 			m.scale[i] = 1
+		}
+	}
+	for u, v := range m.table {
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			return fmt.Errorf("solver: column %s: its variance is %v: a value is not finite, or too large to be squared", m.name(int32(u)), v)
 		}
 	}
 	for c := range m.p.Candidates {

@@ -49,7 +49,7 @@ type Path struct {
 	Still       []int32   // candidates that do not vary in the draw, ascending
 	Violation   float64   // largest certified violation over the steps
 	Gap         float64   // largest relative duality gap over the steps
-	Borderline  int       // steps redone because a candidate stood on the border
-	Twins       int       // entries that coincided with another candidate within the draw
+	Borderline  int       // steps at which a candidate stood on the border and stayed out
+	Twins       int       // entries at steps where linearly dependent candidates share the coefficients
 	Why         string    // for StopUncertified: what failed
 }

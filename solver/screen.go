@@ -19,9 +19,6 @@ const (
 // snapshotBytes bounds the score vectors that one draw keeps as references.
 const snapshotBytes = 64 << 20
 
-// noReference marks a candidate whose gradient must be computed.
-const noReference = int32(-1)
-
 // gradients holds one screening gradient per candidate, divided by scale, mix
 // and penalty weight so that it compares with lambda itself, and the snapshot
 // of the score vector that it belongs to.
@@ -74,23 +71,41 @@ func (s *snapshots) add(u []float64) int32 {
 	return s.first + int32(len(s.kept)) - 1
 }
 
-// distances returns, per kept snapshot, an upper limit of the distance to u,
-// in units of a standardised column's gradient: |g(u) - g(s)| is at most
-// ||u - s||/sqrt(N) (Cauchy-Schwarz).
-func (s *snapshots) distances(dst []float64, u []float64, total float64) []float64 {
-	dst = resize(dst, len(s.kept))
-	for i, v := range s.kept {
-		dst[i] = math.Sqrt(kernel.SquaredDistance(u, v)/total) * (1 + 1e-9)
-	}
-	return dst
+// distance is an upper limit of ||u - v||/sqrt(N): by Cauchy-Schwarz the
+// gradients of a standardised column at u and v differ by no more.
+func distance(u, v []float64, total float64) float64 {
+	return math.Sqrt(kernel.SquaredDistance(u, v)/total) * (1 + 1e-9)
 }
 
-// reach returns how far a candidate's gradient can be from its stored value.
-func reach(first, ref int32, distance []float64, norm float64) float64 {
-	if ref < first {
+// span measures how far snapshots lie from one score vector, each when it is
+// first asked for: many snapshots are referred to by no candidate any more.
+type span struct {
+	snaps    *snapshots
+	u        []float64
+	total    float64
+	distance []float64 // per kept snapshot; negative: not measured yet
+}
+
+// from points the span at a score vector.
+func (s *span) from(snaps *snapshots, u []float64, total float64) {
+	s.snaps, s.u, s.total = snaps, u, total
+	s.distance = resize(s.distance, len(snaps.kept))
+	for i := range s.distance {
+		s.distance[i] = -1
+	}
+}
+
+// reach returns how far the gradient of a standardised candidate can be from
+// the value that belongs to a snapshot.
+func (s *span) reach(ref int32) float64 {
+	i := ref - s.snaps.first
+	if i < 0 {
 		return math.Inf(1)
 	}
-	return norm * distance[ref-first]
+	if s.distance[i] < 0 {
+		s.distance[i] = distance(s.u, s.snaps.kept[i], s.total)
+	}
+	return s.distance[i]
 }
 
 // request asks for the candidates whose gradient at a score vector may reach
@@ -114,14 +129,14 @@ type screen interface {
 // as one product with up to sixteen lanes where most need it, else by the
 // rows of each draw.
 type productScreen struct {
-	m        *Model
-	need     []uint16 // per candidate: the requests that need it
-	distance []float64
-	lane     [][]float64 // per request: root*u
-	sum      []float64
-	rows     []float64 // all table rows x lanes, filled when first needed
-	filled   bool
-	out      []float64
+	m      *Model
+	need   []uint16 // per candidate: the requests that need it
+	span   span
+	lane   [][]float64 // per request: root*u
+	sum    []float64
+	rows   []float64 // all table rows x lanes, filled when first needed
+	filled bool
+	out    []float64
 }
 
 func (s *productScreen) answer(ctx context.Context, reqs []*request) error {
@@ -158,13 +173,13 @@ func (s *productScreen) mark(reqs []*request) {
 	}
 	for l, r := range reqs {
 		f := r.f
-		s.distance = f.snaps.distances(s.distance, r.u, f.d.total)
-		bit, first := uint16(1)<<l, f.snaps.first
+		s.span.from(&f.snaps, r.u, f.d.total)
+		bit := uint16(1) << l
 		for c, v := range f.end.value {
 			if f.inverse[c] == 0 {
 				continue
 			}
-			if !(math.Abs(v)+reach(first, f.end.ref[c], s.distance, f.normOf(c)) < r.least) {
+			if !(math.Abs(v)+float64(f.normOf(c)*s.span.reach(f.end.ref[c])) < r.least) {
 				s.need[c] |= bit
 			}
 		}

@@ -1,14 +1,8 @@
 package solver
 
 import (
-	"math"
-
 	"holdfast/solver/kernel"
 )
-
-// coincide is how close to 1 a correlation must be for two columns to be the
-// same predictor, over the table (copies) or within a draw (twins).
-const coincide = 1e-12
 
 // working is the set of units of one draw that have been looked at closely:
 // their gathered columns in scaled units, the Gram matrix among them and their
@@ -22,13 +16,12 @@ type working struct {
 	z     [][]float64 // root * (x - mean) / scale
 	h     symmetric   // z'z / N
 	c     []float64   // z'y / N
-	twin  []int       // lowest unit, as a place in the set, that this one coincides with
 	spare [][]float64 // column buffers of earlier draws
 }
 
 func (w *working) reset() {
 	w.spare = append(w.spare, w.z...)
-	w.units, w.scale, w.mean, w.z, w.c, w.twin = w.units[:0], w.scale[:0], w.mean[:0], w.z[:0], w.c[:0], w.twin[:0]
+	w.units, w.scale, w.mean, w.z, w.c = w.units[:0], w.scale[:0], w.mean[:0], w.z[:0], w.c[:0]
 	w.h.reset()
 	if w.place == nil {
 		w.place = make(map[int32]int32)
@@ -60,7 +53,6 @@ func (w *working) add(f *fitting, units []int32) {
 	f.m.family.addHessian(&f.d, w.z, from, &w.h)
 	for i := from; i < len(w.units); i++ {
 		w.c = append(w.c, kernel.Dot(w.z[i], f.d.y)/f.d.total)
-		w.twin = append(w.twin, w.findTwin(f, i))
 	}
 }
 
@@ -76,36 +68,6 @@ func (w *working) gather(f *fitting, unit int32) {
 	w.scale = append(w.scale, scale)
 	w.mean = append(w.mean, col.mean)
 	w.z = append(w.z, col.values)
-}
-
-// findTwin returns the member with the lowest unit among those that coincide
-// with member i, i itself included, and passes the finding on to the others.
-// Only the pure lasso needs it: with a quadratic part equal columns share the
-// coefficient by themselves.
-func (w *working) findTwin(f *fitting, i int) int {
-	pen, u := f.m.penalty, w.units[i]
-	if pen.quadratic() || pen.always(u) || w.h.row[i][i] == 0 {
-		return i
-	}
-	best := i
-	var class []int
-	for j := range i {
-		if pen.weight[w.units[j]] == pen.weight[u] && w.coincide(i, j) {
-			class = append(class, j)
-			if w.units[j] < w.units[best] {
-				best = j
-			}
-		}
-	}
-	for _, j := range class {
-		w.twin[j] = best
-	}
-	return best
-}
-
-func (w *working) coincide(i, j int) bool {
-	a, b, r := w.h.row[i][i], w.h.row[j][j], math.Abs(w.h.row[i][j])
-	return b > 0 && math.Abs(a-b) <= 1e-9*a && r >= (1-coincide)*math.Sqrt(a*b)
 }
 
 // fitted overwrites dst with the sum of beta[i]*z[members[i]], members in the

@@ -1,6 +1,10 @@
 package solver
 
-import "math"
+import (
+	"math"
+
+	"holdfast/solver/kernel"
+)
 
 // Shape is what the memory that fits take depends on.
 type Shape struct {
@@ -8,15 +12,16 @@ type Shape struct {
 	DrawRows   int // of a draw
 	Candidates int
 	Always     int
-	Steps      int // lattice steps of a complete path
-	StopAfter  int // distinct candidates that end a path; 0: none
+	Steps      int     // lattice steps of a complete path
+	StopAfter  int     // distinct candidates that end a path; 0: none
+	Mix        float64 // of the penalty; 0: 1, the lasso
 }
 
 // Shape returns that of the model's draws of so many rows.
 func (m *Model) Shape(drawRows int) Shape {
 	return Shape{
 		Rows: m.rows, DrawRows: drawRows, Candidates: m.candidates(), Always: len(m.p.Always),
-		Steps: m.last + 1, StopAfter: m.p.StopAfter,
+		Steps: m.last + 1, StopAfter: m.p.StopAfter, Mix: m.p.Mix,
 	}
 }
 
@@ -25,8 +30,20 @@ func Steps(ratio, floor float64) int {
 	return 1 + max(0, lattice{top: 1, ratio: ratio}.lastAbove(floor))
 }
 
-// BlockLimit is that of a model of this shape.
-func (s Shape) BlockLimit() int { return blockLimit(s.Candidates, s.DrawRows) }
+// BlockLimit is that of a model of this shape. A lasso that stops late holds
+// about a hundred columns at the usual floors; an elastic net may hold many
+// more than it has rows.
+func (s Shape) BlockLimit() int {
+	columns := min(s.Candidates, max(s.DrawRows, 1), 100)
+	bytes := int64(8 * max(s.DrawRows, 1) * columns)
+	if s.elasticNet() {
+		bytes = s.Workspace(1)
+	}
+	return int(max(2, min(kernel.MaxLanes, blockBytes/max(bytes, 1))))
+}
+
+// elasticNet reports whether supports may exceed the rows of a draw.
+func (s Shape) elasticNet() bool { return s.Mix > 0 && s.Mix < 1 }
 
 // Bytes and counts that were fitted to measurements (TestWorkspace holds them
 // to live memory).
@@ -44,7 +61,10 @@ const (
 // candidates, the gathered columns and the Gram matrix of its working set, and
 // the score vectors kept as references.
 func (s Shape) Workspace(draws int) int64 {
-	entered := float64(min(s.Candidates, s.DrawRows))
+	entered := float64(s.Candidates)
+	if !s.elasticNet() {
+		entered = min(entered, float64(s.DrawRows))
+	}
 	steps := float64(s.Steps)
 	if s.StopAfter > 0 && float64(s.StopAfter) < entered {
 		entered, steps = float64(s.StopAfter), steps/2 // such paths end about half way
@@ -59,7 +79,7 @@ func (s Shape) Workspace(draws int) int64 {
 		references /= longWindow
 	}
 	snapshot := min(snapshotBytes, row*references)
-	draw := candidate*float64(s.Candidates) + row*(places+vectors) + snapshot +
-		perPlace*places*places + 8*entered*steps
+	draw := float64(candidate*float64(s.Candidates)) + float64(row*(places+vectors)) + snapshot +
+		float64(perPlace*places*places) + float64(8*entered*steps)
 	return int64(math.Ceil((draw + perDraw) * float64(draws)))
 }

@@ -108,12 +108,12 @@ func heapInUse() int64 {
 func TestWorkspaceGrows(t *testing.T) {
 	base := Shape{Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 40}
 	for name, more := range map[string]Shape{
-		"rows":       {2000, 1000, 2000, 2, 100, 40},
-		"candidates": {1000, 500, 4000, 2, 100, 40},
-		"always":     {1000, 500, 2000, 20, 100, 40},
-		"steps":      {1000, 500, 2000, 2, 200, 40},
-		"stop after": {1000, 500, 2000, 2, 100, 80},
-		"no stop":    {1000, 500, 2000, 2, 100, 0},
+		"rows":       {2000, 1000, 2000, 2, 100, 40, 1},
+		"candidates": {1000, 500, 4000, 2, 100, 40, 1},
+		"always":     {1000, 500, 2000, 20, 100, 40, 1},
+		"steps":      {1000, 500, 2000, 2, 200, 40, 1},
+		"stop after": {1000, 500, 2000, 2, 100, 80, 1},
+		"no stop":    {1000, 500, 2000, 2, 100, 0, 1},
 	} {
 		if more.Workspace(2) <= base.Workspace(2) {
 			t.Errorf("%s: %d bytes, not more than %d", name, more.Workspace(2), base.Workspace(2))
