@@ -86,6 +86,7 @@ func newBar(w io.Writer, draws int) *bar {
 		progressbar.OptionThrottle(100*time.Millisecond),
 		progressbar.OptionClearOnFinish(),
 	)}
+	b.bar.StartWithoutRender() // else the clock would start with the first draw that is done
 	go func() {
 		tick := time.NewTicker(time.Second)
 		defer tick.Stop()

@@ -4,8 +4,10 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"os"
 	"path/filepath"
 	"slices"
+	"strings"
 
 	"holdfast/io/report"
 	"holdfast/io/rundir"
@@ -42,7 +44,9 @@ func (j *judged) seen(v view) *selection.Judgement {
 // stderr.
 func (p *program) show(j *judged, v view) error {
 	if !v.asJSON {
-		return report.Text(p.out, j.seen(v), j.info(v), width(p.out), colour(p.out))
+		info := j.info(v)
+		info.ASCII = isTerminal(p.out) && !unicodeLocale()
+		return report.Text(p.out, j.seen(v), info, width(p.out), colour(p.out))
 	}
 	if err := report.JSON(p.out, j.seen(v), j.info(v)); err != nil {
 		return err
@@ -58,6 +62,17 @@ func (p *program) show(j *judged, v view) error {
 		}
 	}
 	return nil
+}
+
+// unicodeLocale reports whether the locale is one of UTF-8, or not said: the
+// first of the variables that is set decides (POSIX, Environment Variables).
+func unicodeLocale() bool {
+	for _, name := range []string{"LC_ALL", "LC_CTYPE", "LANG"} {
+		if locale := strings.ToLower(os.Getenv(name)); locale != "" {
+			return strings.Contains(locale, "utf-8") || strings.Contains(locale, "utf8")
+		}
+	}
+	return true
 }
 
 // note says a note on a decision that the judgement need not repeat on stderr.
