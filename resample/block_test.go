@@ -255,3 +255,17 @@ func ExampleSizing() {
 	fmt.Println(s.Block(10*time.Second), s.AtRisk(10*time.Second))
 	// Output: 12 2m0s
 }
+
+// Near the end the blocks shrink, so that no worker is idle while another has
+// all that is left.
+func TestLastBlocksAreShared(t *testing.T) {
+	d := newDealer(upTo(0, 20), 0, Sizing{Draws: 400, Workers: 4})
+	d.took(2, time.Millisecond)
+	var sizes []int
+	for block := d.take(); len(block) > 0; block = d.take() {
+		sizes = append(sizes, len(block))
+	}
+	if fmt.Sprint(sizes) != "[6 4 4 2 2 2]" { // 10, 7, 5, 3, 2 and 1 pairs for 4 workers
+		t.Errorf("20 draws left for 4 workers: blocks of %v", sizes)
+	}
+}

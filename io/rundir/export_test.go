@@ -43,6 +43,9 @@ var (
 // Disk is the real file system.
 func Disk() Files { return disk{} }
 
+// Quick is the same without waiting for the medium.
+func Quick() Files { return quick{} }
+
 // Failing is a disk whose n-th operation fails.
 type Failing struct{ *failing }
 

@@ -3,6 +3,7 @@ package rundir
 import (
 	"errors"
 	"io/fs"
+	"os"
 	"strings"
 	"sync"
 	"syscall"
@@ -10,10 +11,28 @@ import (
 
 var errInjected = errors.New("injected")
 
+// quick is the disk without waiting for the medium, for tests that write much
+// and do not pull the plug for real.
+type quick struct{ disk }
+
+type quickHandle struct{ handle }
+
+func (quickHandle) Sync() error { return nil }
+
+func (q quick) Create(path string) (handle, error) {
+	h, err := q.disk.Create(path)
+	return quickHandle{h}, err
+}
+
+func (quick) SyncFolder(path string) error {
+	_, err := os.Stat(path)
+	return err
+}
+
 // failing is a disk whose left-th operation fails, and with it a write of
 // which half arrived.
 type failing struct {
-	disk disk
+	disk quick
 	mu   sync.Mutex
 	left int
 	err  error  // what the operation says; nil: errInjected
