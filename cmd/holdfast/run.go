@@ -86,7 +86,7 @@ func (p *program) run(ctx context.Context, q question, o runOptions) error {
 	}
 	r := newRunner(p, o)
 	defer r.talk.end()
-	defer surviveHangup(r.hangUp)()
+	defer surviveHangup(r.talk.hangUp)()
 	err := r.do(ctx, q)
 	r.lastWord(err)
 	return err
@@ -303,6 +303,7 @@ func (r *runner) closePart() error {
 
 // judge judges the draws with the study's decision and writes the tables.
 func (r *runner) judge() error {
+	r.p.out = r.talk.readers(r.p.out)
 	return r.p.judgeRun([]string{r.dir.Path()}, judgeOptions{view: r.o.view, decision: &r.decision, save: true})
 }
 
@@ -317,15 +318,6 @@ func (r *runner) lastWord(err error) {
 		how += ", " + oneLine(err.Error())
 	}
 	fmt.Fprint(r.talk.logged(), r.used.lastLine(how, r.o.workers))
-}
-
-// hangUp lets go of a terminal that was closed. Streams that lead elsewhere,
-// such as files, stay.
-func (r *runner) hangUp() {
-	if isTerminal(r.term) {
-		r.talk.hangUp()
-	}
-	fmt.Fprintln(r.talk, "the terminal was closed; the run goes on")
 }
 
 // tellPlan says what is about to happen, and what was decided.

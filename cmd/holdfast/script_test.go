@@ -15,7 +15,7 @@ import (
 
 // TestMain lets the scripts run the program as a user types it.
 func TestMain(m *testing.M) {
-	testscript.Main(m, map[string]func(){"holdfast": main})
+	testscript.Main(m, map[string]func(){"holdfast": main, "stubborn": stubborn})
 }
 
 // TestScripts runs testdata/*.txtar: each types commands and checks the exit

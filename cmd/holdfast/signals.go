@@ -7,6 +7,7 @@ import (
 	"os"
 	"os/signal"
 	"sync"
+	"sync/atomic"
 	"syscall"
 	"time"
 )
@@ -130,16 +131,19 @@ func (w *watch) cause() *interrupted {
 
 // surviveHangup keeps the program alive when its terminal closes: closed is
 // called then, and writing to what is not there any more fails without ending
-// the program. restore gives the signals back.
+// the program. restore gives the signals back, unless the terminal is gone: then
+// last words must not end the program either.
 func surviveHangup(closed func()) (restore func()) {
 	hangup, pipe := make(chan os.Signal, 1), make(chan os.Signal, 1)
 	done := make(chan struct{})
 	signal.Notify(hangup, syscall.SIGHUP)
 	signal.Notify(pipe, syscall.SIGPIPE)
+	var gone atomic.Bool
 	go func() {
 		for {
 			select {
 			case <-hangup:
+				gone.Store(true)
 				closed()
 			case <-pipe:
 			case <-done:
@@ -148,6 +152,9 @@ func surviveHangup(closed func()) (restore func()) {
 		}
 	}()
 	return func() {
+		if gone.Load() {
+			return
+		}
 		signal.Stop(hangup)
 		signal.Stop(pipe)
 		close(done)

@@ -2,6 +2,7 @@ package main
 
 import (
 	"bytes"
+	"fmt"
 	"io"
 	"sync"
 	"time"
@@ -15,6 +16,7 @@ type talk struct {
 	term io.Writer      // nil once the terminal was closed
 	log  io.WriteCloser // nil: no log
 	open bool           // the log's last line has no end yet
+	hung bool           // the terminal was closed
 }
 
 // Write never fails.
@@ -67,11 +69,34 @@ func (t *talk) keep(log io.WriteCloser) {
 	t.log, t.open = log, false
 }
 
-// hangUp lets the terminal go.
+// hangUp notes that the terminal was closed. What led to it is let go; streams
+// that lead elsewhere, such as files, stay.
 func (t *talk) hangUp() {
 	t.mu.Lock()
+	t.hung = true
+	if isTerminal(t.term) {
+		t.term = nil
+	}
+	t.mu.Unlock()
+	fmt.Fprintln(t, "the terminal was closed; the run goes on")
+}
+
+// readers returns w, or, after the terminal was closed, w without its errors:
+// that nobody reads any more is no failure of a run whose results are on disk.
+func (t *talk) readers(w io.Writer) io.Writer {
+	t.mu.Lock()
 	defer t.mu.Unlock()
-	t.term = nil
+	if t.hung {
+		return unread{w}
+	}
+	return w
+}
+
+type unread struct{ w io.Writer }
+
+func (u unread) Write(b []byte) (int, error) {
+	_, _ = u.w.Write(b)
+	return len(b), nil
 }
 
 // end closes the log.
