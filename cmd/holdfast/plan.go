@@ -165,10 +165,7 @@ func drawRows(p resample.Plan) int {
 
 // foresee times draws of a table that is in memory.
 func (s *settled) foresee(ctx context.Context, model *solver.Model, o planOptions, fixed time.Duration) (*foreseen, error) {
-	f, err := newForeseen(o, s.plan, s.decision, footprint{
-		table: tableBytes(len(s.data.Outcome), len(s.data.Candidates)+len(s.data.Always)),
-		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number,
-	})
+	f, err := newForeseen(o, s.plan, s.decision, s.footprint(model))
 	if err != nil {
 		return nil, err
 	}
@@ -184,6 +181,14 @@ func (s *settled) foresee(ctx context.Context, model *solver.Model, o planOption
 	_, f.peak = memoryNow()
 	f.disk, err = s.diskOf(model, f.timing.Paths, f.timing.Block)
 	return f, err
+}
+
+// footprint is what a run of a loaded table holds in memory.
+func (s *settled) footprint(model *solver.Model) footprint {
+	return footprint{
+		table: tableBytes(len(s.data.Outcome), len(s.data.Candidates)+len(s.data.Always)),
+		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number,
+	}
 }
 
 // timingLimit is how long fitting draws for the plan may take, unless a single

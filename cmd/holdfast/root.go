@@ -85,7 +85,7 @@ the number of false selections.`,
 	})
 	root.SetHelpCommand(p.helpCommand())
 	root.AddCommand(p.demoCommand(), p.draftCommand(), p.planCommand(), p.runCommand(), p.judgeCommand(), p.statusCommand(),
-		p.inspectCommand(), p.budgetCommand(), p.fitCommand(), p.rowsCommand())
+		p.inspectCommand(), p.budgetCommand(), p.fitCommand(), p.rowsCommand(), p.dealCommand())
 	for _, c := range root.Commands() {
 		c.Flags().SortFlags = false
 		if strings.Contains(c.Example, " demo/") {
