@@ -43,7 +43,7 @@ func (m *Mismatch) Error() string {
 func (d *Dir) Compare(id Identity, meta Meta) error {
 	run := d.Run()
 	if meta.Parts == 0 {
-		meta.Parts = run.Meta.parts()
+		meta.Parts = run.Meta.Parts
 	}
 	changes := differences(&run, &Run{Digest: id.Digest(), Identity: id, Meta: meta.resolved()})
 	if len(changes) == 0 {
@@ -74,8 +74,8 @@ func metaChanges(a, b *Meta) (changes []Change) {
 	if major(a.Tool) != major(b.Tool) {
 		add("version of the program", a.Tool, b.Tool)
 	}
-	add("architecture", architecture(a), architecture(b))
-	add("parts", fmt.Sprint(a.parts()), fmt.Sprint(b.parts()))
+	add("architecture", a.Architecture, b.Architecture)
+	add("parts", fmt.Sprint(a.Parts), fmt.Sprint(b.Parts))
 	if len(changes) == 0 {
 		// They follow from the identity on one architecture and version. If
 		// they differ, the program computes something else than it did.
@@ -83,15 +83,6 @@ func metaChanges(a, b *Meta) (changes []Change) {
 		add("last step", fmt.Sprint(a.LastStep), fmt.Sprint(b.LastStep))
 	}
 	return changes
-}
-
-// architecture is that of a run; one that does not say was made before runs
-// said so, and is known to none.
-func architecture(m *Meta) string {
-	if m.Architecture == "" {
-		return "not recorded"
-	}
-	return m.Architecture
 }
 
 // major is the major version in a version text such as "v1.4.2 3ac1". A text

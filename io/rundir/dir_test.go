@@ -309,7 +309,9 @@ func TestOpenRefuses(t *testing.T) {
 		t.Fatal(err)
 	}
 	for says, change := range map[string][2]string{
-		"format 2":         {`"format": 1`, `"format": 2`},
+		"format 3":         {`"format": 2`, `"format": 3`},
+		"format 1":         {`"format": 2`, `"format": 1`},
+		"architecture":     {`"architecture": "`, `"elsewhere": "`},
 		"file was changed": {`"seed": 1`, `"seed": 2`},
 		"not readable":     {`"centre": [`, `"centre": [[`},
 		"region":           {`"region": "cap"`, `"region": "everything"`},

@@ -39,11 +39,12 @@
 // compressed (16 bytes a coefficient): the bytes follow from the draws alone,
 // and a file cannot claim more memory than its own length.
 //
-// Two SHA-256 digests stand in the file's key-value metadata.
-// "holdfast.pages" is over all bytes before the footer, and is checked before
-// a page is decoded. "holdfast.draws" is over a canonical encoding of the
-// decoded draws (see digest.go) and is checked after it, so the numbers that
-// are judged are the numbers that were fitted, whatever wrote the file.
+// Two SHA-256 digests stand in the file's key-value metadata. "holdfast.file"
+// is over all bytes of the file, its own 64 digits taken as zeros, and is
+// checked before a page is decoded: no bit of a block can change unnoticed.
+// "holdfast.draws" is over a canonical encoding of the decoded draws (see
+// digest.go) and is checked after it, so the numbers that are judged are the
+// numbers that were fitted, whatever wrote the file.
 //
 // # Safety
 //

@@ -10,7 +10,7 @@ import (
 )
 
 // Any bytes give a block that passes its checks, or an error; never a panic.
-// The digest of the pages is left out, or no changed page would reach the
+// The digest of the file is left out, or no changed page would reach the
 // decoder.
 func FuzzBlock(f *testing.F) {
 	run := hatcheryRun(f, 4).Run()
@@ -31,7 +31,7 @@ func FuzzBlock(f *testing.F) {
 	})
 }
 
-// decodeUnsealed is decodeBlock without checkPages.
+// decodeUnsealed is decodeBlock without checkFile.
 func decodeUnsealed(run *Run, text []byte) (block []numbered, err error) {
 	defer recovered(&err)
 	src := bytes.NewReader(text)
@@ -54,8 +54,8 @@ func FuzzRun(f *testing.F) {
 		f.Fatal(err)
 	}
 	f.Add(text)
-	f.Add([]byte(`{"format":1}`))
-	f.Add([]byte(`{"format":1,"asked":{"candidates":["a","a"]}}`))
+	f.Add([]byte(`{"format":2}`))
+	f.Add([]byte(`{"format":2,"asked":{"candidates":["a","a"]}}`))
 	f.Fuzz(func(t *testing.T, text []byte) {
 		run, err := decodeRun(text)
 		if err != nil {

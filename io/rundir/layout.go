@@ -21,7 +21,7 @@ const (
 const (
 	keyFormat   = "holdfast.format"
 	keyIdentity = "holdfast.identity"
-	keyPages    = "holdfast.pages" // digest of the bytes before the footer
+	keyFile     = "holdfast.file"  // digest of the file, these digits taken as zeros
 	keyDraws    = "holdfast.draws" // digest of the decoded draws
 )
 

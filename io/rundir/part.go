@@ -50,17 +50,13 @@ func (r *Run) PartOf(draw int) int {
 	if r.halves() {
 		draw /= 2
 	}
-	return draw % r.Meta.parts()
+	return draw % r.Meta.Parts
 }
 
 // PartCount returns the number of parts that the draws are shared out to.
 func (d *Dir) PartCount() int {
-	run := d.Run()
-	return run.Meta.parts()
+	return d.Run().Meta.Parts
 }
-
-// parts is Parts with its zero value resolved: a run.json that says nothing.
-func (m *Meta) parts() int { return max(m.Parts, 1) }
 
 // checkPart refuses a part that the run does not have.
 func (d *Dir) checkPart(part int) error {

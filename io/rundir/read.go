@@ -63,10 +63,10 @@ func (r *Run) decodeBlock(src parquet.ReaderAtSeeker, size int64) (block []numbe
 	if err != nil {
 		return nil, nil, err
 	}
-	if err := r.checkMarks(pr); err != nil {
+	if err := checkFile(pr, src, footer, size); err != nil {
 		return nil, nil, err
 	}
-	if err := checkPages(pr, src, footer); err != nil {
+	if err := r.checkMarks(pr); err != nil {
 		return nil, nil, err
 	}
 	return r.decodeRows(pr, size)
@@ -125,15 +125,25 @@ func (r *Run) checkMarks(pr *file.Reader) error {
 	return nil
 }
 
-// checkPages compares the digest of all bytes before the footer, so that a
-// damaged page never reaches a decoder.
-func checkPages(pr *file.Reader, src io.ReaderAt, footer int64) error {
+// checkFile compares the digest of the file, so that a damaged page never
+// reaches a decoder, and damage is found wherever it is.
+func checkFile(pr *file.Reader, src io.ReaderAt, footer, size int64) error {
+	digest := []byte(mark(pr, keyFile))
+	tail := make([]byte, size-footer)
+	if _, err := src.ReadAt(tail, footer); err != nil {
+		return err
+	}
+	if len(digest) != len(noDigest) || bytes.Count(tail, digest) != 1 {
+		return errors.New("damaged: the digest of the file is not there")
+	}
+	copy(tail[bytes.Index(tail, digest):], noDigest)
 	h := sha256.New()
 	if _, err := io.Copy(h, io.NewSectionReader(src, 0, footer)); err != nil {
 		return err
 	}
-	if mark(pr, keyPages) != hex.EncodeToString(h.Sum(nil)) {
-		return errors.New("damaged: the digest of its pages does not fit")
+	h.Write(tail)
+	if string(digest) != hex.EncodeToString(h.Sum(nil)) {
+		return errors.New("damaged: the digest of the file does not fit")
 	}
 	return nil
 }

@@ -16,7 +16,7 @@ import (
 
 // Format is the version of the run directory's format that this package
 // writes and reads.
-const Format = 1
+const Format = 2
 
 // maxRunJSON is the longest run.json that is read: 100,000 candidates with
 // long names need about 20 MB.
@@ -68,13 +68,13 @@ func (id Identity) Digest() string {
 
 // Meta is what run.json holds beside the identity.
 type Meta struct {
-	Tool         string     `json:"tool"`                   // version of the program
-	Kernel       string     `json:"kernel"`                 // inner loops in use when the run began
-	Architecture string     `json:"architecture,omitempty"` // as Go names it; "": that of this program
-	TableRows    int        `json:"table_rows"`             // rows of the table
-	Rows         int        `json:"rows"`                   // rows used
-	Number       int        `json:"number"`                 // draws asked for
-	Parts        int        `json:"parts,omitempty"`        // parts that the draws are shared out to; 0: 1, all in one
+	Tool         string     `json:"tool"`         // version of the program
+	Kernel       string     `json:"kernel"`       // inner loops in use when the run began
+	Architecture string     `json:"architecture"` // as Go names it; "" for Create: that of this program
+	TableRows    int        `json:"table_rows"`   // rows of the table
+	Rows         int        `json:"rows"`         // rows used
+	Number       int        `json:"number"`       // draws asked for
+	Parts        int        `json:"parts"`        // parts that the draws are shared out to; 0 for Create: 1
 	LambdaMax    float64    `json:"lambda_max"`
 	LastStep     int        `json:"last_step"` // last lattice step of a complete path
 	Centre       []float64  `json:"centre"`    // means: candidates, then always-in columns
@@ -208,7 +208,10 @@ func (m *Meta) check(columns int) error {
 	if m.Number < 1 || m.Number > maxDraws {
 		return fmt.Errorf("number of draws: %d is not between 1 and %d", m.Number, maxDraws)
 	}
-	if m.Parts < 0 || m.Parts > maxDraws {
+	if m.Architecture == "" {
+		return errors.New("architecture: not given")
+	}
+	if m.Parts < 1 || m.Parts > maxDraws {
 		return fmt.Errorf("parts: %d is not between 1 and %d", m.Parts, maxDraws)
 	}
 	if !(m.LambdaMax >= 0) || math.IsInf(m.LambdaMax, 0) {

@@ -251,6 +251,7 @@ func flip(t testing.TB, path string, at int) {
 // absent, blocks that were reported safe are there, and the same command once
 // more gives the bytes of an undisturbed run.
 func TestEveryFailedOperation(t *testing.T) {
+	t.Parallel()
 	for _, s := range scenes {
 		want, cleaned, n := undisturbed(t, s.number), 0, 1
 		for ; ; n++ {
@@ -316,6 +317,7 @@ func onlyWhole(t *testing.T, dir, what string, safe int) {
 // What a disk can say, wherever it says it: the error is told in words, and
 // nothing that was safe is lost.
 func TestTroubleIsTold(t *testing.T) {
+	t.Parallel()
 	want, random := undisturbed(t, 12), rand.New(rand.NewPCG(7, 1))
 	for _, c := range []struct {
 		err  error
@@ -417,6 +419,7 @@ func TestResumeMakesWhatIsMissing(t *testing.T) {
 // synced is gone, files cut short): what was reported safe is there, and the
 // same command gives the bytes of an undisturbed run.
 func TestCrashAfterEveryOperation(t *testing.T) {
+	t.Parallel()
 	random := rand.New(rand.NewPCG(3, 9))
 	for _, s := range scenes {
 		want := undisturbed(t, s.number)

@@ -95,7 +95,7 @@ func (s *Set) join(d *Dir) error {
 	if len(s.dirs) > 0 {
 		first := s.dirs[0]
 		a, b := first.Run(), d.Run()
-		b.Meta.Parts = a.Meta.parts() // how draws were shared out is no matter once they are made
+		b.Meta.Parts = a.Meta.Parts // how draws were shared out is no matter once they are made
 		changes := append(differences(&a, &b), decisionChanges(a.Decision, b.Decision)...)
 		if len(changes) > 0 {
 			return &Mismatch{
@@ -240,7 +240,7 @@ func (s *Set) name() string {
 // is one part, or where the directories do not agree about the number.
 func (s *Set) missingParts(missing []int) error {
 	run := s.Run()
-	parts := run.Meta.parts()
+	parts := run.Meta.Parts
 	for _, d := range s.dirs {
 		if d.PartCount() != parts {
 			return nil

@@ -1,14 +1,15 @@
 package rundir
 
 import (
+	"bytes"
 	"crypto/sha256"
 	"encoding/hex"
 	"errors"
 	"fmt"
-	"hash"
 	"io"
 	"io/fs"
 	"slices"
+	"strings"
 
 	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/file"
@@ -78,26 +79,49 @@ func (r *Run) checkBlock(block []numbered) error {
 	return nil
 }
 
+// noDigest stands where the digest of a file will be.
+var noDigest = strings.Repeat("0", 2*sha256.Size)
+
 // encodeBlock writes a block file.
-func encodeBlock(w io.Writer, identity string, block []numbered, sums []sum) (err error) {
-	defer recovered(&err)
-	out := &tally{w: w, hash: sha256.New()}
-	pw := file.NewParquetWriter(out, blockSchema(), file.WithWriterProps(blockProperties()))
-	if err := writeColumns(pw.AppendRowGroup(), flatten(block)); err != nil {
+func encodeBlock(w io.Writer, identity string, block []numbered, sums []sum) error {
+	text, err := renderBlock(identity, block, sums)
+	if err != nil {
 		return err
+	}
+	footer, err := footerStart(bytes.NewReader(text), int64(len(text)))
+	if err != nil {
+		return err
+	}
+	digits := text[footer:]
+	if n := bytes.Count(digits, []byte(noDigest)); n != 1 {
+		return fmt.Errorf("%d places for the digest of the file", n)
+	}
+	whole := sha256.Sum256(text)
+	hex.Encode(digits[bytes.Index(digits, []byte(noDigest)):], whole[:])
+	_, err = w.Write(text)
+	return err
+}
+
+// renderBlock makes a block file without its digest.
+func renderBlock(identity string, block []numbered, sums []sum) (text []byte, err error) {
+	defer recovered(&err)
+	var out bytes.Buffer
+	pw := file.NewParquetWriter(&out, blockSchema(), file.WithWriterProps(blockProperties()))
+	if err := writeColumns(pw.AppendRowGroup(), flatten(block)); err != nil {
+		return nil, err
 	}
 	for _, kv := range [][2]string{
 		{keyFormat, fmt.Sprint(Format)},
 		{keyIdentity, identity},
-		{keyPages, hex.EncodeToString(out.hash.Sum(nil))},
+		{keyFile, noDigest},
 		{keyDraws, blockDigest(identity, sums)},
 	} {
 		if err := pw.AppendKeyValueMetadata(kv[0], kv[1]); err != nil {
-			return err
+			return nil, err
 		}
 	}
-	// The library's Close loses the error of the footer, so the sink keeps it.
-	return errors.Join(pw.Close(), out.err)
+	err = pw.Close()
+	return out.Bytes(), err
 }
 
 func sumsOf(block []numbered) []sum {
@@ -106,23 +130,6 @@ func sumsOf(block []numbered) []sum {
 		sums[i] = drawSum(block[i].number, &block[i].path)
 	}
 	return sums
-}
-
-// tally passes bytes on, hashes them and keeps the first error.
-type tally struct {
-	w    io.Writer
-	hash hash.Hash
-	err  error
-}
-
-func (t *tally) Write(b []byte) (int, error) {
-	if t.err != nil {
-		return 0, t.err
-	}
-	n, err := t.w.Write(b)
-	t.hash.Write(b[:n])
-	t.err = err
-	return n, err
 }
 
 // recovered turns a panic of the Parquet library into an error. Its readers
