@@ -4,7 +4,7 @@
 GO  ?= go
 DIR ?= .
 
-.PHONY: test format vet unit portable race cross bits fused crash demo build release bench
+.PHONY: test format vet unit portable race cross bits fused crash slurm demo build release bench
 
 test: format vet unit portable race cross bits fused
 
@@ -46,6 +46,11 @@ fused:
 # bytes of an undisturbed run; `make unit` does 12.
 crash:
 	$(GO) test -count=1 -v -timeout 60m -run '^TestCrash$$' ./cmd/holdfast -crashes 200
+
+# Deals a run out over a real Slurm that is started on this machine: as root,
+# with Debian's slurm-wlm and munge. Five minutes, mostly waiting.
+slurm:
+	testdata/slurm/test
 
 # The main job from start to end on the invented table; DEMO names the folder.
 demo:
