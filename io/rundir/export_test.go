@@ -56,3 +56,9 @@ func FailAt(n int, err error) Failing { return Failing{&failing{left: n, err: er
 func (f Failing) Reached() bool  { return f.left <= 0 }
 func (f Failing) Cleaning() bool { return f.cleaning() }
 func (f Failing) What() string   { return f.last }
+
+// Cramped is a disk with room for so many pages.
+func Cramped(pages int) Files {
+	left := pages * page
+	return cramped{left: &left}
+}

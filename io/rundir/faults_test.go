@@ -155,3 +155,46 @@ func (sealed) Remove(string) error           { return syscall.EROFS }
 type unlinked struct{ disk }
 
 func (unlinked) Link(string, string) error { return syscall.ENOTSUP }
+
+// cramped is a disk with room for so many pages of 4 KiB, one of them for
+// each file that is begun; what is removed gives no room back.
+type cramped struct {
+	quick
+	left *int
+}
+
+const page = 4096
+
+func (c cramped) take(n int) error {
+	if n > *c.left {
+		return syscall.ENOSPC
+	}
+	*c.left -= n
+	return nil
+}
+
+func (c cramped) Create(path string) (handle, error) {
+	if err := c.take(page); err != nil {
+		return nil, &fs.PathError{Op: "create", Path: path, Err: err}
+	}
+	h, err := c.quick.Create(path)
+	return crampedHandle{h, c}, err
+}
+
+func (c cramped) Append(path string) (handle, error) {
+	h, err := c.quick.Append(path)
+	return crampedHandle{h, c}, err
+}
+
+type crampedHandle struct {
+	handle
+	c cramped
+}
+
+func (h crampedHandle) Write(b []byte) (int, error) {
+	if err := h.c.take(len(b)); err != nil {
+		n, _ := h.handle.Write(b[:min(len(b), *h.c.left)])
+		return n, err
+	}
+	return h.handle.Write(b)
+}
