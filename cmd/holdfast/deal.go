@@ -174,8 +174,10 @@ func (p *program) readDeal(ctx context.Context, q question, o dealOptions) (*dea
 	if err != nil {
 		return nil, err
 	}
-	d.job, err = d.describe()
-	return d, err
+	if d.job, err = d.describe(); err != nil {
+		return nil, err
+	}
+	return d, wrong(d.job.Check(), "")
 }
 
 // read reads study and table and compares them with a run directory that is

@@ -10,9 +10,6 @@ import (
 
 // preview prints what would be submitted.
 func (d *dealing) preview(ctx context.Context) error {
-	if err := d.job.Check(); err != nil {
-		return wrong(err, "")
-	}
 	o, deaf, err := d.dealer().Look(ctx)
 	if err != nil {
 		return err

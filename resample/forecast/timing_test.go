@@ -134,6 +134,34 @@ func TestShareOfABusyMachine(t *testing.T) {
 	}
 }
 
+// Several workers fit at the same time: what four of them take together is timed
+// and not four times what one takes.
+func TestWorkersAtTheSameTime(t *testing.T) {
+	timing, err := forecast.Time(t.Context(), planOf(t, 64), nap(10*time.Millisecond), forecast.Options{
+		Workers: 4, Block: blockOf(4), Limit: 2 * time.Second,
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if r := timing.Together; r.Workers != 4 || r.Draws%16 != 0 || r.Draws == 0 || r.Wall > r.Busy/2 {
+		t.Errorf("together: %+v", r)
+	}
+	if !timing.Measured(1) || !timing.Measured(4) || timing.Measured(2) {
+		t.Error("one and four workers were timed, and no others")
+	}
+	if one, four := timing.Wall(64, 1), timing.Wall(64, 4); four > one/2 {
+		t.Errorf("64 draws: %v with one worker, %v with four", one, four)
+	}
+}
+
+// nap is a fitter that sleeps, so that any number fit at the same time.
+type nap time.Duration
+
+func (n nap) FitBlock(_ context.Context, samples []*solver.Sample, _ func(int)) ([]solver.Path, error) {
+	time.Sleep(time.Duration(n) * time.Duration(len(samples)))
+	return make([]solver.Path, len(samples)), nil
+}
+
 // A failure while timing is the caller's to see.
 func TestFailureWhileTiming(t *testing.T) {
 	m := &machine{fails: errors.New("no such row")}
