@@ -135,7 +135,7 @@ func (f *fitting) judgeOne(r *record, c int32, known int, v *verdict) error {
 // not exclude: first by the gradients at the window's ends and the distance of the
 // record's residual from theirs, then by the gradient itself.
 func (f *fitting) suspects(r *record) []int32 {
-	least := f.least(r.lambda, r.u)
+	least := f.least(r.lambda, r.spread)
 	within := f.within(r)
 	f.lane = f.d.lane(f.lane, r.u)
 	sum := kernel.Sum(f.lane)
@@ -146,6 +146,7 @@ func (f *fitting) suspects(r *record) []int32 {
 		if f.inverse[c] == 0 || f.inside[c] || within(int32(c)) < least {
 			continue
 		}
+		f.looked++
 		if math.Abs(f.screened(int32(c), sum)) >= least {
 			out = append(out, int32(c))
 		}
@@ -186,9 +187,8 @@ func (f *fitting) addCoarse(r *record, out []int32, within func(int32) float64) 
 	if len(f.coarse) == 0 {
 		return out
 	}
-	spread := f.spread(r.u)
 	for _, c := range f.coarse {
-		if !f.inside[c.unit] && within(c.unit) >= r.lambda-float64(rounding*spread*c.size) && !slices.Contains(out, c.unit) {
+		if !f.inside[c.unit] && within(c.unit) >= r.lambda-float64(rounding*r.spread*c.size) && !slices.Contains(out, c.unit) {
 			out = append(out, c.unit)
 		}
 	}
@@ -202,7 +202,7 @@ func (f *fitting) addCoarse(r *record, out []int32, within func(int32) float64) 
 func (f *fitting) blur(r *record, place int) float64 {
 	w := &f.work
 	size := math.Sqrt(float64(w.mean[place]*w.mean[place])/float64(w.scale[place]*w.scale[place]) + w.h.row[place][place])
-	return rounding * f.spread(r.u) * size / f.m.penalty.threshold(w.units[place], r.lambda)
+	return rounding * r.spread * size / f.m.penalty.threshold(w.units[place], r.lambda)
 }
 
 // spread is the root mean square of a residual.

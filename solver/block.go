@@ -15,21 +15,37 @@ const blockBytes = 192 << 20
 // their gathered columns would take much memory, at least a pair.
 func (m *Model) BlockLimit(drawRows int) int { return m.Shape(drawRows).BlockLimit() }
 
-// longWindow is the window on a long table.
-const longWindow = 8
+// Windows, in lattice steps: the first one on a long table, and the longest.
+const (
+	firstWindow = 8
+	longWindow  = 16
+)
 
-// window is how many lattice steps a fitting looks ahead. On a table with many
-// more rows than candidates the passes over the table cost most, and solutions
-// between two far lambdas are nearly straight lines; elsewhere a step at a
-// time is best.
-func (m *Model) window() int {
-	if m.whim != nil {
-		return m.whim.window()
+// long reports whether the table has so many more rows than candidates that
+// passes over it cost most; solutions at two far lambdas are then nearly
+// straight lines, and looking ahead pays.
+func (m *Model) long() bool { return m.rows >= 2*m.candidates() }
+
+// window is how many lattice steps the fitting looks ahead: one on a wide
+// table. On a long one it follows how the window before went: it was too long
+// where its steps needed more gradients than another pass over the table would
+// have made, or brought in many more candidates than entered, as a residual far
+// from the optimum does.
+func (f *fitting) window() int {
+	switch {
+	case f.m.whim != nil:
+		return f.m.whim.window()
+	case !f.m.long():
+		return 1
+	case f.ahead == 0:
+		f.ahead = firstWindow
+	case f.looked > f.m.candidates() || f.brought > 8+len(f.entered)-f.had:
+		f.ahead = max(4, f.ahead/2)
+	case f.looked < f.m.candidates()/2:
+		f.ahead = min(longWindow, f.ahead+f.ahead/2)
 	}
-	if m.rows >= 2*m.candidates() {
-		return longWindow
-	}
-	return 1
+	f.looked, f.brought, f.had = 0, 0, len(f.entered)
+	return f.ahead
 }
 
 // FitBlock fits the path of each draw and returns them in the order of the
@@ -182,7 +198,7 @@ func (s *seeds) enters(c int32, lambda float64) bool {
 // seedFrom makes the seeds, once, where windows are long. A failure leaves
 // the seeds empty: they only propose.
 func (m *Model) seedFrom(ctx context.Context) {
-	if m.rows < 2*m.candidates() {
+	if !m.long() {
 		return
 	}
 	m.seeds.once.Do(func() {

@@ -38,6 +38,7 @@ type record struct {
 	chol    factor // of the members' Hessian; rows are shared with earlier records and never written
 	u       []float64
 	grad    []float64 // of the members at u
+	spread  float64   // root mean square of u
 	cert    certificate
 }
 
@@ -238,6 +239,7 @@ func (r *record) certify(f *fitting) {
 	p, n := f.m.penalty, f.d.total
 	r.cert = certificate{violation: r.worst(f)}
 	square, most, l1 := kernel.Dot(r.u, r.u), 1.0, 0.0
+	r.spread = math.Sqrt(square / n)
 	for k, i := range r.members {
 		if r.sign[k] == 0 || r.lambda == 0 {
 			continue

@@ -46,6 +46,10 @@ type fitting struct {
 	rec      *record    // of step cur-1
 	failed   error      // why the working set could not be solved at step cur
 	stands   int        // the step whose solution qp holds
+	ahead    int        // length of the last window on a long table; 0: none yet
+	looked   int        // gradients computed to accept the steps of the window
+	brought  int        // violators brought into the working set for the window
+	had      int        // candidates that had entered before the window
 
 	base      []float64 // coefficients of the always-in columns alone, per member of the null record
 	whole     float64   // sum of squares of the outcome before they were taken out
@@ -246,7 +250,7 @@ func (f *fitting) top() float64 {
 	for _, v := range f.end.value {
 		largest = max(largest, math.Abs(v))
 	}
-	least := f.least(largest, f.rec.u)
+	least := f.least(largest, f.spread(f.rec.u))
 	var near []int32
 	for c, v := range f.end.value {
 		if f.inverse[c] != 0 && math.Abs(v) >= least {
@@ -267,9 +271,8 @@ func (f *fitting) gradient(unit int32, u []float64) float64 {
 }
 
 // least is the screening gradient that a candidate must stay below to be
-// excluded at lambda.
-func (f *fitting) least(lambda float64, u []float64) float64 {
-	spread := f.spread(u)
+// excluded at lambda, where the residual has the given spread.
+func (f *fitting) least(lambda, spread float64) float64 {
 	return float64(lambda*(1-screenMargin)) - float64(screenRounding*spread*f.mostNorm)
 }
 
@@ -278,6 +281,7 @@ func (f *fitting) travel(lambda func(int) float64, first, last int) {
 	f.lambda, f.cur, f.last = lambda, first, last
 	f.to, f.stands = first, first-1
 	f.supports = f.supports[:0]
+	f.ahead, f.looked, f.brought, f.had = 0, 0, 0, 0
 	f.start0.value = f.start0.value[:0]
 }
 
@@ -288,6 +292,7 @@ func (f *fitting) next() *request {
 		if f.asked {
 			f.asked = false
 			if fresh := f.newcomers(f.req.found); len(fresh) > 0 {
+				f.brought += len(fresh)
 				f.bring(fresh)
 				return f.ask()
 			}
@@ -324,7 +329,7 @@ func (f *fitting) ask() *request {
 	f.req.f = f
 	f.req.u = resize(f.req.u, len(f.d.rows))
 	f.m.family.score(&f.d, f.fit, f.req.u)
-	f.req.least = f.least(f.lambda(f.to), f.req.u)
+	f.req.least = f.least(f.lambda(f.to), f.spread(f.req.u))
 	f.req.number = f.snaps.add(f.req.u)
 	f.knowWorkingSet()
 	f.asked = true
@@ -433,6 +438,7 @@ func (f *fitting) acceptWindow() (again, done bool) {
 			return false, true
 		}
 		if len(fresh) > 0 {
+			f.brought += len(fresh)
 			f.bring(fresh)
 			return true, false
 		}
@@ -485,7 +491,7 @@ func (f *fitting) uncertified(err error) {
 
 // advance opens the next window and proposes members for it.
 func (f *fitting) advance() {
-	steps := f.m.window()
+	steps := f.window()
 	f.to = min(f.cur+steps-1, f.last)
 	if steps > 1 {
 		f.start0.resize(len(f.end.value))

@@ -76,7 +76,7 @@ func (s Shape) Workspace(draws int) int64 {
 	candidate, references := float64(perCandidate), steps
 	if s.Rows >= 2*s.Candidates {
 		candidate += perWindow
-		references /= longWindow
+		references /= firstWindow
 	}
 	snapshot := min(snapshotBytes, row*references)
 	draw := float64(candidate*float64(s.Candidates)) + float64(row*(places+vectors)) + snapshot +
