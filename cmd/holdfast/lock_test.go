@@ -1,11 +1,15 @@
 package main
 
 import (
+	"encoding/json"
 	"fmt"
 	"os"
 	"path/filepath"
 	"strings"
 	"testing"
+	"time"
+
+	"holdfast/io/rundir"
 )
 
 // TestTwoProcessesOnOnePart: the second leaves and names the first, or takes
@@ -37,6 +41,7 @@ func TestTwoProcessesOnOnePart(t *testing.T) {
 			}
 		}
 	}
+	runningStatus(t, dir, first.cmd.Process.Pid)
 	third := start(t, dir, run("a.run", "--take-over")...)
 	if code := third.wait(t); code != 0 {
 		t.Errorf("--take-over: exit code %d: %s", code, &third.err)
@@ -55,6 +60,35 @@ func TestTwoProcessesOnOnePart(t *testing.T) {
 	}
 	finish(t, dir, run("b.run")...)
 	sameTables(t, want, filepath.Join(dir, "b.run"))
+}
+
+// runningStatus holds the status of a run under way: who works on it, and how
+// long it will take.
+func runningStatus(t *testing.T, dir string, pid int) {
+	t.Helper()
+	var s status
+	if err := json.Unmarshal(finish(t, dir, "status", "a.run", "--json").out.Bytes(), &s); err != nil {
+		t.Fatal(err)
+	}
+	if len(s.Parts) != 1 || s.Draws != 1600 || s.Done <= 0 || s.Done >= 1600 {
+		t.Fatalf("status %+v", s)
+	}
+	if p := s.Parts[0]; p.State != "running" || p.PID != pid || p.Done != s.Done || s.Left == nil || *s.Left > 3600 {
+		t.Errorf("status %+v", s)
+	}
+}
+
+// TestTimeLeft: 10 draws in 20 seconds, beside 6 that were there before, leave
+// 48 seconds for the other 24.
+func TestTimeLeft(t *testing.T) {
+	start := time.Date(2031, 5, 1, 8, 0, 0, 0, time.UTC)
+	left := timeLeft(rundir.Part{Started: start.Format(time.RFC3339), Before: 6}, 16, 40, start.Add(20*time.Second))
+	if left == nil || *left != 48 {
+		t.Errorf("left %v", left)
+	}
+	if left := timeLeft(rundir.Part{Started: start.Format(time.RFC3339), Before: 6}, 6, 40, start.Add(time.Minute)); left != nil {
+		t.Errorf("nothing was made, and %v seconds are left", *left)
+	}
 }
 
 // TestWaitForAPart: one who waits goes on when the first has ended, and finds

@@ -3,9 +3,12 @@ package main
 import (
 	"errors"
 	"math"
+	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 
+	"holdfast/io/demo"
 	"holdfast/solver"
 )
 
@@ -84,7 +87,73 @@ func TestFit(t *testing.T) {
 	if setErr := named.Set(text); setErr != nil {
 		t.Fatalf("%v: %v", err, setErr)
 	}
-	if w, block, err := f.fit(int64(named), workers); err != nil || w != 1 || block != 2 {
-		t.Errorf("the %s that the refusal names: %d workers, blocks of %d, %v", text, w, block, err)
+	if _, _, err := f.fit(int64(named), workers); err != nil {
+		t.Errorf("the %s that the refusal names do not do: %v", text, err)
 	}
+	if _, _, err := f.fit(int64(named)*99/100, workers); err == nil {
+		t.Errorf("less than the %s that the refusal names does", text)
+	}
+}
+
+// TestMemoryIsKept: the real program keeps its limit, however it is told, by
+// its own record of the largest resident size, and the bytes are the same; with
+// less than it needs it refuses, and what it then names is enough. A tenth is
+// allowed for what the system maps of the program.
+func TestMemoryIsKept(t *testing.T) {
+	dir := t.TempDir()
+	if err := demo.Make(demoSeed).Write(filepath.Join(dir, "hatchery.parquet")); err != nil {
+		t.Fatal(err)
+	}
+	finish(t, dir, "draft", "hatchery.parquet", "--outcome", demo.Outcome, "--out", "study.toml")
+	run := func(out string, more ...string) []string {
+		return append([]string{"run", "study.toml", "--draws", "40", "--out", out}, more...)
+	}
+	finish(t, dir, run("whole.run")...)
+	want := resultTables(t, filepath.Join(dir, "whole.run"))
+	for _, c := range []struct{ env, flag string }{{"", "56M"}, {"GOMEMLIMIT=56MiB", ""}, {"GOMEMLIMIT=1GiB", "56M"}} {
+		args := run("bounded.run")
+		if c.flag != "" {
+			args = append(args, "--memory", c.flag)
+		}
+		p := prepare(t, dir, args...)
+		p.cmd.Env = append(os.Environ(), c.env)
+		p.start(t)
+		if code := p.wait(t); code != 0 || !strings.Contains(p.err.String(), "memory: at most 56M") {
+			t.Fatalf("%v: exit code %d: %s", c, code, &p.err)
+		}
+		sameTables(t, want, filepath.Join(dir, "bounded.run"))
+		if peak := loggedPeak(t, filepath.Join(dir, "bounded.run")); peak > 56<<20*11/10 {
+			t.Errorf("%v: it took %s", c, sizeText(peak))
+		}
+		if err := os.RemoveAll(filepath.Join(dir, "bounded.run")); err != nil {
+			t.Fatal(err)
+		}
+	}
+	// The first refusal knows the table's shape alone, the second the fits.
+	limit, code := "20M", 2
+	for refusals := 0; refusals < 3 && code == 2; refusals++ {
+		p := start(t, dir, run("small.run", "--memory", limit)...)
+		if code = p.wait(t); code == 2 {
+			_, limit, _ = strings.Cut(p.err.String(), "need")
+			_, limit, _ = strings.Cut(limit, " ")
+			limit, _, _ = strings.Cut(strings.TrimPrefix(limit, "at least "), "\n")
+			limit, _, _ = strings.Cut(limit, " ")
+		}
+	}
+	if code != 0 {
+		t.Errorf("%q, which the refusal names: exit code %d", limit, code)
+	}
+}
+
+// loggedPeak is the peak memory in the last line of a run's log.
+func loggedPeak(t *testing.T, run string) int64 {
+	t.Helper()
+	log := text(t, filepath.Join(run, "logs", "part-0.log"))
+	_, size, _ := strings.Cut(log, "peak memory ")
+	size, _, _ = strings.Cut(size, ",")
+	var m memorySize
+	if err := m.Set(size); err != nil {
+		t.Fatalf("%v in %s", err, log)
+	}
+	return int64(m)
 }

@@ -19,13 +19,25 @@ type process struct {
 // start starts the program in a folder. TestMain put it on the path.
 func start(t *testing.T, dir string, args ...string) *process {
 	t.Helper()
+	p := prepare(t, dir, args...)
+	p.start(t)
+	return p
+}
+
+// prepare is start without starting.
+func prepare(t *testing.T, dir string, args ...string) *process {
+	t.Helper()
 	p := &process{cmd: exec.Command("holdfast", args...)}
 	p.cmd.Dir, p.cmd.Stdout, p.cmd.Stderr = dir, &p.out, &p.err
+	return p
+}
+
+func (p *process) start(t *testing.T) {
+	t.Helper()
 	if err := p.cmd.Start(); err != nil {
 		t.Fatal(err)
 	}
 	t.Cleanup(func() { p.cmd.Process.Kill() })
-	return p
 }
 
 // wait waits for the end and returns the exit code, -1 for a kill.

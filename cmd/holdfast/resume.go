@@ -157,7 +157,7 @@ func (r *runner) mend() (*rundir.Finished, error) {
 	if err := r.extend(); err != nil {
 		return nil, err
 	}
-	found, err := r.dir.Read()
+	found, err := r.dir.Survey()
 	if err != nil || len(found.Damaged) == 0 {
 		return found, err
 	}

@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"runtime/debug"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -85,6 +86,8 @@ func (p *program) run(ctx context.Context, q question, o runOptions) error {
 		o.workers = resample.Workers()
 	}
 	r := newRunner(p, o)
+	defer debug.SetMemoryLimit(debug.SetMemoryLimit(-1))
+	limitMemory(r.limit)
 	defer r.talk.end()
 	defer surviveHangup(r.talk.hangUp)()
 	err := r.do(ctx, q)
@@ -155,7 +158,9 @@ func (r *runner) prepare(ctx context.Context, q question) error {
 	if r.dir != nil {
 		a.follow(r.dir.Run())
 	}
-	a.memory = max(0, r.limit-programBytes)
+	if err := r.checkTable(a); err != nil {
+		return err
+	}
 	l, err := a.load(ctx, r.o.workers)
 	if err != nil {
 		return err
@@ -174,6 +179,25 @@ func (r *runner) prepare(ctx context.Context, q question) error {
 		return r.create()
 	}
 	return r.resume()
+}
+
+// checkTable refuses a table that the memory cannot hold before it is read.
+func (r *runner) checkTable(a *asked) error {
+	roles, err := a.study.Resolve(a.columns())
+	if err != nil {
+		return wrong(err, "")
+	}
+	rows, known := a.source.Rows()
+	if r.limit == 0 || !known {
+		return nil
+	}
+	if least := leastForTable(int(rows), len(roles.Candidates)+len(roles.Always)); least > r.limit {
+		return wrong(fmt.Errorf("holdfast: %w: the limit is %s, and %d rows of %d columns need at least %s",
+			errMemory, sizeText(r.limit), rows, len(roles.Candidates)+len(roles.Always), sizeText(least)),
+			"allow more memory, or take fewer columns")
+	}
+	a.memory = r.limit - programBytes
+	return nil
 }
 
 // boundMemory chooses blocks and workers by the memory there is.
