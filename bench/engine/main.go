@@ -10,6 +10,7 @@ import (
 	"flag"
 	"fmt"
 	"os"
+	"runtime/debug"
 	"runtime/pprof"
 	"time"
 
@@ -85,6 +86,10 @@ func parse() (settings, error) {
 	return s, err
 }
 
+// garbage is what may pile up beside the table before the collector runs, as
+// in cmd/holdfast.
+const garbage = 128 << 20
+
 func (s settings) measure() (*report, error) {
 	r := &report{Workers: s.workers, Draws: s.draws, Kernel: solver.Kernel()}
 	start := time.Now()
@@ -99,6 +104,7 @@ func (s settings) measure() (*report, error) {
 		return nil, err
 	}
 	r.ModelTime = lap(&start)
+	debug.SetGCPercent(int(min(100, max(100*garbage/int64(8*s.shape.Rows*s.shape.Cols), 2))))
 	before := shape.CPUTime()
 	paths, err := s.fit(model)
 	if err != nil {
