@@ -42,7 +42,7 @@ Near its time limit it writes what is whole and is queued again.
 
 The same command submits again only the parts that are neither whole nor in work.
 What stands after -- goes to sbatch, and wins over what the script says.`,
-		Example: "  holdfast deal demo/study.toml --parts 4 --dry-run",
+		Example: "  holdfast deal demo/study.toml --parts 4 --out demo/dealt.run --dry-run",
 		Args: func(c *cobra.Command, args []string) error {
 			if n := c.ArgsLenAtDash(); n >= 0 {
 				args = args[:n]
