@@ -41,18 +41,19 @@ func (d *Dir) SetDecision(dec selection.Decision) error {
 	if err := checkDecision(&dec); err != nil {
 		return fmt.Errorf("rundir: decision: %w", err)
 	}
+	// Listed before run.json is read: whoever put these draws had set the
+	// decision before, so it stands in what is read now.
+	blocks, err := d.blocks()
+	if err != nil {
+		return err
+	}
 	return d.edit(func(r *Run) (bool, error) {
-		if r.Decision != nil {
-			if r.Decision.Same(dec) {
-				return false, nil
-			}
+		switch {
+		case r.Decision != nil && r.Decision.Same(dec):
+			return false, nil
+		case r.Decision != nil:
 			return false, ErrDecided
-		}
-		blocks, err := d.blocks()
-		if err != nil {
-			return false, err
-		}
-		if len(blocks) > 0 {
+		case len(blocks) > 0:
 			return false, fmt.Errorf("%w: draws are already there", ErrDecided)
 		}
 		r.Decision = &dec

@@ -3,12 +3,18 @@
 //
 // # What is in it
 //
-//	run.json        identity, lattice, decision of record, log of judgements
+//	run.json        identity, lattice, parts, decision of record, log of
+//	                judgements and of extensions
 //	study.toml      the study with every default written out
 //	draws/          finished draws, one Parquet file per block
 //	parts/I.json    state, host, timings and worst certificate of part I
+//	parts/I.lock    who makes part I now
+//	logs/part-I.log what part I said, appended over restarts
 //
-// and beside them whatever tables the caller writes with [Dir.Write].
+// and beside them whatever tables the caller writes with [Dir.Write]. A name
+// that ends in .damaged is a block that was set aside, one that begins with
+// .unfinished- a file that was being written when its process was killed, and
+// run.lock is there while run.json is changed; no reader looks at them.
 //
 // # Vocabulary
 //
@@ -22,7 +28,9 @@
 // # A block file
 //
 // draws/block-NNNNNN.parquet, NNNNNN the first draw in it, holds one row per
-// draw, in the order of draw numbers:
+// draw, in the order of draw numbers. A second block that begins with the same
+// draw is called block-NNNNNN-DDDDDDDDDDDDDDDD.parquet after its digest: a file
+// that is there is never replaced.
 //
 //	draw, first, last        int32   draw number; first and last certified lattice step
 //	stop, why                text    floor | stop_after | not certified; what failed
@@ -49,8 +57,19 @@
 // # Safety
 //
 // A file appears whole or not at all: a unique temporary name in the same
-// folder, write, sync, close, rename, sync of the folder. A failed sync is an
-// error and is not tried again. The mode is 0644 less the umask. A Dir may be
-// used by several goroutines at once. A directory can be opened and read
-// where it cannot be written.
+// folder, write, sync, close, rename or link, sync of the folder. A failed sync
+// is an error and is not tried again. The mode is 0644 less the umask. A Dir
+// may be used by several goroutines at once. A directory can be opened and read
+// where it cannot be written. A disk that is full, or gone, is told in words
+// ([ErrFull], [ErrQuota], [ErrReadOnly], [ErrGone]); what was put before stays.
+//
+// # Going on
+//
+// Whoever wants to go on with a run opens it, lets [Dir.Compare] refuse what
+// does not belong to it, may [Dir.Extend] it, and makes the draws that
+// [Dir.Survey] finds missing, after [Dir.SetAside] has moved damaged blocks out
+// of the way. Draws depend on their numbers alone, so it does not matter who
+// made which, when, or twice. [Dir.Lock] only keeps two processes from doing
+// the same work. Directories into which parts were written apart are read as
+// one run by [OpenTogether].
 package rundir

@@ -60,9 +60,10 @@ func (d *Dir) Draws() ([]selection.Draw, error) {
 	return f.Draws, nil
 }
 
-// complete returns an error if anything is missing or damaged.
+// complete returns an error if draws are missing. A damaged block whose draws
+// stand in another one too is no hole.
 func (f *Finished) complete(path string) error {
-	if len(f.Missing) == 0 && len(f.Damaged) == 0 {
+	if len(f.Missing) == 0 {
 		return nil
 	}
 	list := []error{fmt.Errorf("rundir: %s: %w: %s of %d", path, ErrIncomplete, ranges(f.Missing), f.Count+len(f.Missing))}

@@ -90,7 +90,7 @@ func (l *Lock) Unlock() error {
 	if err == nil {
 		err = l.fs.Remove(l.path)
 	}
-	if err != nil {
+	if err != nil && !errors.Is(err, fs.ErrNotExist) { // taken over in between
 		return fmt.Errorf("rundir: unlock: %w", troubled(err))
 	}
 	return nil

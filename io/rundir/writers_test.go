@@ -164,6 +164,29 @@ func TestDamageFoundTwice(t *testing.T) {
 	}
 }
 
+// A damaged block is no hole where another one has its draws.
+func TestDamageBesideWholeDraws(t *testing.T) {
+	dir := filepath.Join(t.TempDir(), "x.run")
+	if err := (job{fsys: rundir.Quick(), dir: dir, number: 8, opt: resample.Options{Workers: 1, Block: 8}}).run(t); err != nil {
+		t.Fatal(err)
+	}
+	d, err := rundir.Open(dir)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := d.Put([]int{2, 3}, []solver.Path{pathOf(planOf(t, 8).Sample(2)), pathOf(planOf(t, 8).Sample(3))}); err != nil {
+		t.Fatal(err)
+	}
+	flip(t, blocksOf(t, dir)[1], 50)
+	f, err := d.Read()
+	if err != nil || len(f.Damaged) != 1 || len(f.Missing) != 0 {
+		t.Errorf("damaged %v, missing %v, %v", f.Damaged, f.Missing, err)
+	}
+	if draws, err := d.Draws(); err != nil || len(draws) != 8 {
+		t.Errorf("%d draws, %v", len(draws), err)
+	}
+}
+
 // A block whose first draw another block has, and a larger run's draws, are
 // no damage.
 func TestDrawsBeyondTheNumber(t *testing.T) {
