@@ -5,9 +5,14 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 	"time"
+
+	"holdfast/io/rundir"
+	"holdfast/resample"
+	"holdfast/selection"
 )
 
 var (
@@ -101,5 +106,28 @@ func TestKilledIsSaid(t *testing.T) {
 	q.wait(t)
 	if !strings.Contains(q.err.String(), "out of memory") || !strings.Contains(q.err.String(), "--memory SIZE") {
 		t.Errorf("it says: %s", &q.err)
+	}
+}
+
+// TestMissingHalf: where a half of a pair is lost, both are made.
+func TestMissingHalf(t *testing.T) {
+	r := &runner{settled: &settled{plan: resample.Plan{Design: resample.Halves}}}
+	if got := r.missing([]int{0, 1, 4, 5, 8, 9}, &rundir.Finished{Missing: []int{3, 4, 9}}); !slices.Equal(got, []int{4, 5, 8, 9}) {
+		t.Errorf("halves: %v are made", got)
+	}
+	r.settled.plan.Design = resample.Bootstrap
+	if got := r.missing([]int{0, 1, 4, 5, 8, 9}, &rundir.Finished{Missing: []int{3, 4, 9}}); !slices.Equal(got, []int{4, 9}) {
+		t.Errorf("bootstrap: %v are made", got)
+	}
+}
+
+// TestWholePairs: a half without the other is not judged.
+func TestWholePairs(t *testing.T) {
+	e := &evidence{finished: &rundir.Finished{Draws: []selection.Draw{{Number: 0}, {Number: 1}, {Number: 3}, {Number: 6}, {Number: 7}}}}
+	for design, want := range map[string]int{"halves": 4, "bootstrap": 5} {
+		e.run.Identity.Draws.Design = design
+		if got := e.wholePairs(); len(got) != want {
+			t.Errorf("%s: %d draws count, want %d", design, len(got), want)
+		}
 	}
 }

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
 	"runtime/debug"
 	"time"
@@ -12,6 +13,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"holdfast/io/rundir"
+	"holdfast/io/table"
 	"holdfast/resample"
 	"holdfast/selection"
 	"holdfast/solver"
@@ -152,6 +154,9 @@ func (r *runner) do(ctx context.Context, q question) (err error) {
 // prepare reads study and table, and makes or opens the run directory.
 func (r *runner) prepare(ctx context.Context, q question) error {
 	a, err := q.open(ctx)
+	if err != nil && r.dir != nil {
+		return vanished(err)
+	}
 	if err != nil {
 		return err
 	}
@@ -163,7 +168,7 @@ func (r *runner) prepare(ctx context.Context, q question) error {
 	}
 	l, err := a.load(ctx, r.o.workers)
 	if err != nil {
-		return err
+		return vanished(err)
 	}
 	r.p.tell(l)
 	if r.settled, err = l.settle(); err != nil {
@@ -179,6 +184,20 @@ func (r *runner) prepare(ctx context.Context, q question) error {
 		return r.create()
 	}
 	return r.resume()
+}
+
+// vanished tells a table that was there, when the run was made or opened, and is
+// not any more, from one that is wrong: the study is right, the machine failed.
+func vanished(err error) error {
+	var e *table.Error
+	if !errors.As(err, &e) {
+		return err
+	}
+	if _, missing := os.Stat(e.Path); !errors.Is(missing, fs.ErrNotExist) {
+		return err
+	}
+	return &fault{exitFailed, fmt.Errorf("%w any more: it was removed, renamed or unmounted since the run began", e),
+		"when it is back, type the same command; finished draws are kept"}
 }
 
 // checkTable refuses a table that the memory cannot hold before it is read.

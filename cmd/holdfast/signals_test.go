@@ -6,6 +6,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"slices"
 	"strings"
 	"syscall"
 	"testing"
@@ -88,14 +89,35 @@ func stubborn() {
 }
 
 // TestHangup: a run whose terminal closes goes on to its end, without anybody
-// to read what it says, and keeps that in its log.
+// to read what it says, and keeps that in its log. A signal after that ends it
+// in order.
 func TestHangup(t *testing.T) {
 	dir := spectraStudy(t)
-	want := func() map[string]string {
-		finish(t, dir, "run", "study.toml", "--draws", "800", "--out", "whole.run")
-		return resultTables(t, filepath.Join(dir, "whole.run"))
-	}()
-	cmd := exec.Command("holdfast", "run", "study.toml", "--draws", "800", "--out", "a.run")
+	finish(t, dir, "run", "study.toml", "--draws", "800", "--out", "whole.run")
+	want := resultTables(t, filepath.Join(dir, "whole.run"))
+	code, log := hangUp(t, dir, nil, "run", "study.toml", "--draws", "800", "--out", "a.run")
+	if code != 0 {
+		t.Errorf("exit code %d", code)
+	}
+	sameTables(t, want, filepath.Join(dir, "a.run"))
+	for _, word := range []string{"the terminal was closed; the run goes on", "results are in a.run", " end: exit 0, 800 draws whole"} {
+		if !strings.Contains(log, word) {
+			t.Errorf("the log lacks %q:\n%s", word, log)
+		}
+	}
+	code, log = hangUp(t, dir, syscall.SIGTERM, append([]string{"run", "study.toml", "--out", "b.run"}, manyDraws...)...)
+	if code != 143 || !strings.Contains(log, " end: exit 143, ") {
+		t.Errorf("SIGTERM after it: exit code %d, log\n%s", code, log)
+	}
+}
+
+// hangUp starts a run, closes its streams and its terminal once there are
+// draws, and sends another signal if one is given. It returns the exit code and
+// the log.
+func hangUp(t *testing.T, dir string, then os.Signal, args ...string) (code int, log string) {
+	t.Helper()
+	run := filepath.Join(dir, args[slices.Index(args, "--out")+1])
+	cmd := exec.Command("holdfast", args...)
 	cmd.Dir = dir
 	out, err := cmd.StdoutPipe()
 	if err != nil {
@@ -109,19 +131,15 @@ func TestHangup(t *testing.T) {
 		t.Fatal(err)
 	}
 	defer cmd.Process.Kill()
-	waitFor(t, "the first block", func() bool { return blocks(filepath.Join(dir, "a.run")) > 0 })
+	waitFor(t, "the first block", func() bool { return blocks(run) > 0 })
 	out.Close()
 	errs.Close()
 	cmd.Process.Signal(syscall.SIGHUP)
+	path := filepath.Join(run, "logs", "part-0.log")
+	waitFor(t, "the word about the terminal", func() bool { return strings.Contains(text(t, path), "the terminal was closed") })
+	if then != nil {
+		cmd.Process.Signal(then)
+	}
 	cmd.Wait()
-	if code := cmd.ProcessState.ExitCode(); code != 0 {
-		t.Errorf("exit code %d", code)
-	}
-	sameTables(t, want, filepath.Join(dir, "a.run"))
-	log := text(t, filepath.Join(dir, "a.run", "logs", "part-0.log"))
-	for _, word := range []string{"the terminal was closed; the run goes on", "results are in a.run", " end: exit 0, 800 draws whole"} {
-		if !strings.Contains(log, word) {
-			t.Errorf("the log lacks %q:\n%s", word, log)
-		}
-	}
+	return cmd.ProcessState.ExitCode(), text(t, path)
 }
