@@ -207,11 +207,3 @@ func memoryNow() (now, peak int64) {
 	}
 	return now, peak
 }
-
-// boundGarbage is boundMemory without a limit, beside what is in memory now.
-func boundGarbage() {
-	runtime.GC()
-	var m runtime.MemStats
-	runtime.ReadMemStats(&m)
-	boundMemory(0, int64(m.HeapAlloc))
-}
