@@ -139,7 +139,7 @@ func (a *asked) foreseeShape(o planOptions) (*foreseen, error) {
 	}
 	shape := solver.Shape{
 		Rows: int(rows), DrawRows: drawRows(plan), Candidates: len(roles.Candidates), Always: len(roles.Always),
-		Steps: solver.Steps(final.Penalty.Ratio, final.Penalty.Floor), StopAfter: final.Penalty.StopAfter,
+		Steps: solver.Steps(final.Penalty.Ratio, final.Penalty.Floor), StopAfter: final.Penalty.StopAfter, Mix: final.Penalty.Mix,
 	}
 	return newForeseen(o, plan, decision, footprint{
 		table: tableBytes(int(rows), len(roles.Candidates)+len(roles.Always)), shape: shape, draws: plan.Number,
