@@ -18,11 +18,11 @@ func (d *dealing) preview(ctx context.Context) error {
 		fmt.Fprintf(d.talk, "the scheduler cannot be asked, so nothing is taken to be in work: %s\n", oneLine(deaf.Error()))
 	}
 	d.tellState(o)
-	todo := o.Todo()
-	if len(todo) == 0 {
+	unmade := o.Unmade()
+	if len(unmade) == 0 {
 		return nil
 	}
-	parts, err := d.job.PartsScript(todo)
+	parts, err := d.job.PartsScript(unmade)
 	if err != nil {
 		return err
 	}

@@ -32,15 +32,15 @@ type Outcome struct {
 	Replaced  []Submitted // judging jobs that were cancelled for the new one
 }
 
-// Todo are the parts that nobody makes.
-func (o *Outcome) Todo() []int {
-	var todo []int
+// Unmade are the parts that nobody makes.
+func (o *Outcome) Unmade() []int {
+	var unmade []int
 	for _, part := range o.Missing {
 		if !slices.Contains(o.InWork, part) {
-			todo = append(todo, part)
+			unmade = append(unmade, part)
 		}
 	}
-	return todo
+	return unmade
 }
 
 // Deal submits the parts that are missing and not in work, and a judging job
@@ -68,7 +68,7 @@ func (d *Dealer) Deal(ctx context.Context) (*Outcome, error) {
 		return nil, err
 	}
 	judges := judging(tasks)
-	if len(o.Missing) == 0 || len(o.Todo()) == 0 && len(judges) > 0 {
+	if len(o.Missing) == 0 || len(o.Unmade()) == 0 && len(judges) > 0 {
 		return o, nil
 	}
 	return o, d.submit(ctx, o, kept, tasks)
@@ -106,7 +106,7 @@ func (d *Dealer) look(tasks []Task) (*Outcome, error) {
 // each of them, so that a failure in between leaves what can be cancelled.
 func (d *Dealer) submit(ctx context.Context, o *Outcome, kept *ledger, tasks []Task) error {
 	folder := Folder(d.Job.Run)
-	s := Submission{Time: d.Now().UTC().Format(time.RFC3339), Parts: o.Todo()}
+	s := Submission{Time: d.Now().UTC().Format(time.RFC3339), Parts: o.Unmade()}
 	after := arrays(tasks)
 	if len(s.Parts) > 0 {
 		text, err := d.Job.PartsScript(s.Parts)

@@ -219,7 +219,7 @@ func TestLook(t *testing.T) {
 	d := dealerIn(t, s, &missing)
 	s.fails = map[string]error{"squeue": deal.ErrNoSlurm}
 	o, deaf, err := d.Look(t.Context())
-	if err != nil || !errors.Is(deaf, deal.ErrNoSlurm) || !slices.Equal(o.Todo(), missing) || s.count("sbatch") != 0 {
+	if err != nil || !errors.Is(deaf, deal.ErrNoSlurm) || !slices.Equal(o.Unmade(), missing) || s.count("sbatch") != 0 {
 		t.Errorf("%+v, %v, %v", o, deaf, err)
 	}
 	if names, _ := os.ReadDir(deal.Folder(d.Job.Run)); len(names) != 0 {
