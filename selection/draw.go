@@ -24,5 +24,5 @@ type Draw struct {
 	Coefs       []Coef    // ordered by step, then predictor
 	Always      []float64 // always-in coefficients, step by step from First
 	Still       []int32   // predictors that did not vary in the draw, ascending
-	Twins       int       // entries of a predictor that coincided with another one within the draw
+	Twins       int       // entries at steps where linearly dependent predictors share the fit
 }

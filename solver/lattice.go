@@ -5,6 +5,10 @@ import "math"
 // lattice is the set of lambdas top*ratio^k over all integers k.
 type lattice struct{ top, ratio float64 }
 
+// Lambda returns the lambda of a lattice step, top*ratio^step, with the bits that
+// a Model of that lambda_max and ratio uses.
+func Lambda(top, ratio float64, step int) float64 { return lattice{top, ratio}.at(step) }
+
 // at returns top*ratio^k by repeated squaring, each product rounded once, so
 // that the same step has the same bits on every machine.
 func (l lattice) at(k int) float64 {

@@ -3,7 +3,6 @@ package main
 import (
 	"fmt"
 	"io"
-	"math"
 	"os"
 	"path/filepath"
 	"slices"
@@ -12,6 +11,7 @@ import (
 	"holdfast/io/report"
 	"holdfast/io/rundir"
 	"holdfast/selection"
+	"holdfast/solver"
 )
 
 // info is what a report says beside the judgement.
@@ -104,21 +104,9 @@ func (j *judged) writeSpreadsheet(w io.Writer, v view) error {
 	return report.WriteStabilityCSV(w, j.seen(v), true)
 }
 
-// lambdaOf returns the lambda of each lattice step of a run, lambda_max times
-// ratio to the step, by repeated squaring with every product rounded once: to
-// the bit what the fits had (a test compares them).
+// lambdaOf returns the lambda of each lattice step of a run.
 func lambdaOf(run rundir.Run) func(step int) float64 {
 	return func(step int) float64 {
-		power, square := 1.0, run.Identity.Penalty.Ratio
-		for n := int(math.Abs(float64(step))); n > 0; n >>= 1 {
-			if n&1 == 1 {
-				power = float64(power * square)
-			}
-			square = float64(square * square)
-		}
-		if step < 0 {
-			return run.Meta.LambdaMax / power
-		}
-		return float64(run.Meta.LambdaMax * power)
+		return solver.Lambda(run.Meta.LambdaMax, run.Identity.Penalty.Ratio, step)
 	}
 }

@@ -6,8 +6,8 @@ import "holdfast/solver"
 type Certificate struct {
 	Draw           int
 	Violation, Gap float64 // worst over its steps
-	Borderline     int     // steps redone at the border
-	Twins          int     // entries that coincided
+	Borderline     int     // steps at which a candidate stood on the border and stayed out
+	Twins          int     // entries at steps where linearly dependent candidates share the fit
 	Uncertified    bool    // its path ended before a step that could not be certified
 }
 

@@ -35,7 +35,7 @@
 //	draw, first, last        int32   draw number; first and last certified lattice step
 //	stop, why                text    floor | stop_after | not certified; what failed
 //	violation, gap           double  worst certificate over the steps
-//	borderline, twins        int32   steps redone at the border; entries that coincided
+//	borderline, twins        int32   steps with a candidate on the border; entries that share a fit
 //	entries                  list of (step, predictor int32; negative boolean)
 //	coefficients             list of (step, predictor int32; coefficient double), non-zero
 //	intercepts               list of double, one per step

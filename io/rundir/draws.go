@@ -37,8 +37,8 @@ type Finished struct {
 
 	Violation   float64 // worst over all draws
 	Gap         float64
-	Borderline  int // steps redone at the border
-	Twins       int // entries that coincided within a draw
+	Borderline  int // steps at which a candidate stood on the border and stayed out
+	Twins       int // entries at steps where linearly dependent candidates share the fit
 	Uncertified []Uncertified
 
 	Certificates []Certificate // of the draws that are there, ordered by number
