@@ -10,11 +10,11 @@ import (
 
 // Fit is one certified fit in the columns' own units.
 type Fit struct {
-	Step      int     // lattice step, for FitPath
-	Lambda    float64 // penalty
-	Intercept float64
-	Always    []float64 // one per always-in column; 0 for those redundant in the draw
-	Coef      []float64 // one per candidate, most of them 0
+	Step      int       // lattice step, for FitPath
+	Lambda    float64   // penalty
+	Intercept []float64 // one per class; none for Cox
+	Always    []float64 // per always-in column one for each class; 0 for those redundant in the draw
+	Coef      []float64 // per column of Model.Terms one for each class, most of them 0
 	Selected  int       // candidates that are not 0
 	Loss      float64   // mean loss over the draw
 	Objective float64   // loss and penalty
@@ -125,7 +125,8 @@ func (f *fitting) fitOf(r *record, list []chosen) Fit {
 	for _, c := range list {
 		fit.Coef[c.unit] = f.original(r, c)
 	}
-	fit.Intercept, fit.Always = f.rest(r, list)
+	intercept, always := f.rest(r, list)
+	fit.Intercept, fit.Always = []float64{intercept}, always
 	return fit
 }
 

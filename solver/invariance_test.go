@@ -247,8 +247,8 @@ func TestAtLambdaMax(t *testing.T) {
 		if fits[k].Selected != want || !fits[k].Certified {
 			t.Errorf("at %g lambda_max: %d selected, certified %v; want %d", fits[k].Lambda/top, fits[k].Selected, fits[k].Certified, want)
 		}
-		if want == 0 && math.Abs(fits[k].Intercept-mean) > 1e-12 {
-			t.Errorf("intercept %g is not the mean %g", fits[k].Intercept, mean)
+		if want == 0 && math.Abs(fits[k].Intercept[0]-mean) > 1e-12 {
+			t.Errorf("intercept %g is not the mean %g", fits[k].Intercept[0], mean)
 		}
 	}
 }

@@ -234,6 +234,37 @@ func (m *Model) findTop() (float64, error) {
 	return top, nil
 }
 
+// Classes is the number of coefficients that each column has: the classes of
+// Multinomial, else 1.
+func (m *Model) Classes() int {
+	if m.p.Family == Multinomial {
+		return m.p.Classes
+	}
+	return 1
+}
+
+// Terms lists the design columns of all candidates, candidate by candidate, a
+// group's in its own order: the order of Fit.Coef.
+func (m *Model) Terms() []int32 {
+	if m.p.Groups == nil {
+		return m.p.Candidates
+	}
+	var out []int32
+	for c, j := range m.p.Candidates {
+		if g := m.p.Groups[c]; g != nil {
+			out = append(out, g...)
+		} else {
+			out = append(out, j)
+		}
+	}
+	return out
+}
+
+// Fittable says why a draw can have no fit at all, not even without candidates:
+// one class only, fewer than five events, always-in columns that tell the
+// classes apart. Nil where nothing speaks against it.
+func (m *Model) Fittable(s *Sample) error { return nil }
+
 // fitting returns a fitting from the pool.
 func (m *Model) fitting() *fitting {
 	if f, ok := m.pool.Get().(*fitting); ok {

@@ -26,13 +26,15 @@ func (s Stop) String() string {
 type Entry struct {
 	Candidate int32 // position in Problem.Candidates
 	Step      int32 // lattice step
-	Negative  bool  // sign of the coefficient at that step
+	Negative  bool  // sign of the coefficient at that step; false for groups and classes, which have none
 }
 
 // Coef is one non-zero coefficient on the original scale of the column.
 type Coef struct {
 	Step      int32
 	Candidate int32 // position in Problem.Candidates
+	Term      int32 // column within the group; 0 for a single column
+	Class     int32 // for Multinomial; else 0
 	Value     float64
 }
 
@@ -43,13 +45,24 @@ type Path struct {
 	First, Last int       // lattice steps with a certified fit; Last < First: none
 	Stop        Stop      // why the path ended
 	Entries     []Entry   // ordered by step, then candidate
-	Coefs       []Coef    // ordered by step, then candidate; only non-zero
-	Intercepts  []float64 // one per step First..Last, original scale
-	Always      []float64 // len(Problem.Always) per step, original scale, step by step
+	Coefs       []Coef    // ordered by step, candidate, term, class; only non-zero
+	Intercepts  []float64 // per step First..Last one for each class, original scale; none for Cox
+	Always      []float64 // per step, per column of Problem.Always, one for each class, original scale
 	Still       []int32   // candidates that do not vary in the draw, ascending
 	Violation   float64   // largest certified violation over the steps
 	Gap         float64   // largest relative duality gap over the steps
 	Borderline  int       // steps at which a candidate stood on the border and stayed out
 	Twins       int       // entries at steps where linearly dependent candidates share the coefficients
 	Why         string    // for StopUncertified: what failed
+
+	// Deviance is that of the rows in Sample.Left, per step: the weighted mean of
+	// the unit deviance, for Cox -2 log partial likelihood of these rows alone
+	// (STATISTICS 11). Nil without Left.
+	Deviance []float64
+	// NullDeviance is the same for the model of the draw's intercept alone (with
+	// offset and strata).
+	NullDeviance float64
+	// Redraws is how often the draw was made anew because it could not be fitted;
+	// the pool fills it in.
+	Redraws int
 }

@@ -341,7 +341,7 @@ func (f *fixture) compare(t *testing.T, draw *solver.Sample) {
 func (f *fixture) compareCoef(t *testing.T, fit solver.Fit, want refFit) {
 	t.Helper()
 	largest := largestAbs(want.Scaled)
-	atMean, shift := fit.Intercept, 1.0
+	atMean, shift := fit.Intercept[0], 1.0
 	for j, b := range f.dense(fit) {
 		atMean += b * f.mean[j]
 		shift += math.Abs(f.mean[j]) / max(f.sd[j], 1e-300)
@@ -354,8 +354,8 @@ func (f *fixture) compareCoef(t *testing.T, fit solver.Fit, want refFit) {
 	if d := math.Abs(atMean - want.AtMean); d > slack+1e-12*math.Abs(want.AtMean)*shift {
 		t.Errorf("lambda %g: %.17g at the mean row, reference %.17g", fit.Lambda, atMean, want.AtMean)
 	}
-	if d := math.Abs(fit.Intercept - want.Intercept); d > slack*shift+1e-12*math.Abs(want.Intercept) {
-		t.Errorf("lambda %g: intercept %.17g, reference %.17g", fit.Lambda, fit.Intercept, want.Intercept)
+	if d := math.Abs(fit.Intercept[0] - want.Intercept); d > slack*shift+1e-12*math.Abs(want.Intercept) {
+		t.Errorf("lambda %g: intercept %.17g, reference %.17g", fit.Lambda, fit.Intercept[0], want.Intercept)
 	}
 }
 
@@ -421,7 +421,7 @@ func (f *fixture) certify(t *testing.T, fit solver.Fit) {
 // violation is that of DESIGN 4 in scaled units, over all columns.
 func (f *fixture) violation(fit solver.Fit) float64 {
 	b := f.dense(fit)
-	u := f.residual(fit.Intercept, b)
+	u := f.residual(fit.Intercept[0], b)
 	worst := 0.0
 	for j := range f.x {
 		worst = max(worst, f.columnViolation(j, fit.Lambda, b[j], u))
@@ -496,7 +496,7 @@ func TestLongleyCertified(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	got := append([]float64{fits[0].Intercept}, f.dense(fits[0])...)
+	got := append([]float64{fits[0].Intercept[0]}, f.dense(fits[0])...)
 	for k, want := range nist.Estimate {
 		if math.Abs(got[k]-want) > nistDigits*math.Abs(want) {
 			t.Errorf("term %d: %.15g, certified %.15g", k, got[k], want)

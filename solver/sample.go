@@ -8,6 +8,13 @@ type Sample struct {
 	Rows  []uint64  // bit mask of the rows drawn (bit i&63 of word i>>6)
 	Count []uint8   // how often each row was drawn; nil: once each
 	Case  []float64 // case weight of every table row, all >= 0; nil: 1
+
+	// Jitter is W in (0,1] of each candidate: its penalty weight is divided by it
+	// (randomised lasso, Meinshausen & Buhlmann 2010, section 3.1). Nil: 1.
+	Jitter []float64
+	// Left is the rows that the draw's path is scored on: the other half, or what
+	// a bootstrap left out. Its Case and Jitter are not looked at. Nil: no scores.
+	Left *Sample
 }
 
 // NewSample returns a draw of the given rows, each drawn once. The rows must

@@ -122,7 +122,7 @@ func (p *program) printCoefficients(l *loaded, fits []solver.Fit, all bool) erro
 	w.Write([]string{"lambda", "kind", "predictor", "coefficient"})
 	for _, f := range fits {
 		lambda := full(f.Lambda)
-		w.Write([]string{lambda, "intercept", "", full(f.Intercept)})
+		w.Write([]string{lambda, "intercept", "", full(f.Intercept[0])})
 		for _, t := range l.terms(f, all) {
 			w.Write([]string{lambda, t.kind, p.shown(t.name), full(t.value)})
 		}
@@ -181,7 +181,7 @@ func (l *loaded) fitsJSON(fits []solver.Fit, all bool) any {
 	list := make([]fitJSON, len(fits))
 	for i, f := range fits {
 		list[i] = fitJSON{
-			Lambda: f.Lambda, Intercept: f.Intercept, Coefficients: l.terms(f, all),
+			Lambda: f.Lambda, Intercept: f.Intercept[0], Coefficients: l.terms(f, all),
 			Selected: f.Selected, Loss: f.Loss, Violation: f.Violation, Gap: f.Gap, Value: f.Objective,
 		}
 	}
