@@ -40,6 +40,7 @@ func (t Table) check(f *faults) {
 func (o Outcome) check(f *faults) {
 	o.checkColumns(f)
 	o.checkOthers(f)
+	o.checkOffset(f)
 	o.checkRoles(f)
 }
 
@@ -48,6 +49,9 @@ func (o Outcome) checkColumns(f *faults) {
 	if o.Kind != Survival {
 		if o.Column == "" {
 			f.add("outcome.column", "is missing: name the column to be explained")
+		}
+		if o.Kind == YesNo && o.Success == "" {
+			f.add("outcome.success", `is missing: outcome.kind = "yes-no" needs the value that counts as yes, such as 1, true or "alive"`)
 		}
 		return
 	}
@@ -80,6 +84,14 @@ func (o Outcome) checkOthers(f *faults) {
 		if c.given && o.Kind != c.kind {
 			f.add(c.key, "is for outcome.kind = %q, and it is %q", c.kind, o.Kind)
 		}
+	}
+}
+
+// checkOffset refuses what classes cannot have: one column cannot be added to
+// the linear predictors of all classes and change anything.
+func (o Outcome) checkOffset(f *faults) {
+	if o.Offset != "" && o.Kind == Classes {
+		f.value("outcome.offset", quoted(o.Offset), "is for every kind of outcome but classes, where it would move all classes alike: leave the line out")
 	}
 }
 
@@ -116,6 +128,14 @@ func (o Outcome) roles() []role {
 func (c Candidates) check(f *faults) {
 	if len(c.Take) == 0 {
 		f.value("candidates.take", "[]", `takes nothing: ["*"] takes every column without another role`)
+	}
+	for _, name := range slices.Sorted(maps.Keys(c.Groups)) {
+		switch key := "candidates.groups." + keyName(name); {
+		case name == "":
+			f.add(key, "a group has a name: it stands in the tables of results")
+		case len(c.Groups[name]) == 0:
+			f.value(key, "[]", "has no members: name columns or patterns, or take the line out")
+		}
 	}
 }
 

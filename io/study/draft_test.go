@@ -16,9 +16,9 @@ import (
 // factsOf is a table of plain columns x0, x1, ... and the outcome y.
 func factsOf(rows, candidates int, more ...Fact) Facts {
 	f := Facts{Path: "t.parquet", Source: "study.toml", Outcome: "y", Rows: int64(rows), Incomplete: -1}
-	f.Columns = append(f.Columns, Fact{Column: Column{"y", true, ""}})
+	f.Columns = append(f.Columns, Fact{Column: Column{"y", true, "", false}})
 	for i := range candidates {
-		f.Columns = append(f.Columns, Fact{Column: Column{fmt.Sprintf("x%d", i), true, ""}, Min: -3.5, Max: 3.5})
+		f.Columns = append(f.Columns, Fact{Column: Column{fmt.Sprintf("x%d", i), true, "", false}, Min: -3.5, Max: 3.5})
 	}
 	f.Columns = append(f.Columns, more...)
 	return f
@@ -143,13 +143,13 @@ func saidLuck(t *testing.T, text string) float64 {
 
 // whole makes a whole-numbered column with every value once.
 func whole(name string, low, high float64, rising bool) Fact {
-	return Fact{Column: Column{name, true, ""}, Whole: true, Unique: true, Rising: rising, Min: low, Max: high}
+	return Fact{Column: Column{name, true, "", false}, Whole: true, Unique: true, Rising: rising, Min: low, Max: high}
 }
 
 // DESIGN section 9: what would mislead is flagged, and identifiers and leaks
 // are left out.
 func TestFlags(t *testing.T) {
-	usable := func(name string) Column { return Column{name, true, ""} }
+	usable := func(name string) Column { return Column{name, true, "", false} }
 	for _, c := range []struct {
 		name string
 		fact Fact
@@ -172,7 +172,7 @@ func TestFlags(t *testing.T) {
 		{name: "unique count", fact: whole("reads", 1, 1e6, false), kind: FlagUnique},
 		{name: "count", fact: Fact{Column: usable("reads"), Whole: true, Max: 100}, none: true},
 		{name: "date", fact: Fact{Column: usable("day"), Whole: true, Date: true}, kind: FlagDate},
-		{name: "text", fact: Fact{Column: Column{"notes", false, "text"}}, kind: FlagUnusable},
+		{name: "nested", fact: Fact{Column: Column{"notes", false, "nested", false}}, kind: FlagUnusable},
 		{name: "constant", fact: Fact{Column: usable("a"), Constant: true, Whole: true}, kind: FlagConstant},
 		{name: "empty", fact: Fact{Column: usable("a"), Missing: 200}, kind: FlagEmpty, left: true},
 	} {
@@ -270,7 +270,7 @@ func TestDraftOfTwoValuedOutcome(t *testing.T) {
 // lost under drop-rows, no infinite value under fill-mean.
 func TestDraftOfMissingValues(t *testing.T) {
 	gappy := func(name string, missing, infinite int64) Fact {
-		return Fact{Column: Column{name, true, ""}, Missing: missing, Infinite: infinite}
+		return Fact{Column: Column{name, true, "", false}, Missing: missing, Infinite: infinite}
 	}
 	for _, c := range []struct {
 		name       string
@@ -280,7 +280,7 @@ func TestDraftOfMissingValues(t *testing.T) {
 		left       int
 	}{
 		{"none", nil, -1, Refuse, 0},
-		{"in columns that are no candidates", []Fact{{Column: Column{"notes", false, "text"}, Missing: 90}, gappy("e", 200, 0)}, -1, Refuse, 1},
+		{"in columns that are no candidates", []Fact{{Column: Column{"notes", false, "nested", false}, Missing: 90}, gappy("e", 200, 0)}, -1, Refuse, 1},
 		{"few", []Fact{gappy("a", 6, 0), gappy("b", 3, 1)}, -1, DropRows, 0},
 		{"too many by the sum", []Fact{gappy("a", 6, 0), gappy("b", 5, 0)}, -1, FillMean, 0},
 		{"few by the count", []Fact{gappy("a", 6, 0), gappy("b", 6, 0)}, 6, DropRows, 0},
@@ -318,7 +318,7 @@ func TestDraftRefuses(t *testing.T) {
 		{"has no columns", Facts{Path: "t.csv"}},
 		{"name the column", edit(20, 5, func(f *Facts) { f.Outcome = "" })},
 		{`no column "yy" to be explained; the nearest is "y"`, edit(20, 0, func(f *Facts) { f.Outcome = "yy" })},
-		{`column "y" cannot be the outcome: text`, edit(20, 5, func(f *Facts) { f.Columns[0].Usable, f.Columns[0].Reason = false, "text" })},
+		{`column "y" cannot be the outcome: nested`, edit(20, 5, func(f *Facts) { f.Columns[0].Usable, f.Columns[0].Reason = false, "nested" })},
 		{`"y" has no value in 3 of 20 rows, and`, edit(20, 5, func(f *Facts) { f.Columns[0].Missing = 3 })},
 		{`"y" has no value in 1 of 20 rows (row 17, counted from 0), and`, edit(20, 5, func(f *Facts) { f.Columns[0].Missing, f.OutcomeGaps = 1, []int{17} })},
 		{"in 12 of 20 rows (rows 0, 4 and 10 more, counted", edit(20, 5, func(f *Facts) { f.Columns[0].Missing, f.OutcomeGaps = 12, []int{0, 4} })},
@@ -349,10 +349,10 @@ func TestDraftOfHostileNames(t *testing.T) {
 	f := factsOf(200, 20)
 	for _, name := range hostile {
 		f.Columns = append(f.Columns,
-			Fact{Column: Column{name + "1", true, ""}, R: number(0.99)},
-			Fact{Column: Column{name + "2", false, "text\n[draws]"}},
-			Fact{Column: Column{name + "3", true, ""}, Constant: true},
-			Fact{Column: Column{name + "4", true, ""}, Date: true},
+			Fact{Column: Column{name + "1", true, "", false}, R: number(0.99)},
+			Fact{Column: Column{name + "2", false, "text\n[draws]", false}},
+			Fact{Column: Column{name + "3", true, "", false}, Constant: true},
+			Fact{Column: Column{name + "4", true, "", false}, Date: true},
 		)
 	}
 	f.Path, f.Columns[0].Name, f.Outcome = "t\n.csv", "y\n", "y\n"
@@ -373,7 +373,7 @@ func TestDraftOfHostileNames(t *testing.T) {
 func TestDraftOfManyUnusable(t *testing.T) {
 	f := factsOf(200, 20)
 	for i := range 5000 {
-		f.Columns = append(f.Columns, Fact{Column: Column{fmt.Sprintf("t%d", i), false, "text"}})
+		f.Columns = append(f.Columns, Fact{Column: Column{fmt.Sprintf("t%d", i), false, "nested", false}})
 	}
 	text, _, r := drafted(t, f)
 	if n := strings.Count(text, "\n"); n > 120 || !strings.Contains(text, "and 4960 more") || len(r.Excluded) != 5000 {

@@ -66,9 +66,9 @@ func FuzzResolve(f *testing.F) {
 		s := Default()
 		s.Outcome.Column = "y"
 		s.Candidates.Take, s.Candidates.Leave, s.Candidates.Always = []string{take}, []string{leave}, []string{always}
-		cols := []Column{{"y", true, ""}}
+		cols := []Column{{"y", true, "", false}}
 		for i, c := range names {
-			cols = append(cols, Column{string(c), i%3 != 2, "text"})
+			cols = append(cols, Column{string(c), i%3 != 2, "nested", i%4 == 1})
 		}
 		r, err := s.Resolve(cols)
 		var ps Problems

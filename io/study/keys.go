@@ -78,11 +78,11 @@ var sections = []section{
 			field: listField{func(s *Study) *[]string { return &s.Candidates.Leave }}},
 		{name: "always", about: "in every model, not penalised",
 			field: listField{func(s *Study) *[]string { return &s.Candidates.Always }}},
-		{name: "categories", about: "boolean or integer columns to be read as categories",
+		{name: "categories", about: "names or patterns; boolean or integer columns to be read as categories, as text is anyway",
 			field: listField{func(s *Study) *[]string { return &s.Candidates.Categories }}},
 		{name: "reference", about: "reference level of a category; default: the first in byte order",
 			entries: textMap{func(s *Study) map[string]string { return s.Candidates.Reference }}},
-		{name: "groups", about: "columns that enter together",
+		{name: "groups", about: "names or patterns; candidates that enter together",
 			entries: listMap{func(s *Study) map[string][]string { return s.Candidates.Groups }}},
 	}},
 	{"penalty", []key{
@@ -212,11 +212,20 @@ func (f levelField) set(s *Study, v value) error {
 	return err
 }
 
-// levelOf reads a value that is compared as text.
+// levelOf reads a value that is compared as text: a number by its shortest
+// text, so that 1.0 is the level 1.
 func levelOf(v value) (string, error) {
 	switch v.shape {
-	case textShape, wholeShape, realShape, boolShape:
+	case textShape, boolShape:
 		return v.text, nil
+	case wholeShape:
+		if whole, err := v.whole(); err == nil {
+			return strconv.FormatInt(whole, 10), nil
+		}
+	case realShape:
+		if x, err := v.real(); err == nil {
+			return strconv.FormatFloat(x, 'g', -1, 64), nil
+		}
 	}
 	return "", fmt.Errorf("must be a value of the column, such as \"alive\", 1 or true")
 }

@@ -87,7 +87,7 @@ func randomStudy(rng *rand.Rand) *Study {
 	s.Candidates.Leave, s.Candidates.Always, s.Candidates.Categories = oddTexts(rng), oddTexts(rng), oddTexts(rng)
 	for range rng.IntN(4) {
 		s.Candidates.Reference[oddText(rng)] = oddText(rng)
-		s.Candidates.Groups[oddText(rng)] = oddTexts(rng)
+		s.Candidates.Groups[oddText(rng)] = append(oddTexts(rng), oddText(rng))
 		s.Penalty.Relative[oddText(rng)] = math.Exp(40 * rng.NormFloat64())
 	}
 	s.Penalty.Mix, s.Penalty.Jitter = unit(), unit()

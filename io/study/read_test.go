@@ -141,12 +141,16 @@ func TestDefaults(t *testing.T) {
 // DESIGN section 7: classes and event status are balanced by default.
 func TestDefaultWithin(t *testing.T) {
 	for kind, want := range map[string][]string{"number": {}, "count": {}, "yes-no": {"outcome"}, "classes": {"outcome"}} {
-		s := parse(t, small+"kind = \""+kind+"\"\n")
+		text := small + "kind = \"" + kind + "\"\n"
+		if kind == "yes-no" {
+			text += "success = 1\n"
+		}
+		s := parse(t, text)
 		if !reflect.DeepEqual(s.Draws.Within, want) {
 			t.Errorf("%s: within %q, want %q", kind, s.Draws.Within, want)
 		}
 	}
-	s := parse(t, small+"kind = \"yes-no\"\n[draws]\nwithin = []\n")
+	s := parse(t, small+"kind = \"yes-no\"\nsuccess = 1\n[draws]\nwithin = []\n")
 	if len(s.Draws.Within) != 0 {
 		t.Errorf("an empty list was filled up: %q", s.Draws.Within)
 	}
@@ -158,7 +162,7 @@ var values = map[string]struct{ good, bad []string }{
 	"table.path":                {[]string{`"a.csv"`, `'C:\t.csv'`}, []string{`1`, `true`, `["a"]`, `""`}},
 	"table.missing":             {[]string{`"refuse"`, `"drop-rows"`, `"fill-mean"`, `"own-level"`}, []string{`"drop"`, `"Refuse"`, `0`, `true`}},
 	"table.accept_loss":         {[]string{`false`, `true`}, []string{`"true"`, `1`}},
-	"outcome.kind":              {[]string{`"number"`, `"yes-no"`, `"count"`, `"classes"`}, []string{`"gaussian"`, `1`, `[]`}},
+	"outcome.kind":              {[]string{`"number"`, `"count"`, `"classes"`}, []string{`"gaussian"`, `1`, `[]`}}, // yes-no needs success
 	"outcome.column":            {[]string{`"y"`}, []string{`1`, `""`, `["y"]`}},
 	"outcome.success":           {[]string{`""`}, []string{`["alive"]`, `{}`, `"alive"`}}, // of another kind
 	"outcome.time":              {[]string{`""`}, []string{`1`, `"t"`}},
@@ -174,7 +178,7 @@ var values = map[string]struct{ good, bad []string }{
 	"candidates.always":         {[]string{`[]`, `["a"]`}, []string{`"a"`, `[1.5]`}},
 	"candidates.categories":     {[]string{`[]`, `["a"]`}, []string{`"a"`, `[2026-03-14]`}},
 	"candidates.reference":      {[]string{`{}`, `{feed = "algae"}`, `{dose = 3, wet = true}`}, []string{`"algae"`, `{feed = ["algae"]}`}},
-	"candidates.groups":         {[]string{`{}`, `{salinity = ["sal_*"]}`}, []string{`["sal_*"]`, `{salinity = "sal_*"}`}},
+	"candidates.groups":         {[]string{`{}`, `{salinity = ["sal_*"]}`}, []string{`["sal_*"]`, `{salinity = "sal_*"}`, `{salinity = []}`, `{"" = ["a"]}`}},
 	"penalty.mix":               {[]string{`1`, `1.0`, `1e-3`, `0.5`}, []string{`0`, `1.01`, `-0.5`, `nan`, `inf`, `"1"`, `true`}},
 	"penalty.scale":             {[]string{`"draw"`, `"table"`, `"none"`}, []string{`"sd"`, `1`, `false`}},
 	"penalty.jitter":            {[]string{`1`, `0.2`}, []string{`0`, `1.5`, `nan`, `"1"`}},
@@ -269,6 +273,10 @@ func TestMessages(t *testing.T) {
 		{small + "[draws]\ndesign = \"bootstrap\"\n[decision]\nfalse_selections = 1\n", `study: dir/s.toml:8: decision.false_selections: draws.design = "bootstrap" has no bound on false selections: give threshold and selected in its place`},
 		{small + "time = \"t\"\n", `study: dir/s.toml:5: outcome.time: is for outcome.kind = "survival", and it is "number"`},
 		{"[table]\npath = \"t.csv\"\n[outcome]\nkind = \"survival\"\ncolumn = \"y\"\ntime = \"t\"\nevent = \"e\"\n", `study: dir/s.toml:5: outcome.column: outcome.kind = "survival" has time and event in place of column`},
+		{small + "kind = \"yes-no\"\n", `study: dir/s.toml: outcome.success: is missing: outcome.kind = "yes-no" needs the value that counts as yes, such as 1, true or "alive"`},
+		{small + "kind = \"classes\"\noffset = \"o\"\n", `study: dir/s.toml:6: outcome.offset = "o": is for every kind of outcome but classes, where it would move all classes alike: leave the line out`},
+		{small + "[candidates.groups]\nsalinity = []\n", `study: dir/s.toml:6: candidates.groups.salinity = []: has no members: name columns or patterns, or take the line out`},
+		{small + "[candidates.groups]\n\"\" = [\"a\"]\n", `study: dir/s.toml:6: candidates.groups."": a group has a name: it stands in the tables of results`},
 		{"[table]\npath = t.csv\n", "study: dir/s.toml:2: is not TOML: "},
 		{"[table]\npath = \"a\"\npath = \"b\"\n", "study: dir/s.toml:3: is not TOML: "},
 		{small + "[table]\n", "study: dir/s.toml:5: is not TOML: "},
@@ -277,6 +285,19 @@ func TestMessages(t *testing.T) {
 		got := problems(t, c.text)[0].Error()
 		if got != c.want && !(strings.HasSuffix(c.want, ": ") && strings.HasPrefix(got, c.want)) {
 			t.Errorf("for\n%s\ngot  %s\nwant %s", c.text, got, c.want)
+		}
+	}
+}
+
+// DESIGN section 7: levels are compared as text, so that a number stands for
+// its shortest text.
+func TestLevels(t *testing.T) {
+	for written, want := range map[string]string{
+		`1`: "1", `1.0`: "1", `0x1F`: "31", `1_000`: "1000", `-0.50`: "-0.5", `true`: "true", `"1.0"`: "1.0", `"alive"`: "alive", `1e3`: "1000",
+	} {
+		s := parse(t, small+"kind = \"yes-no\"\nsuccess = "+written+"\n[candidates.reference]\nfeed = "+written+"\n")
+		if s.Outcome.Success != want || s.Candidates.Reference["feed"] != want {
+			t.Errorf("%s: got %q and %q, want %q", written, s.Outcome.Success, s.Candidates.Reference["feed"], want)
 		}
 	}
 }

@@ -12,6 +12,7 @@ type Column struct {
 	Name   string
 	Usable bool   // can be a predictor as it is
 	Reason string // where not usable: why, such as "text"
+	Text   bool   // text, which is a predictor only as a category, whatever Usable says
 }
 
 // Excluded is a column that a pattern took and that cannot be used.
@@ -19,12 +20,30 @@ type Excluded struct{ Name, Reason string }
 
 // Roles says which columns play which part. All lists are in table order.
 type Roles struct {
-	Outcome    string // outcome.column; empty for survival
-	Candidates []string
+	Outcome    string      // outcome.column; empty for survival
+	Candidates []string    // all columns that compete, members of groups among them
+	Predictors []Predictor // the units of selection that Candidates make, in order of their first columns
+	Groups     []Group     // the groups among Predictors, in the same order
 	Always     []string
+	Categories []string   // of Candidates and Always: those to be read as categories
+	Named      []string   // of Candidates and Always: those that a list names, not only a pattern
+	Within     []string   // columns to be balanced; "outcome" stands for classes or event status
 	Left       []string   // taken by candidates.take and left out by candidates.leave
 	Excluded   []Excluded // taken by a pattern but not usable, with the reason
-	Relative   []float64  // penalty weight of each of Candidates; nil: all 1
+	Relative   []float64  // penalty weight of each of Predictors; nil: all 1
+}
+
+// Predictor is one unit of selection: a column, a category, or a group.
+type Predictor struct {
+	Name    string   // of the column, or of the group
+	Columns []string // the column alone, or the group's members
+	Group   bool
+}
+
+// Group is a set of candidates that enter together.
+type Group struct {
+	Name    string
+	Members []string
 }
 
 // wish counts how a list of candidates speaks of a column.
@@ -38,8 +57,9 @@ type wishes struct{ take, leave, always wish }
 // Resolve finds the columns that a study speaks of. A name beats a pattern;
 // among patterns leave beats always and always beats take; two lists that both
 // name a column are an error. The outcome, and every column with another role,
-// is never a candidate. Of a column that cannot be used a pattern only lists
-// it in Excluded; its name is an error. cols is not changed. The error is
+// is never a candidate; only a column of draws.within may be named as one. Of a
+// column that cannot be used a pattern only lists it in Excluded; its name is
+// an error. Text is read as a category. cols is not changed. The error is
 // Problems, all that were found.
 func (s *Study) Resolve(cols []Column) (*Roles, error) {
 	r := newResolver(s, cols)
@@ -50,6 +70,9 @@ func (s *Study) Resolve(cols []Column) (*Roles, error) {
 	for i := range r.cols {
 		r.settle(i)
 	}
+	r.findCategories()
+	r.findReferences()
+	r.findGroups()
 	r.checkSome()
 	r.relative()
 	if err := r.faults.err(); err != nil {
@@ -66,8 +89,13 @@ type resolver struct {
 	names  []string
 	index  map[string]int    // first column of a name
 	taken  map[string]string // key by column with a role of its own
+	within map[string]bool   // columns that the draws balance: a predictor only by name
+	owner  map[string]string // group by member
+	twice  map[string]bool   // names of several columns
 	wishes []wishes
 	roles  Roles
+
+	isPredictor map[string]bool // candidates and columns that are always in
 }
 
 func newResolver(s *Study, cols []Column) *resolver {
@@ -78,7 +106,12 @@ func newResolver(s *Study, cols []Column) *resolver {
 		names:  make([]string, len(cols)),
 		index:  make(map[string]int, len(cols)),
 		taken:  map[string]string{},
+		within: map[string]bool{},
+		owner:  map[string]string{},
+		twice:  map[string]bool{},
 		wishes: make([]wishes, len(cols)),
+
+		isPredictor: map[string]bool{},
 	}
 	count := make(map[string]int, len(cols))
 	for _, c := range cols {
@@ -90,51 +123,12 @@ func newResolver(s *Study, cols []Column) *resolver {
 			r.index[c.Name] = i
 		}
 		if n := count[c.Name]; n > 1 {
-			r.cols[i].Usable = false
+			r.twice[c.Name] = true
+			r.cols[i].Usable, r.cols[i].Text = false, false
 			r.cols[i].Reason = "its name stands over " + strconv.Itoa(n) + " columns"
 		}
 	}
 	return r
-}
-
-// findRoles looks up the columns that the outcome names.
-func (r *resolver) findRoles() {
-	r.roles.Outcome = r.study.Outcome.Column
-	for _, role := range r.study.Outcome.roles() {
-		i, ok := r.index[role.column]
-		if !ok {
-			r.unknown(role.key, role.column)
-			continue
-		}
-		r.taken[role.column] = role.key
-		if c := r.cols[i]; !c.Usable && (r.study.Outcome.Kind == Number || role.key != "outcome.column") {
-			r.faults.value(role.key, quoted(role.column), "cannot be used: %s", c.Reason)
-		}
-	}
-	for _, list := range []struct {
-		key  string
-		cols []string
-	}{
-		{"outcome.strata", r.study.Outcome.Strata},
-		{"draws.together", r.study.Draws.Together},
-		{"draws.within", r.balanced()},
-	} {
-		for _, name := range list.cols {
-			if _, ok := r.index[name]; !ok {
-				r.unknown(list.key, name)
-			} else if r.taken[name] == "" {
-				r.taken[name] = list.key
-			}
-		}
-	}
-}
-
-// balanced is draws.within without the word that stands for the outcome.
-func (r *resolver) balanced() []string {
-	if len(defaultWithin(r.study.Outcome.Kind)) == 0 {
-		return r.study.Draws.Within
-	}
-	return slices.DeleteFunc(slices.Clone(r.study.Draws.Within), func(name string) bool { return name == "outcome" })
 }
 
 // unknown notes a name that no column has.
@@ -158,31 +152,34 @@ func (r *resolver) read(key string, list []string, of func(*wishes) *wish) {
 			of(&r.wishes[i]).named = true
 			continue
 		}
-		if !hasPattern(text) {
-			r.unknown(key, text)
-			continue
-		}
-		m, err := newMatcher(text)
-		if err != nil {
-			r.faults.value(key, quoted(text), "is no column and no pattern: a [ must be closed, and a \\ must be followed by a character")
-			continue
-		}
-		if !r.mark(m, of) {
-			r.faults.value(key, quoted(text), "matches no column of the table%s", r.hint(text))
+		for _, i := range r.matched(key, text) {
+			of(&r.wishes[i]).matched = true
 		}
 	}
 }
 
-// mark marks what a pattern matches, and says whether that is anything.
-func (r *resolver) mark(m matcher, of func(*wishes) *wish) bool {
-	any := false
+// matched lists the columns that a pattern matches, and notes a text that is no
+// column and no pattern, or a pattern that matches nothing.
+func (r *resolver) matched(key, text string) []int {
+	if !hasPattern(text) {
+		r.unknown(key, text)
+		return nil
+	}
+	m, err := newMatcher(text)
+	if err != nil {
+		r.faults.value(key, quoted(text), "is no column and no pattern: a [ must be closed, and a \\ must be followed by a character")
+		return nil
+	}
+	var found []int
 	for i, name := range r.names {
 		if m.match(name) {
-			of(&r.wishes[i]).matched = true
-			any = true
+			found = append(found, i)
 		}
 	}
-	return any
+	if len(found) == 0 {
+		r.faults.value(key, quoted(text), "matches no column of the table%s", r.hint(text))
+	}
+	return found
 }
 
 // settle gives one column its part.
@@ -191,6 +188,9 @@ func (r *resolver) settle(i int) {
 	if key, ok := r.taken[name]; ok {
 		r.checkTaken(w, name, key)
 		return
+	}
+	if r.within[name] {
+		w.take.matched, w.always.matched = false, false
 	}
 	if r.conflict(w, name) {
 		return
@@ -241,13 +241,27 @@ func (r *resolver) conflict(w wishes, name string) bool {
 // admit appends a usable column to a list.
 func (r *resolver) admit(list *[]string, key string, i int, named bool) {
 	switch c := r.cols[i]; {
-	case c.Usable:
+	case c.admissible():
 		*list = append(*list, c.Name)
+		r.isPredictor[c.Name] = true
+		if named {
+			r.roles.Named = append(r.roles.Named, c.Name)
+		}
 	case named:
 		r.faults.value(key, quoted(c.Name), "cannot be used: %s", c.Reason)
 	default:
 		r.roles.Excluded = append(r.roles.Excluded, Excluded{c.Name, c.Reason})
 	}
+}
+
+// admissible says whether a column can be a predictor, as it is or as a
+// category.
+func (c Column) admissible() bool { return c.Usable || c.Text }
+
+// isCandidate says whether a column competes.
+func (r *resolver) isCandidate(name string) bool {
+	_, found := slices.BinarySearchFunc(r.roles.Candidates, r.index[name], func(have string, at int) int { return r.index[have] - at })
+	return found
 }
 
 // checkSome refuses a study without a candidate, and says where all went.
@@ -264,16 +278,16 @@ func (r *resolver) checkSome() {
 	r.faults.add("candidates.take", "%s", why)
 }
 
-// relative spreads penalty.relative over the candidates.
+// relative spreads penalty.relative over the predictors.
 func (r *resolver) relative() {
 	asked := r.study.Penalty.Relative
 	if len(asked) == 0 {
 		return
 	}
-	position := make(map[string]int, len(r.roles.Candidates))
-	weights := make([]float64, len(r.roles.Candidates))
-	for i, name := range r.roles.Candidates {
-		position[name] = i
+	position := make(map[string]int, len(r.roles.Predictors))
+	weights := make([]float64, len(r.roles.Predictors))
+	for i, p := range r.roles.Predictors {
+		position[p.Name] = i
 		weights[i] = 1
 	}
 	for _, name := range slices.Sorted(maps.Keys(asked)) {
@@ -281,21 +295,32 @@ func (r *resolver) relative() {
 			weights[i] = asked[name]
 			continue
 		}
-		r.notCandidate(name)
+		r.notPenalised(name)
 	}
 	r.roles.Relative = weights
 }
 
-// notCandidate notes a relative penalty that has nothing to apply to.
-func (r *resolver) notCandidate(name string) {
+// notPenalised notes a relative penalty that has nothing to apply to.
+func (r *resolver) notPenalised(name string) {
 	key := "penalty.relative." + keyName(name)
 	_, known := r.index[name]
+	group, member := r.owner[name]
 	switch {
+	case member:
+		r.faults.add(key, "is a member of the group %[1]s, which is penalised as a whole: write penalty.relative.%[1]s", keyName(group))
 	case slices.Contains(r.roles.Always, name):
 		r.faults.add(key, "is always in the model and not penalised: take its line out")
 	case known:
 		r.faults.add(key, "is a column of the table but no candidate: take its line out, or the column in")
-	case len(r.roles.Candidates) > 0:
-		r.faults.add(key, "is no candidate%s", NearHint(name, r.roles.Candidates))
+	case len(r.roles.Predictors) > 0:
+		r.faults.add(key, "is no candidate%s", NearHint(name, r.predictorNames()))
 	}
+}
+
+func (r *resolver) predictorNames() []string {
+	names := make([]string, len(r.roles.Predictors))
+	for i, p := range r.roles.Predictors {
+		names[i] = p.Name
+	}
+	return names
 }

@@ -12,9 +12,9 @@ import (
 
 // hatchery is a table of an invented oyster hatchery.
 var hatchery = []Column{
-	{"batch_id", true, ""}, {"notes", false, "text"}, {"sal_1", true, ""}, {"sal_2", true, ""},
-	{"sal_text", false, "text"}, {"ph", true, ""}, {"Mg [mmol/l]", true, ""}, {"feed/day", true, ""},
-	{"survival", true, ""}, {"age", true, ""}, {"spawned", false, "a date"},
+	{"batch_id", true, "", false}, {"notes", false, "nested", false}, {"sal_1", true, "", false}, {"sal_2", true, "", false},
+	{"sal_list", false, "nested", false}, {"ph", true, "", false}, {"Mg [mmol/l]", true, "", false}, {"feed/day", true, "", false},
+	{"survival", true, "", false}, {"age", true, "", false}, {"spawned", false, "a date", false},
 }
 
 // resolved applies lines to the least study over the hatchery.
@@ -28,14 +28,14 @@ func TestResolve(t *testing.T) {
 		name, lines                         string
 		candidates, always, left, excludeds string
 	}{
-		{"default", "", "batch_id sal_1 sal_2 ph Mg_[mmol/l] feed/day age", "", "", "notes sal_text spawned"},
-		{"leave by name", `leave = ["batch_id"]`, "sal_1 sal_2 ph Mg_[mmol/l] feed/day age", "", "batch_id", "notes sal_text spawned"},
-		{"leave by pattern", `leave = ["sal_*", "batch?id"]`, "ph Mg_[mmol/l] feed/day age", "", "batch_id sal_1 sal_2 sal_text", "notes spawned"},
-		{"always beats a pattern", `always = ["age"]`, "batch_id sal_1 sal_2 ph Mg_[mmol/l] feed/day", "age", "", "notes sal_text spawned"},
-		{"always by pattern", "take = [\"sal_*\"]\nalways = [\"a?e\", \"ph\"]", "sal_1 sal_2", "ph age", "", "sal_text"},
+		{"default", "", "batch_id sal_1 sal_2 ph Mg_[mmol/l] feed/day age", "", "", "notes sal_list spawned"},
+		{"leave by name", `leave = ["batch_id"]`, "sal_1 sal_2 ph Mg_[mmol/l] feed/day age", "", "batch_id", "notes sal_list spawned"},
+		{"leave by pattern", `leave = ["sal_*", "batch?id"]`, "ph Mg_[mmol/l] feed/day age", "", "batch_id sal_1 sal_2 sal_list", "notes spawned"},
+		{"always beats a pattern", `always = ["age"]`, "batch_id sal_1 sal_2 ph Mg_[mmol/l] feed/day", "age", "", "notes sal_list spawned"},
+		{"always by pattern", "take = [\"sal_*\"]\nalways = [\"a?e\", \"ph\"]", "sal_1 sal_2", "ph age", "", "sal_list"},
 		{"table order", "take = [\"ph\", \"sal_2\", \"batch_id\"]", "batch_id sal_2 ph", "", "", ""},
 		{"taken twice", "take = [\"ph\", \"p*\", \"ph\"]", "ph", "", "", ""},
-		{"name beats leave pattern", "take = [\"*\", \"sal_2\"]\nleave = [\"sal_[12]\"]", "batch_id sal_2 ph Mg_[mmol/l] feed/day age", "", "sal_1", "notes sal_text spawned"},
+		{"name beats leave pattern", "take = [\"*\", \"sal_2\"]\nleave = [\"sal_[12]\"]", "batch_id sal_2 ph Mg_[mmol/l] feed/day age", "", "sal_1", "notes sal_list spawned"},
 		{"name beats always pattern", "take = [\"ph\", \"sal_1\"]\nalways = [\"sal_[12]\"]", "sal_1 ph", "sal_2", "", ""},
 		{"leave pattern beats always pattern", "take = [\"ph\"]\nleave = [\"*_1\"]\nalways = [\"sal_[12]\"]", "ph", "sal_2", "sal_1", ""},
 		{"always name beats leave pattern", "take = [\"ph\"]\nleave = [\"sal_*\"]\nalways = [\"sal_1\"]", "ph", "sal_1", "", ""},
@@ -44,7 +44,7 @@ func TestResolve(t *testing.T) {
 		{"a class", `take = ["[^s]*"]`, "batch_id ph Mg_[mmol/l] feed/day age", "", "", "notes"},
 		{"escaped bracket", `take = ['Mg \[*']`, "Mg_[mmol/l]", "", "", ""},
 		{"leaving what is not taken", "take = [\"ph\"]\nleave = [\"age\"]", "ph", "", "", ""},
-		{"leaving the outcome", `leave = ["survival", "sal_*", "batch_id"]`, "ph Mg_[mmol/l] feed/day age", "", "batch_id sal_1 sal_2 sal_text", "notes spawned"},
+		{"leaving the outcome", `leave = ["survival", "sal_*", "batch_id"]`, "ph Mg_[mmol/l] feed/day age", "", "batch_id sal_1 sal_2 sal_list", "notes spawned"},
 	} {
 		r, err := resolved(t, "[candidates]\n"+c.lines+"\n")
 		if err != nil {
@@ -81,12 +81,12 @@ func TestResolveRefuses(t *testing.T) {
 		{"broken pattern", "[candidates]\ntake = [\"Mg [mmol\"]", "is no column and no pattern"},
 		{"the outcome", "[candidates]\ntake = [\"*\", \"survival\"]", `candidates.take = "survival": is the column of outcome.column, which is never a candidate`},
 		{"the outcome always", "[candidates]\nalways = [\"survival\"]", "which is never a predictor"},
-		{"text by name", "[candidates]\ntake = [\"notes\"]", `candidates.take = "notes": cannot be used: text`},
-		{"text always", "[candidates]\nalways = [\"notes\"]", `candidates.always = "notes": cannot be used: text`},
+		{"text by name", "[candidates]\ntake = [\"notes\"]", `candidates.take = "notes": cannot be used: nested`},
+		{"text always", "[candidates]\nalways = [\"notes\"]", `candidates.always = "notes": cannot be used: nested`},
 		{"take and leave", "[candidates]\ntake = [\"ph\", \"age\"]\nleave = [\"ph\"]", `s.toml:7: candidates.leave = "ph": is named by candidates.take too`},
 		{"take and always", "[candidates]\ntake = [\"ph\", \"age\"]\nalways = [\"ph\"]", `candidates.always = "ph": is named by candidates.take too`},
 		{"leave and always", "[candidates]\nleave = [\"ph\"]\nalways = [\"ph\"]", `candidates.always = "ph": is named by candidates.leave too`},
-		{"nothing left", "[candidates]\ntake = [\"sal_*\"]\nleave = [\"sal_1\", \"sal_2\"]", `leaves no candidate: of 11 columns 2 are left out, 0 are always in the model, 1 cannot be used ("sal_text": text)`},
+		{"nothing left", "[candidates]\ntake = [\"sal_*\"]\nleave = [\"sal_1\", \"sal_2\"]", `leaves no candidate: of 11 columns 2 are left out, 0 are always in the model, 1 cannot be used ("sal_list": nested)`},
 		{"relative of no column", "[penalty.relative]\npH = 2", `s.toml:6: penalty.relative.pH: is no candidate; the nearest is "ph"`},
 		{"relative of always", "[candidates]\nalways = [\"ph\"]\n[penalty.relative]\nph = 2", "penalty.relative.ph: is always in the model"},
 		{"relative of a left column", "[candidates]\nleave = [\"ph\"]\n[penalty.relative]\nph = 2", "penalty.relative.ph: is a column of the table but no candidate"},
@@ -103,7 +103,7 @@ func TestResolveRefuses(t *testing.T) {
 func TestResolveOutcome(t *testing.T) {
 	for column, want := range map[string]string{
 		"survivl": `outcome.column = "survivl": the table has no such column; the nearest is "survival"`,
-		"notes":   `outcome.column = "notes": cannot be used: text`,
+		"notes":   `outcome.column = "notes": cannot be used: nested`,
 	} {
 		_, err := parse(t, strings.Replace(small, `"y"`, `"`+column+`"`, 1)).Resolve(hatchery)
 		if err == nil || !strings.Contains(err.Error(), want) {
@@ -121,7 +121,7 @@ func TestOtherRolesAreNoCandidates(t *testing.T) {
 	s := parse(t, small+"offset = \"o\"\ncase_weight = \"w\"\n[draws]\ntogether = [\"tank\"]\nwithin = [\"site\"]\n")
 	var cols []Column
 	for _, name := range []string{"y", "x", "o", "w", "tank", "site"} {
-		cols = append(cols, Column{name, true, ""})
+		cols = append(cols, Column{name, true, "", false})
 	}
 	r, err := s.Resolve(cols)
 	if err != nil || !reflect.DeepEqual(r.Candidates, []string{"x"}) {
@@ -145,7 +145,7 @@ func TestRelative(t *testing.T) {
 // One name over two columns: a pattern lists both as not usable, a name is an
 // error.
 func TestDuplicateNames(t *testing.T) {
-	cols := []Column{{"y", true, ""}, {"a", true, ""}, {"b", true, ""}, {"a", true, ""}}
+	cols := []Column{{"y", true, "", false}, {"a", true, "", false}, {"b", true, "", false}, {"a", true, "", false}}
 	r, err := parse(t, small).Resolve(cols)
 	if err != nil || !reflect.DeepEqual(r.Candidates, []string{"b"}) || len(r.Excluded) != 2 || !strings.Contains(r.Excluded[0].Reason, "2 columns") {
 		t.Errorf("got %+v, %v", r, err)
@@ -201,10 +201,10 @@ func TestMatch(t *testing.T) {
 // A hundred thousand columns and as many wrong names end in seconds, and in a
 // message that can be read.
 func TestResolveIsQuick(t *testing.T) {
-	cols := []Column{{"y", true, ""}}
+	cols := []Column{{"y", true, "", false}}
 	wrong := make([]string, 100_000)
 	for i := range wrong {
-		cols = append(cols, Column{fmt.Sprintf("otu_%06d", i), true, ""})
+		cols = append(cols, Column{fmt.Sprintf("otu_%06d", i), true, "", false})
 		wrong[i] = fmt.Sprintf("oto_%06d", i)
 	}
 	s := parse(t, small)

@@ -49,7 +49,7 @@ type Candidates struct {
 	Take       []string            // names or patterns; default ["*"]
 	Leave      []string            // names or patterns; default none
 	Always     []string            // names or patterns; default none
-	Categories []string            // columns to be read as categories; default none
+	Categories []string            // names or patterns of predictors to be read as categories; text is anyway; default none
 	Reference  map[string]string   // reference level by category; default: the first in byte order
 	Groups     map[string][]string // names or patterns by group; default none
 }
@@ -131,12 +131,15 @@ func Default() Study {
 	}
 }
 
+// outcomeWord stands in draws.within for the outcome's classes or event status.
+const outcomeWord = "outcome"
+
 // defaultWithin is the balance of a kind of outcome: its classes or event
 // status where it has any ("outcome" stands for them), nothing otherwise.
 func defaultWithin(k Kind) []string {
 	switch k {
 	case YesNo, Classes, Survival:
-		return []string{"outcome"}
+		return []string{outcomeWord}
 	}
 	return []string{}
 }
