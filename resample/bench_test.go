@@ -11,7 +11,7 @@ func BenchmarkPair(b *testing.B) {
 		b.Run(fmt.Sprintf("rows=%d", rows), func(b *testing.B) {
 			p := mustPlan(b, Plan{Rows: rows, Number: 2, Seed: 1})
 			for k := 0; b.Loop(); k++ {
-				p.samples([]int{2 * k, 2*k + 1})
+				p.draw(k)
 			}
 		})
 	}

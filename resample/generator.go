@@ -8,16 +8,17 @@ import (
 
 // labelSize is the room for a label in a generator's key; two labels of at
 // most this many bytes cannot share a key.
-const labelSize = 16
+const labelSize = 15
 
-// newGenerator returns the stream of one label, seed and number. The key is
-// the three laid side by side, so that no two of them can meet.
-func newGenerator(label string, seed, number uint64) rand.Source {
+// newGenerator returns the stream of one label, attempt, seed and number. The
+// key is the four laid side by side, so that no two of them can meet.
+func newGenerator(label string, attempt uint8, seed, number uint64) rand.Source {
 	if len(label) > labelSize {
-		panic("resample: generator label longer than 16 bytes: " + label)
+		panic("resample: generator label longer than 15 bytes: " + label)
 	}
 	var key [32]byte
 	copy(key[:labelSize], label)
+	key[labelSize] = attempt
 	binary.LittleEndian.PutUint64(key[16:], seed)
 	binary.LittleEndian.PutUint64(key[24:], number)
 	return rand.NewChaCha8(key)

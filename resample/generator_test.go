@@ -34,7 +34,7 @@ func TestBelowRejects(t *testing.T) {
 // and what is left is still even: chi-square over 16 equal classes.
 func TestBelowIsEvenWhereRejectionMatters(t *testing.T) {
 	const limit, classes, tries = 1<<63 + 1, 16, 16000
-	src := newGenerator("test", 1, 0)
+	src := newGenerator("test", 0, 1, 0)
 	observed := make([]float64, classes)
 	for range tries {
 		observed[below(src, limit)>>59]++ // the last value alone is class 16
@@ -52,7 +52,7 @@ func TestBelowIsEvenWhereRejectionMatters(t *testing.T) {
 // without the rejection, for a limit where that doubles some values.
 func TestBelowWithoutRejectionWouldBeCaught(t *testing.T) {
 	const limit, tries = 1 << 62 * 3, 16000
-	src := newGenerator("test", 1, 0)
+	src := newGenerator("test", 0, 1, 0)
 	reduced := func() uint64 { return src.Uint64() % limit } // favours the first third
 	observed, expected := make([]float64, 3), make([]float64, 3)
 	for range tries {
@@ -68,21 +68,23 @@ func TestBelowWithoutRejectionWouldBeCaught(t *testing.T) {
 
 func TestGeneratorKeysAreApart(t *testing.T) {
 	seen := map[uint64]string{}
-	for _, label := range []string{"halves", "bootstrap", "0123456789abcdef"} {
-		for _, seed := range []uint64{0, 1, 2, 1 << 32, math.MaxUint64} {
-			for _, number := range []uint64{0, 1, 2, 1 << 32, math.MaxUint64} {
-				v := newGenerator(label, seed, number).Uint64()
-				if at, twice := seen[v]; twice {
-					t.Errorf("%s %d %d starts like %s", label, seed, number, at)
+	for _, label := range []string{"halves", "bootstrap", "0123456789abcde"} {
+		for _, attempt := range []uint8{0, 1, MaxRedraws, math.MaxUint8} {
+			for _, seed := range []uint64{0, 1, 2, 1 << 32, math.MaxUint64} {
+				for _, number := range []uint64{0, 1, 2, 1 << 32, math.MaxUint64} {
+					v := newGenerator(label, attempt, seed, number).Uint64()
+					if at, twice := seen[v]; twice {
+						t.Errorf("%s %d %d %d starts like %s", label, attempt, seed, number, at)
+					}
+					seen[v] = label
 				}
-				seen[v] = label
 			}
 		}
 	}
 }
 
 func TestLongLabelPanics(t *testing.T) {
-	if guard(func() error { newGenerator("0123456789abcdefg", 0, 0); return nil }) == nil {
-		t.Error("a label of 17 bytes was cut")
+	if guard(func() error { newGenerator("0123456789abcdef", 0, 0, 0); return nil }) == nil {
+		t.Error("a label of 16 bytes was cut")
 	}
 }

@@ -179,13 +179,13 @@ func TestBrokenDrawsAreCaught(t *testing.T) {
 	broken := map[string]func(seed uint64, draw int) []int{
 		// the shuffle that never leaves a row in its place
 		"inclusion": func(seed uint64, draw int) []int {
-			return shuffled(newGenerator("test", seed, uint64(draw)), func(src rand.Source, i int) int {
+			return shuffled(newGenerator("test", 0, seed, uint64(draw)), func(src rand.Source, i int) int {
 				return i + 1 + int(below(src, uint64(n-i-1)))
 			})
 		},
 		// a window of rows from a random start: each row as often, neighbours always together
 		"together": func(seed uint64, draw int) []int {
-			start := int(below(newGenerator("test", seed, uint64(draw)), n))
+			start := int(below(newGenerator("test", 0, seed, uint64(draw)), n))
 			rows := make([]int, m)
 			for i := range rows {
 				rows[i] = (start + i) % n
@@ -195,15 +195,15 @@ func TestBrokenDrawsAreCaught(t *testing.T) {
 		},
 		// two neighbouring draws from one stream
 		"next draw": func(seed uint64, draw int) []int {
-			return shuffled(newGenerator("test", seed, uint64(draw/2)), fair)
+			return shuffled(newGenerator("test", 0, seed, uint64(draw/2)), fair)
 		},
 		// a seed whose lowest bit is lost: 1 and 2 become one
 		"next seed": func(seed uint64, draw int) []int {
-			return shuffled(newGenerator("test", (seed-1)/2, uint64(draw)), fair)
+			return shuffled(newGenerator("test", 0, (seed-1)/2, uint64(draw)), fair)
 		},
 		// seed and draw added up
 		"next seed and draw": func(seed uint64, draw int) []int {
-			return shuffled(newGenerator("test", 0, seed+uint64(draw)), fair)
+			return shuffled(newGenerator("test", 0, 0, seed+uint64(draw)), fair)
 		},
 	}
 	for _, law := range laws {
@@ -213,7 +213,7 @@ func TestBrokenDrawsAreCaught(t *testing.T) {
 	}
 	// the same shuffle, mended, passes: the checks do not fail whatever they are given
 	sound := subset{n, m, func(seed uint64, draw int) []int {
-		return shuffled(newGenerator("test", seed, uint64(draw)), fair)
+		return shuffled(newGenerator("test", 0, seed, uint64(draw)), fair)
 	}}
 	for _, law := range laws {
 		if p := law.check(sound); p < rare {

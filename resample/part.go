@@ -27,6 +27,14 @@ func (p Plan) unit(draw int) int {
 	return draw
 }
 
+// numbers are the draws of a pair, or of a bootstrap draw.
+func (p Plan) numbers(unit int) []int {
+	if p.Design == Halves {
+		return []int{2 * unit, 2*unit + 1}
+	}
+	return []int{unit}
+}
+
 // all lists the draws of the plan.
 func (p Plan) all() []int { return Part(p, 0, 1) }
 

@@ -42,22 +42,40 @@ func ParseDesign(word string) (Design, error) {
 const MinUnits = 4
 
 // Plan says which draws are made. Fill in the exported fields and pass it to
-// NewPlan; a Plan that did not come from there draws nothing.
+// NewPlan; a Plan that did not come from there draws nothing. Fit alone may be
+// set, or changed, after that.
 type Plan struct {
 	Rows   int       // rows of the table, 1 to 2^31-1
 	Design Design    // zero: Halves
 	Number int       // draws, at least 1; even for Halves
 	Seed   uint64    // any value
 	Case   []float64 // case weight of each row, finite and >= 0; nil: 1 each. Kept, not copied
+	Within []int32   // stratum of each row, any code; nil: all rows are one stratum
 
-	units []int32 // rows with a weight, ascending
+	// Jitter in (0,1) gives each candidate of each draw a W uniform on
+	// [Jitter, 1], for a randomised lasso. 0 or 1: none.
+	Jitter float64
+	// Keys are the names of the candidates, in their order, no two alike: what
+	// W is known by. Not needed without Jitter. Kept, not copied.
+	Keys []string
+
+	// Fit says why a draw cannot be fitted at all, nil where it can; such a draw
+	// is made anew. It must be a function of the draw alone, or draws would not
+	// be the same everywhere, and is called from several goroutines at once. Nil:
+	// every draw can be fitted.
+	Fit func(*solver.Sample) error
+
+	units []int32 // rows with a weight, stratum by stratum, ascending in each
+	ends  []int   // of each stratum in units: where the next begins
 }
 
-// NewPlan checks a plan and finds its units. The errors say which number to
-// change, and to what.
+// NewPlan checks a plan, finds its units and lays them out by strata. The
+// errors say which number to change, and to what.
 func NewPlan(p Plan) (Plan, error) {
-	if err := p.check(); err != nil {
-		return Plan{}, err
+	for _, check := range []func() error{p.check, p.checkJitter} {
+		if err := check(); err != nil {
+			return Plan{}, err
+		}
 	}
 	units, err := unitsOf(p.Rows, p.Case)
 	if err != nil {
@@ -66,7 +84,10 @@ func NewPlan(p Plan) (Plan, error) {
 	if len(units) < MinUnits {
 		return Plan{}, fmt.Errorf("resample: %d rows with a weight: at least %d are needed, two for each half", len(units), MinUnits)
 	}
-	p.units = units
+	p.units, p.ends = byStratum(units, p.Within)
+	if err := p.checkStrata(); err != nil {
+		return Plan{}, err
+	}
 	return p, nil
 }
 
@@ -83,6 +104,8 @@ func (p Plan) check() error {
 		return fmt.Errorf("resample: number of draws %d: halves come in pairs, so the number must be even: take %d", p.Number, p.Number+1)
 	case p.Case != nil && len(p.Case) != p.Rows:
 		return fmt.Errorf("resample: %d case weights for %d rows: one for each row is needed", len(p.Case), p.Rows)
+	case p.Within != nil && len(p.Within) != p.Rows:
+		return fmt.Errorf("resample: strata of %d rows for %d rows: one for each row is needed", len(p.Within), p.Rows)
 	}
 	return nil
 }
@@ -110,43 +133,6 @@ func unitsOf(rows int, weights []float64) ([]int32, error) {
 		units = append(units, int32(i))
 	}
 	return units, nil
-}
-
-// Units returns the number of rows that can be drawn.
-func (p Plan) Units() int { return len(p.units) }
-
-// Half returns the number of units in each half, floor(Units/2).
-func (p Plan) Half() int { return len(p.units) / 2 }
-
-// Sample makes draw number draw, from the plan's seed and that number alone.
-// Numbers from Plan.Number on are the draws that a longer plan would have. A
-// negative number, or a plan that did not come from NewPlan, panics.
-func (p Plan) Sample(draw int) *solver.Sample {
-	if draw < 0 || p.units == nil {
-		panic(fmt.Sprintf("resample: draw %d of a plan of %d units", draw, len(p.units)))
-	}
-	if p.Design == Bootstrap {
-		return p.bootstrap(newGenerator(p.Design.String(), p.Seed, uint64(draw)))
-	}
-	pair := p.pair(newGenerator(p.Design.String(), p.Seed, uint64(draw/2)))
-	return pair[draw%2]
-}
-
-// samples makes the draws of a block; both halves of a pair come from one
-// shuffle.
-func (p Plan) samples(draws []int) []*solver.Sample {
-	out := make([]*solver.Sample, 0, len(draws))
-	for i := 0; i < len(draws); i++ {
-		d := draws[i]
-		if p.Design == Halves && d%2 == 0 && i+1 < len(draws) && draws[i+1] == d+1 {
-			pair := p.pair(newGenerator(p.Design.String(), p.Seed, uint64(d/2)))
-			out = append(out, pair[:]...)
-			i++
-			continue
-		}
-		out = append(out, p.Sample(d))
-	}
-	return out
 }
 
 // Drawn goes through the rows of a draw in ascending order, each with how

@@ -143,7 +143,7 @@ func TestSameDrawHoweverAsked(t *testing.T) {
 		}
 		for first := 0; first < 20; first += 3 { // odd starts split pairs on purpose
 			for _, draws := range [][]int{upTo(first, min(first+3, 20)), {first, 19}} {
-				for i, s := range long.samples(draws) {
+				for i, s := range long.block(draws).samples {
 					if !sameSample(s, backward[draws[i]]) {
 						t.Errorf("%v: draw %d differs", design, draws[i])
 					}
@@ -172,7 +172,7 @@ func TestSeedsAndDesignsDiffer(t *testing.T) {
 	if sameSample(base, other) {
 		t.Error("seeds 1 and 2 give the same draw")
 	}
-	a, b := newGenerator("halves", 1, 0), newGenerator("bootstrap", 1, 0)
+	a, b := newGenerator("halves", 0, 1, 0), newGenerator("bootstrap", 0, 1, 0)
 	if a.Uint64() == b.Uint64() {
 		t.Error("two labels give the same stream")
 	}

@@ -190,12 +190,9 @@ func (r *run) stopped() bool {
 // fit makes the draws of a block and fits them.
 func (r *run) fit(ctx context.Context, draws []int) (paths []solver.Path, err error) {
 	err = guard(func() error {
-		paths, err = r.fitter.FitBlock(ctx, r.plan.samples(draws), r.tally.steps)
+		paths, err = r.plan.FitDraws(ctx, r.fitter, draws, r.tally.steps)
 		return err
 	})
-	if err == nil && len(paths) != len(draws) {
-		err = fmt.Errorf("the fitter returned %d paths", len(paths))
-	}
 	if err != nil {
 		return nil, fmt.Errorf("resample: %s: %w", drawList(draws), err)
 	}

@@ -61,13 +61,13 @@ type timer struct {
 	paths  []solver.Path
 }
 
-// round lets each worker fit one block of neighbouring draws.
+// round lets each worker make and fit one block of neighbouring draws.
 func (t *timer) round(ctx context.Context, workers, block int) (Round, error) {
 	r := Round{Workers: workers, Draws: workers * block}
-	samples := make([][]*solver.Sample, workers)
-	for w := range samples {
+	draws := make([][]int, workers)
+	for w := range draws {
 		for range block {
-			samples[w] = append(samples[w], t.plan.Sample(t.next%t.plan.Number))
+			draws[w] = append(draws[w], t.next%t.plan.Number)
 			t.next++
 		}
 	}
@@ -76,10 +76,10 @@ func (t *timer) round(ctx context.Context, workers, block int) (Round, error) {
 	start := t.clock.Now()
 	before, known := t.clock.Processor()
 	group, inner := errgroup.WithContext(ctx)
-	for w := range samples {
+	for w := range draws {
 		group.Go(func() (err error) {
 			begun := t.clock.Now()
-			paths[w], err = t.fitter.FitBlock(inner, samples[w], nil)
+			paths[w], err = t.plan.FitDraws(inner, t.fitter, draws[w], nil)
 			busy[w] = t.clock.Now().Sub(begun)
 			return err
 		})
