@@ -17,8 +17,8 @@ func (e *DrawError) Error() string { return fmt.Sprintf("selection: draw %d: %s"
 
 // checker looks through draws before they are counted: they come from files.
 type checker struct {
-	predictors, always int
-	seen               []int32 // per predictor: 1 + position of the last draw that it entered
+	predictors Predictors
+	seen       []int32 // per predictor: 1 + position of the last draw that it entered
 }
 
 // ordered returns the draws by number, each once and in whole pairs.
@@ -59,8 +59,15 @@ func (c *checker) fault(stamp int32, d *Draw) string {
 	if d.Last < d.First && (len(d.Entries) > 0 || len(d.Coefs) > 0) {
 		return "it has entries or coefficients but no step"
 	}
-	if want := c.always * max(0, d.Last-d.First+1); len(d.Always) != want {
+	steps := max(0, d.Last-d.First+1)
+	if want := len(c.predictors.Always) * c.predictors.classes() * steps; len(d.Always) != want {
 		return fmt.Sprintf("it has %d always-in coefficients, not %d", len(d.Always), want)
+	}
+	if d.Deviance != nil && len(d.Deviance) != steps {
+		return fmt.Sprintf("it has %d deviances for %d steps", len(d.Deviance), steps)
+	}
+	if d.Redraws < 0 {
+		return fmt.Sprintf("it was made anew %d times", d.Redraws)
 	}
 	if fault := c.entryFault(stamp, d); fault != "" {
 		return fault
@@ -71,11 +78,14 @@ func (c *checker) fault(stamp int32, d *Draw) string {
 	return c.stillFault(d)
 }
 
+// knows tells whether there is a predictor k.
+func (c *checker) knows(k int32) bool { return k >= 0 && int(k) < len(c.seen) }
+
 func (c *checker) entryFault(stamp int32, d *Draw) string {
 	for i, e := range d.Entries {
 		switch {
-		case e.Predictor < 0 || int(e.Predictor) >= c.predictors:
-			return fmt.Sprintf("entry %d names predictor %d of %d", i, e.Predictor, c.predictors)
+		case !c.knows(e.Predictor):
+			return fmt.Sprintf("entry %d names predictor %d of %d", i, e.Predictor, len(c.seen))
 		case int(e.Step) < d.First || int(e.Step) > d.Last:
 			return fmt.Sprintf("entry %d is at step %d, outside %d..%d", i, e.Step, d.First, d.Last)
 		case i > 0 && !before(d.Entries[i-1].Step, d.Entries[i-1].Predictor, e.Step, e.Predictor):
@@ -91,11 +101,15 @@ func (c *checker) entryFault(stamp int32, d *Draw) string {
 func (c *checker) coefFault(d *Draw) string {
 	for i, v := range d.Coefs {
 		switch {
-		case v.Predictor < 0 || int(v.Predictor) >= c.predictors:
-			return fmt.Sprintf("coefficient %d names predictor %d of %d", i, v.Predictor, c.predictors)
+		case !c.knows(v.Predictor):
+			return fmt.Sprintf("coefficient %d names predictor %d of %d", i, v.Predictor, len(c.seen))
+		case v.Term < 0 || int(v.Term) >= c.predictors.termsOf(int(v.Predictor)):
+			return fmt.Sprintf("coefficient %d names term %d of %d", i, v.Term, c.predictors.termsOf(int(v.Predictor)))
+		case v.Class < 0 || int(v.Class) >= c.predictors.classes():
+			return fmt.Sprintf("coefficient %d names class %d of %d", i, v.Class, c.predictors.classes())
 		case int(v.Step) < d.First || int(v.Step) > d.Last:
 			return fmt.Sprintf("coefficient %d is at step %d, outside %d..%d", i, v.Step, d.First, d.Last)
-		case i > 0 && !before(d.Coefs[i-1].Step, d.Coefs[i-1].Predictor, v.Step, v.Predictor):
+		case i > 0 && !d.Coefs[i-1].before(v):
 			return fmt.Sprintf("coefficient %d is out of order", i)
 		case math.IsNaN(v.Value) || math.IsInf(v.Value, 0):
 			return fmt.Sprintf("coefficient %d is not finite", i)
@@ -112,8 +126,8 @@ func (c *checker) coefFault(d *Draw) string {
 func (c *checker) stillFault(d *Draw) string {
 	for i, k := range d.Still {
 		switch {
-		case k < 0 || int(k) >= c.predictors:
-			return fmt.Sprintf("predictor %d of %d is said not to vary", k, c.predictors)
+		case !c.knows(k):
+			return fmt.Sprintf("predictor %d of %d is said not to vary", k, len(c.seen))
 		case i > 0 && k <= d.Still[i-1]:
 			return "the predictors that do not vary are out of order"
 		}

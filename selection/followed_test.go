@@ -17,7 +17,7 @@ func judgePairs(t *testing.T, bound BoundName, bootstrap bool) *Judgement {
 	draws := make([]Draw, 60)
 	for i := range draws {
 		draws[i] = Draw{Number: i, First: 0, Last: 1, Complete: true,
-			Entries: []Entry{{0, 1, false}}, Coefs: []Coef{{1, 0, 1}}}
+			Entries: []Entry{{0, 1, false}}, Coefs: []Coef{{Step: 1, Predictor: 0, Value: 1}}}
 	}
 	j, err := Judge(draws, bootstrap, p, Decision{Region: Cap, Bound: bound, Threshold: 0.8, Selected: 2})
 	if err != nil {

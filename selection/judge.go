@@ -5,7 +5,6 @@ import (
 	"fmt"
 	"math"
 	"slices"
-	"sort"
 )
 
 // Level is the level of the Monte-Carlo interval of a frequency.
@@ -37,22 +36,12 @@ func Judge(draws []Draw, bootstrap bool, p Predictors, d Decision) (*Judgement, 
 	j := &Judgement{
 		Draws: len(draws), Bootstrap: bootstrap, Candidates: len(p.Names), Decision: d,
 		Need: need, Attained: float64(need) / float64(len(draws)), MostStable: d.Selected * len(draws) / need,
-		draws: t.draws, names: p.Names, sd: p.Deviations, always: p.AlwaysDeviations,
+		draws: t.draws, names: p, coefs: t.coefs,
 	}
-	j.fill(t, p)
+	j.fill(t)
 	j.bound(t)
 	j.warn()
 	return j, nil
-}
-
-func (p Predictors) check() error {
-	switch {
-	case len(p.Deviations) != len(p.Names):
-		return badCount("deviations", len(p.Deviations), fmt.Sprintf("must be one per candidate, %d", len(p.Names)))
-	case len(p.AlwaysDeviations) != len(p.Always):
-		return badCount("deviations", len(p.AlwaysDeviations), fmt.Sprintf("must be one per always-in column, %d", len(p.Always)))
-	}
-	return checkCandidates(float64(len(p.Names)))
 }
 
 func (d Decision) check(candidates int) error {
@@ -75,8 +64,7 @@ type tally struct {
 	negatives   []int32 // of those: entered with a minus sign
 	both        []int32 // pairs in which both halves chose it
 	still       []int32 // draws in which it did not vary
-	values      []float64
-	starts      []int // values of predictor k: values[starts[k]:starts[k+1]]
+	coefs       *gathered
 	commonEnd   int
 	selectedSum int
 }
@@ -88,7 +76,7 @@ func count(draws []Draw, bootstrap bool, p Predictors, d Decision) (*tally, erro
 		return nil, err
 	}
 	k := len(p.Names)
-	c := checker{predictors: k, always: len(p.Always), seen: make([]int32, k)}
+	c := checker{predictors: p, seen: make([]int32, k)}
 	for i, dr := range byNumber {
 		if err := c.check(i, dr); err != nil {
 			return nil, err
@@ -102,7 +90,8 @@ func count(draws []Draw, bootstrap bool, p Predictors, d Decision) (*tally, erro
 		return nil, err
 	}
 	t.countEntries(bootstrap)
-	return t, t.gather()
+	t.coefs, err = t.gather(p)
+	return t, err
 }
 
 // setRegions finds where each draw's region ends.
@@ -150,52 +139,10 @@ func (t *tally) countEntries(bootstrap bool) {
 	}
 }
 
-// gather collects, per predictor, its coefficients at the region's end in the
-// draws that chose it, ascending; 0 where it had left again.
-func (t *tally) gather() error {
-	t.starts = make([]int, len(t.counts)+1)
-	for k, c := range t.counts {
-		t.starts[k+1] = t.starts[k] + int(c)
-	}
-	t.values = make([]float64, t.starts[len(t.counts)])
-	filled := make([]int32, len(t.counts))
-	last := make([]int32, len(t.counts)) // 1 + the last draw whose region it entered
-	for i, d := range t.draws {
-		stamp := int32(i) + 1
-		for _, e := range d.Entries[:t.regions[i].entered] {
-			last[e.Predictor] = stamp
-		}
-		for _, c := range coefsAt(d, t.regions[i].end) {
-			if last[c.Predictor] != stamp {
-				return &DrawError{d.Number, fmt.Sprintf("predictor %d has a coefficient at step %d but has not entered by it", c.Predictor, c.Step)}
-			}
-			t.values[t.starts[c.Predictor]+int(filled[c.Predictor])] = c.Value
-			filled[c.Predictor]++
-		}
-	}
-	for k := range t.counts {
-		slices.Sort(t.of(k)) // the cells not filled are 0
-	}
-	return nil
-}
-
-// of returns the gathered coefficients of predictor k.
-func (t *tally) of(k int) []float64 { return t.values[t.starts[k]:t.starts[k+1]] }
-
-// coefsAt returns the coefficients at a step.
-func coefsAt(d *Draw, step int32) []Coef {
-	from := sort.Search(len(d.Coefs), func(i int) bool { return d.Coefs[i].Step >= step })
-	to := from
-	for to < len(d.Coefs) && d.Coefs[to].Step == step {
-		to++
-	}
-	return d.Coefs[from:to]
-}
-
 // fill makes the rows and the numbers that stand with them.
-func (j *Judgement) fill(t *tally, p Predictors) {
+func (j *Judgement) fill(t *tally) {
 	z, _ := normalHalfWidth(Level) // a constant that is in range
-	j.Rows = make([]Row, len(p.Names))
+	j.Rows = make([]Row, j.Candidates)
 	for k := range j.Rows {
 		j.Rows[k] = j.row(t, k, z)
 	}
@@ -213,8 +160,10 @@ func (j *Judgement) fill(t *tally, p Predictors) {
 			j.LowCeiling = append(j.LowCeiling, i)
 		}
 	}
-	for i, name := range p.Always {
-		j.Always = append(j.Always, t.alwaysRow(i, name, len(p.Always)))
+	for i := range j.names.Always {
+		for class := range j.names.classes() {
+			j.Always = append(j.Always, j.alwaysRow(t, i, class))
+		}
 	}
 	j.MeanSelected = float64(t.selectedSum) / float64(j.Draws)
 	if j.Decision.Region == Common {
@@ -239,6 +188,9 @@ func (j *Judgement) listDraws(t *tally) {
 		if d.Uncertified {
 			j.Uncertified = append(j.Uncertified, d.Number)
 		}
+		if d.Redraws > 0 {
+			j.Redrawn, j.MostRedraws = append(j.Redrawn, d.Number), max(j.MostRedraws, d.Redraws)
+		}
 	}
 }
 
@@ -246,7 +198,7 @@ func (j *Judgement) listDraws(t *tally) {
 func (j *Judgement) row(t *tally, k int, z float64) Row {
 	n, varied := int(t.counts[k]), j.Draws-int(t.still[k])
 	r := Row{
-		Predictor: j.names[k], Index: k, Count: n, Varied: varied,
+		Predictor: j.names.Names[k], Index: k, Count: n, Varied: varied,
 		Frequency: float64(n) / float64(j.Draws),
 		Ceiling:   float64(varied) / float64(j.Draws),
 		Stable:    n >= j.Need,
@@ -261,28 +213,30 @@ func (j *Judgement) row(t *tally, k int, z float64) Row {
 	}
 	r.Low, r.High = wilson(n, j.Draws, size, z)
 	r.CouldChange = r.Low <= j.Attained*(1+snap) && j.Attained <= r.High*(1+snap)
-	values := t.of(k)
-	r.CoefLow, r.CoefMedian, r.CoefHigh = newSparse(values, j.Draws).spread()
+	if j.names.several(k) {
+		return r
+	}
+	r.Coef, r.Selected = t.coefs.spreads(k, 0, 0, n, j.Draws)
 	if n > 0 {
-		low, median, high := newSparse(values, n).spread()
 		positive := float64(n-int(t.negatives[k])) / float64(n)
-		r.SelectedLow, r.SelectedMedian, r.SelectedHigh, r.PositiveShare = &low, &median, &high, &positive
+		r.PositiveShare = &positive
 	}
 	return r
 }
 
-// alwaysRow is the spread of always-in column i of n.
-func (t *tally) alwaysRow(i int, name string, n int) AlwaysRow {
+// alwaysRow is the spread of the coefficient of always-in column i for a class.
+func (j *Judgement) alwaysRow(t *tally, i, class int) AlwaysRow {
+	columns, classes := len(j.names.Always), j.names.classes()
 	var values []float64
 	for d, draw := range t.draws {
 		if step, ok := alwaysStep(draw, int(t.regions[d].end)); ok {
-			values = append(values, draw.Always[(step-draw.First)*n+i])
+			values = append(values, draw.Always[((step-draw.First)*columns+i)*classes+class])
 		}
 	}
-	row := AlwaysRow{Predictor: name, Draws: len(values)}
+	row := AlwaysRow{Predictor: j.names.Always[i], Class: j.names.className(class), Draws: len(values), Index: i}
 	if len(values) > 0 {
 		slices.Sort(values)
-		row.CoefLow, row.CoefMedian, row.CoefHigh = newSparse(values, len(values)).spread()
+		row.Coef = newSparse(values, len(values)).spread()
 	}
 	return row
 }

@@ -19,15 +19,15 @@ func reef() ([]Draw, Predictors) {
 	draws := []Draw{
 		{Number: 0, First: 0, Last: 2,
 			Entries: []Entry{{0, 1, false}, {1, 2, false}, {2, 2, true}},
-			Coefs:   []Coef{{1, 0, 0.5}, {2, 0, 0.75}, {2, 1, 0.1}, {2, 2, -0.1}},
+			Coefs:   []Coef{{Step: 1, Predictor: 0, Value: 0.5}, {Step: 2, Predictor: 0, Value: 0.75}, {Step: 2, Predictor: 1, Value: 0.1}, {Step: 2, Predictor: 2, Value: -0.1}},
 			Always:  []float64{1, 2, 3}},
 		{Number: 1, First: 1, Last: 4, Complete: true,
 			Entries: []Entry{{0, 2, false}, {1, 3, false}},
-			Coefs:   []Coef{{2, 0, 0.2}, {3, 0, 0.1}, {3, 1, 0.3}, {4, 1, 0.6}},
+			Coefs:   []Coef{{Step: 2, Predictor: 0, Value: 0.2}, {Step: 3, Predictor: 0, Value: 0.1}, {Step: 3, Predictor: 1, Value: 0.3}, {Step: 4, Predictor: 1, Value: 0.6}},
 			Always:  []float64{10, 11, 12, 13}},
 		{Number: 2, First: -1, Last: 3, Uncertified: true,
 			Entries: []Entry{{1, 0, true}},
-			Coefs:   []Coef{{0, 1, -1}, {1, 1, -2}, {2, 1, -2.5}, {3, 1, -3}},
+			Coefs:   []Coef{{Step: 0, Predictor: 1, Value: -1}, {Step: 1, Predictor: 1, Value: -2}, {Step: 2, Predictor: 1, Value: -2.5}, {Step: 3, Predictor: 1, Value: -3}},
 			Always:  []float64{20, 21, 22, 23, 24}},
 		{Number: 3, First: 0, Last: 4, Complete: true, Still: []int32{2}, Always: []float64{30, 31, 32, 33, 34}},
 	}
@@ -81,22 +81,22 @@ func TestJudgeCapByHand(t *testing.T) {
 	}
 	// a at the regions' ends: 0.5, 0 (left again), not chosen, not chosen:
 	// type 7 of 0 0 0 .5 at .975 is 2.925 steps in, .4625.
-	if a.CoefLow != 0 || a.CoefMedian != 0 || !near(a.CoefHigh, 0.4625) {
-		t.Errorf("a: quantiles %g, %g, %g over all draws", a.CoefLow, a.CoefMedian, a.CoefHigh)
+	if a.Coef.Low != 0 || a.Coef.Median != 0 || !near(a.Coef.High, 0.4625) {
+		t.Errorf("a: quantiles %g, %g, %g over all draws", a.Coef.Low, a.Coef.Median, a.Coef.High)
 	}
-	if !near(*a.SelectedLow, 0.0125) || !near(*a.SelectedMedian, 0.25) || !near(*a.SelectedHigh, 0.4875) {
-		t.Errorf("a: quantiles %g, %g, %g where chosen", *a.SelectedLow, *a.SelectedMedian, *a.SelectedHigh)
+	if !near(a.Selected.Low, 0.0125) || !near(a.Selected.Median, 0.25) || !near(a.Selected.High, 0.4875) {
+		t.Errorf("a: quantiles %g, %g, %g where chosen", a.Selected.Low, a.Selected.Median, a.Selected.High)
 	}
 	b := rowOf(t, j, "b")
-	if b.Count != 2 || *b.BothHalves != 0 || *b.PositiveShare != 0.5 || !near(b.CoefLow, -2.775) || !near(b.CoefHigh, 0.555) {
+	if b.Count != 2 || *b.BothHalves != 0 || *b.PositiveShare != 0.5 || !near(b.Coef.Low, -2.775) || !near(b.Coef.High, 0.555) {
 		t.Errorf("b: %+v", b)
 	}
 	c := rowOf(t, j, "c")
-	if c.Count != 0 || c.PositiveShare != nil || c.SelectedMedian != nil || c.Ceiling != 0.75 || c.Varied != 3 {
+	if c.Count != 0 || c.PositiveShare != nil || c.Selected != nil || c.Ceiling != 0.75 || c.Varied != 3 {
 		t.Errorf("c: %+v", c)
 	}
 	// tank at the ends 1, 4, 3 and 4: 2, 13, 24, 34.
-	if w := j.Always[0]; w.Draws != 4 || !near(w.CoefMedian, 18.5) || !near(w.CoefLow, 2.825) || !near(w.CoefHigh, 33.25) {
+	if w := j.Always[0]; w.Draws != 4 || !near(w.Coef.Median, 18.5) || !near(w.Coef.Low, 2.825) || !near(w.Coef.High, 33.25) {
 		t.Errorf("always: %+v", w)
 	}
 	// q^2/((2 tau - 1) p) at the attained 0.75: with all four 4/2, with the
@@ -128,8 +128,8 @@ func TestJudgeCommonByHand(t *testing.T) {
 			t.Errorf("q=%d: counts %d, %d, %d, want %d, %d, %d", c.selected, rowOf(t, j, "a").Count, rowOf(t, j, "b").Count, rowOf(t, j, "c").Count, c.a, c.b, c.c)
 		}
 		// q=1: tank at step 1 in the four draws: 2, 10, 22, 31; q=2: 3, 11, 23, 32.
-		if j.Always[0].CoefMedian != c.tank {
-			t.Errorf("q=%d: median of tank %g, want %g", c.selected, j.Always[0].CoefMedian, c.tank)
+		if j.Always[0].Coef.Median != c.tank {
+			t.Errorf("q=%d: median of tank %g, want %g", c.selected, j.Always[0].Coef.Median, c.tank)
 		}
 		if !strings.Contains(strings.Join(j.Warnings, "\n"), "selected is estimated") {
 			t.Errorf("q=%d: warnings %q", c.selected, j.Warnings)
@@ -141,8 +141,8 @@ func TestJudgeCommonByHand(t *testing.T) {
 // whole steps, whatever the order of the columns.
 func TestJudgeWholeSteps(t *testing.T) {
 	draws := []Draw{
-		{Number: 1, Last: 3, Entries: []Entry{{0, 2, false}, {1, 2, false}}, Coefs: []Coef{{2, 0, 1}, {2, 1, 1}}},
-		{Number: 0, Last: 3, Complete: true, Entries: []Entry{{1, 3, false}}, Coefs: []Coef{{3, 1, 1}}},
+		{Number: 1, Last: 3, Entries: []Entry{{0, 2, false}, {1, 2, false}}, Coefs: []Coef{{Step: 2, Predictor: 0, Value: 1}, {Step: 2, Predictor: 1, Value: 1}}},
+		{Number: 0, Last: 3, Complete: true, Entries: []Entry{{1, 3, false}}, Coefs: []Coef{{Step: 3, Predictor: 1, Value: 1}}},
 	}
 	j, err := Judge(draws, false, plain(2), Decision{Region: Cap, Bound: WorstCase, Threshold: 1, Selected: 1})
 	if err != nil {
@@ -157,7 +157,7 @@ func TestJudgeWholeSteps(t *testing.T) {
 func TestJudgeDrawsWithoutSteps(t *testing.T) {
 	draws := []Draw{
 		{Number: 0, First: 5, Last: 4, Uncertified: true},
-		{Number: 1, First: 0, Last: 6, Complete: true, Entries: []Entry{{0, 3, false}, {1, 6, false}}, Coefs: []Coef{{3, 0, 1}, {6, 1, 1}}},
+		{Number: 1, First: 0, Last: 6, Complete: true, Entries: []Entry{{0, 3, false}, {1, 6, false}}, Coefs: []Coef{{Step: 3, Predictor: 0, Value: 1}, {Step: 6, Predictor: 1, Value: 1}}},
 		{Number: 2, First: 0, Last: -1, Complete: true},
 		{Number: 3, First: 0, Last: 6, Complete: true},
 	}
@@ -244,7 +244,7 @@ func TestJudgeMisuse(t *testing.T) {
 		"selected: 0":             func(_ *Predictors, d *Decision) { d.Selected = 0 },
 		"selected: 5":             func(_ *Predictors, d *Decision) { d.Selected = 5 },
 		"threshold: NaN":          func(_ *Predictors, d *Decision) { d.Threshold = math.NaN() },
-		"one per candidate":       func(p *Predictors, _ *Decision) { p.Deviations = nil },
+		"one per term":            func(p *Predictors, _ *Decision) { p.Deviations = nil },
 		"one per always-in":       func(p *Predictors, _ *Decision) { p.AlwaysDeviations = nil },
 		"always-in coefficients,": func(p *Predictors, _ *Decision) { p.Always, p.AlwaysDeviations = nil, nil },
 		"candidates: 0":           func(p *Predictors, _ *Decision) { p.Names, p.Deviations = nil, nil },
@@ -262,13 +262,13 @@ func TestPerSD(t *testing.T) {
 	j := judgeReef(t, Cap, 2)
 	s := j.PerSD()
 	a, b := rowOf(t, j, "a"), rowOf(t, s, "a")
-	if b.CoefHigh != 2*a.CoefHigh || *b.SelectedMedian != 2**a.SelectedMedian || b.Count != a.Count {
+	if b.Coef.High != 2*a.Coef.High || b.Selected.Median != 2*a.Selected.Median || b.Count != a.Count {
 		t.Errorf("a: %+v, per standard deviation %+v", a, b)
 	}
-	if s.Always[0].CoefMedian != 10*j.Always[0].CoefMedian {
-		t.Errorf("tank: %g, per standard deviation %g", j.Always[0].CoefMedian, s.Always[0].CoefMedian)
+	if s.Always[0].Coef.Median != 10*j.Always[0].Coef.Median {
+		t.Errorf("tank: %g, per standard deviation %g", j.Always[0].Coef.Median, s.Always[0].Coef.Median)
 	}
-	if a.CoefHigh != rowOf(t, judgeReef(t, Cap, 2), "a").CoefHigh {
+	if a.Coef.High != rowOf(t, judgeReef(t, Cap, 2), "a").Coef.High {
 		t.Error("PerSD changed the judgement that it was called on")
 	}
 }
@@ -293,7 +293,7 @@ func TestPathsByHand(t *testing.T) {
 	j := judgeReef(t, Cap, 2)
 	for r := range j.Paths() {
 		got = append(got, point{r.Step, r.Predictor, r.Frequency, r.DrawsReached})
-		if j.names[r.Index] != r.Predictor {
+		if j.names.Names[r.Index] != r.Predictor {
 			t.Errorf("%+v: index and name differ", r)
 		}
 	}

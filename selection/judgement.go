@@ -1,12 +1,6 @@
 package selection
 
-// Predictors names what could be chosen, in the order of Entry.Predictor.
-type Predictors struct {
-	Names            []string
-	Deviations       []float64 // standard deviation over the table, one per name; for PerSD
-	Always           []string  // always-in columns
-	AlwaysDeviations []float64 // one per always-in column
-}
+import "slices"
 
 // Judgement is the outcome of applying a decision to draws.
 type Judgement struct {
@@ -29,15 +23,17 @@ type Judgement struct {
 	CommonEnd    *int     // last step of the common region; nil for the cap
 	EmptyRegion  []int    // numbers of draws in which more than q predictors entered at the first step with any
 	Uncertified  []int    // numbers of draws whose path ended at a fit that was not certified
+	Redrawn      []int    // numbers of draws that were made anew because they could not be fitted
+	MostRedraws  int      // how often at most
 	LowCeiling   []int    // positions in Rows of candidates with a ceiling under 95 %
 	Warnings     []string // footnotes, in order
 
 	emptyTwins int // of EmptyRegion: draws in which columns coincide
 
-	draws  []*Draw
-	names  []string
-	sd     []float64
-	always []float64
+	draws []*Draw
+	names Predictors
+	coefs *gathered
+	perSD bool // coefficients are per standard deviation
 }
 
 // Row is the judgement on one candidate.
@@ -46,13 +42,13 @@ type Row struct {
 	Frequency     float64  // Count/Draws
 	Low, High     float64  // 95 % Monte-Carlo interval of Frequency
 	BothHalves    *float64 // share of pairs in which both halves chose it; nil for bootstrap
-	PositiveShare *float64 // share of the draws that chose it in which it entered with a plus sign; nil if none
+	PositiveShare *float64 // share of the draws that chose it in which it entered with a plus sign; nil if none, or where it has several coefficients
 
-	// Quantiles of 2.5, 50 and 97.5 % at the region's end, over all draws (0
-	// where it was not chosen or had left again) ...
-	CoefLow, CoefMedian, CoefHigh float64
-	// ... and over the draws that chose it; nil if none.
-	SelectedLow, SelectedMedian, SelectedHigh *float64
+	// Coef is over all draws, 0 where it was not chosen or had left again by the
+	// region's end; nil where it has several coefficients, which Terms lists.
+	Coef *Spread
+	// Selected is over the draws that chose it; nil if none, or as above.
+	Selected *Spread
 
 	Stable      bool
 	CouldChange bool    // the interval covers the attained threshold
@@ -65,10 +61,15 @@ type Row struct {
 // AlwaysRow is the spread of an always-in coefficient at the region's end, over
 // the draws that have one.
 type AlwaysRow struct {
-	Predictor                     string
-	CoefLow, CoefMedian, CoefHigh float64
-	Draws                         int // draws that have one; 0: the three are 0 and undefined
+	Predictor string
+	Class     string  // empty: the outcome has none
+	Coef      *Spread // nil if no draw has one
+	Draws     int     // draws that have one
+	Index     int     // position among the always-in columns
 }
+
+// Classes are the levels of an outcome of classes; nil for others.
+func (j *Judgement) Classes() []string { return j.names.Classes }
 
 // StableNames names the stable predictors, in the order of Rows.
 func (j *Judgement) StableNames() []string {
@@ -83,25 +84,26 @@ func (j *Judgement) StableNames() []string {
 // standard deviation of its column: the change of the outcome per standard
 // deviation. The other one is not changed.
 func (j *Judgement) PerSD() *Judgement {
-	scaled := *j
-	scaled.Rows = make([]Row, len(j.Rows))
-	for i, r := range j.Rows {
-		scaled.Rows[i] = r.times(j.sd[r.Index])
+	if j.perSD {
+		return j
 	}
-	scaled.Always = make([]AlwaysRow, len(j.Always))
-	for i, a := range j.Always {
-		s := j.always[i]
-		a.CoefLow, a.CoefMedian, a.CoefHigh = a.CoefLow*s, a.CoefMedian*s, a.CoefHigh*s
-		scaled.Always[i] = a
+	scaled := *j
+	scaled.perSD = true
+	scaled.Rows = slices.Clone(j.Rows)
+	for i := range scaled.Rows {
+		r := &scaled.Rows[i]
+		sd := j.deviation(r.Index, 0)
+		r.Coef, r.Selected = r.Coef.times(sd), r.Selected.times(sd)
+	}
+	scaled.Always = slices.Clone(j.Always)
+	for i := range scaled.Always {
+		a := &scaled.Always[i]
+		a.Coef = a.Coef.times(j.names.AlwaysDeviations[a.Index])
 	}
 	return &scaled
 }
 
-func (r Row) times(s float64) Row {
-	r.CoefLow, r.CoefMedian, r.CoefHigh = r.CoefLow*s, r.CoefMedian*s, r.CoefHigh*s
-	if r.SelectedLow != nil {
-		v := [3]float64{*r.SelectedLow * s, *r.SelectedMedian * s, *r.SelectedHigh * s}
-		r.SelectedLow, r.SelectedMedian, r.SelectedHigh = &v[0], &v[1], &v[2]
-	}
-	return r
+// deviation is the standard deviation of a predictor's term.
+func (j *Judgement) deviation(predictor, term int) float64 {
+	return j.names.Deviations[j.coefs.first[predictor]+term]
 }

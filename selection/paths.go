@@ -21,12 +21,12 @@ func (j *Judgement) Paths() iter.Seq[PathRow] {
 		if empty {
 			return
 		}
-		p := newPathCounts(j.draws, len(j.names), last)
+		p := newPathCounts(j.draws, len(j.names.Names), last)
 		for step := first; step <= last; step++ {
 			p.move(step)
 			for k, n := range p.counts {
 				if n > 0 && !yield(PathRow{
-					Step: step, Predictor: j.names[k], Index: k,
+					Step: step, Predictor: j.names.Names[k], Index: k,
 					Frequency: float64(n) / float64(p.reached), DrawsReached: p.reached,
 				}) {
 					return

@@ -30,7 +30,7 @@ func randomDraws(rng *rand.Rand, n, p, always int) []Draw {
 					d.Entries = append(d.Entries, Entry{k, int32(s), rng.IntN(3) == 0})
 				}
 				if at, in := entered[k]; in && (at == int32(s) || rng.IntN(4) > 0) {
-					d.Coefs = append(d.Coefs, Coef{int32(s), k, rng.NormFloat64()})
+					d.Coefs = append(d.Coefs, Coef{Step: int32(s), Predictor: k, Value: rng.NormFloat64()})
 				}
 			}
 		}
@@ -137,10 +137,10 @@ func TestJudgeEqualsSlowJudgement(t *testing.T) {
 		}
 		for _, r := range j.Rows {
 			count, negative, both, all, chosen := slowRow(draws, region, q, r.Index)
-			got := fmt.Sprint(r.Count, *r.BothHalves, r.CoefLow, r.CoefMedian, r.CoefHigh, r.Stable)
+			got := fmt.Sprint(r.Count, *r.BothHalves, r.Coef.Low, r.Coef.Median, r.Coef.High, r.Stable)
 			want := fmt.Sprint(count, float64(both)/float64(n/2), slowQuantile(all, 25), slowQuantile(all, 500), slowQuantile(all, 975), 4*count >= 3*n)
 			if count > 0 {
-				got += fmt.Sprint(*r.PositiveShare, *r.SelectedLow, *r.SelectedMedian, *r.SelectedHigh)
+				got += fmt.Sprint(*r.PositiveShare, r.Selected.Low, r.Selected.Median, r.Selected.High)
 				want += fmt.Sprint(float64(count-negative)/float64(count), slowQuantile(chosen, 25), slowQuantile(chosen, 500), slowQuantile(chosen, 975))
 			}
 			if got != want {
@@ -340,7 +340,7 @@ func FuzzJudge(f *testing.F) {
 				d.Entries = append(d.Entries, Entry{int32(next()), int32(next() & 7), next() < 0})
 			}
 			for range next() & 3 {
-				d.Coefs = append(d.Coefs, Coef{int32(next() & 7), int32(next()), float64(next())})
+				d.Coefs = append(d.Coefs, Coef{Step: int32(next() & 7), Predictor: int32(next()), Value: float64(next())})
 			}
 			for range next() & 1 {
 				d.Still = append(d.Still, int32(next()))
@@ -382,7 +382,7 @@ func BenchmarkJudge(b *testing.B) {
 				d.Entries = append(d.Entries, Entry{Predictor: k, Step: s})
 			}
 			for _, e := range d.Entries {
-				d.Coefs = append(d.Coefs, Coef{s, e.Predictor, 1})
+				d.Coefs = append(d.Coefs, Coef{Step: s, Predictor: e.Predictor, Value: 1})
 			}
 		}
 		slices.SortFunc(d.Entries, func(a, b Entry) int {

@@ -50,6 +50,6 @@ func (s sparse) quantile(mille int) float64 {
 }
 
 // spread returns the three reported quantiles.
-func (s sparse) spread() (low, median, high float64) {
-	return s.quantile(lowMille), s.quantile(medianMille), s.quantile(highMille)
+func (s sparse) spread() *Spread {
+	return &Spread{s.quantile(lowMille), s.quantile(medianMille), s.quantile(highMille)}
 }

@@ -21,9 +21,9 @@ func TestQuantileAgainstNumpy(t *testing.T) {
 		{[]float64{-1.5, 0.1, 0.25, 2, 3, 3, 7.5}, 9, [3]float64{-1.2, 0.25, 6.6}},
 		{nil, 5, [3]float64{}},
 	} {
-		low, median, high := newSparse(c.values, c.n).spread()
-		if !near(low, c.want[0]) || !near(median, c.want[1]) || !near(high, c.want[2]) {
-			t.Errorf("%v of %d: %g, %g, %g, want %v", c.values, c.n, low, median, high, c.want)
+		s := newSparse(c.values, c.n).spread()
+		if !near(s.Low, c.want[0]) || !near(s.Median, c.want[1]) || !near(s.High, c.want[2]) {
+			t.Errorf("%v of %d: %+v, want %v", c.values, c.n, *s, c.want)
 		}
 	}
 }

@@ -14,12 +14,37 @@ func (j *Judgement) warn() {
 	if n := len(j.Uncertified); n > 0 {
 		j.add("in %s a fit could not be certified and the path ends before it; they count with what they have: %s", drawsOf(n, j.Draws), listInts(j.Uncertified))
 	}
+	j.warnRedrawn()
 	j.warnEmpty()
 	j.warnCeilings()
 	j.warnNoBound()
 	if j.Decision.Region == Common {
 		j.warnCommon()
 	}
+}
+
+// warnRedrawn says how many draws had to be made anew: what is found then holds
+// for rows that can be fitted (STATISTICS 10). The halves of a pair go together.
+func (j *Judgement) warnRedrawn() {
+	n, all, what := len(j.Redrawn), j.Draws, "draws"
+	if n == 0 {
+		return
+	}
+	if !j.Bootstrap {
+		n, all, what = pairsOf(j.Redrawn), j.Draws/2, "pairs of halves"
+	}
+	j.add("%d of %d %s were drawn anew, up to %s, because their rows could not be fitted; the frequencies hold for rows that can be", n, all, what, times(j.MostRedraws))
+}
+
+// pairsOf counts the pairs that ascending numbers of draws belong to.
+func pairsOf(numbers []int) int {
+	n := 0
+	for i, d := range numbers {
+		if i == 0 || numbers[i-1]/2 != d/2 {
+			n++
+		}
+	}
+	return n
 }
 
 // warnEmpty lists the draws whose first step with any predictor had too many.
@@ -103,6 +128,13 @@ func predictors(n int) string {
 		return "1 predictor"
 	}
 	return strconv.Itoa(n) + " predictors"
+}
+
+func times(n int) string {
+	if n == 1 {
+		return "once"
+	}
+	return strconv.Itoa(n) + " times"
 }
 
 func drawsOf(n, all int) string { return fmt.Sprintf("%d of %d draws", n, all) }

@@ -94,7 +94,7 @@ func (j *judged) tables() []resultFile {
 		{"stability.csv", func(w io.Writer) error { return report.WriteStabilityCSV(w, j.judgement, false) }},
 		{"stability.parquet", func(w io.Writer) error { return report.WriteStabilityParquet(w, j.judgement) }},
 		{"paths.parquet", func(w io.Writer) error { return report.WritePaths(w, j.judgement, lambdaOf(j.run)) }},
-		{"terms.parquet", func(w io.Writer) error { return report.WriteTerms(w, nil) }},
+		{"terms.parquet", func(w io.Writer) error { return report.WriteTerms(w, j.judgement) }},
 	}
 }
 

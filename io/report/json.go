@@ -5,6 +5,8 @@ import (
 	"bytes"
 	"encoding/json"
 	"io"
+	"iter"
+	"slices"
 
 	"holdfast/selection"
 )
@@ -22,11 +24,16 @@ func JSON(w io.Writer, j *selection.Judgement, info Info) error {
 	out.key("decision")
 	out.decision(j, info)
 	out.key("predictors")
-	out.predictors(j)
+	rows(out, stabilityColumns, slices.Values(j.Rows))
 	out.key("always")
-	out.alwaysIn(j)
+	rows(out, alwaysColumns, slices.Values(j.Always))
 	out.member("warnings", info.warnings(j))
 	out.member("per_sd", info.PerSD)
+	out.member("classes", names(j.Classes()))
+	out.key("terms")
+	rows(out, termColumns, j.Terms())
+	out.member("redrawn", len(j.Redrawn))
+	out.member("most_redraws", j.MostRedraws)
 	out.close()
 	out.raw("\n")
 	if out.err != nil {
@@ -56,41 +63,28 @@ func (o *object) decision(j *selection.Judgement, info Info) {
 	o.close()
 }
 
-func optional(v *float64) any { return defined(v) }
-
-// predictors writes one object per candidate, members in column order.
-func (o *object) predictors(j *selection.Judgement) {
-	o.raw("[")
-	for r := range j.Rows {
-		o.comma(r)
-		o.open()
-		for _, c := range stabilityColumns {
-			o.member(c.name, c.value(&j.Rows[r]))
-		}
-		o.close()
+// names is a list that is empty rather than null.
+func names(list []string) []string {
+	if list == nil {
+		return []string{}
 	}
-	o.raw("]")
+	return list
 }
 
-// alwaysIn writes the columns that are in every model. Where no draw has a
-// coefficient its quantiles are undefined.
-func (o *object) alwaysIn(j *selection.Judgement) {
+func optional(v *float64) any { return defined(v) }
+
+// rows writes one object per row, members in column order.
+func rows[R any](o *object, columns []column[R], list iter.Seq[R]) {
 	o.raw("[")
-	for i, a := range j.Always {
-		quantile := func(v float64) any {
-			if a.Draws == 0 {
-				return nil
-			}
-			return defined(&v)
-		}
+	i := 0
+	for r := range list {
 		o.comma(i)
 		o.open()
-		o.member("predictor", a.Predictor)
-		o.member("class", nil)
-		o.member("coef_low", quantile(a.CoefLow))
-		o.member("coef_median", quantile(a.CoefMedian))
-		o.member("coef_high", quantile(a.CoefHigh))
+		for _, c := range columns {
+			o.member(c.name, c.value(&r))
+		}
 		o.close()
+		i++
 	}
 	o.raw("]")
 }

@@ -4,6 +4,8 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"iter"
+	"slices"
 
 	"github.com/apache/arrow/go/v17/arrow"
 	"github.com/apache/arrow/go/v17/arrow/array"
@@ -18,14 +20,28 @@ import (
 // WriteStabilityParquet writes the stability table as Parquet, every candidate
 // a row.
 func WriteStabilityParquet(w io.Writer, j *selection.Judgement) error {
-	fields := make([]arrow.Field, len(stabilityColumns))
-	for i, c := range stabilityColumns {
+	return writeParquet(w, stabilityColumns, slices.Values(j.Rows))
+}
+
+// WriteTerms writes terms.parquet: a row for every term and class of the
+// predictors that have no coefficient of their own in the stability table,
+// chosen or not. A coefficient stands in one of the two tables and never in
+// both, so without groups, categories and classes this one has its columns and
+// no row.
+func WriteTerms(w io.Writer, j *selection.Judgement) error {
+	return writeParquet(w, termColumns, j.Terms())
+}
+
+// writeParquet writes rows as Parquet.
+func writeParquet[R any](w io.Writer, columns []column[R], list iter.Seq[R]) error {
+	fields := make([]arrow.Field, len(columns))
+	for i, c := range columns {
 		fields[i] = c.kind.field(c.name)
 	}
 	t := newTable(w, fields)
-	for r := range j.Rows {
-		for i, c := range stabilityColumns {
-			t.add(i, c.value(&j.Rows[r]))
+	for r := range list {
+		for i, c := range columns {
+			t.add(i, c.value(&r))
 		}
 		t.endRow()
 	}
@@ -50,43 +66,6 @@ func WritePaths(w io.Writer, j *selection.Judgement, lambda func(step int) float
 	return t.close()
 }
 
-// Term is a row of terms.parquet: one term of a predictor that has several,
-// such as a level of a category, a member of a group, or a class of the
-// outcome.
-type Term struct {
-	Predictor, Term, Class                    string // Class empty: none
-	CoefLow, CoefMedian, CoefHigh             float64
-	SelectedLow, SelectedMedian, SelectedHigh *float64 // nil: never chosen
-}
-
-// WriteTerms writes terms.parquet. Outcomes that are numbers, without groups
-// and categories, have no such terms: the table is empty and has its columns.
-func WriteTerms(w io.Writer, terms []Term) error {
-	t := newTable(w, []arrow.Field{
-		text.field("predictor"), text.field("term"), text.optional("class"),
-		real.field("coef_low"), real.field("coef_median"), real.field("coef_high"),
-		real.field("selected_coef_low"), real.field("selected_coef_median"), real.field("selected_coef_high"),
-	})
-	for _, term := range terms {
-		t.add(0, term.Predictor)
-		t.add(1, term.Term)
-		t.add(2, class(term.Class))
-		for i, v := range []*float64{&term.CoefLow, &term.CoefMedian, &term.CoefHigh,
-			term.SelectedLow, term.SelectedMedian, term.SelectedHigh} {
-			t.add(3+i, defined(v))
-		}
-		t.endRow()
-	}
-	return t.close()
-}
-
-func class(name string) any {
-	if name == "" {
-		return nil
-	}
-	return name
-}
-
 // field is the Arrow field of a column: numbers may be undefined.
 func (k kind) field(name string) arrow.Field {
 	switch k {
@@ -96,14 +75,10 @@ func (k kind) field(name string) arrow.Field {
 		return arrow.Field{Name: name, Type: arrow.FixedWidthTypes.Boolean}
 	case whole:
 		return arrow.Field{Name: name, Type: arrow.PrimitiveTypes.Int64}
+	case optionalText:
+		return arrow.Field{Name: name, Type: arrow.BinaryTypes.String, Nullable: true}
 	}
 	return arrow.Field{Name: name, Type: arrow.BinaryTypes.String}
-}
-
-func (k kind) optional(name string) arrow.Field {
-	f := k.field(name)
-	f.Nullable = true
-	return f
 }
 
 func (k kind) required(name string) arrow.Field {

@@ -154,13 +154,16 @@ func (g *grid) addRow(p *page, r *selection.Row) {
 	g.chosen = append(g.chosen, fmt.Sprint(r.Count))
 	g.interval = append(g.interval, drawsText(r, p.j.Draws))
 	g.sign = append(g.sign, signText(r.PositiveShare))
-	if r.SelectedMedian == nil {
+	if r.Selected == nil {
 		g.median, g.spread = append(g.median, ""), append(g.spread, "")
 		return
 	}
-	g.median = append(g.median, number3(*r.SelectedMedian))
-	g.spread = append(g.spread, short(*r.SelectedLow, 2)+" to "+short(*r.SelectedHigh, 2))
+	g.median = append(g.median, number3(r.Selected.Median))
+	g.spread = append(g.spread, spreadText(r.Selected))
 }
+
+// spreadText is the range of a coefficient.
+func spreadText(s *selection.Spread) string { return short(s.Low, 2) + " to " + short(s.High, 2) }
 
 // copiesOf lists the columns that stand under a predictor's name.
 func (p *page) copiesOf(predictor string) []string {

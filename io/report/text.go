@@ -185,8 +185,8 @@ func (p *page) alwaysIn() {
 			return
 		}
 		value := "in no draw"
-		if a.Draws > 0 {
-			value = fmt.Sprintf("%s, %s to %s", number3(a.CoefMedian), number3(a.CoefLow), number3(a.CoefHigh))
+		if a.Coef != nil {
+			value = fmt.Sprintf("%s, %s to %s", number3(a.Coef.Median), number3(a.Coef.Low), number3(a.Coef.High))
 		}
 		room := min(p.cells/2, p.cells-2*gap-width(value))
 		p.line(spaces(gap) + shorten(clean(a.Predictor), room, p.dots()) + spaces(gap) + value)

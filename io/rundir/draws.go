@@ -226,6 +226,8 @@ func (f *Finished) add(n *numbered, lastStep int, keep bool) *selection.Draw {
 		Always:      p.Always,
 		Still:       p.Still,
 		Twins:       p.Twins,
+		Redraws:     p.Redraws,
+		Deviance:    p.Deviance, NullDeviance: p.NullDeviance,
 	}
 	for _, e := range p.Entries {
 		draw.Entries = append(draw.Entries, selection.Entry{Predictor: e.Candidate, Step: e.Step, Negative: e.Negative})
@@ -234,7 +236,7 @@ func (f *Finished) add(n *numbered, lastStep int, keep bool) *selection.Draw {
 		draw.Coefs = make([]selection.Coef, len(p.Coefs))
 	}
 	for i, c := range p.Coefs {
-		draw.Coefs[i] = selection.Coef{Step: c.Step, Predictor: c.Candidate, Value: c.Value}
+		draw.Coefs[i] = selection.Coef{Step: c.Step, Predictor: c.Candidate, Term: c.Term, Class: c.Class, Value: c.Value}
 	}
 	return draw
 }
