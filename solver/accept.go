@@ -11,12 +11,6 @@ import (
 // attempts bounds the rounds of settling a support at the border.
 const attempts = 50
 
-// chosen is a selected candidate as recorded.
-type chosen struct {
-	unit  int32
-	place int // in the record
-}
-
 // acceptStep turns the working set's support at step cur into a record, if all
 // candidates bear it out. It returns the units that violate and are not in the
 // working set yet; an error where the step cannot be certified.
@@ -24,13 +18,13 @@ func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 	lambda := f.lambda(f.cur)
 	support = slices.Clone(support)
 	for range attempts {
-		r, err := f.finish(f.rec, support, lambda)
+		r, err := f.core.finish(support, lambda)
 		if err != nil {
 			return nil, err
 		}
-		if weak := r.weak(f); len(weak) > 0 {
+		if weak := f.core.weak(r); len(weak) > 0 {
 			f.dropResidual(r.u)
-			support = slices.DeleteFunc(support, func(c choice) bool { return slices.Contains(weak, c.place) })
+			support = slices.DeleteFunc(support, func(c choice) bool { return holds(weak, c) })
 			continue
 		}
 		v, err := f.judge(r)
@@ -56,14 +50,12 @@ func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 func (f *fitting) conclude(r *record, near []choice) error {
 	shared := false
 	if len(near) > 0 {
-		s, err := f.share(r, near)
+		s, err := f.core.share(r, near)
 		if err != nil {
 			return err
 		}
 		if s != nil {
-			for _, i := range r.members {
-				near = append(near, choice{place: i})
-			}
+			near = append(near, r.support...)
 			f.dropResidual(r.u)
 			r, shared = s, true
 		}
@@ -81,8 +73,8 @@ func (f *fitting) conclude(r *record, near []choice) error {
 func (f *fitting) excess(r *record, places []choice) float64 {
 	most := 0.0
 	for _, c := range places {
-		if u := f.work.units[c.place]; !slices.Contains(r.members, c.place) && !f.m.penalty.always(u) {
-			most = max(most, f.m.penalty.gauge(u, f.gradient(u, r.u), r.lambda)-1)
+		if !holds(r.support, c) {
+			most = max(most, f.penalty.gauge(f.work.units[c.place], f.gradient(c.place, c.lane, r.u), r.lambda)-1)
 		}
 	}
 	return most
@@ -102,29 +94,39 @@ func (f *fitting) judge(r *record) (verdict, error) {
 	outside := f.suspects(r)
 	known := len(f.work.units)
 	f.work.add(f, f.newcomers(outside))
-	f.qp.grow(len(f.work.units))
+	if f.lanes() > 1 {
+		outside = append(outside, r.units...) // their other lanes
+		slices.Sort(outside)
+	}
 	for _, c := range outside {
-		if err := f.judgeOne(r, c, known, &v); err != nil {
-			return v, err
+		for lane := range f.lanes() {
+			if err := f.judgeOne(r, c, lane, known, &v); err != nil {
+				return v, err
+			}
 		}
 	}
 	return v, nil
 }
 
-func (f *fitting) judgeOne(r *record, c int32, known int, v *verdict) error {
+func (f *fitting) judgeOne(r *record, c int32, lane, known int, v *verdict) error {
 	place := int(f.work.place[c])
-	g := f.gradient(c, r.u)
-	gauge := f.m.penalty.gauge(c, g, r.lambda)
+	if holds(r.support, choice{place: place, lane: lane}) {
+		return nil
+	}
+	g := f.gradient(place, lane, r.u)
+	gauge := f.penalty.gauge(c, g, r.lambda)
 	if blur := f.blur(r, place); blur > unresolved && gauge >= 1-blur {
 		return errors.New(f.m.name(c) + ": not resolvable in these units")
 	}
-	side := choice{place, math.Copysign(1, g)}
+	side := choice{place, lane, math.Copysign(1, g)}
 	switch {
 	case gauge < 1-border:
 	case isOut(gauge):
 		v.near = append(v.near, side)
 	case place >= known:
-		v.fresh = append(v.fresh, c)
+		if !slices.Contains(v.fresh, c) {
+			v.fresh = append(v.fresh, c)
+		}
 	case v.violator == nil:
 		v.violator = &side
 	}
@@ -137,8 +139,7 @@ func (f *fitting) judgeOne(r *record, c int32, known int, v *verdict) error {
 func (f *fitting) suspects(r *record) []int32 {
 	least := f.least(r.lambda, r.spread)
 	within := f.within(r)
-	f.lane = f.d.lane(f.lane, r.u)
-	sum := kernel.Sum(f.lane)
+	f.shine.from(&f.d, r.u)
 	f.mark(r, true)
 	defer f.mark(r, false)
 	var out []int32
@@ -147,7 +148,7 @@ func (f *fitting) suspects(r *record) []int32 {
 			continue
 		}
 		f.looked++
-		if math.Abs(f.screened(int32(c), sum)) >= least {
+		if f.size(int32(c), &f.shine) >= least {
 			out = append(out, int32(c))
 		}
 	}
@@ -202,7 +203,7 @@ func (f *fitting) addCoarse(r *record, out []int32, within func(int32) float64) 
 func (f *fitting) blur(r *record, place int) float64 {
 	w := &f.work
 	size := math.Sqrt(float64(w.mean[place]*w.mean[place])/float64(w.scale[place]*w.scale[place]) + w.h.row[place][place])
-	return rounding * r.spread * size / f.m.penalty.threshold(w.units[place], r.lambda)
+	return rounding * r.spread * size / f.penalty.threshold(w.units[place], r.lambda)
 }
 
 // spread is the root mean square of a residual.
@@ -210,10 +211,8 @@ func (f *fitting) spread(u []float64) float64 { return math.Sqrt(kernel.Dot(u, u
 
 // mark notes in f.inside which candidates a record holds.
 func (f *fitting) mark(r *record, in bool) {
-	for k, i := range r.members {
-		if r.sign[k] != 0 {
-			f.inside[f.work.units[i]] = in
-		}
+	for _, u := range r.units {
+		f.inside[u] = in
 	}
 }
 
@@ -247,37 +246,15 @@ func (f *fitting) distanceFrom(u []float64, a float64) float64 {
 	return distance(u, f.fit, f.d.total)
 }
 
-// screened is the screening gradient of a candidate at the residual in f.lane.
-func (f *fitting) screened(c int32, sum float64) float64 {
-	x, holes := f.m.column(c)
-	if holes != nil {
-		sum -= f.d.overHoles(holes, f.lane)
-	}
-	return (kernel.DotRows(x, f.d.rows, f.lane) - float64(f.mean[c]*sum)) * f.inverse[c] / f.d.total
-}
-
 // take makes a record the certified step, and hands it on.
 func (f *fitting) take(r *record, shared, settled bool) {
 	f.dropResidual(f.rec.u)
 	f.rec = r
-	list := f.chosen(r)
 	if f.path != nil && settled {
 		f.path.Borderline++
 	}
-	f.accept(r, list, shared)
-	for _, c := range list {
-		f.entered[c.unit] = true
+	f.accept(r, shared)
+	for _, u := range r.units {
+		f.entered[u] = true
 	}
-}
-
-// chosen lists the selected candidates in table order.
-func (f *fitting) chosen(r *record) []chosen {
-	var list []chosen
-	for k, i := range r.members {
-		if r.sign[k] != 0 {
-			list = append(list, chosen{f.work.units[i], k})
-		}
-	}
-	slices.SortFunc(list, func(a, b chosen) int { return int(a.unit) - int(b.unit) })
-	return list
 }

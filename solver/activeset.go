@@ -66,7 +66,7 @@ func (a *activeSet) save(s *state) {
 	}
 }
 
-func (a *activeSet) restore(s *state, w *working, p *penalty, lambda float64) {
+func (a *activeSet) restore(s *state, w *quadratic, p *penalty, lambda float64) {
 	for _, i := range a.members {
 		a.beta[i], a.in[i] = 0, false
 	}
@@ -80,7 +80,7 @@ func (a *activeSet) restore(s *state, w *working, p *penalty, lambda float64) {
 // refactor rebuilds the factor of the members, in their order. A member that
 // depends on earlier ones is dropped: it is a start, not a solution, and
 // members that share a fit are dependent.
-func (a *activeSet) refactor(w *working, p *penalty, lambda float64) {
+func (a *activeSet) refactor(w *quadratic, p *penalty, lambda float64) {
 	members, sign := a.members, a.sign
 	a.chol.truncate(0)
 	a.members, a.sign = a.members[:0], a.sign[:0]
@@ -96,7 +96,7 @@ func (a *activeSet) refactor(w *working, p *penalty, lambda float64) {
 }
 
 // products returns column i's products with the first k members.
-func (a *activeSet) products(w *working, i, k int) []float64 {
+func (a *activeSet) products(w *quadratic, i, k int) []float64 {
 	a.row = resize(a.row, k)
 	for q, j := range a.members[:k] {
 		a.row[q] = w.h.row[i][j]
@@ -105,7 +105,7 @@ func (a *activeSet) products(w *working, i, k int) []float64 {
 }
 
 // solve moves to the optimum at lambda, from wherever it stands.
-func (a *activeSet) solve(w *working, p *penalty, lambda float64) error {
+func (a *activeSet) solve(w *quadratic, p *penalty, lambda float64) error {
 	a.grow(len(w.units))
 	if p.quadratic() && a.lambda != lambda {
 		a.refactor(w, p, lambda)
@@ -132,7 +132,7 @@ func (a *activeSet) solve(w *working, p *penalty, lambda float64) error {
 // step moves the members towards their joint optimum, as far as no sign
 // changes; a member that reaches zero is dropped. stuck says that the step
 // had no length.
-func (a *activeSet) step(w *working, p *penalty, lambda float64) (dropped, stuck bool) {
+func (a *activeSet) step(w *quadratic, p *penalty, lambda float64) (dropped, stuck bool) {
 	if len(a.members) == 0 {
 		return false, false
 	}
@@ -172,7 +172,7 @@ func (a *activeSet) drop(k int) {
 	a.chol.remove(k)
 }
 
-func (a *activeSet) gradient(w *working, p *penalty, lambda float64) {
+func (a *activeSet) gradient(w *quadratic, p *penalty, lambda float64) {
 	copy(a.g, w.c)
 	for _, i := range a.members {
 		kernel.AddScaled(-a.beta[i], w.h.row[i], a.g)
@@ -181,7 +181,7 @@ func (a *activeSet) gradient(w *working, p *penalty, lambda float64) {
 
 // enter brings in the members of the working set that violate most. It
 // reports false where none does.
-func (a *activeSet) enter(w *working, p *penalty, lambda float64, single bool) bool {
+func (a *activeSet) enter(w *quadratic, p *penalty, lambda float64, single bool) bool {
 	limit := batch
 	if single {
 		limit = 1
@@ -200,7 +200,7 @@ func (a *activeSet) enter(w *working, p *penalty, lambda float64, single bool) b
 
 // violators returns up to limit places outside the members whose gauge
 // exceeds 1, the largest first.
-func (a *activeSet) violators(w *working, p *penalty, lambda float64, limit int) []int {
+func (a *activeSet) violators(w *quadratic, p *penalty, lambda float64, limit int) []int {
 	var places [batch]int
 	var gauges [batch]float64
 	n := 0
@@ -226,7 +226,7 @@ func (a *activeSet) violators(w *working, p *penalty, lambda float64, limit int)
 	return append([]int(nil), places[:n]...)
 }
 
-func (a *activeSet) push(w *working, p *penalty, lambda float64, i int, sign float64) bool {
+func (a *activeSet) push(w *quadratic, p *penalty, lambda float64, i int, sign float64) bool {
 	if !a.chol.push(a.products(w, i, len(a.members)), w.h.row[i][i]+p.ridge(w.units[i], lambda), dependent) {
 		return false
 	}
@@ -241,7 +241,7 @@ func (a *activeSet) push(w *working, p *penalty, lambda float64, i int, sign flo
 // no such member, or where the column was itself taken out by the exchange
 // before. What is left then is within rounding of the optimum, and the finish
 // decides.
-func (a *activeSet) exchange(w *working, p *penalty, lambda float64, i int) bool {
+func (a *activeSet) exchange(w *quadratic, p *penalty, lambda float64, i int) bool {
 	if i == a.out {
 		return false
 	}

@@ -2,7 +2,6 @@ package solver
 
 import (
 	"context"
-	"math"
 	"sync"
 )
 
@@ -126,8 +125,8 @@ func (f *fitting) record(p *Path, progress func(int)) {
 	}
 	*p = Path{First: first, Last: first - 1, Still: f.still}
 	f.path = p
-	f.accept = func(r *record, list []chosen, shared bool) {
-		f.note(p, r, list, shared)
+	f.accept = func(r *record, shared bool) {
+		f.note(p, r, shared)
 		if progress != nil {
 			progress(1)
 		}
@@ -136,52 +135,32 @@ func (f *fitting) record(p *Path, progress func(int)) {
 }
 
 // note appends a certified step to a path.
-func (f *fitting) note(p *Path, r *record, list []chosen, shared bool) {
-	step := f.cur
-	for _, c := range list {
-		if !f.entered[c.unit] {
-			p.Entries = append(p.Entries, Entry{Candidate: c.unit, Step: int32(step), Negative: r.sign[c.place] < 0})
+func (f *fitting) note(p *Path, r *record, shared bool) {
+	step := int32(f.cur)
+	negative := make(map[int32]bool)
+	for _, c := range f.core.values(r) {
+		c.Step = step
+		p.Coefs = append(p.Coefs, c)
+		negative[c.Candidate] = c.Value < 0 && f.signed(c.Candidate)
+	}
+	for _, u := range r.units {
+		if !f.entered[u] {
+			p.Entries = append(p.Entries, Entry{Candidate: u, Step: step, Negative: negative[u]})
 			if shared {
 				p.Twins++
 			}
 		}
-		p.Coefs = append(p.Coefs, Coef{Step: int32(step), Candidate: c.unit, Value: f.original(r, c)})
 	}
-	p.Last = step
-	intercept, always := f.rest(r, list)
-	p.Intercepts = append(p.Intercepts, intercept)
+	p.Last = f.cur
+	intercepts, always := f.core.rest(r)
+	p.Intercepts = append(p.Intercepts, intercepts...)
 	p.Always = append(p.Always, always...)
 	p.Violation = max(p.Violation, r.cert.violation)
 	p.Gap = max(p.Gap, r.cert.gap)
 }
 
-// original is a coefficient in the column's own units.
-func (f *fitting) original(r *record, c chosen) float64 {
-	return r.beta[c.place] / f.work.scale[r.members[c.place]]
-}
-
-// rest returns the intercept and the always-in coefficients in the columns'
-// own units; always-in columns that were redundant in the draw have 0.
-func (f *fitting) rest(r *record, list []chosen) (intercept float64, always []float64) {
-	always = make([]float64, len(f.m.p.Always))
-	intercept = f.d.mean
-	subtract := func(unit int32, b float64) {
-		i := f.work.place[unit]
-		j := f.m.design(unit)
-		intercept = math.FMA(-b, f.m.p.Centre[j]+f.work.mean[i], intercept)
-	}
-	for k, i := range r.members {
-		if u := f.work.units[i]; f.m.penalty.always(u) {
-			b := (f.base[k] + r.beta[k]) / f.work.scale[i]
-			always[int(u)-f.m.candidates()] = b
-			subtract(u, b)
-		}
-	}
-	for _, c := range list {
-		subtract(c.unit, f.original(r, c))
-	}
-	return intercept, always
-}
+// signed reports whether a candidate's coefficient is one number.
+func (f *fitting) signed(unit int32) bool { return f.lanes() == 1 && f.m.single(unit) }
 
 // seeds are the lambdas at which candidates enter on all rows: proposals for
 // draws on long tables, where most draws agree with them. Nothing recorded

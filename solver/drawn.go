@@ -14,24 +14,22 @@ type drawn struct {
 	root   []float64 // square roots of weight; nil: all 1
 	total  float64   // N, the sum of the weights
 	mean   float64   // weighted mean of the outcome over the draw
-	y      []float64 // root * (outcome - mean)
-
+	y      []float64 // root * (outcome - mean), where it is a number
 }
 
-// draw fills d from a sample. outcome has one value per table row.
-func (d *drawn) draw(s *Sample, outcome []float64) {
+// draw fills d from a sample of a table of n rows, but for the outcome.
+func (d *drawn) draw(s *Sample, n int) {
 	d.rows = d.rows[:0]
 	d.weight, d.root = nil, nil
 	for w, word := range s.Rows {
 		for ; word != 0; word &= word - 1 {
 			i := w<<6 + bits.TrailingZeros64(word)
-			if i < len(outcome) && s.Weight(i) > 0 {
+			if i < n && s.Weight(i) > 0 {
 				d.rows = append(d.rows, int32(i))
 			}
 		}
 	}
 	d.setWeights(s)
-	d.setOutcome(outcome)
 }
 
 func (d *drawn) setWeights(s *Sample) {
@@ -86,18 +84,41 @@ func (d *drawn) weighted(v []float64) float64 {
 	return kernel.Dot(d.weight, v)
 }
 
-// lane writes root*u, the vector whose product with a raw column is the
-// gradient times N.
-func (d *drawn) lane(dst, u []float64) []float64 {
-	if d.root == nil {
-		return append(dst[:0], u...)
+// constant returns the gathered column of ones.
+func (d *drawn) constant(dst []float64) []float64 {
+	if d.root != nil {
+		return append(dst[:0], d.root...)
 	}
-	dst = resize(dst, len(u))
-	for k, v := range u {
-		dst[k] = d.root[k] * v
+	dst = resize(dst, len(d.rows))
+	for k := range dst {
+		dst[k] = 1
 	}
 	return dst
 }
+
+// lanes are the vectors root*u of a fit's score vectors u, whose products with a
+// raw column are the gradients times N, and their sums.
+type lanes struct {
+	v    []float64 // one after another
+	sum  []float64
+	rows int
+}
+
+// from fills the lanes from score vectors.
+func (l *lanes) from(d *drawn, u []float64) {
+	l.rows = len(d.rows)
+	l.v, l.sum = append(l.v[:0], u...), l.sum[:0]
+	for k0 := 0; k0 < len(u); k0 += l.rows {
+		v := l.v[k0 : k0+l.rows]
+		for k, r := range d.root {
+			v[k] *= r
+		}
+		l.sum = append(l.sum, kernel.Sum(v))
+	}
+}
+
+// lane is one of them.
+func (l *lanes) lane(k int) []float64 { return l.v[k*l.rows : (k+1)*l.rows] }
 
 // column is one design column gathered on a draw's rows: record numbers.
 type column struct {

@@ -421,7 +421,7 @@ func TestFarCandidate(t *testing.T) {
 		t.Fatal(err)
 	}
 	f.work.add(f, []int32{1})
-	knot := math.Abs(f.gradient(1, f.rec.u))
+	knot := math.Abs(f.gradient(int(f.work.place[1]), 0, f.rec.u))
 	fits, err := m.FitAt(context.Background(), s, []float64{knot * (1 - 1e-9), knot * (1 + 1e-9), 3 * knot})
 	if err != nil {
 		t.Fatal(err)

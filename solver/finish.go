@@ -32,6 +32,8 @@ const (
 // enters, so that any history gives the same bits.
 type record struct {
 	lambda  float64
+	units   []int32   // selected candidates, ascending
+	support []choice  // the parts of them that are not zero
 	members []int     // places in the working set: always-in columns, then candidates in order of entry, then unit
 	sign    []float64 // 0 for always-in columns
 	beta    []float64
@@ -59,6 +61,7 @@ func (f *fitting) finish(prev *record, support []choice, lambda float64) (*recor
 	}
 	r.solve(f)
 	r.certify(f)
+	r.declare(f)
 	return r, nil
 }
 
@@ -75,7 +78,7 @@ func (r *record) order(f *fitting, prev *record, support []choice) (keep int) {
 	same := true
 	for k, i := range prev.members {
 		sign, stays := chosen[i]
-		if f.m.penalty.always(w.units[i]) {
+		if f.penalty.always(w.units[i]) {
 			sign, stays = 0, true
 		}
 		if !stays {
@@ -104,7 +107,7 @@ func (r *record) order(f *fitting, prev *record, support []choice) (keep int) {
 // factorise extends the kept rows of the factor before; a diagonal that moves
 // with lambda is factored anew.
 func (r *record) factorise(f *fitting, prev *record, keep int) error {
-	w, p := &f.work, f.m.penalty
+	w, p := &f.work, f.penalty
 	keep = min(keep, prev.chol.size()) // a shared record has no factor
 	if p.quadratic() && prev.lambda != r.lambda {
 		keep = 0
@@ -126,7 +129,7 @@ func (r *record) factorise(f *fitting, prev *record, keep int) error {
 // solve finds the coefficients from the factor, then corrects them by the
 // gradient of the actual residual until its violation is rounding.
 func (r *record) solve(f *fitting) {
-	w, p := &f.work, f.m.penalty
+	w, p := &f.work, f.penalty
 	r.beta = make([]float64, len(r.members))
 	for k, i := range r.members {
 		r.beta[k] = w.c[i] - float64(r.sign[k]*p.threshold(w.units[i], r.lambda))
@@ -182,7 +185,7 @@ func (r *record) corrected(f *fitting) []float64 {
 
 // residue is what is missing for member k's optimality condition.
 func (r *record) residue(f *fitting, k int) float64 {
-	u, p := f.work.units[r.members[k]], f.m.penalty
+	u, p := f.work.units[r.members[k]], f.penalty
 	return r.grad[k] - float64(p.ridge(u, r.lambda)*r.beta[k]) - float64(r.sign[k]*p.threshold(u, r.lambda))
 }
 
@@ -190,7 +193,7 @@ func (r *record) residue(f *fitting, k int) float64 {
 func (r *record) score(f *fitting) {
 	f.fit = resize(f.fit, len(r.u))
 	f.work.fitted(r.members, r.beta, f.fit)
-	f.m.family.score(&f.d, f.fit, r.u)
+	f.d.residual(f.fit, r.u)
 	for k, i := range r.members {
 		r.grad[k] = kernel.Dot(f.work.z[i], r.u) / f.d.total
 	}
@@ -203,7 +206,7 @@ func (r *record) worst(f *fitting) float64 {
 	}
 	v := 0.0
 	for k, i := range r.members {
-		t := f.m.penalty.threshold(f.work.units[i], r.lambda)
+		t := f.penalty.threshold(f.work.units[i], r.lambda)
 		if r.sign[k] == 0 {
 			t = r.lambda
 		}
@@ -236,7 +239,7 @@ func (r *record) worstUnpenalised(f *fitting) float64 {
 // is not in the support is within them already (checked before a record is
 // taken), so the members alone set c.
 func (r *record) certify(f *fitting) {
-	p, n := f.m.penalty, f.d.total
+	p, n := f.penalty, f.d.total
 	r.cert = certificate{violation: r.worst(f)}
 	square, most, l1 := kernel.Dot(r.u, r.u), 1.0, 0.0
 	r.spread = math.Sqrt(square / n)
@@ -293,24 +296,36 @@ func (r *record) resolvable(f *fitting) error {
 	return nil
 }
 
-// weak returns the candidates of the support whose margin does not exceed the
+// weak lists the candidates of the support whose margin does not exceed the
 // border: |b| / ((H^-1)_kk * threshold), negative where the sign is wrong.
-func (r *record) weak(f *fitting) []int {
-	var out []int
+func (r *record) weak(f *fitting) []choice {
+	var out []choice
 	for k, i := range r.members {
 		if r.sign[k] == 0 || r.lambda == 0 {
 			continue
 		}
-		t := f.m.penalty.threshold(f.work.units[i], r.lambda)
+		t := f.penalty.threshold(f.work.units[i], r.lambda)
 		size := r.beta[k] * r.sign[k] / t
 		if size > weakly {
 			continue
 		}
 		if size <= 0 || size/r.chol.inverseDiagonal(k) <= border {
-			out = append(out, i)
+			out = append(out, choice{place: i, sign: r.sign[k]})
 		}
 	}
 	return out
+}
+
+// declare lists what the record selects.
+func (r *record) declare(f *fitting) {
+	r.units, r.support = nil, nil
+	for k, i := range r.members {
+		if r.sign[k] != 0 {
+			r.units = append(r.units, f.work.units[i])
+			r.support = append(r.support, choice{place: i, sign: r.sign[k]})
+		}
+	}
+	slices.Sort(r.units)
 }
 
 func (m *Model) name(unit int32) string { return m.p.Names[m.design(unit)] }

@@ -74,15 +74,15 @@ func (m *Model) FitPath(ctx context.Context, s *Sample) ([]Fit, error) {
 	var p Path
 	f.record(&p, nil)
 	var fits []Fit
-	f.accept = func(r *record, list []chosen, _ bool) {
-		fits = append(fits, f.fitOf(r, list))
-	}
+	f.accept = func(r *record, _ bool) { fits = append(fits, f.fitOf(r)) }
 	if err := m.lockstep(ctx, []*fitting{f}); err != nil {
 		return nil, err
 	}
 	if p.Stop == StopUncertified {
 		k := f.cur
-		fits = append(fits, Fit{Step: k, Lambda: f.lambda(k), Why: p.Why, Coef: make([]float64, m.candidates()), Always: make([]float64, len(m.p.Always))})
+		missed := m.blank(k, f.lambda(k))
+		missed.Why = p.Why
+		fits = append(fits, missed)
 	}
 	return fits, nil
 }
@@ -101,7 +101,7 @@ func (m *Model) descend(ctx context.Context, s *Sample, lambda func(int) float64
 	var p Path
 	fits := make([]Fit, 0, last-first+1)
 	f.path = &p
-	f.accept = func(r *record, list []chosen, _ bool) { fits = append(fits, f.fitOf(r, list)) }
+	f.accept = func(r *record, _ bool) { fits = append(fits, f.fitOf(r)) }
 	f.travel(lambda, first, last)
 	f.unlimited = true
 	defer func() { f.unlimited = false }()
@@ -109,24 +109,36 @@ func (m *Model) descend(ctx context.Context, s *Sample, lambda func(int) float64
 		return nil, err
 	}
 	for k := first + len(fits); k <= last; k++ {
-		fits = append(fits, Fit{Step: k, Lambda: lambda(k), Why: p.Why, Coef: make([]float64, m.candidates()), Always: make([]float64, len(m.p.Always))})
+		missed := m.blank(k, lambda(k))
+		missed.Why = p.Why
+		fits = append(fits, missed)
 	}
 	return fits, nil
 }
 
 // fitOf puts a record into the columns' own units.
-func (f *fitting) fitOf(r *record, list []chosen) Fit {
+func (f *fitting) fitOf(r *record) Fit {
+	fit := f.m.blank(f.cur, r.lambda)
+	fit.Selected, fit.Loss, fit.Objective = len(r.units), f.core.loss(r), r.cert.objective
+	fit.Violation, fit.Gap, fit.Certified = r.cert.violation, r.cert.gap, true
+	classes := f.m.Classes()
+	for _, c := range f.core.values(r) {
+		fit.Coef[(f.m.firstTerm(c.Candidate)+int(c.Term))*classes+int(c.Class)] = c.Value
+	}
+	fit.Intercept, fit.Always = f.core.rest(r)
+	return fit
+}
+
+// blank is a fit that was not reached.
+func (m *Model) blank(step int, lambda float64) Fit {
+	classes := m.Classes()
 	fit := Fit{
-		Step: f.cur, Lambda: r.lambda,
-		Coef: make([]float64, f.m.candidates()), Selected: len(list),
-		Loss: f.m.family.loss(&f.d, r.u), Objective: r.cert.objective,
-		Violation: r.cert.violation, Gap: r.cert.gap, Certified: true,
+		Step: step, Lambda: lambda,
+		Coef: make([]float64, len(m.Terms())*classes), Always: make([]float64, len(m.p.Always)*classes),
 	}
-	for _, c := range list {
-		fit.Coef[c.unit] = f.original(r, c)
+	if m.p.Family != Cox {
+		fit.Intercept = make([]float64, classes)
 	}
-	intercept, always := f.rest(r, list)
-	fit.Intercept, fit.Always = []float64{intercept}, always
 	return fit
 }
 
@@ -150,14 +162,14 @@ func (m *Model) unpenalised(ctx context.Context, s *Sample) (Fit, error) {
 	}
 	f.work.add(f, units)
 	for c := range support {
-		support[c] = choice{int(f.work.place[int32(c)]), 1}
+		support[c] = choice{place: int(f.work.place[int32(c)]), sign: 1}
 	}
-	r, err := f.finish(f.rec, support, 0)
+	r, err := f.core.finish(support, 0)
 	if err != nil {
 		return Fit{}, fmt.Errorf("solver: lambda 0 needs full column rank: %w: leave it out, or take a lambda above 0", err)
 	}
 	f.cur = 0
-	fit := f.fitOf(r, f.chosen(r))
+	fit := f.fitOf(r)
 	if err := r.check(f); err != nil {
 		fit.Certified, fit.Why = false, err.Error()
 	}

@@ -8,12 +8,6 @@ import (
 	"holdfast/solver/kernel"
 )
 
-// choice is a member of a support: a place in the working set and a sign.
-type choice struct {
-	place int
-	sign  float64
-}
-
 // fitting is one draw on its way down the lattice. It looks a window of steps
 // ahead: the working set's problem is solved at each of them, one request asks
 // for all gradients at the last, and then the steps are accepted one by one,
@@ -21,10 +15,12 @@ type choice struct {
 // residuals are short vectors (p > n); several steps spare passes over a long
 // table.
 type fitting struct {
-	m    *Model
-	d    drawn
-	work working
-	qp   activeSet
+	m       *Model
+	d       drawn
+	penalty *penalty // the model's, or the draw's own with jitter
+	work    working
+	core    core
+	qp      activeSet // of the quadratic core
 
 	// Screening state, per candidate.
 	mean    []float64 // draw mean less centre
@@ -51,6 +47,8 @@ type fitting struct {
 	brought  int        // violators brought into the working set for the window
 	had      int        // candidates that had entered before the window
 
+	groups []*group // per candidate what the draw makes of a group; nil for a single column, or where there are none
+
 	base      []float64 // coefficients of the always-in columns alone, per member of the null record
 	whole     float64   // sum of squares of the outcome before they were taken out
 	mostNorm  float64
@@ -62,17 +60,17 @@ type fitting struct {
 	toStart span
 	toEnd   span
 	coarse  []coarse
-	lane    []float64
+	shine   lanes       // of the residual that candidates are measured against
 	spareU  [][]float64 // residuals of dropped records
 	fit     []float64
-	accept  func(r *record, chosen []chosen, shared bool)
+	accept  func(r *record, shared bool)
 	path    *Path
 }
 
 // start makes the fitting ready for a draw: its rows, its always-in columns,
 // and the screening numbers of all candidates at the model without any.
 func (f *fitting) start(s *Sample) error {
-	f.d.draw(s, f.m.p.Outcome)
+	f.d.draw(s, f.m.rows)
 	if len(f.d.rows) < 2 {
 		return fmt.Errorf("the draw has %d rows of positive weight: at least 2 are needed", len(f.d.rows))
 	}
@@ -81,73 +79,17 @@ func (f *fitting) start(s *Sample) error {
 	f.snaps.reset(len(f.d.rows))
 	f.entered = make(map[int32]bool)
 	f.failed, f.asked = nil, false
-	if f.same() {
-		clear(f.d.y)
-	}
-	if err := f.startAlways(); err != nil {
+	f.penalty = f.m.penalty.of(s)
+	if err := f.core.begin(); err != nil {
 		return err
 	}
 	f.measure()
 	return nil
 }
 
-// same is the exact test for an outcome that does not vary in the draw.
-func (f *fitting) same() bool {
-	y := f.m.p.Outcome
-	for _, r := range f.d.rows {
-		if y[r] != y[f.d.rows[0]] {
-			return false
-		}
-	}
-	return true
-}
-
 // constant reports whether the always-in columns leave nothing to explain.
 func (f *fitting) constant() bool {
 	return f.whole == 0 || kernel.Dot(f.rec.u, f.rec.u) <= 1e-24*f.whole
-}
-
-// startAlways fits the always-in columns. Those that depend on earlier ones
-// within the draw are dropped, in table order.
-func (f *fitting) startAlways() error {
-	units := make([]int32, len(f.m.p.Always))
-	for a := range units {
-		units[a] = int32(f.m.candidates() + a)
-	}
-	f.work.add(f, units)
-	f.qp.grow(len(units))
-	for i := range units {
-		if f.work.h.row[i][i] > 0 {
-			f.qp.push(&f.work, f.m.penalty, 0, i, 0)
-		}
-	}
-	if len(f.qp.members) > len(f.d.rows)-2 {
-		return fmt.Errorf("%d always-in columns leave nothing of %d rows", len(f.qp.members), len(f.d.rows))
-	}
-	null := &record{members: slices.Clone(f.qp.members), sign: make([]float64, len(f.qp.members))}
-	if err := null.factorise(f, &record{}, 0); err != nil {
-		return err
-	}
-	null.solve(f)
-	f.deflate(null)
-	f.rec = null
-	if err := f.qp.solve(&f.work, f.m.penalty, 0); err != nil {
-		return err
-	}
-	f.qp.save(&f.before)
-	return nil
-}
-
-// deflate takes the always-in fit out of the outcome, so that a large part of
-// it does not drown the rest in its rounding; records hold what is added to it.
-func (f *fitting) deflate(null *record) {
-	f.whole = kernel.Dot(f.d.y, f.d.y)
-	f.base = append(f.base[:0], null.beta...)
-	clear(null.beta)
-	copy(f.d.y, null.u)
-	for i, z := range f.work.z {
-		f.work.c[i] = kernel.Dot(z, f.d.y) / f.d.total
-	}
 }
 
 // measure fills the screening state at the residual of the null record.
@@ -160,14 +102,21 @@ func (f *fitting) measure() {
 	}
 	f.still, f.coarse = nil, f.coarse[:0]
 	f.norm = nil
-	if f.m.scale != nil || f.m.penalty.mix < 1 || f.m.p.Relative != nil {
+	if f.m.scale != nil || f.penalty.mix < 1 || f.penalty.uneven {
 		f.norm = make([]float64, n)
 	}
-	f.lane = f.d.lane(f.lane, f.rec.u)
-	sum := kernel.Sum(f.lane)
+	f.groups = nil
+	if f.m.p.Groups != nil {
+		f.groups = make([]*group, n)
+	}
+	f.shine.from(&f.d, f.rec.u)
 	ref := f.snaps.add(f.rec.u)
-	for c := range n {
-		f.measureOne(int32(c), sum)
+	for c := range int32(n) {
+		if f.m.single(c) {
+			f.measureOne(c)
+		} else {
+			f.measureGroup(c)
+		}
 		f.end.ref[c] = ref
 	}
 	f.endU = append(f.endU[:0], f.rec.u...)
@@ -177,13 +126,14 @@ func (f *fitting) measure() {
 	}
 }
 
-func (f *fitting) measureOne(c int32, sum float64) {
+func (f *fitting) measureOne(c int32) {
 	x, holes := f.m.column(c)
-	sx, sxx, sxy := kernel.Moments(x, f.d.rows, f.d.weight, f.lane)
+	first, sum := f.shine.lane(0), f.shine.sum[0]
+	sx, sxx, sxy := kernel.Moments(x, f.d.rows, f.d.weight, first)
 	filled := f.d.total
 	if holes != nil {
 		filled -= f.d.weightOfHoles(holes)
-		sum -= f.d.overHoles(holes, f.lane)
+		sum -= f.d.overHoles(holes, first)
 	}
 	mean, sd := 0.0, 0.0
 	if filled > 0 {
@@ -200,14 +150,35 @@ func (f *fitting) measureOne(c int32, sum float64) {
 		f.still = append(f.still, c)
 		return
 	}
-	f.inverse[c] = 1 / (f.m.scaleOf(c, sd) * f.m.penalty.mix * f.m.penalty.weight[c])
+	f.inverse[c] = 1 / (f.m.scaleOf(c, sd) * f.penalty.mix * f.penalty.weight[c])
 	if f.norm != nil {
 		f.norm[c] = sd * f.inverse[c]
 	}
 	if math.Abs(mean) > farOff*sd {
 		f.coarse = append(f.coarse, coarse{c, math.Hypot(mean, sd) * f.inverse[c]})
 	}
+	if f.lanes() > 1 {
+		f.end.value[c] = f.size(c, &f.shine)
+		return
+	}
 	f.end.value[c] = (sxy - float64(mean*sum)) * f.inverse[c] / f.d.total
+}
+
+// measureGroup is measureOne for a group.
+func (f *fitting) measureGroup(c int32) {
+	g, block := f.d.whiten(f.m, c, f.work.buffer)
+	f.work.spare = append(f.work.spare, block...)
+	f.groups[c], f.mean[c] = g, 0
+	if len(g.kept) == 0 {
+		f.inverse[c], f.end.value[c] = 0, 0
+		f.still = append(f.still, c)
+		return
+	}
+	f.inverse[c] = 1 / f.penalty.threshold(c, 1)
+	if f.norm != nil {
+		f.norm[c] = f.inverse[c]
+	}
+	f.end.value[c] = f.size(c, &f.shine)
 }
 
 // careful is the two-pass mean and sd, 0 where the exact test finds that the
@@ -260,14 +231,30 @@ func (f *fitting) top() float64 {
 	f.work.add(f, near)
 	top := 0.0
 	for _, c := range near {
-		top = max(top, f.m.penalty.gauge(c, f.gradient(c, f.rec.u), 1))
+		for lane := range f.lanes() {
+			top = max(top, f.penalty.gauge(c, f.gradient(int(f.work.place[c]), lane, f.rec.u), 1))
+		}
 	}
 	return top
 }
 
-// gradient is the record gradient of a unit of the working set.
-func (f *fitting) gradient(unit int32, u []float64) float64 {
-	return kernel.Dot(f.work.z[f.work.place[unit]], u) / f.d.total
+// lanes is the number of score vectors of a fit.
+func (f *fitting) lanes() int { return f.m.Classes() }
+
+// gradient is the record gradient of a unit of the working set, by its first
+// place, for one lane; of a group its length.
+func (f *fitting) gradient(place, lane int, u []float64) float64 {
+	n := len(f.d.rows)
+	u = u[lane*n : (lane+1)*n]
+	width := f.work.width(place)
+	if width == 1 {
+		return kernel.Dot(f.work.z[place], u) / f.d.total
+	}
+	g := make([]float64, width)
+	for t := range g {
+		g[t] = kernel.Dot(f.work.z[place+t], u) / f.d.total
+	}
+	return length(g)
 }
 
 // least is the screening gradient that a candidate must stay below to be
@@ -320,32 +307,14 @@ func (f *fitting) ask() *request {
 		f.uncertified(f.failed)
 		return nil
 	}
-	members, beta := f.qp.members, make([]float64, len(f.qp.members))
-	for k, i := range members {
-		beta[k] = f.qp.beta[i]
-	}
-	f.fit = resize(f.fit, len(f.d.rows))
-	f.work.fitted(members, beta, f.fit)
 	f.req.f = f
-	f.req.u = resize(f.req.u, len(f.d.rows))
-	f.m.family.score(&f.d, f.fit, f.req.u)
+	f.req.u = resize(f.req.u, f.lanes()*len(f.d.rows))
+	f.core.score(f.req.u)
 	f.req.least = f.least(f.lambda(f.to), f.spread(f.req.u))
 	f.req.number = f.snaps.add(f.req.u)
-	f.knowWorkingSet()
+	f.core.know()
 	f.asked = true
 	return &f.req
-}
-
-// knowWorkingSet takes the gradients of the working set's candidates, which the
-// Gram matrix gives, so that the screen need not compute them.
-func (f *fitting) knowWorkingSet() {
-	p := f.m.penalty
-	for i, u := range f.work.units {
-		if !p.always(u) {
-			f.end.value[u] = f.qp.g[i] / p.threshold(u, 1)
-			f.end.ref[u] = f.req.number
-		}
-	}
 }
 
 // newcomers returns those of the units that the working set does not have.
@@ -371,12 +340,10 @@ func (f *fitting) bring(units []int32) {
 // step that cannot be solved.
 func (f *fitting) solveWindow() {
 	f.supports = f.supports[:0]
-	f.qp.grow(len(f.work.units))
-	p := f.m.penalty
 	f.goBack()
 	seen := make(map[int32]bool)
 	for k := f.cur; k <= f.to; k++ {
-		if err := f.qp.solve(&f.work, p, f.lambda(k)); err != nil {
+		if err := f.core.solve(f.lambda(k)); err != nil {
 			if k == f.cur {
 				f.failed = err
 			} else {
@@ -394,11 +361,11 @@ func (f *fitting) solveWindow() {
 	}
 }
 
-// goBack returns qp to the certified step before the window, unless it stands
+// goBack returns the core to the certified step before the window, unless it stands
 // there, or at the window's first step, already.
 func (f *fitting) goBack() {
 	if f.stands != f.cur && f.stands != f.cur-1 {
-		f.qp.restore(&f.before, &f.work, f.m.penalty, f.lambda(f.cur))
+		f.core.back(f.lambda(f.cur))
 	}
 }
 
@@ -406,22 +373,16 @@ func (f *fitting) goBack() {
 func (f *fitting) resolve() {
 	f.goBack()
 	for k := f.cur; k <= f.to && f.failed == nil; k++ {
-		f.failed = f.qp.solve(&f.work, f.m.penalty, f.lambda(k))
+		f.failed = f.core.solve(f.lambda(k))
 		f.stands = k
 	}
 }
 
-// support lists the candidates among the members and adds the new ones to
-// seen.
+// support lists what the core holds and adds the new candidates to seen.
 func (f *fitting) support(seen map[int32]bool) []choice {
-	var s []choice
-	for k, i := range f.qp.members {
-		u := f.work.units[i]
-		if f.m.penalty.always(u) {
-			continue
-		}
-		s = append(s, choice{i, f.qp.sign[k]})
-		if !f.entered[u] {
+	s := f.core.support()
+	for _, c := range s {
+		if u := f.work.units[c.place]; !f.entered[u] {
 			seen[u] = true
 		}
 	}
@@ -443,9 +404,9 @@ func (f *fitting) acceptWindow() (again, done bool) {
 			return true, false
 		}
 		if f.cur == f.to {
-			f.qp.save(&f.before)
+			f.core.save()
 		} else {
-			f.saveSupport(f.rec)
+			f.core.keep(f.rec)
 		}
 		f.supports = f.supports[1:]
 		f.cur++
@@ -467,13 +428,6 @@ func (f *fitting) stopAfter() int {
 		return 0
 	}
 	return f.m.p.StopAfter
-}
-
-// saveSupport notes a record as the place to go back to.
-func (f *fitting) saveSupport(r *record) {
-	f.before.members = append(f.before.members[:0], r.members...)
-	f.before.sign = append(f.before.sign[:0], r.sign...)
-	f.before.beta = append(f.before.beta[:0], r.beta...)
 }
 
 func (f *fitting) finished(s Stop) {

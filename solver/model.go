@@ -32,8 +32,8 @@ const farOff = 1e3
 type Model struct {
 	p       Problem
 	rows    int
-	family  family
 	penalty *penalty
+	first   []int     // per candidate: position of its first column in Terms; nil: all are single
 	table   []float64 // per unit: variance over all rows, for the constant test
 	scale   []float64 // per unit: fixed scale of the penalty; nil with ScaleDraw
 	lattice lattice
@@ -51,7 +51,7 @@ func NewModel(ctx context.Context, p Problem) (*Model, error) {
 		return nil, err
 	}
 	rows, _ := p.Design.Dims()
-	m := &Model{p: p, rows: rows, family: gaussian{}, penalty: p.penalty()}
+	m := &Model{p: p, rows: rows, penalty: p.penalty(), first: p.firstTerms()}
 	if err := m.measure(ctx); err != nil {
 		return nil, err
 	}
@@ -111,20 +111,45 @@ func (p *Problem) checkValues() error {
 }
 
 func (p *Problem) penalty() *penalty {
-	w := make([]float64, len(p.Candidates)+len(p.Always))
+	w := make([]float64, len(p.Candidates)+len(p.Always)+1)
 	for c := range p.Candidates {
 		w[c] = 1
 		if p.Relative != nil {
 			w[c] = p.Relative[c]
 		}
 	}
-	return &penalty{mix: p.Mix, weight: w}
+	return &penalty{mix: p.Mix, weight: w, uneven: p.Relative != nil || p.Groups != nil}
+}
+
+// firstTerms finds where each candidate's columns begin in Terms.
+func (p *Problem) firstTerms() []int {
+	if p.Groups == nil {
+		return nil
+	}
+	first, at := make([]int, len(p.Candidates)), 0
+	for c := range first {
+		first[c] = at
+		at += max(1, len(p.Groups[c]))
+	}
+	return first
 }
 
 func (m *Model) candidates() int { return len(m.p.Candidates) }
 
-// design returns the design column of a unit: candidates first, then the
-// always-in columns.
+// alwaysUnits lists the units of the always-in columns.
+func (m *Model) alwaysUnits() []int32 {
+	units := make([]int32, len(m.p.Always))
+	for a := range units {
+		units[a] = int32(m.candidates() + a)
+	}
+	return units
+}
+
+// interceptUnit is the unit of the column of ones, where a core has one.
+func (m *Model) interceptUnit() int32 { return int32(m.candidates() + len(m.p.Always)) }
+
+// design returns the design column of a unit that is a single column:
+// candidates first, then the always-in columns.
 func (m *Model) design(unit int32) int32 {
 	if n := m.candidates(); int(unit) >= n {
 		return m.p.Always[int(unit)-n]
@@ -159,12 +184,18 @@ func (m *Model) everything() *Sample {
 // measure finds the variance of every unit over the rows of positive weight.
 func (m *Model) measure(ctx context.Context) error {
 	var d drawn
-	d.draw(m.everything(), m.p.Outcome)
+	d.draw(m.everything(), m.rows)
 	if len(d.rows) < 2 {
 		return fmt.Errorf("solver: %d rows have a positive case weight: at least 2 are needed", len(d.rows))
 	}
-	m.table = make([]float64, len(m.penalty.weight))
+	m.table = make([]float64, m.interceptUnit())
 	err := m.eachUnit(ctx, func(unit int32, buffer []float64) {
+		if !m.single(unit) {
+			g, _ := d.whiten(m, unit, func() []float64 { return nil })
+			m.table[unit] = float64(min(1, len(g.kept)))
+			m.penalty.weight[unit] *= m.p.groupWeight(max(1, len(g.kept)))
+			return
+		}
 		x, holes := m.column(unit)
 		sd := d.gather(x, holes, buffer).sd
 		m.table[unit] = sd * sd
@@ -199,7 +230,7 @@ func (m *Model) measure(ctx context.Context) error {
 
 // eachUnit calls do for every unit, on all cores; buffer holds one column.
 func (m *Model) eachUnit(ctx context.Context, do func(unit int32, buffer []float64)) error {
-	units, workers := len(m.penalty.weight), runtime.GOMAXPROCS(0)
+	units, workers := int(m.interceptUnit()), runtime.GOMAXPROCS(0)
 	g, ctx := errgroup.WithContext(ctx)
 	for w := range workers {
 		g.Go(func() error {
@@ -270,7 +301,13 @@ func (m *Model) fitting() *fitting {
 	if f, ok := m.pool.Get().(*fitting); ok {
 		return f
 	}
-	return &fitting{m: m}
+	return m.newFitting()
+}
+
+func (m *Model) newFitting() *fitting {
+	f := &fitting{m: m}
+	f.core = exact{f}
+	return f
 }
 
 func (m *Model) release(f *fitting) { m.pool.Put(f) }

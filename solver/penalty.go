@@ -1,6 +1,9 @@
 package solver
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // border is the one margin that decides both sides: a candidate is selected
 // only where its margin exceeds it (DESIGN 4). It lies far above the rounding
@@ -15,7 +18,21 @@ func isOut(gauge float64) bool { return gauge-1 <= border }
 // lambda * weight * (mix*|b| + (1-mix)/2*b^2). Weight 0 is an always-in column.
 type penalty struct {
 	mix    float64
-	weight []float64 // per unit: candidates, then always-in columns
+	weight []float64 // per unit: candidates, then always-in columns and the intercept
+	uneven bool      // not all candidates weigh 1
+}
+
+// of returns the penalty of a draw: with jitter each weight is divided by W
+// (Meinshausen & Buhlmann 2010, section 3.1).
+func (p *penalty) of(s *Sample) *penalty {
+	if s.Jitter == nil {
+		return p
+	}
+	q := &penalty{mix: p.mix, weight: slices.Clone(p.weight), uneven: true}
+	for c, w := range s.Jitter {
+		q.weight[c] /= w
+	}
+	return q
 }
 
 // threshold is the size that a unit's gradient must exceed to enter.

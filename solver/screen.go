@@ -132,8 +132,7 @@ type productScreen struct {
 	m      *Model
 	need   []uint16 // per candidate: the requests that need it
 	span   span
-	lane   [][]float64 // per request: root*u
-	sum    []float64
+	lane   []lanes   // per request
 	rows   []float64 // all table rows x lanes, filled when first needed
 	filled bool
 	out    []float64
@@ -167,9 +166,9 @@ func (s *productScreen) mark(reqs []*request) {
 		s.need = make([]uint16, s.m.candidates())
 	}
 	clear(s.need)
-	s.sum, s.filled = s.sum[:0], false
+	s.filled = false
 	for len(s.lane) < len(reqs) {
-		s.lane = append(s.lane, nil)
+		s.lane = append(s.lane, lanes{})
 	}
 	for l, r := range reqs {
 		f := r.f
@@ -186,8 +185,7 @@ func (s *productScreen) mark(reqs []*request) {
 		if whim := f.m.whim; whim != nil {
 			whim.alsoNeed(s.need, f.inverse, bit)
 		}
-		s.lane[l] = f.d.lane(s.lane[l], r.u)
-		s.sum = append(s.sum, kernel.Sum(s.lane[l]))
+		s.lane[l].from(&f.d, r.u)
 	}
 }
 
@@ -209,6 +207,10 @@ func (s *productScreen) compute(ctx context.Context, reqs []*request) error {
 // column brings one candidate's gradient up to date in the requests that need
 // it.
 func (s *productScreen) column(reqs []*request, c int) {
+	if s.m.Classes() > 1 || !s.m.single(int32(c)) {
+		s.sizes(reqs, c)
+		return
+	}
 	x, holes := s.m.column(int32(c))
 	byLanes := s.lanesPay(reqs, s.need[c])
 	if byLanes {
@@ -225,15 +227,61 @@ func (s *productScreen) column(reqs []*request, c int) {
 		if byLanes {
 			raw = s.out[l]
 		} else {
-			raw = kernel.DotRows(x, f.d.rows, s.lane[l])
+			raw = kernel.DotRows(x, f.d.rows, s.lane[l].v)
 		}
-		sum := s.sum[l]
+		sum := s.lane[l].sum[0]
 		if holes != nil {
-			sum -= f.d.overHoles(holes, s.lane[l])
+			sum -= f.d.overHoles(holes, s.lane[l].v)
 		}
 		f.end.value[c] = (raw - float64(f.mean[c]*sum)) * f.inverse[c] / f.d.total
 		f.end.ref[c] = r.number
 	}
+}
+
+// sizes is column for groups and several classes.
+func (s *productScreen) sizes(reqs []*request, c int) {
+	for l, r := range reqs {
+		if s.need[c]>>l&1 != 0 {
+			r.f.end.value[c] = r.f.size(int32(c), &s.lane[l])
+			r.f.end.ref[c] = r.number
+		}
+	}
+}
+
+// size is the screening gradient of a candidate, divided as in gradients: the
+// largest over the lanes, of a group its length. It is never negative.
+func (f *fitting) size(c int32, l *lanes) float64 {
+	most := 0.0
+	for k, sum := range l.sum {
+		if f.m.single(c) {
+			x, holes := f.m.column(c)
+			most = max(most, math.Abs(f.d.product(x, holes, l.lane(k), f.mean[c], sum)))
+		} else {
+			most = max(most, f.groupSize(c, l.lane(k), sum))
+		}
+	}
+	return most * f.inverse[c] / f.d.total
+}
+
+// groupSize is the length of a group's gradient for one lane, times N.
+func (f *fitting) groupSize(c int32, lane []float64, sum float64) float64 {
+	g := f.groups[c]
+	v := make([]float64, len(g.kept))
+	for i, t := range g.kept {
+		j := f.m.p.Groups[c][t]
+		x := f.m.p.Design.Panel([]int32{j}, 0, f.m.rows, nil)[0]
+		v[i] = f.d.product(x, f.m.p.Design.Holes(j), lane, g.mean[i], sum)
+	}
+	g.gradient(v)
+	return length(v)
+}
+
+// product is that of a centred column with a lane whose sum is given.
+func (d *drawn) product(x []float64, holes []uint64, lane []float64, mean, sum float64) float64 {
+	if holes != nil {
+		sum -= d.overHoles(holes, lane)
+	}
+	return kernel.DotRows(x, d.rows, lane) - float64(mean*sum)
 }
 
 // lanesPay weighs a product over all rows and lanes against one over the drawn
@@ -262,7 +310,7 @@ func (s *productScreen) fill(reqs []*request) {
 	clear(s.rows)
 	for l, r := range reqs {
 		for i, row := range r.f.d.rows {
-			s.rows[int(row)*k+l] = s.lane[l][i]
+			s.rows[int(row)*k+l] = s.lane[l].v[i]
 		}
 	}
 	s.filled = true

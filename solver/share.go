@@ -37,7 +37,7 @@ func (f *fitting) share(r *record, near []choice) (*record, error) {
 		if r.sign[k] == 0 {
 			s.fixed = append(s.fixed, i)
 		} else {
-			border = append(border, choice{i, r.sign[k]})
+			border = append(border, choice{place: i, sign: r.sign[k]})
 		}
 	}
 	slices.SortFunc(border, func(a, b choice) int { return int(f.work.units[a.place]) - int(f.work.units[b.place]) })
@@ -174,7 +174,7 @@ func (s *sharing) split(free []int) *parts {
 func (s *sharing) join(p *parts, place, which int) bool {
 	w := &s.f.work
 	row := s.products(p, place)
-	if !p.chol.push(row, w.h.row[place][place]+s.f.m.penalty.ridge(w.units[place], s.lambda), dependent) {
+	if !p.chol.push(row, w.h.row[place][place]+s.f.penalty.ridge(w.units[place], s.lambda), dependent) {
 		return false
 	}
 	p.basis, p.which = append(p.basis, place), append(p.which, which)
@@ -190,7 +190,7 @@ func (s *sharing) products(p *parts, place int) []float64 {
 }
 
 // weight of a basis column in the sum of squares: none for always-in columns.
-func (s *sharing) weight(place int) float64 { return s.f.m.penalty.weight[s.f.work.units[place]] }
+func (s *sharing) weight(place int) float64 { return s.f.penalty.weight[s.f.work.units[place]] }
 
 // alone returns the coefficients of the fit on the basis alone, whatever their
 // signs: the normal equations of the step.
@@ -200,7 +200,7 @@ func (s *sharing) alone(p *parts) []float64 {
 	for q, i := range p.basis {
 		b[q] = w.c[i]
 		if k := p.which[q]; k >= 0 {
-			b[q] -= float64(s.sign[k] * s.f.m.penalty.threshold(w.units[i], s.lambda))
+			b[q] -= float64(s.sign[k] * s.f.penalty.threshold(w.units[i], s.lambda))
 		}
 	}
 	p.chol.solve(b)
@@ -291,7 +291,7 @@ func (s *sharing) release(p *parts, target []float64, free []bool) int {
 func (s *sharing) depends(p *parts, place int) bool {
 	w := &s.f.work
 	trial := factor{row: p.chol.row[:len(p.chol.row):len(p.chol.row)]}
-	return !trial.push(s.products(p, place), w.h.row[place][place]+s.f.m.penalty.ridge(w.units[place], s.lambda), dependent)
+	return !trial.push(s.products(p, place), w.h.row[place][place]+s.f.penalty.ridge(w.units[place], s.lambda), dependent)
 }
 
 // record makes the record of the free candidates that are not zero, by numbers
@@ -317,6 +317,7 @@ func (s *sharing) record(free []bool, x []float64) (*record, error) {
 		r = better
 	}
 	r.certify(s.f)
+	r.declare(s.f)
 	return r, nil
 }
 

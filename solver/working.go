@@ -9,14 +9,20 @@ import (
 // products with the outcome. All of it is record numbers: each entry depends
 // on the draw and on its own units only, not on when or why they joined.
 type working struct {
-	units []int32 // in order of joining: history, so nothing recorded may depend on it
-	place map[int32]int32
-	scale []float64   // what a column was divided by: penalty units
-	mean  []float64   // draw mean less centre
-	z     [][]float64 // root * (x - mean) / scale
-	h     symmetric   // z'z / N
-	c     []float64   // z'y / N
-	spare [][]float64 // column buffers of earlier draws
+	quadratic
+	place map[int32]int32 // of a unit's first column
+	scale []float64       // what a column was divided by: penalty units
+	mean  []float64       // draw mean less centre
+	z     [][]float64     // root * (x - mean) / scale
+	spare [][]float64     // column buffers of earlier draws
+}
+
+// quadratic is a penalised least-squares problem: minimise (1/2) b'Hb - c'b
+// plus the penalty, each coefficient that of a unit.
+type quadratic struct {
+	units []int32   // per place, in order of joining: history, so nothing recorded may depend on it
+	h     symmetric // of the working set: z'z / N
+	c     []float64 // of the working set: z'y / N
 }
 
 func (w *working) reset() {
@@ -50,24 +56,64 @@ func (w *working) add(f *fitting, units []int32) {
 			w.gather(f, u)
 		}
 	}
-	f.m.family.addHessian(&f.d, w.z, from, &w.h)
-	for i := from; i < len(w.units); i++ {
-		w.c = append(w.c, kernel.Dot(w.z[i], f.d.y)/f.d.total)
+	w.multiply(f, from)
+}
+
+// multiply extends the Gram matrix, and the products with the outcome where it
+// is a number.
+func (w *working) multiply(f *fitting, from int) {
+	row := make([]float64, len(w.z))
+	for i := from; i < len(w.z); i++ {
+		for j := range i + 1 {
+			row[j] = kernel.Dot(w.z[i], w.z[j]) / f.d.total
+		}
+		w.h.append(row[:i+1])
+		if f.m.p.Family == Gaussian {
+			w.c = append(w.c, kernel.Dot(w.z[i], f.d.y)/f.d.total)
+		}
 	}
 }
 
+// width is the number of places of the unit whose first place is given.
+func (w *working) width(place int) int {
+	k := 1
+	for place+k < len(w.units) && w.units[place+k] == w.units[place] {
+		k++
+	}
+	return k
+}
+
+// gather adds a unit's columns.
 func (w *working) gather(f *fitting, unit int32) {
+	switch {
+	case unit == f.m.interceptUnit():
+		w.join(unit, f.d.constant(w.buffer()), 0, 1)
+	case f.m.single(unit):
+		w.gatherSingle(f, unit)
+	default:
+		_, block := f.d.whiten(f.m, unit, w.buffer)
+		for _, z := range block {
+			w.join(unit, z, 0, 1)
+		}
+	}
+}
+
+func (w *working) gatherSingle(f *fitting, unit int32) {
 	x, holes := f.m.column(unit)
 	col := f.d.gather(x, holes, w.buffer())
 	scale := f.m.scaleOf(unit, col.sd)
 	for k := range col.values {
 		col.values[k] /= scale
 	}
-	w.place[unit] = int32(len(w.units))
+	w.join(unit, col.values, col.mean, scale)
+}
+
+func (w *working) join(unit int32, z []float64, mean, scale float64) {
+	if !w.has(unit) {
+		w.place[unit] = int32(len(w.units))
+	}
 	w.units = append(w.units, unit)
-	w.scale = append(w.scale, scale)
-	w.mean = append(w.mean, col.mean)
-	w.z = append(w.z, col.values)
+	w.scale, w.mean, w.z = append(w.scale, scale), append(w.mean, mean), append(w.z, z)
 }
 
 // fitted overwrites dst with the sum of beta[i]*z[members[i]], members in the

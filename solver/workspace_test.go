@@ -80,7 +80,7 @@ func liveBytes(t *testing.T, m *Model, draws int) int64 {
 		for w := range s.Rows {
 			s.Rows[w] &= rng.Uint64()
 		}
-		fits[k] = &fitting{m: m}
+		fits[k] = m.newFitting()
 		if err := fits[k].start(s); err != nil {
 			t.Fatal(err)
 		}
