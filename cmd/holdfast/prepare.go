@@ -33,7 +33,7 @@ func (a *asked) load(ctx context.Context, workers int) (*loaded, error) {
 		return nil, wrong(err, "")
 	}
 	data, err := a.source.Load(ctx, table.Request{
-		Outcome: roles.Outcome, Candidates: roles.Candidates, Always: roles.Always,
+		Outcome: table.Outcome{Column: roles.Outcome}, Candidates: roles.Candidates, Always: roles.Always,
 		Missing: policy(a.study.Table.Missing), AcceptLoss: a.study.Table.AcceptLoss, Workers: workers, Memory: a.memory,
 	})
 	if err != nil {

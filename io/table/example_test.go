@@ -30,7 +30,7 @@ func Example() {
 		fmt.Printf("%s: %s, usable: %v\n", c.Name, c.Kind, c.Usable)
 	}
 	data, err := source.Load(context.Background(), table.Request{
-		Outcome:    "survival",
+		Outcome:    table.Outcome{Column: "survival"},
 		Candidates: []string{"ph", "salinity"},
 		Missing:    table.FillMean,
 	})

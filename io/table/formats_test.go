@@ -341,7 +341,7 @@ func TestSameNumbersInEveryFormat(t *testing.T) {
 		writeArrow(t, filepath.Join(dir, "b.arrow"), cols, 60, true),
 		writeCSV(t, filepath.Join(dir, "a.csv"), cols),
 	}
-	r := Request{Outcome: "f64", Candidates: []string{"f32", "i8", "i64", "u64", "bool", "d128", "holes", "inull", "u16"}, Always: []string{"d9", "u8"}, Missing: FillMean}
+	r := Request{Outcome: Outcome{Column: "f64"}, Candidates: []string{"f32", "i8", "i64", "u64", "bool", "d128", "holes", "inull", "u16"}, Always: []string{"d9", "u8"}, Missing: FillMean}
 	var first *Data
 	for _, p := range paths {
 		for _, workers := range []int{1, 3} {

@@ -9,77 +9,6 @@ import (
 	"holdfast/solver"
 )
 
-// Policy says what happens to missing, NaN and infinite values.
-type Policy uint8
-
-const (
-	Refuse   Policy = iota // none is allowed
-	DropRows               // rows that hold one are left out
-	FillMean               // the draw's own mean stands in; infinite values are not allowed
-)
-
-// String returns the word of the study file.
-func (p Policy) String() string {
-	switch p {
-	case Refuse:
-		return "refuse"
-	case DropRows:
-		return "drop-rows"
-	case FillMean:
-		return "fill-mean"
-	}
-	return "unknown"
-}
-
-// Request says what a fit needs of a table.
-type Request struct {
-	Outcome    string   // column of the outcome; empty: none is read
-	Candidates []string // in the order in which they are to stand, at least one
-	Always     []string // columns in every model
-	Weight     string   // column of case weights, >= 0; empty: every row counts 1
-	Missing    Policy
-	AcceptLoss bool  // DropRows may leave out more than a tenth of the rows
-	Workers    int   // goroutines that read; 0: one per processor
-	Memory     int64 // bytes that the values may take; 0: what the machine has free
-}
-
-// Exclusion is a candidate that was left out, and why.
-type Exclusion struct {
-	Column string
-	Reason string
-}
-
-// Gaps counts the cells of a column that hold no finite number.
-type Gaps struct {
-	Column   string
-	Missing  int64 // cells without a value
-	NaN      int64 // cells that hold not-a-number
-	Infinite int64
-}
-
-// Total returns the number of cells counted.
-func (g Gaps) Total() int64 { return g.Missing + g.NaN + g.Infinite }
-
-// Data is what a fit needs of a table, in memory. Its slices belong to the
-// caller, but X shares memory with nothing else here.
-type Data struct {
-	TableRows  int           // rows of the table
-	Rows       []int32       // position in the table of each row used; nil: all are used
-	Candidates []string      // columns of X, first part
-	Always     []string      // columns of X, second part
-	X          *solver.Dense // candidates, then always; each centred at Centre
-	Centre     []float64     // per column of X: mean over the rows used (over the filled cells)
-	Deviation  []float64     // per column of X: standard deviation over the rows used, divisor n, missing cells at the mean
-	Outcome    []float64     // per row used; nil if none was asked for
-	Weight     []float64     // per row used, > 0; nil if none was asked for
-	Missing    []Gaps        // columns of X with cells that take the draw's mean (FillMean)
-	Excluded   []Exclusion   // candidates left out here
-	Notes      []string      // what the user should know: rows left out, integers rounded
-	// Fingerprint is a SHA-256, in hexadecimal, of names, roles, positions of
-	// the rows used and values, whatever file format, codec or path they came from.
-	Fingerprint string
-}
-
 // Load reads the columns that a fit needs, all rows of them, and centres
 // them. Memory taken: 8 bytes per row and column, and a bounded workspace per
 // worker. Whatever is wrong with the table or the request is an *Error.
@@ -122,6 +51,9 @@ func (l *loading) path() string { return l.src.path }
 // choose finds the columns asked for and refuses what cannot be had.
 func (l *loading) choose(context.Context) error {
 	l.data = &Data{}
+	if o := l.req.Outcome; o.Measure != AsNumber || o.Offset != "" || o.Exposure != "" || len(l.req.Categories) > 0 || len(l.req.Within) > 0 {
+		return faultf(l.path(), "only an outcome that is a number, and columns of numbers, are read by this version")
+	}
 	if err := l.checkRows(); err != nil {
 		return err
 	}
@@ -160,8 +92,8 @@ func (l *loading) choose(context.Context) error {
 		}
 	}
 	l.p = len(l.from)
-	if l.req.Outcome != "" {
-		if err := pick("the outcome", l.req.Outcome); err != nil {
+	if l.req.Outcome.Column != "" {
+		if err := pick("the outcome", l.req.Outcome.Column); err != nil {
 			return err
 		}
 	}
@@ -176,7 +108,7 @@ func (l *loading) choose(context.Context) error {
 // noCandidates explains a table or a request without candidates.
 func (l *loading) noCandidates(all []Column) string {
 	for _, c := range all {
-		if c.Usable && c.Name != l.req.Outcome && c.Name != l.req.Weight {
+		if c.Usable && c.Name != l.req.Outcome.Column && c.Name != l.req.Weight {
 			return "no candidate column was asked for"
 		}
 	}
@@ -273,10 +205,10 @@ func (l *loading) weigh(context.Context) error {
 
 // checkOutcome refuses an outcome with anything but finite numbers.
 func (l *loading) checkOutcome(context.Context) error {
-	if l.req.Outcome == "" {
+	if l.req.Outcome.Column == "" {
 		return nil
 	}
-	return l.checkComplete(l.req.Outcome, "outcome", l.values[l.p])
+	return l.checkComplete(l.req.Outcome.Column, "outcome", l.values[l.p])
 }
 
 // checkComplete names the rows in use in which a column has no finite number.
@@ -385,9 +317,17 @@ func (l *loading) assemble(n int, digests [][32]byte, holes [][]uint64) {
 	if len(masks) == 0 {
 		masks = nil
 	}
+	d.Names = names(l.cols[:l.p])
+	for j := range l.p {
+		if j < c {
+			d.CandidateColumns = append(d.CandidateColumns, []int32{int32(j)})
+		} else {
+			d.AlwaysColumns = append(d.AlwaysColumns, []int32{int32(j)})
+		}
+	}
 	d.X = solver.NewDense(n, l.values[:l.p:l.p], masks)
 	rest := l.values[l.p:]
-	if l.req.Outcome != "" {
+	if l.req.Outcome.Column != "" {
 		d.Outcome, rest = append([]float64(nil), rest[0]...), rest[1:]
 	}
 	if l.req.Weight != "" {
@@ -406,7 +346,7 @@ func (l *loading) roles(candidates int) []byte {
 			roles = append(roles, 'a')
 		}
 	}
-	if l.req.Outcome != "" {
+	if l.req.Outcome.Column != "" {
 		roles = append(roles, 'o')
 	}
 	if l.req.Weight != "" {

@@ -55,7 +55,7 @@ func TestCentreOfShiftedColumns(t *testing.T) {
 	for _, c := range cols[1:] {
 		names = append(names, c.name)
 	}
-	d := load(t, writeParquet(t, tempFile(t, "t.parquet"), cols, 100), Request{Outcome: "y", Candidates: names})
+	d := load(t, writeParquet(t, tempFile(t, "t.parquet"), cols, 100), Request{Outcome: Outcome{Column: "y"}, Candidates: names})
 	for j, c := range cols[1:] {
 		mean, sd := exactMoments(c.cells)
 		if math.Abs(d.Centre[j]-mean) > 1e-16*math.Abs(mean)*2 {
@@ -126,8 +126,8 @@ func TestRolesEnterTheFingerprint(t *testing.T) {
 	path := writeText(t, tempFile(t, "t.csv"), "y,a,b\n1,1,2\n2,2,3\n3,5,1\n")
 	seen := map[string]bool{}
 	for _, r := range []Request{
-		{Outcome: "y", Candidates: []string{"a", "b"}},
-		{Outcome: "y", Candidates: []string{"a"}, Always: []string{"b"}},
+		{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "b"}},
+		{Outcome: Outcome{Column: "y"}, Candidates: []string{"a"}, Always: []string{"b"}},
 		{Weight: "y", Candidates: []string{"a", "b"}},
 		{Candidates: []string{"a", "b", "y"}},
 	} {
@@ -195,7 +195,7 @@ func pick[T any](c bool, a, b T) T {
 }
 
 func TestRefuse(t *testing.T) {
-	_, err := tryLoad(t, gappy(t), Request{Outcome: "y", Candidates: []string{"full", "few", "nan", "inf"}})
+	_, err := tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full", "few", "nan", "inf"}})
 	wantError(t, err, "gaps.parquet", `3 columns have missing, NaN or infinite values: "few" (2 missing), "nan" (1 NaN), "inf" (1 infinite)`,
 		"leaving them out keeps all 40 rows and 1 of 4 columns", `missing = "drop-rows" keeps 37 rows`)
 	if strings.Contains(err.Error(), "fill-mean") {
@@ -205,7 +205,7 @@ func TestRefuse(t *testing.T) {
 	if !errors.As(err, &e) || len(e.Gaps) != 3 || e.Gaps[0] != (Gaps{Column: "few", Missing: 2}) {
 		t.Errorf("the gaps in the error are %v", e.Gaps)
 	}
-	_, err = tryLoad(t, gappy(t), Request{Outcome: "y", Candidates: []string{"full", "few", "void"}})
+	_, err = tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full", "few", "void"}})
 	wantError(t, err, `2 columns have`, `"void" (40 missing), "few" (2 missing)`, `"drop-rows" keeps 38 rows (without 1 column that has no value at all)`, "fill-mean")
 }
 
@@ -222,7 +222,7 @@ func TestRefuseNamesTheWorstTen(t *testing.T) {
 	for i := range 30 {
 		cols[0].cells = append(cols[0].cells, float64(i))
 	}
-	_, err := tryLoad(t, writeParquet(t, tempFile(t, "t.parquet"), cols, 100), Request{Outcome: "y", Candidates: names})
+	_, err := tryLoad(t, writeParquet(t, tempFile(t, "t.parquet"), cols, 100), Request{Outcome: Outcome{Column: "y"}, Candidates: names})
 	wantError(t, err, `14 columns have`, `"x13" (14 missing), "x12" (13 missing)`, `"x04" (5 missing) and 4 more`, "keeps 16 rows")
 	if strings.Contains(err.Error(), "x03") {
 		t.Errorf("more than ten columns are named: %v", err)
@@ -230,7 +230,7 @@ func TestRefuseNamesTheWorstTen(t *testing.T) {
 }
 
 func TestDropRows(t *testing.T) {
-	d := load(t, gappy(t), Request{Outcome: "y", Candidates: []string{"full", "few", "nan", "inf", "void"}, Missing: DropRows})
+	d := load(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full", "few", "nan", "inf", "void"}, Missing: DropRows})
 	n, p := d.X.Dims()
 	if n != 37 || p != 4 || d.TableRows != 40 || len(d.Rows) != 37 || d.Rows[3] != 4 || d.Outcome[3] != 4 || d.Outcome[36] != 39 {
 		t.Errorf("%d x %d, rows %v, outcome %v", n, p, d.Rows, d.Outcome)
@@ -252,7 +252,7 @@ func TestDropRows(t *testing.T) {
 }
 
 func TestDropRowsAsksWhenManyAreLost(t *testing.T) {
-	r := Request{Outcome: "y", Candidates: []string{"full", "hole"}, Missing: DropRows}
+	r := Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full", "hole"}, Missing: DropRows}
 	_, err := tryLoad(t, gappy(t), r)
 	wantError(t, err, `leaves out 20 of 40 rows (50.0 %), more than a tenth`, `"hole" (20 missing)`, "[table] accept_loss = true")
 	r.AcceptLoss = true
@@ -263,12 +263,12 @@ func TestDropRowsAsksWhenManyAreLost(t *testing.T) {
 
 func TestDropRowsThatKeepsNothing(t *testing.T) {
 	path := writeText(t, tempFile(t, "t.csv"), "y,a,b\n1,1,NA\n2,NA,1\n3,3,NA\n")
-	_, err := tryLoad(t, path, Request{Outcome: "y", Candidates: []string{"a", "b"}, Missing: DropRows, AcceptLoss: true})
+	_, err := tryLoad(t, path, Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "b"}, Missing: DropRows, AcceptLoss: true})
 	wantError(t, err, `"drop-rows" keeps 0 of 3 rows`, `"b" (2 missing)`)
 }
 
 func TestFillMean(t *testing.T) {
-	r := Request{Outcome: "y", Candidates: []string{"full", "hole", "void"}, Always: []string{"few"}, Missing: FillMean}
+	r := Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full", "hole", "void"}, Always: []string{"few"}, Missing: FillMean}
 	d := load(t, gappy(t), r)
 	if fmt.Sprint(d.Candidates, d.Always) != "[full hole] [few]" || d.Rows != nil {
 		t.Fatalf("candidates %v, always %v, rows %v", d.Candidates, d.Always, d.Rows)
@@ -300,39 +300,39 @@ func TestFillMean(t *testing.T) {
 			t.Errorf("the missing cell in row %d holds %v", i, v)
 		}
 	}
-	_, err := tryLoad(t, gappy(t), Request{Outcome: "y", Candidates: []string{"full", "inf"}, Missing: FillMean})
+	_, err := tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full", "inf"}, Missing: FillMean})
 	wantError(t, err, `infinite values are never filled: "inf" (1 infinite)`)
-	_, err = tryLoad(t, gappy(t), Request{Outcome: "y", Candidates: []string{"full"}, Always: []string{"void"}, Missing: FillMean})
+	_, err = tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full"}, Always: []string{"void"}, Missing: FillMean})
 	wantError(t, err, `column "void": cannot be an always-in column: no row has a value`)
-	_, err = tryLoad(t, gappy(t), Request{Outcome: "y", Candidates: []string{"void"}, Missing: FillMean})
+	_, err = tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"void"}, Missing: FillMean})
 	wantError(t, err, "no candidate is left")
 }
 
 func TestOutcomeAndWeightMustBeComplete(t *testing.T) {
 	for _, p := range []Policy{Refuse, DropRows, FillMean} {
-		_, err := tryLoad(t, gappy(t), Request{Outcome: "few", Candidates: []string{"full"}, Missing: p})
+		_, err := tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "few"}, Candidates: []string{"full"}, Missing: p})
 		wantError(t, err, `column "few": the outcome is missing in rows 3, 7 (rows are counted from 0)`, "never filled")
-		_, err = tryLoad(t, gappy(t), Request{Outcome: "inf", Candidates: []string{"full"}, Missing: p})
+		_, err = tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "inf"}, Candidates: []string{"full"}, Missing: p})
 		wantError(t, err, `column "inf": the outcome is NaN or infinite in row 9`)
-		_, err = tryLoad(t, gappy(t), Request{Outcome: "y", Weight: "nan", Candidates: []string{"full"}, Missing: p})
+		_, err = tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "y"}, Weight: "nan", Candidates: []string{"full"}, Missing: p})
 		wantError(t, err, `column "nan": the case weight is NaN or infinite in row 7`)
 	}
-	_, err := tryLoad(t, gappy(t), Request{Outcome: "hole", Candidates: []string{"full"}})
+	_, err := tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "hole"}, Candidates: []string{"full"}})
 	wantError(t, err, "rows 0, 2, 4, 6, 8, 10, 12, 14, 16, 18 and 10 more")
 }
 
 func TestWeights(t *testing.T) {
 	// Rows of weight 0 go first: gaps in them do not count.
 	path := writeText(t, tempFile(t, "t.csv"), "y,a,w\n1,1,1\nNA,NA,0\n3,5,2.5\n4,6,0\n5,9,1\n")
-	d := load(t, path, Request{Outcome: "y", Candidates: []string{"a"}, Weight: "w"})
+	d := load(t, path, Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a"}, Weight: "w"})
 	if fmt.Sprint(d.Rows, d.Outcome, d.Weight, d.Centre) != "[0 2 4] [1 3 5] [1 2.5 1] [5]" || d.Notes[0] != "2 rows of weight 0 were left out" {
 		t.Errorf("rows %v, outcome %v, weight %v, centre %v, notes %q", d.Rows, d.Outcome, d.Weight, d.Centre, d.Notes)
 	}
 	path = writeText(t, tempFile(t, "t.csv"), "y,a,w\n1,1,1\n2,2,-1\n3,5,2.5\n")
-	_, err := tryLoad(t, path, Request{Outcome: "y", Candidates: []string{"a"}, Weight: "w"})
+	_, err := tryLoad(t, path, Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a"}, Weight: "w"})
 	wantError(t, err, `column "w": a case weight is negative in row 1`)
 	path = writeText(t, tempFile(t, "t.csv"), "y,a,w\n1,1,1\n2,2,0\n3,5,0\n")
-	_, err = tryLoad(t, path, Request{Outcome: "y", Candidates: []string{"a"}, Weight: "w"})
+	_, err = tryLoad(t, path, Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a"}, Weight: "w"})
 	wantError(t, err, `column "w": only 1 row has a weight above 0`)
 }
 
@@ -351,7 +351,7 @@ func TestRoundedIntegersAreSaid(t *testing.T) {
 		writeArrow(t, filepath.Join(dir, "t.arrow"), cols, 3, false),
 		writeCSV(t, filepath.Join(dir, "t.csv"), cols),
 	} {
-		d := load(t, path, Request{Outcome: "y", Candidates: []string{"id", "big", "edge"}, Missing: FillMean})
+		d := load(t, path, Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"id", "big", "edge"}, Missing: FillMean})
 		want := []string{
 			`column "id": 2 integers cannot be held exactly and were rounded to the nearest float64 (the first in row 2)`,
 			`column "big": 1 integer cannot be held exactly and was rounded to the nearest float64 (the first in row 1)`,
@@ -369,20 +369,20 @@ func TestRequestsThatCannotBeMet(t *testing.T) {
 		r    Request
 		want []string
 	}{
-		{Request{Outcome: "y", Candidates: []string{"nope"}}, []string{`there is no column called "nope" (asked for as a candidate)`}},
-		{Request{Outcome: "z", Candidates: []string{"a"}}, []string{`there is no column called "z" (asked for as the outcome)`}},
-		{Request{Outcome: "y", Candidates: []string{"a", "feed"}}, []string{`column "feed": cannot be a candidate: is text`}},
-		{Request{Outcome: "feed", Candidates: []string{"a"}}, []string{`column "feed": cannot be the outcome: is text`}},
-		{Request{Outcome: "y", Candidates: []string{"a", "y"}}, []string{`column "y": cannot be a candidate and the outcome at once`}},
-		{Request{Outcome: "y", Candidates: []string{"a", "a"}}, []string{`column "a": cannot be a candidate and a candidate at once`}},
-		{Request{Outcome: "y"}, []string{"no candidate column was asked for"}},
-		{Request{Outcome: "y", Candidates: []string{"a", "b"}, Memory: 50}, []string{"3 rows x 3 columns need 72 bytes, and 50 bytes is all that may be taken"}},
+		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"nope"}}, []string{`there is no column called "nope" (asked for as a candidate)`}},
+		{Request{Outcome: Outcome{Column: "z"}, Candidates: []string{"a"}}, []string{`there is no column called "z" (asked for as the outcome)`}},
+		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "feed"}}, []string{`column "feed": cannot be a candidate: is text`}},
+		{Request{Outcome: Outcome{Column: "feed"}, Candidates: []string{"a"}}, []string{`column "feed": cannot be the outcome: is text`}},
+		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "y"}}, []string{`column "y": cannot be a candidate and the outcome at once`}},
+		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "a"}}, []string{`column "a": cannot be a candidate and a candidate at once`}},
+		{Request{Outcome: Outcome{Column: "y"}}, []string{"no candidate column was asked for"}},
+		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "b"}, Memory: 50}, []string{"3 rows x 3 columns need 72 bytes, and 50 bytes is all that may be taken"}},
 	} {
 		_, err := tryLoad(t, path, c.r)
 		wantError(t, err, c.want...)
 	}
 	text := writeText(t, tempFile(t, "t.csv"), "y,feed\n1,a\n2,b\n3,c\n")
-	_, err := tryLoad(t, text, Request{Outcome: "y"})
+	_, err := tryLoad(t, text, Request{Outcome: Outcome{Column: "y"}})
 	wantError(t, err, `no column is left that could be a candidate ("feed": is text)`)
 }
 
@@ -426,7 +426,7 @@ func TestTablesThatCannotBeRead(t *testing.T) {
 			wantError(t, second(s.Load(t.Context(), Request{Candidates: names})), want)
 			continue
 		}
-		wantError(t, second(s.Load(t.Context(), Request{Outcome: "y", Candidates: names})), want)
+		wantError(t, second(s.Load(t.Context(), Request{Outcome: Outcome{Column: "y"}, Candidates: names})), want)
 	}
 	empty := writeParquet(t, filepath.Join(dir, "empty.parquet"), []testColumn{{"a", arrow.PrimitiveTypes.Float64, nil}}, 10)
 	_, err := tryLoad(t, empty, Request{Candidates: []string{"a"}})
@@ -441,7 +441,7 @@ func TestChangedFileIsNoticed(t *testing.T) {
 	s, err := Open(path)
 	must(t, err)
 	writeText(t, path, "y,a\n1,2\n2,3\n3,55\n")
-	wantError(t, second(s.Load(t.Context(), Request{Outcome: "y", Candidates: []string{"a"}})), "the file has changed since it was opened")
+	wantError(t, second(s.Load(t.Context(), Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a"}})), "the file has changed since it was opened")
 }
 
 func TestCancel(t *testing.T) {
@@ -449,7 +449,7 @@ func TestCancel(t *testing.T) {
 	cancel()
 	s, err := Open(gappy(t))
 	must(t, err)
-	if _, err := s.Load(ctx, Request{Outcome: "y", Candidates: []string{"full"}}); !errors.Is(err, context.Canceled) {
+	if _, err := s.Load(ctx, Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full"}}); !errors.Is(err, context.Canceled) {
 		t.Errorf("the error is %v", err)
 	}
 	if _, err := s.Scan(ctx, "y"); !errors.Is(err, context.Canceled) {

@@ -64,7 +64,7 @@ func measureLoad(path string) error {
 	r := Request{Missing: FillMean}
 	for i, c := range s.Columns() {
 		if i == 0 {
-			r.Outcome = c.Name
+			r.Outcome.Column = c.Name
 		} else {
 			r.Candidates = append(r.Candidates, c.Name)
 		}
