@@ -159,6 +159,116 @@ func TestHalvesFollowTheirLaws(t *testing.T) {
 	}
 }
 
+// Within a stratum, whatever the others, draws follow the same laws.
+func TestStrataFollowTheLawsOfHalves(t *testing.T) {
+	codes := mixedStrata(rand.New(rand.NewPCG(3, 3)), 10, 25, 1)
+	rows := make(map[int32][]int)
+	for row, code := range codes {
+		rows[code] = append(rows[code], row)
+	}
+	for code, members := range rows {
+		if len(members) == 1 {
+			continue
+		}
+		for half := range 2 {
+			for _, law := range laws {
+				if p := law.check(stratumScheme(codes, code, members, half)); p < rare {
+					t.Errorf("%d rows, half %d, %s: p = %.2g", len(members), half, law.name, p)
+				}
+			}
+		}
+	}
+}
+
+// stratumScheme is what a half takes of one stratum, its rows numbered from 0.
+func stratumScheme(codes []int32, code int32, members []int, half int) subset {
+	plans := make(map[uint64]Plan)
+	for seed := range uint64(3) {
+		p, err := NewPlan(Plan{Rows: len(codes), Number: 2, Seed: seed, Within: codes})
+		if err != nil {
+			panic(err)
+		}
+		plans[seed] = p
+	}
+	return subset{len(members), len(members) / 2, func(seed uint64, draw int) (list []int) {
+		for row := range Drawn(plans[seed].Sample(2*draw + half)) {
+			if codes[row] == code {
+				list = append(list, slices.Index(members, row))
+			}
+		}
+		return list
+	}}
+}
+
+// Strata are drawn independently: of strata of 4 and 5 rows, C(4,2) = 6 outcomes
+// of the one and 5!/(2! 2! 1!) = 30 of the other, all 180 together as likely.
+func TestStrataAreIndependent(t *testing.T) {
+	codes := []int32{0, 1, 0, 1, 0, 1, 0, 1, 1}
+	p := mustPlan(t, Plan{Rows: 9, Number: 2, Seed: 1, Within: codes})
+	if prob := evenly(outcomes(func(k int) [2]uint64 {
+		return [2]uint64{p.Sample(2 * k).Rows[0], p.Sample(2*k + 1).Rows[0]}
+	}), 180); prob < rare {
+		t.Errorf("p = %.2g", prob)
+	}
+	// The same stream for every stratum ties them to one another.
+	tied := func(k int) [2]uint64 {
+		var a, b uint64
+		for units := range p.strata(slices.Clone(p.units)) {
+			src := newGenerator("test", 0, 1, uint64(k))
+			if len(units)%2 != 0 {
+				choose(src, units, 1)
+				units = units[1:]
+			}
+			choose(src, units, 2)
+			a |= 1<<units[0] | 1<<units[1]
+			b |= 1<<units[2] | 1<<units[3]
+		}
+		return [2]uint64{a, b}
+	}
+	if prob := evenly(outcomes(tied), 180); prob > caught {
+		t.Errorf("tied strata: p = %.2g, the check did not see it", prob)
+	}
+}
+
+// outcomes counts the outcomes of many draws.
+func outcomes[K comparable](make func(k int) K) map[K]float64 {
+	count := map[K]float64{}
+	for k := range draws {
+		count[make(k)]++
+	}
+	return count
+}
+
+// Bootstrap counts of strata of 2 and 3 rows: multinomial in each (3 and 10
+// count vectors) and independent.
+func TestBootstrapStrataAreIndependentMultinomials(t *testing.T) {
+	p := mustPlan(t, Plan{Rows: 5, Number: 1, Seed: 1, Design: Bootstrap, Within: []int32{1, 0, 0, 1, 0}})
+	index, expected := map[[5]int]int{}, []float64{}
+	for i := 0; i <= 2; i++ {
+		for a := 0; a <= 3; a++ {
+			for b := 0; a+b <= 3; b++ {
+				index[[5]int{i, a, b, 2 - i, 3 - a - b}] = len(expected)
+				ways := combin.Binomial(2, i) * combin.Binomial(3, a) * combin.Binomial(3-a, b)
+				expected = append(expected, draws*float64(ways)/(4*27))
+			}
+		}
+	}
+	if len(expected) != 30 {
+		t.Fatalf("%d count vectors", len(expected))
+	}
+	observed := make([]float64, len(expected))
+	for d := range draws {
+		at, ok := index[[5]int(countsOf(p, d))]
+		if !ok {
+			t.Fatalf("draw %d: counts %v", d, countsOf(p, d))
+		}
+		observed[at]++
+	}
+	if prob := pearson(observed, expected, 29); prob < rare {
+		t.Errorf("p = %.2g", prob)
+	}
+}
+
 // Each law has a generator that breaks it and is caught: so the checks above
 // can fail.
 func TestBrokenDrawsAreCaught(t *testing.T) {

@@ -110,7 +110,7 @@ func (p Plan) Check() error {
 			return nil
 		}
 	}
-	return fmt.Errorf("resample: none of %d %s can be fitted, and none that a run makes could be: %w", probes*(MaxRedraws+1), p.things(), last)
+	return fmt.Errorf("resample: none of %d %s that were tried can be fitted: %w", probes*(MaxRedraws+1), p.things(), last)
 }
 
 // things is what a plan draws, for messages.

@@ -2,11 +2,13 @@
 
 Written apart from the Go code, to pin it: the stream from the text of
 chacha8rand (C2SP, https://c2sp.org/chacha8rand), the integers from Lemire
-(2019), algorithm 5, the shuffle from Knuth, volume 2, algorithm P.
+(2019), algorithm 5, the shuffle from Knuth, volume 2, algorithm P, the
+jitter from SHA-256 (FIPS 180-4) of label, seed, draw and name.
 
     python3 first_draws.py
 """
 
+import hashlib
 import struct
 
 MASK = 0xFFFFFFFF
@@ -46,8 +48,8 @@ def stream(key_bytes):
         key = struct.unpack("<8I", out[992:])
 
 
-def generator(label, seed, number):
-    return stream(label.encode().ljust(16, b"\0") + struct.pack("<QQ", seed, number))
+def generator(label, seed, number, attempt):
+    return stream(label.encode().ljust(15, b"\0") + struct.pack("<BQQ", attempt, seed, number))
 
 
 def below(src, limit):
@@ -63,31 +65,69 @@ def choose(src, items, m):
         items[i], items[j] = items[j], items[i]
 
 
-def pair(units, seed, k):
-    src, items = generator("halves", seed, k), list(units)
-    if len(items) % 2:
-        choose(src, items, 1)
-        items = items[1:]
-    m = len(items) // 2
-    choose(src, items, m)
-    return sorted(items[:m]), sorted(items[m:])
+def strata(rows, code):
+    """Strata in the order of their first rows."""
+    groups = {}
+    for row in rows:
+        groups.setdefault(code(row), []).append(row)
+    return list(groups.values())
 
 
-def bootstrap(units, seed, draw):
-    src, counts = generator("bootstrap", seed, draw), {}
-    for _ in units:
-        row = units[below(src, len(units))]
-        counts[row] = counts.get(row, 0) + 1
-    return sorted(counts.items())
+def pair(groups, seed, k, attempt=0):
+    src, first, second = generator("halves", seed, k, attempt), [], []
+    for items in groups:
+        items = list(items)
+        if len(items) % 2:
+            choose(src, items, 1)
+            items = items[1:]
+        m = len(items) // 2
+        choose(src, items, m)
+        first, second = first + items[:m], second + items[m:]
+    return sorted(first), sorted(second)
+
+
+def bootstrap(groups, seed, draw, attempt=0):
+    src, counts = generator("bootstrap", seed, draw, attempt), {}
+    for units in groups:
+        for _ in units:
+            row = units[below(src, len(units))]
+            counts[row] = counts.get(row, 0) + 1
+    return [counts.get(row, 0) for row in range(sum(map(len, groups)))]
+
+
+def jitter(low, seed, draw, name):
+    digest = hashlib.sha256(b"jitter".ljust(16, b"\0") + struct.pack("<QQ", seed, draw) + name.encode()).digest()
+    return low + (1 - low) * ((struct.unpack("<Q", digest[:8])[0] >> 11) / 2**53)
+
+
+TANKS = "babcbdbababcaaeb"  # each letter is a stratum
 
 
 if __name__ == "__main__":
     print("halves, 25 rows, seed 1")
     for k in (0, 1):
-        for half in pair(range(25), 1, k):
+        for half in pair([range(25)], 1, k):
             print("   ", half)
     print("bootstrap, 12 rows, seed 1")
     for draw in range(3):
-        print("   ", bootstrap(range(12), 1, draw))
+        print("   ", bootstrap([range(12)], 1, draw))
     print("halves, 1000 rows, seed 2^64-1, pair 2^32: sum of row numbers of each half")
-    print("   ", *(sum(h) for h in pair(range(1000), 2**64 - 1, 2**32)))
+    print("   ", *(sum(h) for h in pair([range(1000)], 2**64 - 1, 2**32)))
+    print("halves, 25 rows, seed 1, pair 0, attempts 1 and 20")
+    for attempt in (1, 20):
+        for half in pair([range(25)], 1, 0, attempt):
+            print("   ", half)
+    print("bootstrap, 12 rows, seed 1, draw 0, attempt 1")
+    print("   ", bootstrap([range(12)], 1, 0, 1))
+    groups = strata(range(len(TANKS)), lambda row: TANKS[row])
+    print("halves in strata", TANKS, [len(g) for g in groups], "seed 1")
+    for k in (0, 1):
+        for half in pair(groups, 1, k):
+            print("   ", half)
+    print("bootstrap in the same strata, seed 1")
+    for draw in range(2):
+        print("   ", bootstrap(groups, 1, draw))
+    print("jitter 0.25, seed 1: draws 0 and 1, and 2^40 of seed 2^64-1")
+    names = ["ph", "temperature_d07", "", "größe", "a name longer than sixty-four bytes, as a survey's whole question is"]
+    for seed, draw in ((1, 0), (1, 1), (2**64 - 1, 2**40)):
+        print("   ", *(repr(jitter(0.25, seed, draw, name)) for name in names))
