@@ -17,6 +17,7 @@ func (r *resolver) findCategories() {
 			r.roles.Categories = append(r.roles.Categories, name)
 		}
 	}
+	slices.SortFunc(r.roles.Named, func(a, b string) int { return r.index[a] - r.index[b] })
 }
 
 // askCategories marks the predictors that one entry means.

@@ -93,7 +93,8 @@ func (p Penalty) ResolveStopAfter(selected, unitsInHalf, always int) int {
 }
 
 // Settle works out what follows from the table: the decision, with candidates
-// the number that can be chosen, and where the paths stop. unitsInHalf and
+// the number of predictors that can be chosen (a group or a category is one),
+// and where the paths stop. unitsInHalf and
 // always are as for ResolveStopAfter. The study that comes back, a copy that
 // shares lists and maps with s, has Penalty.StopAfter resolved and nothing to
 // replace any more: what belongs into a run directory.

@@ -85,13 +85,18 @@ func (f Flag) sentence() string {
 }
 
 func (d *drafter) writeTable(t *draftText) {
-	s := Default()
 	t.section("table")
 	t.key("path", quoted(d.facts.Path), "")
 	t.key("missing", quoted(d.missing.String()), d.missingWhy)
 	t.section("outcome")
-	t.key("kind", quoted(s.Outcome.Kind.String()), "")
+	t.key("kind", quoted(d.kind.String()), d.kindWhy)
 	t.key("column", quoted(d.facts.Outcome), "")
+	switch d.kind {
+	case YesNo:
+		t.key("success", quoted(d.success), d.successWhy)
+	case Count:
+		t.comment(`exposure = "COLUMN" would add the logarithm of what was watched, such as days or square metres.`)
+	}
 }
 
 func (d *drafter) writeCandidates(t *draftText) {
@@ -99,6 +104,7 @@ func (d *drafter) writeCandidates(t *draftText) {
 	t.key("take", listText(Default().Candidates.Take), "every column without another role")
 	d.writeLeave(t)
 	d.writeList(t, "Not usable, left out by themselves:", d.unusable)
+	d.writeList(t, "Text that is read as categories, one predictor each:", d.categories())
 	d.writeList(t, "Never chosen, not counted:", d.ofKind(FlagConstant))
 	d.writeList(t, "Candidates that may be identifiers:", d.ofKind(FlagUnique))
 	t.key("always", "[]", "columns that are in every model and not penalised, such as age or batch")
@@ -114,6 +120,18 @@ func (d *drafter) writeLeave(t *draftText) {
 		t.WriteString("  " + quoted(f.Column) + ", # " + printable(f.Text) + "\n")
 	}
 	t.WriteString("]\n")
+}
+
+// categories says of text that competes how it is read.
+func (d *drafter) categories() []Flag {
+	var found []Flag
+	for _, c := range d.candidates {
+		if c.Text && !c.constant() {
+			found = append(found, Flag{Column: c.Name,
+				Text: fmt.Sprintf("%d levels, compared with %s unless candidates.reference names another", len(c.Levels), quoted(c.Levels[0].Text))})
+		}
+	}
+	return found
 }
 
 // ofKind picks flags.
@@ -159,6 +177,9 @@ func (d *drafter) writeDraws(t *draftText) {
 	t.key("design", quoted(s.Design.String()), "pairs of disjoint halves: what the bounds need")
 	t.key("number", fmt.Sprint(s.Number), fmt.Sprintf("%d pairs", s.Number/2))
 	t.key("seed", fmt.Sprint(s.Seed), "same table, study and seed: same result")
+	if within := defaultWithin(d.kind); len(within) > 0 {
+		t.key("within", listText(within), "each half gets half of the rows of every value of the outcome")
+	}
 }
 
 func (d *drafter) writeDecision(t *draftText) {

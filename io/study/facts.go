@@ -1,15 +1,13 @@
 package study
 
 import (
-	"errors"
 	"fmt"
 	"math"
 	"regexp"
+	"slices"
 	"strconv"
 	"strings"
 	"unicode/utf8"
-
-	"holdfast/selection"
 )
 
 // Facts is what Draft has to know of a table.
@@ -23,6 +21,8 @@ type Facts struct {
 	Columns    []Fact // in table order
 
 	OutcomeGaps []int // first rows without a finite value of the outcome, from 0
+
+	Kind *Kind // what a study asks the outcome to be; nil: its values decide
 }
 
 // Fact is what a scan found in one column. What it could not find is zero.
@@ -38,10 +38,27 @@ type Fact struct {
 	Rising    bool     // every value larger (or every value smaller) than that of the row before
 	Date      bool     // whole numbers that read as dates, such as 20260314
 	Min, Max  float64  // over the values there are
+	Levels    []Level  // the values as text, in byte order (numbers: by size), where they are at most MostLevels; nil: more, or not counted
 	R         *float64 // correlation with the outcome; nil: not defined
 	AUC       *float64 // of this column alone for a two-valued outcome; nil: not defined
 	Serial    *float64 // correlation of each value with that of the row before; nil: not defined
 }
+
+// Level is one value of a column.
+type Level struct {
+	Text string
+	Rows int64
+}
+
+// MostLevels is how many values a category, or an outcome of classes, may have.
+const MostLevels = 50
+
+// category says whether a column can be a predictor as a category: text of
+// few values.
+func (f Fact) category() bool { return f.Text && len(f.Levels) > 0 && len(f.Levels) <= MostLevels }
+
+// constant says whether all rows with a value have the same.
+func (f Fact) constant() bool { return f.Constant || len(f.Levels) == 1 }
 
 // gaps is the number of cells without a finite value.
 func (f Fact) gaps() int64 { return f.Missing + f.Infinite }
@@ -108,7 +125,9 @@ var namedAsIdentifier = regexp.MustCompile(`(?i:(^|[^a-z])(id|nr|number|index|id
 func (f Fact) identifier(rows int64) string {
 	span := f.Max - f.Min
 	switch {
-	case !f.Whole || !f.Unique || f.Constant:
+	case f.Text && f.eachOnce():
+		return "text, every value once: an identifier"
+	case !f.Whole || !f.Unique || f.constant():
 		return ""
 	case f.Rising && rows >= rowsForRising && span == float64(rows-1):
 		return "a row number: it counts the rows"
@@ -120,6 +139,11 @@ func (f Fact) identifier(rows int64) string {
 		return "whole numbers, every value once, and named as an identifier"
 	}
 	return ""
+}
+
+// eachOnce says whether no value of a column stands in two rows.
+func (f Fact) eachOnce() bool {
+	return len(f.Levels) > 1 && !slices.ContainsFunc(f.Levels, func(l Level) bool { return l.Rows > 1 })
 }
 
 // leak says why a column is the outcome in other clothes, empty where not.
@@ -138,8 +162,8 @@ func (f Fact) flag(rows int64) (Flag, bool) {
 	flag := Flag{Column: f.Name}
 	identifier, leak := f.identifier(rows), f.leak()
 	switch {
-	case !f.Usable:
-		flag.Kind, flag.Text = FlagUnusable, f.Reason
+	case !f.Usable && !f.category():
+		flag.Kind, flag.Text = FlagUnusable, f.why()
 	case rows > 0 && f.Missing == rows:
 		flag.Kind, flag.Text, flag.Left = FlagEmpty, "no row has a value", true
 	case leak != "":
@@ -148,7 +172,7 @@ func (f Fact) flag(rows int64) (Flag, bool) {
 		flag.Kind, flag.Text, flag.Left = FlagIdentifier, identifier, true
 	case f.Date:
 		flag.Kind, flag.Text = FlagDate, "a date written as a whole number: its distances mean nothing; leave it out, or turn it into days"
-	case f.Constant:
+	case f.constant():
 		flag.Kind, flag.Text = FlagConstant, "one value in all rows: never chosen, and not counted"
 	case f.Whole && f.Unique && rows >= rowsForDense:
 		flag.Kind, flag.Text = FlagUnique, "whole numbers, every value once: if it is an identifier and no count, leave it out"
@@ -162,6 +186,10 @@ func (f Fact) flag(rows int64) (Flag, bool) {
 type drafter struct {
 	facts      Facts
 	outcome    Fact
+	kind       Kind
+	kindWhy    string
+	success    string // of a yes-no outcome
+	successWhy string
 	flags      []Flag
 	left       []Flag // of flags: what goes into candidates.leave
 	unusable   []Flag
@@ -174,7 +202,7 @@ type drafter struct {
 
 func newDrafter(f Facts) (*drafter, error) {
 	d := &drafter{facts: f}
-	for _, step := range []func() error{d.checkOutcome, d.sortColumns, d.chooseMissing, d.chooseShape, d.checkRows, d.checkNames} {
+	for _, step := range []func() error{d.checkOutcome, d.chooseKind, d.sortColumns, d.chooseMissing, d.chooseShape, d.checkRows, d.checkNames} {
 		if err := step(); err != nil {
 			return nil, err
 		}
@@ -209,16 +237,14 @@ func (d *drafter) checkOutcome() error {
 	}
 	d.outcome = f.Columns[found]
 	switch o := d.outcome; {
-	case !o.Usable:
+	case !o.admissible():
 		return d.refuse("column %s cannot be the outcome: %s", shown, o.Reason)
 	case o.gaps() > 0:
 		return d.refuse("the outcome %s has no value in %d of %d rows%s, and an outcome is never filled: take these rows out of the table", shown, o.gaps(), f.Rows, f.gapRows(o.gaps()))
 	case f.Rows < 4:
 		return d.refuse("the table has %s, and two halves take at least 4", numberOf(int(f.Rows), "row"))
-	case o.Constant:
+	case o.constant():
 		return d.refuse("the outcome %s has one value in all rows: there is nothing to explain", shown)
-	case o.TwoValued:
-		d.flags = append(d.flags, Flag{Kind: FlagOutcome, Column: o.Name, Text: "two values, taken as numbers here: a linear fit of a yes-no outcome finds predictors, but its coefficients are no odds"})
 	}
 	return nil
 }
@@ -234,7 +260,7 @@ func (d *drafter) sortColumns() error {
 			d.flags = append(d.flags, flag)
 		}
 		switch {
-		case !c.Usable:
+		case flag.Kind == FlagUnusable && flagged:
 			d.unusable = append(d.unusable, flag)
 		case flag.Left:
 			d.left = append(d.left, flag)
@@ -321,7 +347,7 @@ func (d *drafter) leaveInfinite() {
 func (d *drafter) chooseShape() error {
 	varying := 0
 	for _, c := range d.candidates {
-		if !c.Constant {
+		if !c.constant() {
 			varying++
 		}
 	}
@@ -330,7 +356,7 @@ func (d *drafter) chooseShape() error {
 			len(d.facts.Columns), len(d.unusable), len(d.left), len(d.candidates)-varying)
 	}
 	var err error
-	if d.shape, err = shapeOf(varying, int(min(d.rows/2, math.MaxInt32))); err != nil {
+	if d.shape, err = shapeOf(varying, d.units()); err != nil {
 		return err
 	}
 	d.flags = append(d.flags, d.shape.flags()...)
@@ -400,7 +426,7 @@ func (f Facts) gapRows(n int64) string {
 
 // checkNames refuses names that a study cannot write.
 func (d *drafter) checkNames() error {
-	names := []string{d.facts.Path, d.facts.Outcome}
+	names := []string{d.facts.Path, d.facts.Outcome, d.success}
 	for _, l := range d.left {
 		names = append(names, l.Column)
 	}
@@ -410,109 +436,6 @@ func (d *drafter) checkNames() error {
 		}
 	}
 	return nil
-}
-
-// tableShape is what the number of candidates and of units in a half decide
-// (DESIGN section 7, "draft by shape").
-type tableShape struct {
-	candidates, units int
-	threshold         float64
-	bound             selection.BoundName
-	floor             float64
-	why               string // of the three above
-
-	selected    int
-	selectedWhy string
-	luck        float64 // false selections at threshold and selected
-	asked       float64 // false selections aimed at
-}
-
-// The limits of DESIGN section 7.
-const (
-	manyPerUnit    = 10 // candidates per unit from which a table is very wide
-	unitsPerFew    = 10 // units per candidate beyond which it is narrow
-	unitsPerChoice = 3  // units that a selected predictor takes at least
-	smallPanel     = 50 // candidates below which fewer false selections are aimed at
-	regressionSize = 8  // candidates that an ordinary regression takes better
-	fewUnits       = 15 // units in a half that show overwhelming effects only
-)
-
-func shapeOf(candidates, units int) (tableShape, error) {
-	standard := Default()
-	s := tableShape{
-		candidates: candidates, units: units,
-		threshold: selection.DefaultThreshold, bound: standard.Decision.Bound, floor: standard.Penalty.Floor,
-		why:   fmt.Sprintf("the default, for %d candidates and %d rows in a half", candidates, units),
-		asked: selection.DefaultFalseSelections,
-	}
-	switch {
-	case candidates >= manyPerUnit*units:
-		s.threshold, s.bound, s.floor = 0.6, selection.WorstCase, 0.01
-		s.why = fmt.Sprintf("%d candidates are at least %d times the %d rows in a half", candidates, manyPerUnit, units)
-	case candidates*unitsPerFew < units:
-		s.threshold, s.floor = 0.9, 0.001
-		s.why = fmt.Sprintf("%d candidates are fewer than a tenth of the %d rows in a half", candidates, units)
-	}
-	if candidates < smallPanel {
-		s.asked = float64(candidates) / smallPanel
-	}
-	return s, s.choose(standard.Draws.Number)
-}
-
-// choose finds selected, and the false selections it comes to.
-func (s *tableShape) choose(draws int) error {
-	s.selected, s.selectedWhy = s.allowed(draws), fmt.Sprintf("what false_selections = %s allows", realText(s.asked))
-	if most := s.units / unitsPerChoice; s.selected > most {
-		s.selected, s.selectedWhy = most, fmt.Sprintf("a third of the %d rows in a half", s.units)
-	}
-	if s.selected < 1 {
-		s.selected, s.selectedWhy = 1, "the least there is"
-	}
-	err := s.promise(draws)
-	if errors.Is(err, selection.ErrNoBound) && s.bound != selection.WorstCase {
-		s.why += fmt.Sprintf("; but the %s bound does not exist for so few", s.bound)
-		s.bound = selection.WorstCase
-		err = s.promise(draws)
-	}
-	return err
-}
-
-// allowed is the selected that the budget gives, 0 where it gives none.
-func (s *tableShape) allowed(draws int) int {
-	ask := selection.Ask{Bound: s.bound, Threshold: &s.threshold, FalseSelections: &s.asked}
-	d, err := selection.Decide(ask, s.candidates, draws, false, 0)
-	if err != nil { // less than one predictor, or no such bound: see promise
-		return 0
-	}
-	return d.Selected
-}
-
-// promise finds the false selections at threshold and selected; the error is
-// selection.ErrNoBound where the bound does not exist there.
-func (s *tableShape) promise(draws int) error {
-	q := float64(s.selected)
-	ask := selection.Ask{Bound: s.bound, Threshold: &s.threshold, Selected: &q}
-	d, err := selection.Decide(ask, s.candidates, draws, false, 0)
-	switch {
-	case err != nil:
-		return err
-	case d.FalseSelections == nil:
-		return fmt.Errorf("study: draft: %d candidates: %w", s.candidates, selection.ErrNoBound)
-	}
-	s.luck = *d.FalseSelections
-	return nil
-}
-
-// flags says where the table is too small for the question.
-func (s tableShape) flags() []Flag {
-	var flags []Flag
-	if s.candidates <= regressionSize {
-		flags = append(flags, Flag{Kind: FlagShape, Text: fmt.Sprintf("with %s an ordinary regression answers better", numberOf(s.candidates, "candidate"))})
-	}
-	if s.units <= fewUnits {
-		flags = append(flags, Flag{Kind: FlagShape, Text: fmt.Sprintf("with %s in a half only overwhelming effects can be found", numberOf(s.units, "row"))})
-	}
-	return flags
 }
 
 // numberOf writes a count and its noun.

@@ -66,6 +66,7 @@ func FuzzResolve(f *testing.F) {
 		s := Default()
 		s.Outcome.Column = "y"
 		s.Candidates.Take, s.Candidates.Leave, s.Candidates.Always = []string{take}, []string{leave}, []string{always}
+		s.Candidates.Groups["group"] = []string{take}
 		cols := []Column{{"y", true, "", false}}
 		for i, c := range names {
 			cols = append(cols, Column{string(c), i%3 != 2, "nested", i%4 == 1})
@@ -78,6 +79,7 @@ func FuzzResolve(f *testing.F) {
 			}
 			return
 		}
+		checkUnits(t, "", r)
 		seen := map[string]string{}
 		for what, list := range map[string][]string{"candidate": r.Candidates, "always": r.Always, "left": slices.Compact(slices.Sorted(slices.Values(r.Left)))} {
 			for _, name := range list {

@@ -18,7 +18,8 @@ type Column struct {
 // Excluded is a column that a pattern took and that cannot be used.
 type Excluded struct{ Name, Reason string }
 
-// Roles says which columns play which part. All lists are in table order.
+// Roles says which columns play which part. Lists of columns are in table
+// order, but for Within.
 type Roles struct {
 	Outcome    string      // outcome.column; empty for survival
 	Candidates []string    // all columns that compete, members of groups among them
@@ -27,7 +28,7 @@ type Roles struct {
 	Always     []string
 	Categories []string   // of Candidates and Always: those to be read as categories
 	Named      []string   // of Candidates and Always: those that a list names, not only a pattern
-	Within     []string   // columns to be balanced; "outcome" stands for classes or event status
+	Within     []string   // columns to be balanced, as the study lists them; "outcome" stands for classes or event status
 	Left       []string   // taken by candidates.take and left out by candidates.leave
 	Excluded   []Excluded // taken by a pattern but not usable, with the reason
 	Relative   []float64  // penalty weight of each of Predictors; nil: all 1
