@@ -5,33 +5,45 @@ import (
 	"os"
 	"path/filepath"
 	"testing"
+
+	"holdfast/resample"
 )
 
 // TestStoredRows holds the rows that scikit-learn was given to what a run
 // with the same seed draws: otherwise the counts would be those of another
 // run.
 func TestStoredRows(t *testing.T) {
-	for _, c := range []struct {
-		name string
-		rows int
-		seed uint64
-	}{{"diabetes", 442, 11}, {"gasoline", 60, 12}} {
-		want, err := os.ReadFile(filepath.Join("..", "..", "testdata", "frequencies", c.name+"_rows.csv"))
+	malignant, err := strata(filepath.Join("..", "..", "testdata", "data", "breast_cancer.csv"), "malignant")
+	if err != nil {
+		t.Fatal(err)
+	}
+	for name, plan := range map[string]resample.Plan{
+		"diabetes":      {Rows: 442, Number: 100, Seed: 11},
+		"gasoline":      {Rows: 60, Number: 100, Seed: 12},
+		"breast_cancer": {Rows: 569, Number: 100, Seed: 13, Within: malignant},
+	} {
+		want, err := os.ReadFile(filepath.Join("..", "..", "testdata", "frequencies", name+"_rows.csv"))
 		if err != nil {
 			t.Fatal(err)
 		}
 		var got bytes.Buffer
-		if err := write(&got, c.rows, 100, c.seed); err != nil {
+		if err := write(&got, plan); err != nil {
 			t.Fatal(err)
 		}
 		if !bytes.Equal(got.Bytes(), want) {
-			t.Errorf("%s: the plan's rows are not those of the file", c.name)
+			t.Errorf("%s: the plan's rows are not those of the file", name)
 		}
 	}
 }
 
 func TestImpossiblePlan(t *testing.T) {
-	if err := write(&bytes.Buffer{}, 3, 100, 1); err == nil {
+	if err := write(&bytes.Buffer{}, resample.Plan{Rows: 3, Number: 100, Seed: 1}); err == nil {
 		t.Error("three rows were drawn from")
+	}
+}
+
+func TestUnknownColumn(t *testing.T) {
+	if _, err := strata(filepath.Join("..", "..", "testdata", "data", "breast_cancer.csv"), "benign"); err == nil {
+		t.Error("a column that is not there was read")
 	}
 }
