@@ -70,32 +70,71 @@ func (e *every) Put(draws []int, paths []solver.Path) error {
 
 // The whole engine: every number of every draw has the same bits, whatever
 // the workers, the blocks and the neighbours in a block (DESIGN 5 and 6), on
-// a wide and on a long table.
+// a wide and on a long table, without and with strata, jitter and redraws.
 func TestEngineSameBitsForAnyWorkersAndBlock(t *testing.T) {
 	for _, size := range [][2]int{{40, 90}, {160, 20}} {
 		m := model(t, size[0], size[1])
 		for _, design := range []resample.Design{resample.Halves, resample.Bootstrap} {
-			plan, err := resample.NewPlan(resample.Plan{Rows: size[0], Design: design, Number: 28, Seed: 2})
-			if err != nil {
-				t.Fatal(err)
-			}
-			var alone every
-			for d := range plan.Number {
-				paths, err := m.FitBlock(context.Background(), []*solver.Sample{plan.Sample(d)}, nil)
+			base := resample.Plan{Rows: size[0], Design: design, Number: 28, Seed: 2}
+			for _, p := range []resample.Plan{base, everything(base, size[1])} {
+				plan, err := resample.NewPlan(p)
 				if err != nil {
 					t.Fatal(err)
 				}
-				alone.paths = append(alone.paths, paths...)
-			}
-			for _, opt := range []resample.Options{{Workers: 1}, {Workers: 2, Block: 4}, {Workers: 7, Block: 2}, {Workers: 2, Block: 28}} {
-				var got every
-				if err := resample.Run(context.Background(), plan, m, &got, opt); err != nil {
-					t.Fatal(err)
+				want := alone(t, m, plan)
+				for _, opt := range []resample.Options{{Workers: 1}, {Workers: 2, Block: 4}, {Workers: 7, Block: 2}, {Workers: 2, Block: 28}} {
+					var got every
+					if err := resample.Run(context.Background(), plan, m, &got, opt); err != nil {
+						t.Fatal(err)
+					}
+					compare(t, plan, opt, got.paths, want)
 				}
-				compare(t, plan, opt, got.paths, alone.paths)
 			}
 		}
 	}
+}
+
+// everything adds strata, jitter, and draws that are made anew to a plan.
+func everything(p resample.Plan, cols int) resample.Plan {
+	p.Within = make([]int32, p.Rows)
+	for i := range p.Within {
+		p.Within[i] = int32(i * i % 7)
+	}
+	p.Jitter = 0.4
+	for j := range cols {
+		p.Keys = append(p.Keys, fmt.Sprintf("gauge_%d", j))
+	}
+	p.Fit = func(s *solver.Sample) error {
+		if n := s.Weight(0) + s.Weight(1) + s.Weight(2); n == 0 || n == 3 {
+			return fmt.Errorf("%v of three tanks", n)
+		}
+		return nil
+	}
+	return p
+}
+
+// alone fits every draw of a plan by itself.
+func alone(t *testing.T, m *solver.Model, plan resample.Plan) []solver.Path {
+	t.Helper()
+	var all []solver.Path
+	redrawn := 0
+	for d := range plan.Number {
+		s, redraws, err := plan.Draw(d)
+		if err != nil {
+			t.Fatal(err)
+		}
+		paths, err := m.FitBlock(context.Background(), []*solver.Sample{s}, nil)
+		if err != nil {
+			t.Fatal(err)
+		}
+		paths[0].Redraws = redraws
+		redrawn += redraws
+		all = append(all, paths[0])
+	}
+	if (plan.Fit != nil) != (redrawn > 0) {
+		t.Errorf("%d redraws: the check says little", redrawn)
+	}
+	return all
 }
 
 func compare(t *testing.T, plan resample.Plan, opt resample.Options, got, want []solver.Path) {

@@ -255,3 +255,41 @@ func TestParts(t *testing.T) {
 		}
 	}
 }
+
+// What is timed is what a worker of the run does: draws are made anew where they
+// cannot be fitted, and those that still cannot are not fitted.
+func TestUnfittableDraws(t *testing.T) {
+	m := &machine{alone: 50 * time.Millisecond}
+	plan := planOf(t, 100)
+	plan.Fit = func(s *solver.Sample) error {
+		if s.Rows[0]&1 != 0 {
+			return errors.New("one class only") // 40 rows: one half of each pair
+		}
+		return nil
+	}
+	timing, err := forecast.Time(t.Context(), plan, m, forecast.Options{
+		Workers: 1, Block: blockOf(8), Limit: time.Minute, Clock: m.clock(),
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	fitted := 0
+	for _, n := range m.blocks {
+		fitted += n
+	}
+	refused := 0
+	for _, p := range timing.Paths {
+		if p.Redraws != resample.MaxRedraws {
+			t.Errorf("%d redraws", p.Redraws)
+		}
+		if p.Stop == solver.StopUncertified {
+			refused++
+		}
+	}
+	if fitted != refused || 2*fitted != len(timing.Paths) {
+		t.Errorf("%d fitted and %d refused of %d draws", fitted, refused, len(timing.Paths))
+	}
+	if got, want := timing.Wall(100, 1), 50*50*time.Millisecond; got != want {
+		t.Errorf("100 draws: %v, want %v", got, want)
+	}
+}
