@@ -340,7 +340,7 @@ func FuzzJudge(f *testing.F) {
 				d.Entries = append(d.Entries, Entry{int32(next()), int32(next() & 7), next() < 0})
 			}
 			for range next() & 3 {
-				d.Coefs = append(d.Coefs, Coef{Step: int32(next() & 7), Predictor: int32(next()), Value: float64(next())})
+				d.Coefs = append(d.Coefs, Coef{int32(next() & 7), int32(next()), int32(next() & 1), int32(next() & 1), float64(next())})
 			}
 			for range next() & 1 {
 				d.Still = append(d.Still, int32(next()))
@@ -348,13 +348,25 @@ func FuzzJudge(f *testing.F) {
 			draws[i] = d
 		}
 		q, threshold := 1+next()&3, 0.5+float64(1+next()&15)/32
-		j, err := Judge(draws, next() < 0, plain(5), Decision{Region: Cap + Region(next()&1), Bound: Unimodal, Threshold: threshold, Selected: q})
+		names := plain(5)
+		if next() < 0 {
+			names.Terms, names.Deviations = [][]string{nil, {"a", "b"}, {"c"}, nil, {}}, make([]float64, 6)
+		}
+		if next() < 0 {
+			names.Classes = []string{"lost", "alive"}
+		}
+		j, err := Judge(draws, next() < 0, names, Decision{Region: Cap + Region(next()&1), Bound: Unimodal, Threshold: threshold, Selected: q})
 		if err != nil {
 			return
 		}
 		for r := range j.Paths() {
 			if r.Frequency <= 0 || r.Frequency > 1 {
 				t.Errorf("path with frequency %g", r.Frequency)
+			}
+		}
+		for r := range j.PerSD().Terms() {
+			if r.Coef.Low > r.Coef.Median || r.Coef.Median > r.Coef.High {
+				t.Errorf("quantiles out of order: %+v", r)
 			}
 		}
 		if j.Stable > j.MostStable && j.Decision.Region == Cap {

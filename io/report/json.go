@@ -29,7 +29,8 @@ func JSON(w io.Writer, j *selection.Judgement, info Info) error {
 	rows(out, alwaysColumns, slices.Values(j.Always))
 	out.member("warnings", info.warnings(j))
 	out.member("per_sd", info.PerSD)
-	out.member("classes", names(j.Classes()))
+	out.member("classes", list(j.Classes()))
+	out.member("references", list(info.References))
 	out.key("terms")
 	rows(out, termColumns, j.Terms())
 	out.member("redrawn", len(j.Redrawn))
@@ -63,21 +64,21 @@ func (o *object) decision(j *selection.Judgement, info Info) {
 	o.close()
 }
 
-// names is a list that is empty rather than null.
-func names(list []string) []string {
-	if list == nil {
-		return []string{}
+// list is a list that is empty rather than null.
+func list[T any](of []T) []T {
+	if of == nil {
+		return []T{}
 	}
-	return list
+	return of
 }
 
 func optional(v *float64) any { return defined(v) }
 
 // rows writes one object per row, members in column order.
-func rows[R any](o *object, columns []column[R], list iter.Seq[R]) {
+func rows[R any](o *object, columns []column[R], all iter.Seq[R]) {
 	o.raw("[")
 	i := 0
-	for r := range list {
+	for r := range all {
 		o.comma(i)
 		o.open()
 		for _, c := range columns {

@@ -94,9 +94,10 @@ type grid struct {
 	mark                                         []string // of the note behind the name, or empty
 	wName, wChosen, wInterval, wBar, wSign       int
 	wMedian, wSpread                             int
-	chosenHead, intervalHead, spreadHead         string
+	chosenHead, intervalHead                     string
 	coefMark                                     string
 	narrow                                       bool // there is no room for the spread
+	bare                                         bool // no row has a coefficient of its own
 }
 
 const (
@@ -105,25 +106,29 @@ const (
 	medianHead   = "median"
 	signHead     = "sign"
 	nameHead     = "predictor"
+	spreadHead   = "2.5 to 97.5 %"
 )
 
 // newGrid makes the texts and shares out the width: what numbers need, then
 // the names, then the bar.
 func (p *page) newGrid(rows []selection.Row) *grid {
 	g := &grid{
-		chosenHead: fmt.Sprintf("of %d", p.j.Draws), spreadHead: "2.5 to 97.5 %",
-		intervalHead: "95 % " + p.note(selection.MonteCarlo),
-		coefMark: p.note("The coefficients are those of the draws that chose the predictor, at the end of what counts of their paths. " +
-			"They are shrunken, belong to a changing set of companions, and are too narrow for weak predictors: no test, and no confidence interval."),
+		chosenHead: fmt.Sprintf("of %d", p.j.Draws), intervalHead: "95 % " + p.note(selection.MonteCarlo),
+		bare: !slices.ContainsFunc(rows, func(r selection.Row) bool { return r.Coef != nil }),
+	}
+	if !g.bare {
+		g.coefMark = p.coefNote()
 	}
 	for i := range rows {
 		g.addRow(p, &rows[i])
 	}
 	g.wChosen = widest(g.chosen, g.chosenHead, chosenOver)
 	g.wInterval = widest(g.interval, g.intervalHead, intervalOver)
-	g.wSign = widest(g.sign, signHead)
-	g.wMedian = widest(g.median, medianHead)
-	g.wSpread = widest(g.spread, g.spreadHead)
+	if !g.bare {
+		g.wSign = widest(g.sign, signHead)
+		g.wMedian = widest(g.median, medianHead)
+		g.wSpread = widest(g.spread, spreadHead)
+	}
 	g.share(p.cells)
 	for i := range g.name {
 		g.name[i] = shorten(g.name[i], g.wName-width(g.mark[i]), p.dots()) + g.mark[i]
@@ -135,11 +140,12 @@ func (p *page) newGrid(rows []selection.Row) *grid {
 // leave, and the bar the rest. Where there is no room for a bar worth looking
 // at there is none.
 func (g *grid) share(cells int) {
-	rest := cells - gap - (g.wChosen + g.wInterval + g.wSign + g.wMedian + g.wSpread) - 5*gap
+	left := cells - gap - (gap + g.wChosen) - (gap + g.wInterval)
+	rest := left - g.coefs()
 	need := min(g.widestName(), mostName)
-	if rest < min(need, leastName) {
+	if !g.bare && rest < min(need, leastName) {
 		g.narrow = true
-		rest += gap + g.wSpread
+		rest = left - g.coefs()
 	}
 	g.wName = min(need, max(leastName, (rest-gap)*2/3))
 	g.wBar = min(mostBar, rest-gap-g.wName)
@@ -155,11 +161,23 @@ func (g *grid) addRow(p *page, r *selection.Row) {
 	g.interval = append(g.interval, drawsText(r, p.j.Draws))
 	g.sign = append(g.sign, signText(r.PositiveShare))
 	if r.Selected == nil {
-		g.median, g.spread = append(g.median, ""), append(g.spread, "")
+		g.median, g.spread = append(g.median, ""), append(g.spread, p.countTerms(r))
 		return
 	}
 	g.median = append(g.median, number3(r.Selected.Median))
 	g.spread = append(g.spread, spreadText(r.Selected))
+}
+
+// countTerms stands in the place of a coefficient where a predictor has several.
+func (p *page) countTerms(r *selection.Row) string {
+	n := 0
+	for range p.j.TermsOf(r) {
+		n++
+	}
+	if n == 0 {
+		return ""
+	}
+	return plural(n, "term")
 }
 
 // spreadText is the range of a coefficient.
@@ -219,25 +237,32 @@ func signText(positive *float64) string {
 // heading writes the column heads. What stands over the coefficients is longer
 // than they are and reaches to the left, over the bar and the signs.
 func (p *page) heading(g *grid) {
-	unit := ""
-	if p.info.PerSD {
-		unit = " per standard deviation"
-	}
 	over := g.join("", "", chosenOver, intervalOver)
-	title := g.title(p.cells - width(over) - gap)
-	room := max(g.total()-width(over)-gap, width(title))
-	what := "coefficient" + unit + " where chosen:"
-	p.line(p.paint(dim, spaces(width(over)+gap+room-max(width(title), width(what)))+what))
-	p.line(p.paint(dim, over+spaces(gap)+padLeft(title, room)))
+	if g.bare {
+		p.line(p.paint(dim, over))
+	} else {
+		p.headCoefs(g, over)
+	}
 	heads := []string{g.join("", nameHead, g.chosenHead, g.intervalHead)}
 	if g.wBar > 0 {
 		heads = append(heads, spaces(g.wBar))
 	}
-	heads = append(heads, padRight(signHead, g.wSign), padLeft(medianHead, g.wMedian))
-	if !g.narrow {
-		heads = append(heads, g.spreadHead)
+	if !g.bare {
+		heads = append(heads, padRight(signHead, g.wSign), padLeft(medianHead, g.wMedian))
+	}
+	if !g.bare && !g.narrow {
+		heads = append(heads, spreadHead)
 	}
 	p.line(p.paint(dim, strings.Join(heads, spaces(gap))))
+}
+
+// headCoefs writes what stands over the heads of the coefficients.
+func (p *page) headCoefs(g *grid, over string) {
+	title := g.title(p.cells - width(over) - gap)
+	room := max(g.total()-width(over)-gap, width(title))
+	what := "coefficient" + p.unit() + " where chosen:"
+	p.line(p.paint(dim, spaces(width(over)+gap+room-max(width(title), width(what)))+what))
+	p.line(p.paint(dim, over+spaces(gap)+padLeft(title, room)))
 }
 
 // title is what stands over the coefficients, as far as there is room; the note
@@ -271,8 +296,10 @@ func (p *page) row(g *grid, i int) {
 	if g.wBar > 0 {
 		parts = append(parts, p.paint(cyan, padRight(p.bar(r, g.wBar), g.wBar)))
 	}
-	parts = append(parts, padRight(g.sign[i], g.wSign), padLeft(g.median[i], g.wMedian))
-	if !g.narrow {
+	if !g.bare {
+		parts = append(parts, padRight(g.sign[i], g.wSign), padLeft(g.median[i], g.wMedian))
+	}
+	if !g.bare && !g.narrow {
 		parts = append(parts, g.spread[i])
 	}
 	p.line(strings.Join(parts, spaces(gap)))
@@ -295,14 +322,22 @@ func (p *page) border(g *grid) {
 
 // total is the width of a full line.
 func (g *grid) total() int {
-	w := gap + g.wName + g.wChosen + g.wInterval + g.wSign + g.wMedian + 4*gap
-	if !g.narrow {
-		w += gap + g.wSpread
-	}
+	w := gap + g.wName + (gap + g.wChosen) + (gap + g.wInterval) + g.coefs()
 	if g.wBar > 0 {
 		w += gap + g.wBar
 	}
 	return w
+}
+
+// coefs is the width of what a line says about coefficients.
+func (g *grid) coefs() int {
+	switch {
+	case g.bare:
+		return 0
+	case g.narrow:
+		return gap + g.wSign + gap + g.wMedian
+	}
+	return gap + g.wSign + gap + g.wMedian + gap + g.wSpread
 }
 
 // bar draws the frequency, with a tick at the threshold where the bar does not

@@ -30,7 +30,9 @@ func Text(w io.Writer, j *selection.Judgement, info Info, width int, colour bool
 	p.promise()
 	p.pointToWarnings()
 	p.table()
+	p.terms()
 	p.alwaysIn()
+	p.references()
 	p.listNotes()
 	p.cautions()
 	_, err := io.WriteString(w, p.b.String())
@@ -45,6 +47,8 @@ type page struct {
 	cells  int
 	colour bool
 	notes  []string
+	// coefMark is the mark of the note on coefficients, once there is one.
+	coefMark string
 }
 
 // ANSI styles. Meaning never hangs on them alone.
@@ -84,6 +88,17 @@ func (p *page) item(style, lead, text string) {
 func (p *page) note(text string) string {
 	p.notes = append(p.notes, clean(text))
 	return fmt.Sprintf("[%d]", len(p.notes))
+}
+
+// coefNote returns the mark of the note that says what a coefficient is, and
+// is not.
+func (p *page) coefNote() string {
+	if p.coefMark == "" {
+		p.coefMark = p.note("The coefficients are those of the draws that chose the predictor, at the end of what counts of their paths. " +
+			"They are shrunken, belong to a changing set of companions, and are too narrow for weak predictors: no test, and no confidence interval." +
+			p.info.scale())
+	}
+	return p.coefMark
 }
 
 // headline says how many are stable, and by which decision if not that of
@@ -174,27 +189,39 @@ func (p *page) pointToWarnings() {
 
 // alwaysIn lists the columns that are in every model.
 func (p *page) alwaysIn() {
-	if len(p.j.Always) == 0 {
+	all := p.j.Always
+	if len(all) == 0 {
 		return
 	}
 	p.line("")
-	p.prose("", "In every model, not judged (coefficient: median, 2.5 to 97.5 % of the draws):")
-	for i, a := range p.j.Always {
-		if i == mostAlways {
-			p.line(fmt.Sprintf("  %s and %d more", p.dots(), len(p.j.Always)-i))
-			return
+	p.prose("", fmt.Sprintf("In every model, not judged (coefficient%s over the draws):", p.unit()))
+	var lines []termLine
+	for i, a := range all[:min(len(all), mostAlways)] {
+		line := termLine{class: clean(a.Class), spread: "in no draw"}
+		if i == 0 || a.Index != all[i-1].Index {
+			line.predictor = clean(a.Predictor)
 		}
-		value := "in no draw"
 		if a.Coef != nil {
-			value = fmt.Sprintf("%s, %s to %s", number3(a.Coef.Median), number3(a.Coef.Low), number3(a.Coef.High))
+			line.median, line.spread = number3(a.Coef.Median), number3(a.Coef.Low)+" to "+number3(a.Coef.High)
 		}
-		room := min(p.cells/2, p.cells-2*gap-width(value))
-		p.line(spaces(gap) + shorten(clean(a.Predictor), room, p.dots()) + spaces(gap) + value)
+		lines = append(lines, line)
+	}
+	p.termTable(lines)
+	if more := len(all) - len(lines); more > 0 {
+		p.line(fmt.Sprintf("  %s and %d more", p.dots(), more))
 	}
 }
 
-// mostAlways is how many always-in columns the text lists.
+// mostAlways is how many always-in coefficients the text lists.
 const mostAlways = 12
+
+// unit is what a coefficient is stated for, where that is not the column's own.
+func (p *page) unit() string {
+	if p.info.PerSD {
+		return " per standard deviation"
+	}
+	return ""
+}
 
 func (p *page) listNotes() {
 	if len(p.notes) == 0 {
