@@ -73,7 +73,6 @@ func (o Outcome) checkOthers(f *faults) {
 		given bool
 		kind  Kind
 	}{
-		{"outcome.success", o.Success != "", YesNo},
 		{"outcome.time", o.Time != "", Survival},
 		{"outcome.event", o.Event != "", Survival},
 		{"outcome.entry", o.Entry != "", Survival},
@@ -84,6 +83,9 @@ func (o Outcome) checkOthers(f *faults) {
 		if c.given && o.Kind != c.kind {
 			f.add(c.key, "is for outcome.kind = %q, and it is %q", c.kind, o.Kind)
 		}
+	}
+	if o.Success != "" && o.Kind != YesNo && o.Kind != Survival {
+		f.add("outcome.success", "is for outcome.kind = %q, or the event of %q, and it is %q", YesNo, Survival, o.Kind)
 	}
 }
 

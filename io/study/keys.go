@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"sort"
 	"strconv"
 	"strings"
@@ -53,10 +54,10 @@ var sections = []section{
 		{name: "kind", about: anyOf(kinds),
 			field: wordField[Kind]{kinds, func(s *Study) *Kind { return &s.Outcome.Kind }}},
 		{name: "column", field: optionalText{textField{func(s *Study) *string { return &s.Outcome.Column }}, not(Survival)}},
-		{name: "success", about: "the value that counts as yes, compared as text",
-			field: levelField{optionalText{textField{func(s *Study) *string { return &s.Outcome.Success }}, only(YesNo)}}},
+		{name: "success", about: "the value that counts as yes, or as an event, compared as text",
+			field: levelField{optionalText{textField{func(s *Study) *string { return &s.Outcome.Success }}, only(YesNo, Survival)}}},
 		{name: "time", field: optionalText{textField{func(s *Study) *string { return &s.Outcome.Time }}, only(Survival)}},
-		{name: "event", about: "1 or true where the event happened",
+		{name: "event", about: "column that tells events: 1, true, or the value of success",
 			field: optionalText{textField{func(s *Study) *string { return &s.Outcome.Event }}, only(Survival)}},
 		{name: "entry", about: "time from which a row is at risk; empty: from the start",
 			field: optionalText{textField{func(s *Study) *string { return &s.Outcome.Entry }}, only(Survival)}},
@@ -212,20 +213,11 @@ func (f levelField) set(s *Study, v value) error {
 	return err
 }
 
-// levelOf reads a value that is compared as text: a number by its shortest
-// text, so that 1.0 is the level 1.
+// levelOf reads a value that is compared as text.
 func levelOf(v value) (string, error) {
 	switch v.shape {
-	case textShape, boolShape:
+	case textShape, wholeShape, realShape, boolShape:
 		return v.text, nil
-	case wholeShape:
-		if whole, err := v.whole(); err == nil {
-			return strconv.FormatInt(whole, 10), nil
-		}
-	case realShape:
-		if x, err := v.real(); err == nil {
-			return strconv.FormatFloat(x, 'g', -1, 64), nil
-		}
 	}
 	return "", fmt.Errorf("must be a value of the column, such as \"alive\", 1 or true")
 }
@@ -492,8 +484,10 @@ func entryLines[V any](m map[string]V, text func(V) string) []string {
 	return names
 }
 
-// only says whether the outcome is of a kind.
-func only(k Kind) func(*Study) bool { return func(s *Study) bool { return s.Outcome.Kind == k } }
+// only says whether the outcome is of one of these kinds.
+func only(kinds ...Kind) func(*Study) bool {
+	return func(s *Study) bool { return slices.Contains(kinds, s.Outcome.Kind) }
+}
 
 // not says whether the outcome is of another kind.
 func not(k Kind) func(*Study) bool { return func(s *Study) bool { return s.Outcome.Kind != k } }

@@ -52,6 +52,7 @@ func TestRoundTripOfKinds(t *testing.T) {
 		small + "kind = \"count\"\nexposure = \"e\"\n",
 		small + "kind = \"classes\"\n",
 		"[table]\npath = \"t\"\nmissing = \"drop-rows\"\naccept_loss = true\n[outcome]\nkind = \"survival\"\ntime = \"t\"\nevent = \"e\"\nentry = \"s\"\nties = \"breslow\"\nstrata = [\"site\"]\n",
+		"[table]\npath = \"t\"\n[outcome]\nkind = \"survival\"\ntime = \"t\"\nevent = \"e\"\nsuccess = 2\n",
 		small + "[decision]\nselected = 3\nfalse_selections = 0.125\n",
 		small + "[draws]\ndesign = \"bootstrap\"\n[decision]\nselected = 3\n",
 	} {

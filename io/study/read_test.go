@@ -277,6 +277,7 @@ func TestMessages(t *testing.T) {
 		{small + "kind = \"classes\"\noffset = \"o\"\n", `study: dir/s.toml:6: outcome.offset = "o": is for every kind of outcome but classes, where it would move all classes alike: leave the line out`},
 		{small + "[candidates.groups]\nsalinity = []\n", `study: dir/s.toml:6: candidates.groups.salinity = []: has no members: name columns or patterns, or take the line out`},
 		{small + "[candidates.groups]\n\"\" = [\"a\"]\n", `study: dir/s.toml:6: candidates.groups."": a group has a name: it stands in the tables of results`},
+		{small + "success = 1\n", `study: dir/s.toml:5: outcome.success: is for outcome.kind = "yes-no", or the event of "survival", and it is "number"`},
 		{"[table]\npath = t.csv\n", "study: dir/s.toml:2: is not TOML: "},
 		{"[table]\npath = \"a\"\npath = \"b\"\n", "study: dir/s.toml:3: is not TOML: "},
 		{small + "[table]\n", "study: dir/s.toml:5: is not TOML: "},
@@ -285,19 +286,6 @@ func TestMessages(t *testing.T) {
 		got := problems(t, c.text)[0].Error()
 		if got != c.want && !(strings.HasSuffix(c.want, ": ") && strings.HasPrefix(got, c.want)) {
 			t.Errorf("for\n%s\ngot  %s\nwant %s", c.text, got, c.want)
-		}
-	}
-}
-
-// DESIGN section 7: levels are compared as text, so that a number stands for
-// its shortest text.
-func TestLevels(t *testing.T) {
-	for written, want := range map[string]string{
-		`1`: "1", `1.0`: "1", `0x1F`: "31", `1_000`: "1000", `-0.50`: "-0.5", `true`: "true", `"1.0"`: "1.0", `"alive"`: "alive", `1e3`: "1000",
-	} {
-		s := parse(t, small+"kind = \"yes-no\"\nsuccess = "+written+"\n[candidates.reference]\nfeed = "+written+"\n")
-		if s.Outcome.Success != want || s.Candidates.Reference["feed"] != want {
-			t.Errorf("%s: got %q and %q, want %q", written, s.Outcome.Success, s.Candidates.Reference["feed"], want)
 		}
 	}
 }

@@ -33,9 +33,9 @@ type Table struct {
 type Outcome struct {
 	Kind       Kind     // default Number
 	Column     string   // every kind but Survival
-	Success    string   // YesNo: the value that counts as yes, compared as text
+	Success    string   // YesNo: the value that counts as yes; Survival: as an event, empty: 1 or true. Compared as text
 	Time       string   // Survival
-	Event      string   // Survival
+	Event      string   // Survival: column that tells events
 	Entry      string   // Survival; empty: everybody is there from the start
 	Ties       Ties     // Survival; default Efron
 	Strata     []string // Survival
