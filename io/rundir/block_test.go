@@ -5,36 +5,16 @@ import (
 	"crypto/sha256"
 	"encoding/hex"
 	"errors"
+	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 
 	"holdfast/selection"
 	"holdfast/solver"
 )
-
-func TestPathsAreReadBackToTheBit(t *testing.T) {
-	r := source(t)
-	d := hatcheryRun(t, 60)
-	paths := randomPaths(r, 60)
-	for first := 0; first < 60; {
-		n := min(1+r.IntN(9), 60-first)
-		if err := d.Put(upTo(first, first+n), paths[first:first+n]); err != nil {
-			t.Fatal(err)
-		}
-		first += n
-	}
-	got, err := d.ReadPaths()
-	if err != nil {
-		t.Fatal(err)
-	}
-	for i := range paths {
-		if !sameBits(got[i], paths[i]) {
-			t.Errorf("draw %d: read %+v, written %+v", i, got[i], paths[i])
-		}
-	}
-}
 
 // A judgement needs part of the record; here it is derived a second time.
 func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
@@ -44,6 +24,7 @@ func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
 		Entries:    []solver.Entry{{Candidate: 4, Step: -1, Negative: true}, {Candidate: 0, Step: 0}},
 		Coefs:      []solver.Coef{{Step: -1, Candidate: 4, Value: -0.5}, {Step: 0, Candidate: 0, Value: 1}, {Step: 0, Candidate: 4, Value: -1}},
 		Intercepts: []float64{1, 2, 3}, Always: []float64{1, 2, 3, 4, 5, 6}, Still: []int32{2, 5}, Violation: 1e-12,
+		Deviance: []float64{4, 3, 2}, NullDeviance: 5, Redraws: 2,
 	}, {
 		First: 18, Last: 20, Stop: solver.StopUncertified, Why: "gap 2e-9", Intercepts: []float64{1, 2, 3},
 		Always: []float64{1, 2, 3, 4, 5, 6}, Gap: 1e-13, Borderline: 3, Twins: 1,
@@ -65,11 +46,12 @@ func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
 	if len(a.Entries) != 2 || a.Entries[0] != (selection.Entry{Predictor: 4, Step: -1, Negative: true}) {
 		t.Errorf("entries of draw 0: %+v", a.Entries)
 	}
-	if len(a.Coefs) != 3 || a.Coefs[2] != (selection.Coef{Step: 0, Predictor: 4, Value: -1}) || len(a.Always) != 6 || len(a.Still) != 2 {
+	if len(a.Coefs) != 3 || a.Coefs[2] != (selection.Coef{Step: 0, Predictor: 4, Value: -1}) || len(a.Always) != 6 || len(a.Still) != 2 ||
+		!slices.Equal(a.Deviance, []float64{4, 3, 2}) || a.NullDeviance != 5 || a.Redraws != 2 {
 		t.Errorf("draw 0: %+v", a)
 	}
 	want := Uncertified{Draw: 1, Step: 21, Why: "gap 2e-9"}
-	if f.Violation != 1e-12 || f.Gap != 1e-13 || f.Borderline != 3 || f.Twins != 1 || len(f.Uncertified) != 1 || f.Uncertified[0] != want {
+	if f.Violation != 1e-12 || f.Gap != 1e-13 || f.Borderline != 3 || f.Twins != 1 || len(f.Uncertified) != 1 || f.Uncertified[0] != want || f.Certificates[0].Redraws != 2 {
 		t.Errorf("certificates: %+v", f)
 	}
 }
@@ -77,7 +59,7 @@ func TestDrawsHoldWhatAJudgementNeeds(t *testing.T) {
 func encoded(t testing.TB, run Run, block []numbered) []byte {
 	t.Helper()
 	var b bytes.Buffer
-	if err := encodeBlock(&b, run.Digest, block, sumsOf(block)); err != nil {
+	if err := run.encodeBlock(&b, block, sumsOf(block)); err != nil {
 		t.Fatal(err)
 	}
 	return b.Bytes()
@@ -99,21 +81,32 @@ func TestEqualDrawsGiveEqualBytes(t *testing.T) {
 	}
 }
 
-// The bytes and the digest of one small block, computed by this package when
+// The bytes and the digest of two small blocks, computed by this package when
 // the format was fixed. Another value here is another format: it needs
 // another Format number, or runs on disk can no longer be gone on with.
 func TestFormatOfABlockIsFixed(t *testing.T) {
-	run := Run{Format: Format, Digest: strings.Repeat("ab", 32)}
-	block := numberedFrom(6, []solver.Path{
-		{First: 1, Last: 2, Stop: solver.StopEntered, Violation: 1e-12, Gap: 2e-13, Twins: 1,
+	single := Run{Digest: strings.Repeat("ab", 32)}
+	checkFormat(t, single, []solver.Path{
+		{First: 1, Last: 2, Stop: solver.StopEntered, Violation: 1e-12, Gap: 2e-13, Twins: 1, Redraws: 3,
 			Entries:    []solver.Entry{{Candidate: 3, Step: 1, Negative: true}},
 			Coefs:      []solver.Coef{{Step: 1, Candidate: 3, Value: -0.25}, {Step: 2, Candidate: 3, Value: -0.5}},
-			Intercepts: []float64{3, 3.5}, Always: []float64{1, 2}, Still: []int32{0}},
+			Intercepts: []float64{3, 3.5}, Always: []float64{1, 2}, Still: []int32{0}, Deviance: []float64{0.5, 0.25}, NullDeviance: 0.75},
 		{First: 1, Last: 0, Stop: solver.StopUncertified, Why: "constant outcome"},
-	})
+	}, "b1f0d6a3fe80f28e4f8dd418410e4ff5fb5ab043e7ec2d5ff6ebf90478f0ce1e", "b14744df207f082cca3f24c338be489d272df1d9d6c9ce391c01e48dd487c922")
+	several := Run{Digest: strings.Repeat("cd", 32), Identity: kinds()["classes"]}
+	checkFormat(t, several, []solver.Path{
+		{First: 0, Last: 0, Entries: []solver.Entry{{Candidate: 3}},
+			Coefs:      []solver.Coef{{Candidate: 3, Term: 0, Class: 2, Value: 1}, {Candidate: 3, Term: 2, Class: 0, Value: -1}},
+			Intercepts: []float64{1, -1, 0}, Deviance: []float64{2}, NullDeviance: 3},
+	}, "ab7a5563a0a03475f0dd19b0e440402f901fe93b5daf4da5746148241997df7d", "45ea3b31130e151663e940ae8dabd737b3440cdca7b8cee1bd4dc5ae2de6bd9c")
+}
+
+func checkFormat(t *testing.T, run Run, paths []solver.Path, bytes, draws string) {
+	t.Helper()
+	block := numberedFrom(6, paths)
 	whole := sha256.Sum256(encoded(t, run, block))
-	check(t, "bytes", hex.EncodeToString(whole[:]), "163f3481224fae81cdf6373068477745616dd27ddd77be088f1ade36ba55ddec")
-	check(t, "draws", blockDigest(run.Digest, sumsOf(block)), "ca3ce2faf90f7573820836fe5956e924504943c8ebadc3b7b13ef8554fefeae5")
+	check(t, "bytes", hex.EncodeToString(whole[:]), bytes)
+	check(t, "draws", blockDigest(run.Digest, sumsOf(block)), draws)
 }
 
 func check(t *testing.T, what, got, want string) {
@@ -132,27 +125,33 @@ func decodeBytes(run *Run, text []byte) ([]numbered, error) {
 // Whatever is damaged is found. Every bit of a block flips once; and a range of
 // bytes that begins at each, 1 to 4,096 long, is zeroed, set, or turned round.
 func TestDamageOfEveryByteRangeIsFound(t *testing.T) {
-	t.Parallel()
-	r := source(t)
-	run := hatcheryRun(t, 4).Run()
-	text := encoded(t, run, numberedFrom(0, randomPaths(r, 2)))
-	if _, err := decodeBytes(&run, text); err != nil {
-		t.Fatalf("the whole block: %v", err)
+	for _, name := range []string{"number", "classes"} {
+		t.Run(name, func(t *testing.T) {
+			t.Parallel()
+			r := source(t)
+			run := runOf(t, kinds()[name], 4).Run()
+			text := encoded(t, run, numberedFrom(0, forms[name].randomPaths(r, 2)))
+			if _, err := decodeBytes(&run, text); err != nil {
+				t.Fatalf("the whole block: %v", err)
+			}
+			everyDamage(r, text, func(what string, numbers ...any) {
+				t.Helper()
+				_, err := decodeBytes(&run, text)
+				if err == nil || errors.Is(err, ErrForeign) {
+					t.Fatalf(what+": %v", append(numbers, err)...)
+				}
+			})
+		})
 	}
-	check := func(what string, numbers ...any) {
-		t.Helper()
-		_, err := decodeBytes(&run, text)
-		if err == nil || errors.Is(err, ErrForeign) {
-			t.Fatalf(what+": %v", append(numbers, err)...)
-		}
-	}
-	flips, ranges := 0, 0
+}
+
+// everyDamage calls check for each damage that it does to text.
+func everyDamage(r *rand.Rand, text []byte, check func(what string, numbers ...any)) {
 	for i := range text {
 		for bit := range 8 {
 			text[i] ^= 1 << bit
 			check("bit %d of byte %d flipped", bit, i)
 			text[i] ^= 1 << bit
-			flips++
 		}
 	}
 	spoil := []func(byte) byte{func(byte) byte { return 0 }, func(byte) byte { return 0xff }, func(b byte) byte { return ^b }}
@@ -164,11 +163,9 @@ func TestDamageOfEveryByteRangeIsFound(t *testing.T) {
 		}
 		if !bytes.Equal(text, whole) {
 			check("bytes %d to %d spoiled", i, end-1)
-			ranges++
 		}
 		copy(text, whole)
 	}
-	t.Logf("%d bytes: %d flips and %d spoiled ranges, all found", len(text), flips, ranges)
 }
 
 func TestTruncatedBlocksAreFound(t *testing.T) {
@@ -184,32 +181,34 @@ func TestTruncatedBlocksAreFound(t *testing.T) {
 // Without the digest of the file (as if damage had also repaired it), the
 // decoder itself and the digest of the draws must find what changes a draw.
 func TestDigestOfDrawsFindsWhatIsHidden(t *testing.T) {
-	r := source(t)
-	run := hatcheryRun(t, 4).Run()
-	block := numberedFrom(0, randomPaths(r, 4))
-	text := encoded(t, run, block)
-	footer, err := footerStart(bytes.NewReader(text), int64(len(text)))
-	if err != nil {
-		t.Fatal(err)
-	}
-	found := 0
-	for i := 4; i < int(footer); i += 3 {
-		bit := byte(1) << r.IntN(8)
-		changed := bytes.Clone(text)
-		changed[i] ^= bit
-		got, err := decodeUnsealed(&run, changed)
+	for _, name := range []string{"number", "classes"} {
+		r := source(t)
+		run := runOf(t, kinds()[name], 4).Run()
+		block := numberedFrom(0, forms[name].randomPaths(r, 4))
+		text := encoded(t, run, block)
+		footer, err := footerStart(bytes.NewReader(text), int64(len(text)))
 		if err != nil {
-			found++
-			continue
+			t.Fatal(err)
 		}
-		for k := range got {
-			if !sameBits(got[k].path, block[k].path) {
-				t.Fatalf("byte %d, bit %08b: draw %d differs and nobody noticed", i, bit, block[k].number)
+		found := 0
+		for i := 4; i < int(footer); i += 4 {
+			bit := byte(1) << r.IntN(8)
+			changed := bytes.Clone(text)
+			changed[i] ^= bit
+			got, err := decodeUnsealed(&run, changed)
+			if err != nil {
+				found++
+				continue
+			}
+			for k := range got {
+				if !sameBits(got[k].path, block[k].path) {
+					t.Fatalf("byte %d, bit %08b: draw %d differs and nobody noticed", i, bit, block[k].number)
+				}
 			}
 		}
-	}
-	if found < 100 {
-		t.Errorf("%d changes found", found)
+		if found < 100 {
+			t.Errorf("%d changes found", found)
+		}
 	}
 }
 

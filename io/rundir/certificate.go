@@ -8,6 +8,7 @@ type Certificate struct {
 	Violation, Gap float64 // worst over its steps
 	Borderline     int     // steps at which a candidate stood on the border and stayed out
 	Twins          int     // entries at steps where linearly dependent candidates share the fit
+	Redraws        int     // how often it was made anew because it could not be fitted
 	Uncertified    bool    // its path ended before a step that could not be certified
 }
 
@@ -15,6 +16,6 @@ type Certificate struct {
 func CertificateOf(draw int, p *solver.Path) Certificate {
 	return Certificate{
 		Draw: draw, Violation: p.Violation, Gap: p.Gap, Borderline: p.Borderline, Twins: p.Twins,
-		Uncertified: p.Stop == solver.StopUncertified,
+		Redraws: p.Redraws, Uncertified: p.Stop == solver.StopUncertified,
 	}
 }

@@ -45,7 +45,7 @@ func (d *Dir) Compare(id Identity, meta Meta) error {
 	if meta.Parts == 0 {
 		meta.Parts = run.Meta.Parts
 	}
-	changes := differences(&run, &Run{Digest: id.Digest(), Identity: id, Meta: meta.resolved()})
+	changes := differences(&run, &Run{Digest: id.Digest(), Identity: id.resolved(), Meta: meta.resolved()})
 	if len(changes) == 0 {
 		return nil
 	}
@@ -96,14 +96,40 @@ func major(tool string) string {
 	return digits
 }
 
-// studyKeys are the words of the study for names in run.json that differ.
+// studyKeys are the words of the study for names in run.json that differ from
+// them.
 var studyKeys = map[string]string{
-	"fingerprint": "table (fingerprint of the values that are fitted)",
-	"outcome":     "outcome.column",
-	"kind":        "outcome.kind",
-	"case_weight": "outcome.case_weight",
-	"missing":     "table.missing",
-	"always":      "candidates.always",
+	"fingerprint":  "table (fingerprint of the values that are fitted)",
+	"kind":         "outcome.kind",
+	"outcome":      "outcome.column",
+	"success":      "outcome.success",
+	"classes":      "classes of the outcome",
+	"time":         "outcome.time",
+	"event":        "outcome.event",
+	"entry":        "outcome.entry",
+	"strata":       "outcome.strata",
+	"ties":         "outcome.ties",
+	"offset":       "outcome.offset",
+	"exposure":     "outcome.exposure",
+	"case_weight":  "outcome.case_weight",
+	"always":       "candidates.always",
+	"missing":      "table.missing",
+	"penalty.luck": "chance of luck (selected over candidates when the run was made)",
+}
+
+// studyKey is what a name in run.json is called in a message. A predictor's
+// name may hold anything, also a full stop.
+func studyKey(path string) string {
+	if key, ok := studyKeys[path]; ok {
+		return key
+	}
+	if name, ok := strings.CutPrefix(path, "terms."); ok {
+		return "columns of " + name
+	}
+	if name, ok := strings.CutPrefix(path, "reference."); ok {
+		return "candidates.reference." + name
+	}
+	return path
 }
 
 // identityChanges compares what run.json holds of two identities, name by
@@ -112,11 +138,7 @@ func identityChanges(a, b Identity) []Change {
 	old, now := members(a), members(b)
 	var changes []Change
 	for _, name := range slices.Sorted(maps.Keys(union(old, now))) {
-		key := studyKeys[name]
-		if key == "" {
-			key = name
-		}
-		changes = append(changes, memberChanges(key, old[name], now[name])...)
+		changes = append(changes, memberChanges(name, old[name], now[name])...)
 	}
 	return changes
 }
@@ -146,15 +168,15 @@ func union(a, b map[string]any) map[string]bool {
 	return all
 }
 
-// memberChanges compares two values of one name; objects member by member,
-// and lists of names by what is gone and what is new.
-func memberChanges(key string, old, now any) []Change {
+// memberChanges compares what stands at a path of names; objects member by
+// member, and lists of names by what is gone and what is new.
+func memberChanges(path string, old, now any) []Change {
 	oldMembers, oldIs := old.(map[string]any)
 	nowMembers, nowIs := now.(map[string]any)
 	if oldIs || nowIs {
 		var changes []Change
 		for _, name := range slices.Sorted(maps.Keys(union(oldMembers, nowMembers))) {
-			changes = append(changes, memberChanges(key+"."+name, oldMembers[name], nowMembers[name])...)
+			changes = append(changes, memberChanges(path+"."+name, oldMembers[name], nowMembers[name])...)
 		}
 		return changes
 	}
@@ -164,9 +186,9 @@ func memberChanges(key string, old, now any) []Change {
 		return nil
 	}
 	if oldIs || nowIs {
-		return []Change{listChange(key, names(oldList), names(nowList))}
+		return []Change{listChange(studyKey(path), names(oldList), names(nowList))}
 	}
-	return []Change{{key, brief(plain(old)), brief(plain(now))}}
+	return []Change{{studyKey(path), brief(plain(old)), brief(plain(now))}}
 }
 
 // plain writes a value as run.json does.
@@ -203,7 +225,11 @@ func names(list []any) []string {
 
 // listChange says which names are gone and which are new.
 func listChange(key string, old, now []string) Change {
-	c := Change{key, fmt.Sprintf("%d columns", len(old)), fmt.Sprintf("%d columns", len(now))}
+	what := "columns"
+	if key == studyKeys["classes"] {
+		what = "classes"
+	}
+	c := Change{key, fmt.Sprintf("%d %s", len(old), what), fmt.Sprintf("%d %s", len(now), what)}
 	gone, added := without(old, now), without(now, old)
 	if len(gone) > 0 {
 		c.Old += ", among them " + some(gone)

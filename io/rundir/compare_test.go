@@ -3,6 +3,7 @@ package rundir
 import (
 	"errors"
 	"fmt"
+	"maps"
 	"math"
 	"os"
 	"reflect"
@@ -32,6 +33,7 @@ func TestCompareNamesEveryChange(t *testing.T) {
 		{func(i *Identity, m *Meta) { i.Penalty.Scale = "none" }, "penalty.scale", "draw", "none"},
 		{func(i *Identity, m *Meta) { i.Penalty.Relative = map[string]float64{"ph": 0.25} }, "penalty.relative.ph", "0.5", "0.25"},
 		{func(i *Identity, m *Meta) { i.Penalty.Relative = nil }, "penalty.relative.ph", "0.5", "not set"},
+		{func(i *Identity, m *Meta) { i.Penalty.Jitter = 0.5 }, "penalty.jitter", "1", "0.5"},
 		{func(i *Identity, m *Meta) { i.Penalty.Ratio = math.Nextafter(0.95, 1) }, "penalty.ratio", "0.95", "0.9500000000000001"},
 		{func(i *Identity, m *Meta) { i.Penalty.Floor = 0.01 }, "penalty.floor", "0.005", "0.01"},
 		{func(i *Identity, m *Meta) { i.Penalty.StopAfter = 13 }, "penalty.stop_after", "12", "13"},
@@ -47,18 +49,7 @@ func TestCompareNamesEveryChange(t *testing.T) {
 	for _, c := range cases {
 		id, meta := hatcheryIdentity(), hatcheryMeta(4)
 		c.change(&id, &meta)
-		err := d.Compare(id, meta)
-		var m *Mismatch
-		if !errors.As(err, &m) {
-			t.Errorf("%s: %v", c.key, err)
-			continue
-		}
-		if want := []Change{{c.key, c.old, c.now}}; !reflect.DeepEqual(m.Changes, want) {
-			t.Errorf("%s: %+v, want %+v", c.key, m.Changes, want)
-		}
-		if line := fmt.Sprintf("\n  %s: %s, now %s", c.key, c.old, c.now); !strings.HasSuffix(err.Error(), line) || !strings.Contains(err.Error(), d.Path()) {
-			t.Errorf("%s: it says %q", c.key, err)
-		}
+		checkChange(t, d, id, meta, Change{c.key, c.old, c.now})
 	}
 	for name, change := range map[string]func(*Identity, *Meta){
 		"nothing":           func(*Identity, *Meta) {},
@@ -76,6 +67,73 @@ func TestCompareNamesEveryChange(t *testing.T) {
 	}
 }
 
+// checkChange checks that one change is named, and how.
+func checkChange(t *testing.T, d *Dir, id Identity, meta Meta, want Change) {
+	t.Helper()
+	err := d.Compare(id, meta)
+	var m *Mismatch
+	if !errors.As(err, &m) {
+		t.Errorf("%s: %v", want.Key, err)
+		return
+	}
+	if !reflect.DeepEqual(m.Changes, []Change{want}) {
+		t.Errorf("%s: %+v, want %+v", want.Key, m.Changes, want)
+	}
+	if line := fmt.Sprintf("\n  %s: %s, now %s", want.Key, want.Old, want.New); !strings.HasSuffix(err.Error(), line) || !strings.Contains(err.Error(), d.Path()) {
+		t.Errorf("%s: it says %q", want.Key, err)
+	}
+}
+
+// The same for what only some kinds of outcome have, and for groups and
+// categories.
+func TestCompareNamesEveryChangeOfAKind(t *testing.T) {
+	terms := func(name string, columns ...string) func(*Identity) {
+		return func(i *Identity) {
+			i.Terms = maps.Clone(i.Terms)
+			if i.Terms[name] = columns; columns == nil {
+				delete(i.Terms, name)
+			}
+		}
+	}
+	cases := []struct {
+		kind          string
+		change        func(*Identity)
+		key, old, now string
+	}{
+		{"yes-no", func(i *Identity) { i.Success = "kept" }, "outcome.success", "lost", "kept"},
+		{"yes-no", func(i *Identity) { i.Draws.Within = nil }, "draws.within", "1 columns, among them outcome", "0 columns"},
+		{"yes-no", func(i *Identity) { i.Draws.Within = []string{"site"} }, "draws.within", "1 columns, among them outcome", "1 columns, among them site"},
+		{"yes-no", func(i *Identity) { i.Offset = "log_larvae" }, "outcome.offset", "not set", "log_larvae"},
+		{"yes-no", func(i *Identity) { i.Reference = map[string]string{"feed": "oats", "site": "arm", "pump": "false"} }, "candidates.reference.feed", "algae", "oats"},
+		{"yes-no", terms("feed", "feed=oats", "feed=rye"), "columns of feed", "2 columns, among them feed=wheat", "2 columns, among them feed=rye"},
+		{"yes-no", terms("sensors", "temp.1", "temp.2"), "columns of sensors", "3 columns, among them temp.3", "2 columns"},
+		{"yes-no", terms("sensors", "temp.2", "temp.1", "temp.3"), "columns of sensors", "3 columns", "3 columns in another order"},
+		{"yes-no", terms("site"), "columns of site", "3 columns, among them site=bay, site=cove, site=strait", "0 columns"},
+		{"yes-no", terms("ph", "ph=low", "ph=high"), "columns of ph", "0 columns", "2 columns, among them ph=low, ph=high"},
+		{"yes-no", func(i *Identity) { i.Penalty.GroupWeight = "sqrt" }, "penalty.group_weight", "even", "sqrt"},
+		{"yes-no", func(i *Identity) { i.Penalty.Luck = 0.125 }, "chance of luck (selected over candidates when the run was made)", "0.1", "0.125"},
+		{"yes-no", func(i *Identity) { i.Penalty.Jitter = 0 }, "penalty.jitter", "0.5", "1"},
+		{"count", func(i *Identity) { i.Exposure = "" }, "outcome.exposure", "larvae", "not set"},
+		{"classes", func(i *Identity) { i.Classes = []string{"half shell", "spat"} }, "classes of the outcome", "3 classes, among them shucked", "2 classes"},
+		{"classes", func(i *Identity) { i.Classes = []string{"half shell", "spat", "shucked"} }, "classes of the outcome", "3 classes", "3 classes in another order"},
+		{"survival", func(i *Identity) { i.Time = "weeks" }, "outcome.time", "days", "weeks"},
+		{"survival", func(i *Identity) { i.Event = "dead" }, "outcome.event", "settled", "dead"},
+		{"survival", func(i *Identity) { i.Entry = "" }, "outcome.entry", "from_day", "not set"},
+		{"survival", func(i *Identity) { i.Strata = []string{"season", "site"} }, "outcome.strata", "1 columns", "2 columns, among them site"},
+		{"survival", func(i *Identity) { i.Ties = "efron" }, "outcome.ties", "breslow", "efron"},
+	}
+	for _, c := range cases {
+		id := kinds()[c.kind]
+		d := runOf(t, id, 4)
+		if err := d.Compare(id, metaOf(&id, 4)); err != nil {
+			t.Errorf("%s, nothing changed: %v", c.kind, err)
+		}
+		meta := metaOf(&id, 4)
+		c.change(&id)
+		checkChange(t, d, id, meta, Change{c.key, c.old, c.now})
+	}
+}
+
 // Every member of the identity is compared, also one that is added later: no
 // field may be changed without a change being named.
 func TestCompareMissesNoField(t *testing.T) {
@@ -85,6 +143,9 @@ func TestCompareMissesNoField(t *testing.T) {
 		for k := range v.NumField() {
 			f, name := v.Field(k), path+"."+v.Type().Field(k).Name
 			old := reflect.ValueOf(f.Interface())
+			if f.IsZero() {
+				t.Fatalf("%s: everything() does not set it", name)
+			}
 			switch f.Kind() {
 			case reflect.Struct:
 				walk(f, name, report)
@@ -109,14 +170,28 @@ func TestCompareMissesNoField(t *testing.T) {
 			f.Set(old)
 		}
 	}
-	id := hatcheryIdentity()
+	id := everything()
 	walk(reflect.ValueOf(&id).Elem(), "", func() {
-		if changes := identityChanges(hatcheryIdentity(), id); len(changes) != 1 {
+		if changes := identityChanges(everything(), id); len(changes) != 1 {
 			t.Errorf("%+v: changes %v", id, changes)
 		}
 	})
-	if seen < 14 {
+	if seen < 28 {
 		t.Errorf("%d fields", seen)
+	}
+}
+
+// everything is an identity with a value in every field. No run has all.
+func everything() Identity {
+	return Identity{
+		Fingerprint: "5e1f", Kind: "number", Outcome: "survival_d21", Success: "lost", Classes: []string{"spat"},
+		Time: "days", Event: "settled", Entry: "from_day", Strata: []string{"season"}, Ties: "efron",
+		Offset: "log_larvae", Exposure: "larvae", CaseWeight: "weight",
+		Candidates: []string{"feed", "ph"}, Always: []string{"site"},
+		Terms: map[string][]string{"feed": {"feed=oats"}}, Reference: map[string]string{"feed": "algae"}, Missing: "refuse",
+		Penalty: Penalty{Mix: 1, Scale: "draw", Relative: map[string]float64{"ph": 0.5}, GroupWeight: "even", Luck: 0.125, Jitter: 0.5,
+			Ratio: 0.95, Floor: 0.005, StopAfter: 12},
+		Draws: Draws{Design: "halves", Within: []string{"outcome"}, Seed: 1},
 	}
 }
 

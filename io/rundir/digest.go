@@ -13,11 +13,11 @@ import (
 type sum [sha256.Size]byte
 
 // drawSum is the digest of a draw's canonical encoding: every field in the
-// order of solver.Path, integers as 8 bytes little-endian, floats by their
-// bits, texts and lists behind their length. Two draws have equal digests only
-// if they are equal to the bit.
+// order of solver.Path, integers as 8 bytes little-endian (of a coefficient as
+// 4, for there are many), floats by their bits, texts and lists behind their
+// length. Two draws have equal digests only if they are equal to the bit.
 func drawSum(number int, p *solver.Path) sum {
-	b := make([]byte, 0, 256+24*len(p.Coefs)+24*len(p.Entries)+8*(len(p.Intercepts)+len(p.Always)+len(p.Still)))
+	b := make([]byte, 0, 256+24*len(p.Coefs)+24*len(p.Entries)+8*(len(p.Intercepts)+len(p.Always)+len(p.Still)+len(p.Deviance)))
 	b = integers(b, number, p.First, p.Last)
 	b = words(b, p.Stop.String(), p.Why)
 	b = floats(b, []float64{p.Violation, p.Gap})
@@ -31,7 +31,9 @@ func drawSum(number int, p *solver.Path) sum {
 	}
 	b = integers(b, len(p.Coefs))
 	for _, c := range p.Coefs {
-		b = integers(b, int(c.Step), int(c.Candidate))
+		for _, v := range [...]int32{c.Step, c.Candidate, c.Term, c.Class} {
+			b = binary.LittleEndian.AppendUint32(b, uint32(v))
+		}
 		b = binary.LittleEndian.AppendUint64(b, math.Float64bits(c.Value))
 	}
 	b = floats(integers(b, len(p.Intercepts)), p.Intercepts)
@@ -40,6 +42,8 @@ func drawSum(number int, p *solver.Path) sum {
 	for _, j := range p.Still {
 		b = integers(b, int(j))
 	}
+	b = floats(integers(b, len(p.Deviance)), p.Deviance)
+	b = integers(floats(b, []float64{p.NullDeviance}), p.Redraws)
 	return sha256.Sum256(b)
 }
 

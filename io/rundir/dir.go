@@ -44,7 +44,7 @@ func Create(dir string, id Identity, study []byte, meta Meta) (*Dir, error) {
 }
 
 func create(fsys files, dir string, id Identity, study []byte, meta Meta) (*Dir, error) {
-	run := Run{Format: Format, Digest: id.Digest(), Identity: id, Meta: meta.resolved(), Judgements: []Judged{}, Extensions: []Extension{}}
+	run := Run{Format: Format, Digest: id.Digest(), Identity: id.resolved(), Meta: meta.resolved(), Judgements: []Judged{}, Extensions: []Extension{}}
 	if err := run.check(); err != nil {
 		return nil, fmt.Errorf("rundir: create %s: %w", dir, err)
 	}

@@ -77,6 +77,34 @@ func TestCreateRefusesBadContent(t *testing.T) {
 		"relative":        func(i *Identity, m *Meta) { i.Penalty.Relative = map[string]float64{"ph": 0} },
 		"not finite":      func(i *Identity, m *Meta) { m.Centre[3] = odd[3] },
 		"must be given":   func(i *Identity, m *Meta) { i.Fingerprint = "" },
+		"effective_size":  func(i *Identity, m *Meta) { m.EffectiveSize = odd[3] },
+		"jitter 2":        func(i *Identity, m *Meta) { i.Penalty.Jitter = 2 },
+		"luck -1":         func(i *Identity, m *Meta) { i.Penalty.Luck = -1 },
+		"for kind number": func(i *Identity, m *Meta) { i.Outcome = "" },
+		"success \"a\"":   func(i *Identity, m *Meta) { i.Success = "a" },
+		"success \"\"":    func(i *Identity, m *Meta) { i.Kind = "yes-no" },
+		"0 classes":       func(i *Identity, m *Meta) { i.Kind = "classes" },
+		"1 classes":       func(i *Identity, m *Meta) { i.Kind, i.Classes = "classes", []string{"spat"} },
+		"2 classes":       func(i *Identity, m *Meta) { i.Classes = []string{"spat", "seed"} },
+		"class \"spat\"":  func(i *Identity, m *Meta) { i.Kind, i.Classes = "classes", []string{"spat", "spat"} },
+		"class \"\\xff":   func(i *Identity, m *Meta) { i.Kind, i.Classes = "classes", []string{"spat", "\xff"} },
+		"no outcome col":  func(i *Identity, m *Meta) { i.Kind, i.Time, i.Event, i.Ties = "survival", "days", "settled", "efron" },
+		"has time, event": func(i *Identity, m *Meta) { i.Kind, i.Outcome, i.Time, i.Event = "survival", "", "days", "settled" },
+		"not for number":  func(i *Identity, m *Meta) { i.Strata = []string{"season"} },
+		"neither a cand":  func(i *Identity, m *Meta) { i.Terms = map[string][]string{"feed": {"feed=oats"}} },
+		"none":            func(i *Identity, m *Meta) { i.Terms = map[string][]string{"ph": {}} },
+		"term \"a\"":      func(i *Identity, m *Meta) { i.Terms = map[string][]string{"ph": {"a", "a"}} },
+		"8 means and":     func(i *Identity, m *Meta) { i.Terms = map[string][]string{"spawn_day": {"a", "b"}} },
+		"for 9 columns": func(i *Identity, m *Meta) {
+			i.Terms, i.Penalty.GroupWeight = map[string][]string{"ph": {"a", "b"}}, "sqrt"
+		},
+		"group_weight": func(i *Identity, m *Meta) { i.Terms = map[string][]string{"ph": {"a", "b"}} },
+		"luck 0": func(i *Identity, m *Meta) {
+			i.Terms, i.Penalty.GroupWeight = map[string][]string{"ph": {"a", "b"}}, "even"
+		},
+		"text \"\\xfe":    func(i *Identity, m *Meta) { i.Reference = map[string]string{"ph": "\xfe"} },
+		"text \"\\xfd":    func(i *Identity, m *Meta) { i.Draws.Within = []string{"\xfd"} },
+		"text \"\\xfc":    func(i *Identity, m *Meta) { i.Exposure = "\xfc" },
 		"no lattice step": func(i *Identity, m *Meta) { m.LastStep = 1 << 40 },
 	}
 	for says, spoil := range cases {
@@ -100,7 +128,7 @@ func TestFailedWritesOfABlockSurface(t *testing.T) {
 	block := numberedFrom(0, randomPaths(source(t), 4))
 	size := len(encoded(t, run, block))
 	for n := 0; n < size; n += 7 {
-		if err := encodeBlock(&short{left: n}, run.Digest, block, sumsOf(block)); err == nil {
+		if err := run.encodeBlock(&short{left: n}, block, sumsOf(block)); err == nil {
 			t.Fatalf("a disk that was full after %d of %d bytes was not noticed", n, size)
 		}
 	}
@@ -309,8 +337,8 @@ func TestOpenRefuses(t *testing.T) {
 		t.Fatal(err)
 	}
 	for says, change := range map[string][2]string{
-		"format 3":         {`"format": 2`, `"format": 3`},
-		"format 1":         {`"format": 2`, `"format": 1`},
+		"format 4: a later version of holdfast made this run, and this one reads format 3":    {`"format": 3`, `"format": 4`},
+		"format 2: an earlier version of holdfast made this run, and this one reads format 3": {`"format": 3`, `"format": 2`},
 		"architecture":     {`"architecture": "`, `"elsewhere": "`},
 		"file was changed": {`"seed": 1`, `"seed": 2`},
 		"not readable":     {`"centre": [`, `"centre": [[`},

@@ -19,8 +19,11 @@
 // # Vocabulary
 //
 // The identity of a run is what decides the bits of its draws: the table's
-// fingerprint, the outcome, the candidates, the penalty, and the draws
-// without their number. Its digest stands in run.json and in every block, so
+// fingerprint, the outcome in the words of its kind, the candidates with the
+// design columns of groups and categories, the penalty, and the draws without
+// their number. What follows from the decision and decides bits all the same
+// (where paths stop, what a group pays for its size) is held as it was when the
+// directory was made, for the decision may change. The identity's digest stands in run.json and in every block, so
 // a block of another run is found out. A block is the draws that one worker
 // fitted together. The decision of record is the decision that was written
 // before draw 0; every other one is logged.
@@ -36,16 +39,27 @@
 //	stop, why                text    floor | stop_after | not certified; what failed
 //	violation, gap           double  worst certificate over the steps
 //	borderline, twins        int32   steps with a candidate on the border; entries that share a fit
+//	redraws                  int32   how often it was made anew because it could not be fitted
 //	entries                  list of (step, predictor int32; negative boolean)
-//	coefficients             list of (step, predictor int32; coefficient double), non-zero
-//	intercepts               list of double, one per step
-//	always                   list of double, step by step, in run.json's order
+//	coefficients             list of (step, predictor, term, class int32; coefficient double), non-zero
+//	intercepts               list of double, step by step, one for each class; none for survival
+//	always                   list of double, step by step, column by column, one for each class
+//	null_deviance            double  of the rows left out, for the model of the intercept alone
+//	deviance                 list of double, of the rows left out, one per step, or none
 //	still                    list of int32, predictors that did not vary in the draw
 //
-// A predictor is its position among the candidates of run.json, from 0.
+// A predictor is its position among the candidates of run.json, from 0; a term
+// is a design column of a group or category, by its position there; a class is
+// a level of the outcome. Term is there only where a candidate of the run has
+// several, class only where the outcome has classes, so that a run of single
+// columns does not pay for them. A sign (negative) has only a predictor with
+// one coefficient. The always-in columns stand in run.json's order, a category's
+// one by one.
+//
 // Coefficients are in the column's own units. Values are plain and nothing is
-// compressed (16 bytes a coefficient): the bytes follow from the draws alone,
-// and a file cannot claim more memory than its own length.
+// compressed (16 bytes a coefficient, and 4 for term and for class): the bytes
+// follow from the draws alone, and a file cannot claim more memory than its own
+// length.
 //
 // Two SHA-256 digests stand in the file's key-value metadata. "holdfast.file"
 // is over all bytes of the file, its own 64 digits taken as zeros, and is

@@ -3,6 +3,8 @@ package rundir
 import (
 	"bytes"
 	"encoding/json"
+	"maps"
+	"slices"
 	"testing"
 
 	"github.com/apache/arrow/go/v17/parquet"
@@ -13,19 +15,24 @@ import (
 // The digest of the file is left out, or no changed page would reach the
 // decoder.
 func FuzzBlock(f *testing.F) {
-	run := hatcheryRun(f, 4).Run()
-	r := source(f)
-	for n := 1; n <= 3; n++ {
-		text := encoded(f, run, numberedFrom(0, randomPaths(r, n)))
-		f.Add(text)
-		f.Add(text[:len(text)-9])
+	var runs []Run
+	for _, name := range slices.Sorted(maps.Keys(kinds())) {
+		run := runOf(f, kinds()[name], 4).Run()
+		r := source(f)
+		for n := 1; n <= 3; n++ {
+			text := encoded(f, run, numberedFrom(0, forms[name].randomPaths(r, n)))
+			f.Add(uint8(len(runs)), text)
+			f.Add(uint8(len(runs)), text[:len(text)-9])
+		}
+		runs = append(runs, run)
 	}
-	f.Fuzz(func(t *testing.T, text []byte) {
-		block, err := decodeUnsealed(&run, text)
+	f.Fuzz(func(t *testing.T, kind uint8, text []byte) {
+		run := &runs[int(kind)%len(runs)]
+		block, err := decodeUnsealed(run, text)
 		if err != nil {
 			return
 		}
-		if err := run.checkBlock(block); err != nil {
+		if err := run.Identity.shape().checkBlock(block); err != nil {
 			t.Errorf("a block that breaks its own rules came out: %v", err)
 		}
 	})
@@ -48,14 +55,15 @@ func decodeUnsealed(run *Run, text []byte) (block []numbered, err error) {
 
 // What run.json is read as can be written and read again to the same.
 func FuzzRun(f *testing.F) {
-	run := hatcheryRun(f, 4).Run()
-	text, err := json.Marshal(run)
-	if err != nil {
-		f.Fatal(err)
+	for _, id := range kinds() {
+		text, err := json.Marshal(runOf(f, id, 4).Run())
+		if err != nil {
+			f.Fatal(err)
+		}
+		f.Add(text)
 	}
-	f.Add(text)
-	f.Add([]byte(`{"format":2}`))
-	f.Add([]byte(`{"format":2,"asked":{"candidates":["a","a"]}}`))
+	f.Add([]byte(`{"format":3}`))
+	f.Add([]byte(`{"format":3,"asked":{"candidates":["a","a"]}}`))
 	f.Fuzz(func(t *testing.T, text []byte) {
 		run, err := decodeRun(text)
 		if err != nil {
@@ -71,6 +79,9 @@ func FuzzRun(f *testing.F) {
 		}
 		if again.Digest != run.Digest || again.Identity.Digest() != run.Digest {
 			t.Errorf("the identity changed: %s, %s", again.Digest, run.Digest)
+		}
+		if len(run.Predictors().Names) != run.Identity.shape().candidates {
+			t.Error("predictors are lost")
 		}
 	})
 }

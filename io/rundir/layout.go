@@ -15,6 +15,8 @@ import (
 const (
 	maxDraws = 1 << 20
 	maxSteps = 1 << 20
+	// maxRedraws is above what any way of drawing tries.
+	maxRedraws = 1 << 20
 )
 
 // Keys of a block file's metadata.
@@ -25,45 +27,42 @@ const (
 	keyDraws    = "holdfast.draws" // digest of the decoded draws
 )
 
-// Columns of a block file, in file order: one per leaf of the schema.
-const (
-	colDraw = iota
-	colFirst
-	colLast
-	colStop
-	colWhy
-	colViolation
-	colGap
-	colBorderline
-	colTwins
-	colEntryStep
-	colEntryPredictor
-	colEntryNegative
-	colCoefStep
-	colCoefPredictor
-	colCoefValue
-	colIntercept
-	colAlways
-	colStill
-	numColumns
-)
-
-// blockSchema is the schema described in the package documentation.
-func blockSchema() *schema.GroupNode {
-	integer := func(name string) schema.Node { return schema.NewInt32Node(name, parquet.Repetitions.Required, -1) }
-	real := func(name string) schema.Node { return schema.NewFloat64Node(name, parquet.Repetitions.Required, -1) }
-	flag := func(name string) schema.Node { return schema.NewBooleanNode(name, parquet.Repetitions.Required, -1) }
+// blockSchema is the schema described in the package documentation. term and
+// class are there where the run has several of them.
+func (s *shape) blockSchema() *schema.GroupNode {
+	coefficient := schema.FieldList{integer("step"), integer("predictor")}
+	if s.terms != nil {
+		coefficient = append(coefficient, integer("term"))
+	}
+	if s.classes > 1 {
+		coefficient = append(coefficient, integer("class"))
+	}
+	coefficient = append(coefficient, real("coefficient"))
 	return schema.MustGroup(schema.NewGroupNode("draws", parquet.Repetitions.Required, schema.FieldList{
 		integer("draw"), integer("first"), integer("last"),
 		text("stop"), text("why"),
 		real("violation"), real("gap"),
-		integer("borderline"), integer("twins"),
-		listOf("entries", record(integer("step"), integer("predictor"), flag("negative"))),
-		listOf("coefficients", record(integer("step"), integer("predictor"), real("coefficient"))),
+		integer("borderline"), integer("twins"), integer("redraws"),
+		listOf("entries", record(integer("step"), integer("predictor"), boolean("negative"))),
+		listOf("coefficients", record(coefficient...)),
 		listOf("intercepts", real("element")),
 		listOf("always", real("element")),
+		real("null_deviance"),
+		listOf("deviance", real("element")),
 		listOf("still", integer("element")),
 	}, -1))
+}
+
+func integer(name string) schema.Node {
+	return schema.NewInt32Node(name, parquet.Repetitions.Required, -1)
+}
+
+func real(name string) schema.Node {
+	return schema.NewFloat64Node(name, parquet.Repetitions.Required, -1)
+}
+
+func boolean(name string) schema.Node {
+	return schema.NewBooleanNode(name, parquet.Repetitions.Required, -1)
 }
 
 func text(name string) schema.Node {

@@ -27,6 +27,7 @@ type Part struct {
 	Gap        float64 `json:"gap"`
 	Borderline int     `json:"borderline"`
 	Twins      int     `json:"twins"`
+	Redrawn    int     `json:"redrawn"` // draws that were made anew because they could not be fitted
 	// What the process was and took; 0 where it was not told.
 	PID        int     `json:"pid,omitempty"`
 	Restart    int     `json:"restart,omitempty"`     // how often the scheduler started it again

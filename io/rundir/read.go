@@ -74,12 +74,13 @@ func (r *Run) decodeBlock(src parquet.ReaderAtSeeker, size int64) (block []numbe
 
 // decodeRows decodes the pages and checks the digest of what they say.
 func (r *Run) decodeRows(pr *file.Reader, size int64) ([]numbered, []sum, error) {
-	f, err := readColumns(pr, size, len(r.Identity.Candidates))
+	s := r.Identity.shape()
+	f, err := s.readColumns(pr, size)
 	if err != nil {
 		return nil, nil, err
 	}
 	block := f.gather()
-	if err := r.checkBlock(block); err != nil {
+	if err := s.checkBlock(block); err != nil {
 		return nil, nil, err
 	}
 	sums := sumsOf(block)
@@ -150,56 +151,60 @@ func checkFile(pr *file.Reader, src io.ReaderAt, footer, size int64) error {
 
 // cursor reads leaf after leaf and keeps the first error.
 type cursor struct {
-	group      *file.RowGroupReader
-	size       int64
-	candidates int
-	next       int
-	err        error
+	shape *shape
+	group *file.RowGroupReader
+	size  int64
+	next  int
+	err   error
 }
 
 // open checks that the schema is ours and that the row group is possible.
-func open(pr *file.Reader, size int64, candidates int) (*cursor, error) {
+func (s *shape) open(pr *file.Reader, size int64) (*cursor, error) {
 	meta := pr.MetaData()
-	if meta.Schema == nil || !meta.Schema.Equals(schema.NewSchema(blockSchema())) {
+	if meta.Schema == nil || !meta.Schema.Equals(schema.NewSchema(s.blockSchema())) {
 		return nil, errors.New("its columns are not those of a block")
 	}
 	rows := pr.NumRows()
 	if pr.NumRowGroups() != 1 || rows < 1 || rows > maxDraws || pr.RowGroup(0).NumRows() != rows {
 		return nil, fmt.Errorf("damaged: %d rows in %d row groups", rows, pr.NumRowGroups())
 	}
-	return &cursor{group: pr.RowGroup(0), size: size, candidates: candidates}, nil
+	return &cursor{shape: s, group: pr.RowGroup(0), size: size}, nil
+}
+
+// limit is the most values that a chunk of so many bytes can hold.
+type limit func(c *cursor, length int64) int64
+
+func perDraw(c *cursor, _ int64) int64 { return c.group.NumRows() }
+
+func perPredictor(c *cursor, _ int64) int64 {
+	return c.group.NumRows() * int64(c.shape.candidates+1)
+}
+
+func ofBytes(width int64) limit {
+	return func(c *cursor, length int64) int64 { return c.group.NumRows() + length/width }
 }
 
 // checkChunk refuses a column chunk that cannot be ours: compressed, outside
 // the file, or with more values than its bytes or the run can hold.
-func checkChunk(group *file.RowGroupReader, i int, size int64, candidates int) (int64, error) {
-	chunk, err := group.MetaData().ColumnChunk(i)
+func (c *cursor) checkChunk(most limit) (int64, error) {
+	chunk, err := c.group.MetaData().ColumnChunk(c.next)
 	if err != nil {
 		return 0, err
 	}
-	start, length, n, rows := chunk.DataPageOffset(), chunk.TotalCompressedSize(), chunk.NumValues(), group.NumRows()
+	start, length, n, rows := chunk.DataPageOffset(), chunk.TotalCompressedSize(), chunk.NumValues(), c.group.NumRows()
 	if chunk.Compression() != compress.Codecs.Uncompressed || chunk.HasDictionaryPage() || chunk.CryptoMetadata() != nil ||
-		start < 4 || start > size || length < 0 || length > size-start {
+		start < 4 || start > c.size || length < 0 || length > c.size-start {
 		return 0, errors.New("it is not a plain column inside the file")
 	}
-	most := rows // one each
-	switch i {
-	case colEntryStep, colEntryPredictor, colEntryNegative, colStill:
-		most = rows * int64(candidates+1)
-	case colCoefStep, colCoefPredictor:
-		most = rows + length/4
-	case colCoefValue, colIntercept, colAlways:
-		most = rows + length/8
-	}
-	if n < rows || n > most {
+	if n < rows || n > most(c, length) {
 		return 0, fmt.Errorf("it says it holds %d values for %d draws", n, rows)
 	}
 	return n, nil
 }
 
 // readColumns decodes all columns.
-func readColumns(pr *file.Reader, size int64, candidates int) (*flat, error) {
-	c, err := open(pr, size, candidates)
+func (s *shape) readColumns(pr *file.Reader, size int64) (*flat, error) {
+	c, err := s.open(pr, size)
 	if err != nil {
 		return nil, err
 	}
@@ -207,63 +212,82 @@ func readColumns(pr *file.Reader, size int64, candidates int) (*flat, error) {
 	f.draw, f.first, f.last = single(c, plainInts), single(c, plainInts), single(c, plainInts)
 	f.stop, f.why = single(c, plainTexts), single(c, plainTexts)
 	f.violation, f.gap = single(c, plainFloats), single(c, plainFloats)
-	f.borderline, f.twins = single(c, plainInts), single(c, plainInts)
-	f.entryStep, f.entries = lists(c, nil, plainInts)
-	f.entryPredictor, _ = lists(c, f.entries, plainInts)
-	f.entryNegative, _ = lists(c, f.entries, plainFlags)
-	f.coefStep, f.coefs = lists(c, nil, plainInts)
-	f.coefPredictor, _ = lists(c, f.coefs, plainInts)
-	f.coefValue, _ = lists(c, f.coefs, plainFloats)
-	f.intercept, f.intercepts = lists(c, nil, plainFloats)
-	f.always, f.alwayses = lists(c, nil, plainFloats)
-	f.still, f.stills = lists(c, nil, plainInts)
+	f.borderline, f.twins, f.redraws = single(c, plainInts), single(c, plainInts), single(c, plainInts)
+	f.entryStep, f.entries = lists(c, nil, perPredictor, plainInts)
+	f.entryPredictor, _ = lists(c, f.entries, perPredictor, plainInts)
+	f.entryNegative, _ = lists(c, f.entries, perPredictor, plainFlags)
+	f.readCoefs(c)
+	f.intercept, f.intercepts = lists(c, nil, ofBytes(8), plainFloats)
+	f.always, f.alwayses = lists(c, nil, ofBytes(8), plainFloats)
+	f.nullDeviance = single(c, plainFloats)
+	f.deviance, f.deviances = lists(c, nil, ofBytes(8), plainFloats)
+	f.still, f.stills = lists(c, nil, perPredictor, plainInts)
 	return f, c.err
+}
+
+func (f *flat) readCoefs(c *cursor) {
+	f.coefStep, f.coefs = lists(c, nil, ofBytes(4), plainInts)
+	f.coefPredictor, _ = lists(c, f.coefs, ofBytes(4), plainInts)
+	if c.shape.terms != nil {
+		f.coefTerm, _ = lists(c, f.coefs, ofBytes(4), plainInts)
+	}
+	if c.shape.classes > 1 {
+		f.coefClass, _ = lists(c, f.coefs, ofBytes(4), plainInts)
+	}
+	f.coefValue, _ = lists(c, f.coefs, ofBytes(8), plainFloats)
 }
 
 // single reads the next leaf, which has one value per row.
 func single[T any](c *cursor, decode decoder[T]) []T {
-	values, _ := lists(c, nil, decode)
-	return values
+	chunk := leaf(c, false, perDraw, decode)
+	c.next++
+	return chunk.values
 }
 
-// lists reads the next leaf: its values, and for a list the length of each
-// row's list. want, if not nil, is what the lengths must be.
-func lists[T any](c *cursor, want []int, decode decoder[T]) ([]T, []int) {
+// lists reads the next leaf: its values, and the length of each row's list.
+// want, if not nil, is what the lengths must be.
+func lists[T any](c *cursor, want []int, most limit, decode decoder[T]) ([]T, []int) {
+	chunk := leaf(c, true, most, decode)
 	if c.err != nil {
 		return nil, nil
 	}
-	values, lengths, err := readLeaf(c, decode)
+	lengths, err := lengthsOf(chunk.definition, chunk.repetition, int(c.group.NumRows()), len(chunk.values))
 	if err == nil && want != nil && !slices.Equal(lengths, want) {
 		err = errors.New("its lists differ in length from those of its neighbours")
 	}
 	if err != nil {
-		c.err = fmt.Errorf("damaged: column %d: %w", c.next, err)
+		c.fail(err)
 		return nil, nil
 	}
 	c.next++
-	return values, lengths
+	return chunk.values, lengths
 }
 
-// readLeaf reads the leaf that is next.
-func readLeaf[T any](c *cursor, decode decoder[T]) ([]T, []int, error) {
-	n, err := checkChunk(c.group, c.next, c.size, c.candidates)
+// fail keeps an error of the leaf that is next.
+func (c *cursor) fail(err error) {
 	if err != nil {
-		return nil, nil, err
+		c.err = fmt.Errorf("damaged: column %d: %w", c.next, err)
+	}
+}
+
+// leaf reads the leaf that is next.
+func leaf[T any](c *cursor, nested bool, most limit, decode decoder[T]) (found chunk[T]) {
+	if c.err != nil {
+		return found
+	}
+	n, err := c.checkChunk(most)
+	if err != nil {
+		c.fail(err)
+		return found
 	}
 	pages, err := c.group.GetColumnPageReader(c.next)
 	if err != nil {
-		return nil, nil, err
+		c.fail(err)
+		return found
 	}
-	rows, nested := int(c.group.NumRows()), c.next >= colEntryStep
-	chunk, err := readChunk(pages, nested, n, decode)
-	if err != nil {
-		return nil, nil, err
-	}
-	if !nested {
-		return chunk.values, nil, nil
-	}
-	lengths, err := lengthsOf(chunk.definition, chunk.repetition, rows, len(chunk.values))
-	return chunk.values, lengths, err
+	found, err = readChunk(pages, nested, n, decode)
+	c.fail(err)
+	return found
 }
 
 // lengthsOf decodes Parquet's levels into list lengths.

@@ -2,69 +2,22 @@ package rundir
 
 import (
 	"bytes"
-	"crypto/sha256"
-	"encoding/hex"
 	"encoding/json"
 	"errors"
 	"fmt"
 	"io"
 	"math"
-	"unicode/utf8"
 
 	"holdfast/selection"
 )
 
 // Format is the version of the run directory's format that this package
 // writes and reads.
-const Format = 2
+const Format = 3
 
 // maxRunJSON is the longest run.json that is read: 100,000 candidates with
 // long names need about 20 MB.
 const maxRunJSON = 1 << 28
-
-// Identity is what decides the bits of a run's draws. Two runs of equal
-// identity make equal draws, however many.
-type Identity struct {
-	Fingerprint string   `json:"fingerprint"` // of the table's values that enter the fits
-	Outcome     string   `json:"outcome"`     // column
-	Kind        string   `json:"kind"`        // number, yes-no, ...
-	Candidates  []string `json:"candidates"`  // those fitted, in table order
-	Always      []string `json:"always"`      // in every model, in table order
-	CaseWeight  string   `json:"case_weight,omitempty"`
-	Missing     string   `json:"missing"` // what is done with missing cells
-	Penalty     Penalty  `json:"penalty"`
-	Draws       Draws    `json:"draws"`
-}
-
-// Penalty is the study's penalty, StopAfter as resolved when the directory
-// was made.
-type Penalty struct {
-	Mix       float64            `json:"mix"`
-	Scale     string             `json:"scale"`
-	Relative  map[string]float64 `json:"relative,omitempty"`
-	Ratio     float64            `json:"ratio"`
-	Floor     float64            `json:"floor"`
-	StopAfter int                `json:"stop_after"`
-}
-
-// Draws says how rows are drawn, without how often.
-type Draws struct {
-	Design string `json:"design"` // halves or bootstrap
-	Seed   uint64 `json:"seed"`
-}
-
-// Digest returns the SHA-256 of the identity in hexadecimal.
-func (id Identity) Digest() string {
-	if len(id.Always) == 0 {
-		id.Always = nil // a list without names is no list
-	}
-	text, err := json.Marshal(id)
-	if err != nil {
-		return "" // only a value that check refuses gets here
-	}
-	sum := sha256.Sum256(text)
-	return hex.EncodeToString(sum[:])
-}
 
 // Meta is what run.json holds beside the identity.
 type Meta struct {
@@ -77,9 +30,15 @@ type Meta struct {
 	Parts        int        `json:"parts"`        // parts that the draws are shared out to; 0 for Create: 1
 	LambdaMax    float64    `json:"lambda_max"`
 	LastStep     int        `json:"last_step"` // last lattice step of a complete path
-	Centre       []float64  `json:"centre"`    // means: candidates, then always-in columns
-	Deviation    []float64  `json:"deviation"` // standard deviations over the rows used, likewise
+	Centre       []float64  `json:"centre"`    // means of the design columns: Identity.CandidateColumns, then AlwaysColumns
+	Deviation    []float64  `json:"deviation"` // their standard deviations over the rows used
 	Excluded     []Excluded `json:"excluded"`
+
+	// EffectiveSize is what the case weights leave of the rows of a half: the
+	// median of (sum w)^2 / sum w^2 over the draws; 0 without case weights.
+	EffectiveSize float64 `json:"effective_size,omitempty"`
+	// Lone names the strata of one unit, whose rows are in no draw.
+	Lone []string `json:"lone,omitempty"`
 }
 
 // Excluded is a column that was asked for and is no candidate.
@@ -100,6 +59,16 @@ type Run struct {
 	Extensions []Extension         `json:"extensions"` // of the number of draws, oldest first
 }
 
+// Predictors is what a judgement of the run's draws is told about its columns.
+func (r *Run) Predictors() selection.Predictors {
+	id := &r.Identity
+	n := len(id.CandidateColumns())
+	return selection.Predictors{
+		Names: id.Candidates, Terms: id.CandidateTerms(), Classes: id.Classes, Deviations: r.Meta.Deviation[:n:n],
+		Always: id.AlwaysColumns(), AlwaysDeviations: r.Meta.Deviation[n:],
+	}
+}
+
 // encode writes run.json.
 func (r *Run) encode(w io.Writer) error {
 	e := json.NewEncoder(w)
@@ -116,7 +85,7 @@ func decodeRun(text []byte) (*Run, error) {
 		return nil, fmt.Errorf("not readable as JSON: %w", err)
 	}
 	if head.Format != Format {
-		return nil, fmt.Errorf("format %d: this program reads format %d", head.Format, Format)
+		return nil, otherFormat(head.Format)
 	}
 	d := json.NewDecoder(bytes.NewReader(text))
 	var r Run
@@ -129,6 +98,16 @@ func decodeRun(text []byte) (*Run, error) {
 	return &r, nil
 }
 
+// otherFormat says what to do with a run of another version of the program.
+func otherFormat(found int) error {
+	age := "an earlier"
+	if found > Format {
+		age = "a later"
+	}
+	return fmt.Errorf("format %d: %s version of holdfast made this run, and this one reads format %d: use that version, or give another --out to make the draws again",
+		found, age, Format)
+}
+
 // check refuses content that no run can have.
 func (r *Run) check() error {
 	if err := r.Identity.check(); err != nil {
@@ -137,7 +116,7 @@ func (r *Run) check() error {
 	if got := r.Identity.Digest(); got != r.Digest {
 		return fmt.Errorf("identity %.12s does not fit its content (%.12s): the file was changed", r.Digest, got)
 	}
-	if err := r.Meta.check(len(r.Identity.Candidates) + len(r.Identity.Always)); err != nil {
+	if err := r.Meta.check(len(r.Identity.CandidateColumns()) + len(r.Identity.AlwaysColumns())); err != nil {
 		return err
 	}
 	if r.Decision != nil {
@@ -158,49 +137,6 @@ func (r *Run) check() error {
 	return nil
 }
 
-func (id *Identity) check() error {
-	if len(id.Candidates) == 0 {
-		return errors.New("no candidates")
-	}
-	if err := distinct(id.Candidates, id.Always); err != nil {
-		return err
-	}
-	for _, text := range []string{id.Fingerprint, id.Outcome, id.Kind, id.Draws.Design} {
-		if text == "" || !utf8.ValidString(text) {
-			return errors.New("fingerprint, outcome, kind and design must be given as UTF-8 text")
-		}
-	}
-	p := id.Penalty
-	if !(p.Mix > 0 && p.Mix <= 1) || !(p.Ratio > 0 && p.Ratio < 1) || !(p.Floor > 0 && p.Floor < 1) || p.StopAfter < 0 {
-		return fmt.Errorf("penalty: mix %v, ratio %v, floor %v, stop_after %d: outside their ranges",
-			p.Mix, p.Ratio, p.Floor, p.StopAfter)
-	}
-	for name, v := range p.Relative {
-		if !(v > 0) || math.IsInf(v, 0) {
-			return fmt.Errorf("penalty: relative %q: %v is not a positive number", name, v)
-		}
-	}
-	return nil
-}
-
-// distinct refuses names that are not UTF-8 (JSON would change them) or that
-// stand twice (a name could not be traced to its column).
-func distinct(lists ...[]string) error {
-	seen := map[string]bool{}
-	for _, names := range lists {
-		for _, name := range names {
-			if !utf8.ValidString(name) {
-				return fmt.Errorf("column name %q: not valid UTF-8", name)
-			}
-			if seen[name] {
-				return fmt.Errorf("column name %q: given twice", name)
-			}
-			seen[name] = true
-		}
-	}
-	return nil
-}
-
 func (m *Meta) check(columns int) error {
 	if len(m.Centre) != columns || len(m.Deviation) != columns {
 		return fmt.Errorf("%d means and %d standard deviations for %d columns", len(m.Centre), len(m.Deviation), columns)
@@ -216,6 +152,9 @@ func (m *Meta) check(columns int) error {
 	}
 	if !(m.LambdaMax >= 0) || math.IsInf(m.LambdaMax, 0) {
 		return fmt.Errorf("lambda_max: %v is not a finite number", m.LambdaMax)
+	}
+	if !(m.EffectiveSize >= 0) || math.IsInf(m.EffectiveSize, 0) {
+		return fmt.Errorf("effective_size: %v is not a finite number", m.EffectiveSize)
 	}
 	if m.LastStep < -maxSteps || m.LastStep > maxSteps {
 		return fmt.Errorf("last_step: %d is no lattice step", m.LastStep)

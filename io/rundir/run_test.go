@@ -64,39 +64,6 @@ func hatcheryRun(t testing.TB, number int) *Dir {
 var odd = []float64{math.Copysign(0, -1), math.Inf(1), math.Inf(-1), math.NaN(), math.Float64frombits(0x7ff8000000000123),
 	math.SmallestNonzeroFloat64, math.MaxFloat64, 0.1 + 0.2}
 
-// randomPath makes a path that obeys the rules of solver.Path, with odd values.
-func randomPath(r *rand.Rand, candidates, always int) solver.Path {
-	p := solver.Path{First: r.IntN(6) - 3, Stop: solver.Stop(r.IntN(3)), Borderline: r.IntN(2), Twins: r.IntN(3)}
-	p.Last = p.First + r.IntN(12) - 1
-	p.Violation, p.Gap = r.Float64()*1e-11, r.Float64()*1e-11
-	if p.Stop == solver.StopUncertified {
-		p.Why = "violation 3e-7 at \"ph\""
-	}
-	entered := map[int32]bool{}
-	for step := p.First; step <= p.Last; step++ {
-		p.Intercepts = append(p.Intercepts, value(r))
-		for range always {
-			p.Always = append(p.Always, value(r))
-		}
-		for j := int32(0); j < int32(candidates); j++ {
-			if r.IntN(3) > 0 {
-				continue
-			}
-			if !entered[j] {
-				entered[j] = true
-				p.Entries = append(p.Entries, solver.Entry{Candidate: j, Step: int32(step), Negative: r.IntN(2) == 0})
-			}
-			p.Coefs = append(p.Coefs, solver.Coef{Step: int32(step), Candidate: j, Value: value(r)})
-		}
-	}
-	for j := int32(0); j < int32(candidates); j++ {
-		if r.IntN(4) == 0 {
-			p.Still = append(p.Still, j)
-		}
-	}
-	return p
-}
-
 func value(r *rand.Rand) float64 {
 	if r.IntN(4) == 0 {
 		return odd[r.IntN(len(odd))]
@@ -113,13 +80,7 @@ func upTo(first, last int) []int {
 	return list
 }
 
-func randomPaths(r *rand.Rand, n int) []solver.Path {
-	paths := make([]solver.Path, n)
-	for i := range paths {
-		paths[i] = randomPath(r, len(hatcheryNames), 2)
-	}
-	return paths
-}
+func randomPaths(r *rand.Rand, n int) []solver.Path { return forms["number"].randomPaths(r, n) }
 
 // sameBits compares paths field by field, floats by their bits. It shares
 // nothing with the digest, which is under test too.
@@ -141,13 +102,14 @@ func sameBits(a, b solver.Path) bool {
 	place := func(list []solver.Coef) []int32 {
 		var out []int32
 		for _, c := range list {
-			out = append(out, c.Step, c.Candidate)
+			out = append(out, c.Step, c.Candidate, c.Term, c.Class)
 		}
 		return out
 	}
 	return a.First == b.First && a.Last == b.Last && a.Stop == b.Stop && a.Why == b.Why &&
-		a.Borderline == b.Borderline && a.Twins == b.Twins &&
-		slices.Equal(bits([]float64{a.Violation, a.Gap}), bits([]float64{b.Violation, b.Gap})) &&
+		a.Borderline == b.Borderline && a.Twins == b.Twins && a.Redraws == b.Redraws &&
+		slices.Equal(bits([]float64{a.Violation, a.Gap, a.NullDeviance}), bits([]float64{b.Violation, b.Gap, b.NullDeviance})) &&
+		slices.Equal(bits(a.Deviance), bits(b.Deviance)) &&
 		slices.Equal(a.Entries, b.Entries) && slices.Equal(a.Still, b.Still) &&
 		slices.Equal(place(a.Coefs), place(b.Coefs)) && slices.Equal(bits(value(a.Coefs)), bits(value(b.Coefs))) &&
 		slices.Equal(bits(a.Intercepts), bits(b.Intercepts)) && slices.Equal(bits(a.Always), bits(b.Always))
@@ -189,6 +151,24 @@ func TestIdentityDigest(t *testing.T) {
 		"ratio":       func(i *Identity) { i.Penalty.Ratio = math.Nextafter(0.95, 1) },
 		"floor":       func(i *Identity) { i.Penalty.Floor = 0.01 },
 		"stop_after":  func(i *Identity) { i.Penalty.StopAfter = 13 },
+		"jitter":      func(i *Identity) { i.Penalty.Jitter = 0.5 },
+		"group":       func(i *Identity) { i.Penalty.GroupWeight = "sqrt" },
+		"luck":        func(i *Identity) { i.Penalty.Luck = 0.1 },
+		"success":     func(i *Identity) { i.Success = "settled" },
+		"classes":     func(i *Identity) { i.Classes = []string{"a", "b"} },
+		"class order": func(i *Identity) { i.Classes = []string{"b", "a"} },
+		"time":        func(i *Identity) { i.Time = "days" },
+		"event":       func(i *Identity) { i.Event = "days" },
+		"entry":       func(i *Identity) { i.Entry = "days" },
+		"strata":      func(i *Identity) { i.Strata = []string{"days"} },
+		"ties":        func(i *Identity) { i.Ties = "days" },
+		"offset":      func(i *Identity) { i.Offset = "days" },
+		"exposure":    func(i *Identity) { i.Exposure = "days" },
+		"terms":       func(i *Identity) { i.Terms = map[string][]string{"ph": {"ph=a"}} },
+		"two terms":   func(i *Identity) { i.Terms = map[string][]string{"ph": {"ph=a", "ph=b"}} },
+		"term order":  func(i *Identity) { i.Terms = map[string][]string{"ph": {"ph=b", "ph=a"}} },
+		"reference":   func(i *Identity) { i.Reference = map[string]string{"ph": "ph=a"} },
+		"within":      func(i *Identity) { i.Draws.Within = []string{"outcome"} },
 		"design":      func(i *Identity) { i.Draws.Design = "bootstrap" },
 		"seed":        func(i *Identity) { i.Draws.Seed = 2 },
 	}
@@ -201,5 +181,10 @@ func TestIdentityDigest(t *testing.T) {
 			t.Errorf("changing %s gives the digest of changing %s", name, other)
 		}
 		seen[digest] = name
+	}
+	plain := hatcheryIdentity()
+	plain.Penalty.Jitter = 1
+	if plain.Digest() != base {
+		t.Error("a jitter of 1 is not none")
 	}
 }

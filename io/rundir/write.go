@@ -38,7 +38,7 @@ func (d *Dir) Put(draws []int, paths []solver.Path) error {
 	for i := range paths {
 		block[i] = numbered{draws[i], paths[i]}
 	}
-	if err := run.checkBlock(block); err != nil {
+	if err := run.Identity.shape().checkBlock(block); err != nil {
 		return fmt.Errorf("rundir: put: %w", err)
 	}
 	if last := block[len(block)-1].number; last >= run.Meta.Number {
@@ -51,7 +51,7 @@ func (d *Dir) Put(draws []int, paths []solver.Path) error {
 // that it is there already.
 func (d *Dir) putBlock(run *Run, block []numbered) error {
 	sums := sumsOf(block)
-	write := func(w io.Writer) error { return encodeBlock(w, run.Digest, block, sums) }
+	write := func(w io.Writer) error { return run.encodeBlock(w, block, sums) }
 	plain := d.join(drawsFolder, blockName(block[0].number))
 	err := writeNew(d.fs, plain, write)
 	if !errors.Is(err, fs.ErrExist) {
@@ -64,12 +64,12 @@ func (d *Dir) putBlock(run *Run, block []numbered) error {
 }
 
 // checkBlock checks each draw of a block and their order.
-func (r *Run) checkBlock(block []numbered) error {
+func (s *shape) checkBlock(block []numbered) error {
 	if len(block) == 0 {
 		return errors.New("a block without draws")
 	}
 	for i := range block {
-		if err := r.checkPath(&block[i]); err != nil {
+		if err := s.checkPath(&block[i]); err != nil {
 			return err
 		}
 		if i > 0 && block[i].number <= block[i-1].number {
@@ -83,8 +83,8 @@ func (r *Run) checkBlock(block []numbered) error {
 var noDigest = strings.Repeat("0", 2*sha256.Size)
 
 // encodeBlock writes a block file.
-func encodeBlock(w io.Writer, identity string, block []numbered, sums []sum) error {
-	text, err := renderBlock(identity, block, sums)
+func (r *Run) encodeBlock(w io.Writer, block []numbered, sums []sum) error {
+	text, err := r.renderBlock(block, sums)
 	if err != nil {
 		return err
 	}
@@ -103,18 +103,19 @@ func encodeBlock(w io.Writer, identity string, block []numbered, sums []sum) err
 }
 
 // renderBlock makes a block file without its digest.
-func renderBlock(identity string, block []numbered, sums []sum) (text []byte, err error) {
+func (r *Run) renderBlock(block []numbered, sums []sum) (text []byte, err error) {
 	defer recovered(&err)
+	s := r.Identity.shape()
 	var out bytes.Buffer
-	pw := file.NewParquetWriter(&out, blockSchema(), file.WithWriterProps(blockProperties()))
-	if err := writeColumns(pw.AppendRowGroup(), flatten(block)); err != nil {
+	pw := file.NewParquetWriter(&out, s.blockSchema(), file.WithWriterProps(blockProperties()))
+	if err := s.writeColumns(pw.AppendRowGroup(), s.flatten(block)); err != nil {
 		return nil, err
 	}
 	for _, kv := range [][2]string{
 		{keyFormat, fmt.Sprint(Format)},
-		{keyIdentity, identity},
+		{keyIdentity, r.Digest},
 		{keyFile, noDigest},
-		{keyDraws, blockDigest(identity, sums)},
+		{keyDraws, blockDigest(r.Digest, sums)},
 	} {
 		if err := pw.AppendKeyValueMetadata(kv[0], kv[1]); err != nil {
 			return nil, err
@@ -148,7 +149,7 @@ type columns struct {
 }
 
 // writeColumns writes and closes the row group.
-func writeColumns(group file.SerialRowGroupWriter, f *flat) error {
+func (s *shape) writeColumns(group file.SerialRowGroupWriter, f *flat) error {
 	c := &columns{group: group}
 	put(c, f.draw, nil)
 	put(c, f.first, nil)
@@ -159,14 +160,23 @@ func writeColumns(group file.SerialRowGroupWriter, f *flat) error {
 	put(c, f.gap, nil)
 	put(c, f.borderline, nil)
 	put(c, f.twins, nil)
+	put(c, f.redraws, nil)
 	put(c, f.entryStep, f.entries)
 	put(c, f.entryPredictor, f.entries)
 	put(c, f.entryNegative, f.entries)
 	put(c, f.coefStep, f.coefs)
 	put(c, f.coefPredictor, f.coefs)
+	if s.terms != nil {
+		put(c, f.coefTerm, f.coefs)
+	}
+	if s.classes > 1 {
+		put(c, f.coefClass, f.coefs)
+	}
 	put(c, f.coefValue, f.coefs)
 	put(c, f.intercept, f.intercepts)
 	put(c, f.always, f.alwayses)
+	put(c, f.nullDeviance, nil)
+	put(c, f.deviance, f.deviances)
 	put(c, f.still, f.stills)
 	return errors.Join(c.err, group.Close())
 }
