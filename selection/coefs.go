@@ -36,30 +36,42 @@ func (g *gathered) list(predictor, term, class int) int {
 // region's end. A coefficient that had left again is not among them: it counts
 // as 0.
 func (t *tally) gather(p Predictors) (*gathered, error) {
+	if err := t.checkCoefs(); err != nil {
+		return nil, err
+	}
 	g := &gathered{first: p.firstTerms(), classes: p.classes()}
 	g.starts = make([]int, g.first[len(p.Names)]*g.classes+1)
-	if err := t.eachCoef(func(c Coef) { g.starts[g.list(int(c.Predictor), int(c.Term), int(c.Class))+1]++ }); err != nil {
-		return nil, err
+	for i, d := range t.draws {
+		for _, c := range coefsAt(d, t.regions[i].end) {
+			g.starts[g.list(int(c.Predictor), int(c.Term), int(c.Class))+1]++
+		}
 	}
 	for i := 1; i < len(g.starts); i++ {
 		g.starts[i] += g.starts[i-1]
 	}
+	g.fill(t)
+	return g, nil
+}
+
+// fill puts the values into their lists.
+func (g *gathered) fill(t *tally) {
 	g.values = make([]float64, g.starts[len(g.starts)-1])
 	next := slices.Clone(g.starts)
-	err := t.eachCoef(func(c Coef) {
-		i := g.list(int(c.Predictor), int(c.Term), int(c.Class))
-		g.values[next[i]] = c.Value
-		next[i]++
-	})
+	for i, d := range t.draws {
+		for _, c := range coefsAt(d, t.regions[i].end) {
+			list := g.list(int(c.Predictor), int(c.Term), int(c.Class))
+			g.values[next[list]] = c.Value
+			next[list]++
+		}
+	}
 	for i := range len(g.starts) - 1 {
 		slices.Sort(g.values[g.starts[i]:g.starts[i+1]])
 	}
-	return g, err
 }
 
-// eachCoef passes on the coefficients at every draw's region's end, draw by
-// draw. One whose predictor has not entered by it is an error.
-func (t *tally) eachCoef(do func(Coef)) error {
+// checkCoefs finds a coefficient at a region's end whose predictor has not
+// entered by it.
+func (t *tally) checkCoefs() error {
 	last := make([]int32, len(t.counts)) // 1 + the last draw whose region it entered
 	for i, d := range t.draws {
 		stamp := int32(i) + 1
@@ -70,7 +82,6 @@ func (t *tally) eachCoef(do func(Coef)) error {
 			if last[c.Predictor] != stamp {
 				return &DrawError{d.Number, fmt.Sprintf("predictor %d has a coefficient at step %d but has not entered by it", c.Predictor, c.Step)}
 			}
-			do(c)
 		}
 	}
 	return nil

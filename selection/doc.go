@@ -9,6 +9,11 @@
 //     penalised path fitted on it. Draws 2k and 2k+1 are complementary pair k:
 //     two disjoint halves of equal size.
 //   - entry: the first lattice step at which a predictor is chosen in a draw.
+//   - term: one design column of a predictor: the column itself, a member of a
+//     group, the indicator of a category's level. A group or a category is
+//     chosen as a whole and counts one.
+//   - class: a level of an outcome of classes, for which every term has a
+//     coefficient of its own.
 //   - region: the part of a draw's path that counts (Cap or Common).
 //   - selected, q: the most predictors that a draw may contribute.
 //   - candidates, p: the predictors that could have been chosen.
@@ -24,7 +29,8 @@
 // SolveBudget ties threshold, selected and false selections before any fit.
 // Decide turns what a study asks into a Decision, Change does the same for a
 // second look. Judge applies a Decision to the draws: region, counts, pairs,
-// intervals, quantiles, bounds, warnings. Every decision is made on integer
+// intervals, quantiles, bounds, warnings; what has several coefficients has none
+// in its row, and Judgement.Terms lists them. Every decision is made on integer
 // counts; a frequency is only ever printed.
 //
 // Nothing here keeps or changes what it is given, except that a Judgement

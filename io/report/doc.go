@@ -6,7 +6,12 @@
 //
 // The columns of the stability table are defined once, in columns.go, and are
 // the same in CSV, Parquet and JSON; the order is a promise to programs, and
-// new columns come after "stable". What is undefined is empty in CSV and null
+// new columns come after "stable". So are those of the terms.
+//
+// A coefficient stands in the stability table where the predictor has one, and
+// among the terms where it has several (groups, categories, outcomes of
+// classes), never in both. Terms stand in the order of the stability table,
+// chosen or not. What is undefined is empty in CSV and null
 // elsewhere. Numbers for programs have full precision: the shortest text that
 // reads back to the same bits. Numbers in the text are rounded; a bound is
 // rounded up.
