@@ -88,7 +88,7 @@ func TestBlocks(t *testing.T) {
 func TestNormal(t *testing.T) {
 	const n = 200_000
 	var m1, m2, m4 float64
-	for _, x := range newSource(7, "test").normals(n) {
+	for _, x := range (origin{seed: 7}).source("test").normals(n) {
 		m1 += x
 		m2 += x * x
 		m4 += x * x * x * x

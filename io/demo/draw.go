@@ -9,11 +9,18 @@ import (
 // source gives the random numbers of one column or one shared factor.
 type source struct{ rng *rand.ChaCha8 }
 
-// newSource keys a generator by seed and name, so that adding a column to the
-// recipe leaves all others as they were.
-func newSource(seed uint64, name string) source {
+// origin is what the numbers of one table come from.
+type origin struct {
+	seed  uint64
+	table string // put before every name, so that tables share no numbers
+}
+
+// source keys a generator by seed, table and name, so that adding a column to
+// the recipe leaves all others as they were.
+func (o origin) source(name string) source {
 	var key [32]byte
-	binary.LittleEndian.PutUint64(key[:], seed)
+	binary.LittleEndian.PutUint64(key[:], o.seed)
+	name = o.table + name
 	for i := range len(name) {
 		key[8+i%24] = key[8+i%24]*31 + name[i]
 	}
@@ -26,10 +33,16 @@ func newSource(seed uint64, name string) source {
 func (s source) normal() float64 {
 	sum := -6.0
 	for range 12 {
-		sum += float64(float64(s.rng.Uint64()>>11) * 0x1p-53)
+		sum += s.uniform()
 	}
 	return sum
 }
+
+// uniform returns a number in [0,1).
+func (s source) uniform() float64 { return float64(s.rng.Uint64()>>11) * 0x1p-53 }
+
+// below returns a whole number in 0..n-1, each as likely but for 2^-50.
+func (s source) below(n int64) int64 { return int64(float64(s.uniform() * float64(n))) }
 
 // normals returns n of them.
 func (s source) normals(n int) []float64 {

@@ -14,15 +14,15 @@ const Rows = 240
 // percent.
 const Outcome = "survival_d21"
 
-// effect is a column that matters, with the change of the outcome, in percent
-// points, for one standard deviation of the column.
+// effect is a column that matters, with the change that one standard deviation
+// of it makes.
 type effect struct {
 	column string
-	points float64
+	size   float64
 }
 
-// effects lists the twelve in table order.
-var effects = []effect{
+// ofSurvival lists the twelve in table order; sizes are percent points.
+var ofSurvival = []effect{
 	{"temperature_d05", 3.4},
 	{"salinity_d07", -3.6},
 	{"ph_d03", 3.2},
@@ -44,11 +44,7 @@ const (
 
 // Matter returns the names of the twelve columns that matter, in table order.
 func Matter() []string {
-	names := make([]string, len(effects))
-	for i, e := range effects {
-		names[i] = e.column
-	}
-	return names
+	return columnsOf(ofSurvival)
 }
 
 // series is a quantity measured on every sampling day.
@@ -114,8 +110,9 @@ const (
 	weather       = 0.3 // correlation of the first day of a series with what the water of a batch shares
 )
 
-// Table is the invented table.
+// Table is an invented table.
 type Table struct {
+	rows    int
 	columns []column
 }
 
@@ -127,19 +124,18 @@ type column struct {
 	text    []string
 }
 
-// Make builds the table from a seed.
+// Make builds the table of the larvae from a seed.
 func Make(seed uint64) *Table {
-	t := &Table{}
-	t.addLabels(seed)
-	t.addSeries(seed, water)
-	t.addSeries(seed, feed)
-	for _, s := range spawning {
-		t.add(column{name: s.name, number: scaled(newSource(seed, s.name).normals(Rows), s.centre, s.spread, 0, s.decimals)})
-	}
-	t.addMicrobiome(seed)
+	t := &Table{rows: Rows}
+	from := origin{seed: seed}
+	t.addLabels(from)
+	t.addSeries(from, water, days)
+	t.addSeries(from, feed, days)
+	t.addOnce(from, spawning)
+	t.addMicrobiome(from)
 	t.add(column{name: "tank_volume", number: scaled(make([]float64, Rows), 200, 0, 0, 0)})
 	t.add(column{name: "conductivity_d07", number: t.conductivity()})
-	t.add(column{name: Outcome, number: t.survival(seed)})
+	t.add(column{name: Outcome, number: t.survival(from)})
 	return t
 }
 
@@ -163,13 +159,35 @@ func (t *Table) Number(name string) []float64 {
 	return nil
 }
 
+// Text returns a copy of a column of text, or nil if there is none of that
+// name.
+func (t *Table) Text(name string) []string {
+	for _, c := range t.columns {
+		if c.name == name {
+			return slices.Clone(c.text)
+		}
+	}
+	return nil
+}
+
+// Integer returns a copy of a column of whole numbers, or nil if there is none
+// of that name.
+func (t *Table) Integer(name string) []int64 {
+	for _, c := range t.columns {
+		if c.name == name {
+			return slices.Clone(c.integer)
+		}
+	}
+	return nil
+}
+
 func (t *Table) add(c column) { t.columns = append(t.columns, c) }
 
 // addLabels adds the identifier, the row number and the date as text: what
 // every real table has and no model should see.
-func (t *Table) addLabels(seed uint64) {
+func (t *Table) addLabels(from origin) {
 	id, number, date := make([]string, Rows), make([]int64, Rows), make([]string, Rows)
-	src := newSource(seed, "spawned_on")
+	src := from.source("spawned_on")
 	day := time.Date(2023, time.March, 6, 0, 0, 0, 0, time.UTC)
 	for i := range Rows {
 		id[i] = fmt.Sprintf("batch-%04d", 1001+i)
@@ -184,14 +202,14 @@ func (t *Table) addLabels(seed uint64) {
 
 // addSeries adds quantities measured over days: each day remembers the day
 // before, and the first days of all share a little of the batch's weather.
-func (t *Table) addSeries(seed uint64, list []series) {
-	shared := newSource(seed, "weather").normals(Rows)
+func (t *Table) addSeries(from origin, list []series, days []int) {
+	shared := from.source("weather").normals(t.rows)
 	for _, s := range list {
-		src := newSource(seed, s.name)
-		z := mix(shared, src.normals(Rows), weather)
+		src := from.source(s.name)
+		z := mix(shared, src.normals(t.rows), weather)
 		for i, d := range days {
 			if i > 0 {
-				z = mix(z, src.normals(Rows), s.memory)
+				z = mix(z, src.normals(t.rows), s.memory)
 			}
 			name := fmt.Sprintf("%s_d%02d", s.name, d)
 			t.add(column{name: name, number: scaled(z, s.centre, s.spread, 0, s.decimals)})
@@ -199,16 +217,23 @@ func (t *Table) addSeries(seed uint64, list []series) {
 	}
 }
 
+// addOnce adds quantities that are measured once.
+func (t *Table) addOnce(from origin, list []series) {
+	for _, s := range list {
+		t.add(column{name: s.name, number: scaled(from.source(s.name).normals(t.rows), s.centre, s.spread, 0, s.decimals)})
+	}
+}
+
 // addMicrobiome adds the panel: log-ratio abundances, members of a community
 // correlated among themselves.
-func (t *Table) addMicrobiome(seed uint64) {
+func (t *Table) addMicrobiome(from origin) {
 	var factor []float64
 	for k := range taxa {
 		if k%communitySize == 0 {
-			factor = newSource(seed, fmt.Sprintf("community_%03d", k/communitySize)).normals(Rows)
+			factor = from.source(fmt.Sprintf("community_%03d", k/communitySize)).normals(Rows)
 		}
 		name := fmt.Sprintf("otu_%04d", k+1)
-		z := mix(factor, newSource(seed, name).normals(Rows), community)
+		z := mix(factor, from.source(name).normals(Rows), community)
 		t.add(column{name: name, number: scaled(z, 0, 1.4, math.Inf(-1), 3)})
 	}
 }
@@ -224,24 +249,29 @@ func (t *Table) conductivity() []float64 {
 }
 
 // survival is what the twelve make of it, plus noise, in percent.
-func (t *Table) survival(seed uint64) []float64 {
-	z := newSource(seed, Outcome).normals(Rows)
+func (t *Table) survival(from origin) []float64 {
+	z := from.source(Outcome).normals(Rows)
 	v := make([]float64, Rows)
 	for i := range v {
 		v[i] = float64(noisePoints * z[i])
 	}
-	for _, e := range effects {
-		x := t.Number(e.column)
-		mean, spread := moments(x)
-		for i := range v {
-			v[i] += float64(e.points * float64((x[i]-mean)/spread))
-		}
-	}
+	t.addEffects(v, ofSurvival)
 	y := scaled(v, meanSurvival, 1, 0, 1)
 	for i := range y {
 		y[i] = min(y[i], 100)
 	}
 	return y
+}
+
+// addEffects adds effects of columns in units of their standard deviations.
+func (t *Table) addEffects(v []float64, list []effect) {
+	for _, e := range list {
+		x := t.Number(e.column)
+		mean, spread := moments(x)
+		for i := range v {
+			v[i] += float64(e.size * float64((x[i]-mean)/spread))
+		}
+	}
 }
 
 // moments returns the mean and the standard deviation (divisor n) of x.

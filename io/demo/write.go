@@ -68,7 +68,7 @@ func (t *Table) record() arrow.Record {
 		fields[i] = arrow.Field{Name: c.name, Type: arrays[i].DataType()}
 		defer arrays[i].Release()
 	}
-	return array.NewRecord(arrow.NewSchema(fields, nil), arrays, Rows)
+	return array.NewRecord(arrow.NewSchema(fields, nil), arrays, int64(t.rows))
 }
 
 // array converts a column.
