@@ -39,7 +39,7 @@ func (s source) normal() float64 {
 }
 
 // uniform returns a number in [0,1).
-func (s source) uniform() float64 { return float64(s.rng.Uint64()>>11) * 0x1p-53 }
+func (s source) uniform() float64 { return float64(float64(s.rng.Uint64()>>11) * 0x1p-53) }
 
 // below returns a whole number in 0..n-1, each as likely but for 2^-50.
 func (s source) below(n int64) int64 { return int64(float64(s.uniform() * float64(n))) }
