@@ -2,6 +2,7 @@ package solver
 
 import (
 	"context"
+	"math"
 	"sync"
 )
 
@@ -34,7 +35,7 @@ func (f *fitting) window() int {
 	switch {
 	case f.m.whim != nil:
 		return f.m.whim.window()
-	case !f.m.long():
+	case !f.m.long() || !f.m.exact:
 		return 1
 	case f.ahead == 0:
 		f.ahead = firstWindow
@@ -152,11 +153,35 @@ func (f *fitting) note(p *Path, r *record, shared bool) {
 		}
 	}
 	p.Last = f.cur
-	intercepts, always := f.core.rest(r)
+	intercepts, always := f.rest(r)
 	p.Intercepts = append(p.Intercepts, intercepts...)
 	p.Always = append(p.Always, always...)
 	p.Violation = max(p.Violation, r.cert.violation)
 	p.Gap = max(p.Gap, r.cert.gap)
+	f.scoreLeft(p, r)
+}
+
+// rest returns the intercepts and the always-in coefficients on the original
+// scale.
+func (f *fitting) rest(r *record) (intercepts, always []float64) {
+	intercepts, always = f.core.level(r), f.core.always(r)
+	if len(intercepts) == 0 {
+		return nil, always
+	}
+	lanes := f.lanes()
+	subtract := func(j int32, mean, b float64, lane int) {
+		intercepts[lane] = math.FMA(-b, f.m.p.Centre[j]+mean, intercepts[lane])
+	}
+	for i, b := range always {
+		if b != 0 {
+			unit := int32(f.m.candidates() + i/lanes)
+			subtract(f.m.design(unit), f.work.mean[f.work.place[unit]], b, i%lanes)
+		}
+	}
+	for _, c := range f.core.values(r) {
+		subtract(f.m.columns(c.Candidate)[c.Term], f.meanOf(c.Candidate, int(c.Term)), c.Value, int(c.Class))
+	}
+	return intercepts, always
 }
 
 // signed reports whether a candidate's coefficient is one number.
@@ -177,7 +202,7 @@ func (s *seeds) enters(c int32, lambda float64) bool {
 // seedFrom makes the seeds, once, where windows are long. A failure leaves
 // the seeds empty: they only propose.
 func (m *Model) seedFrom(ctx context.Context) {
-	if !m.long() {
+	if !m.long() || !m.exact {
 		return
 	}
 	m.seeds.once.Do(func() {

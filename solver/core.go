@@ -33,8 +33,13 @@ type core interface {
 	// values lists the coefficients of a record's candidates that are not zero,
 	// on the original scale, by unit, term and class.
 	values(r *record) []Coef
-	// rest returns the intercepts and the always-in coefficients likewise.
-	rest(r *record) (intercepts, always []float64)
+	// always returns the always-in coefficients likewise, per column one for each
+	// class; columns that were redundant in the draw have 0.
+	always(r *record) []float64
+	// level returns the intercepts at the means of the draw's columns, one for each
+	// class; none for Cox. nullLevel is that of the fit of the intercept alone.
+	level(r *record) []float64
+	nullLevel() []float64
 	// loss returns the mean loss of a record.
 	loss(r *record) float64
 }

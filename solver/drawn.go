@@ -10,6 +10,7 @@ import (
 // drawn is a Sample as the fits see it: the rows of positive weight, compact.
 type drawn struct {
 	rows   []int32   // ascending
+	count  []float64 // how often each was drawn; nil: once each
 	weight []float64 // per drawn row; nil: all 1
 	root   []float64 // square roots of weight; nil: all 1
 	total  float64   // N, the sum of the weights
@@ -20,7 +21,7 @@ type drawn struct {
 // draw fills d from a sample of a table of n rows, but for the outcome.
 func (d *drawn) draw(s *Sample, n int) {
 	d.rows = d.rows[:0]
-	d.weight, d.root = nil, nil
+	d.weight, d.root, d.count = nil, nil, nil
 	for w, word := range s.Rows {
 		for ; word != 0; word &= word - 1 {
 			i := w<<6 + bits.TrailingZeros64(word)
@@ -34,6 +35,12 @@ func (d *drawn) draw(s *Sample, n int) {
 
 func (d *drawn) setWeights(s *Sample) {
 	d.total = float64(len(d.rows))
+	if s.Count != nil {
+		d.count = make([]float64, len(d.rows))
+		for k, r := range d.rows {
+			d.count[k] = float64(s.Count[r])
+		}
+	}
 	if s.Count == nil && s.Case == nil {
 		return
 	}
@@ -44,6 +51,14 @@ func (d *drawn) setWeights(s *Sample) {
 		d.root[k] = math.Sqrt(d.weight[k])
 	}
 	d.total = kernel.Sum(d.weight)
+}
+
+// countOf is how often drawn row k was drawn.
+func (d *drawn) countOf(k int) float64 {
+	if d.count == nil {
+		return 1
+	}
+	return d.count[k]
 }
 
 // setOutcome centres the outcome on its two-pass mean: a mean from one pass

@@ -2,7 +2,6 @@ package solver
 
 import (
 	"fmt"
-	"math"
 	"slices"
 
 	"holdfast/solver/kernel"
@@ -149,27 +148,19 @@ func (e exact) values(r *record) []Coef {
 	return list
 }
 
-// rest returns the intercept and the always-in coefficients; always-in columns
-// that were redundant in the draw have 0.
-func (e exact) rest(r *record) (intercepts, always []float64) {
+func (e exact) always(r *record) []float64 {
 	f := e.f
-	always = make([]float64, len(f.m.p.Always))
-	intercept := f.d.mean
-	subtract := func(i int, b float64) {
-		j := f.m.design(f.work.units[i])
-		intercept = math.FMA(-b, f.m.p.Centre[j]+f.work.mean[i], intercept)
-	}
+	out := make([]float64, len(f.m.p.Always))
 	for k, i := range r.members {
 		if u := f.work.units[i]; f.penalty.always(u) {
-			b := (f.base[k] + r.beta[k]) / f.work.scale[i]
-			always[int(u)-f.m.candidates()] = b
-			subtract(i, b)
+			out[int(u)-f.m.candidates()] = (f.base[k] + r.beta[k]) / f.work.scale[i]
 		}
 	}
-	for _, c := range e.values(r) {
-		subtract(int(f.work.place[c.Candidate]), c.Value)
-	}
-	return []float64{intercept}, always
+	return out
 }
+
+func (e exact) level(*record) []float64 { return []float64{e.f.d.mean} }
+
+func (e exact) nullLevel() []float64 { return []float64{e.f.d.mean} }
 
 func (e exact) loss(r *record) float64 { return kernel.Dot(r.u, r.u) / (2 * e.f.d.total) }

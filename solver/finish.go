@@ -42,6 +42,10 @@ type record struct {
 	grad    []float64 // of the members at u
 	spread  float64   // root mean square of u
 	cert    certificate
+	limit   float64  // of the violation and the gap
+	blocks  []block  // of the curved core, in place of members and sign
+	gone    []choice // groups that the curved core found to be better off at 0
+	loss    float64  // likewise: mean loss
 }
 
 // certificate is how well a fit meets its optimality conditions.
@@ -54,7 +58,7 @@ type certificate struct {
 // finish is the only maker of record numbers: the fit on a given support at
 // lambda, following the record of the step before.
 func (f *fitting) finish(prev *record, support []choice, lambda float64) (*record, error) {
-	r := &record{lambda: lambda}
+	r := &record{lambda: lambda, limit: certified}
 	keep := r.order(f, prev, support)
 	if err := r.factorise(f, prev, keep); err != nil {
 		return nil, err
@@ -161,11 +165,11 @@ func (r *record) solve(f *fitting) {
 func (f *fitting) residual() []float64 {
 	n := len(f.spareU)
 	if n == 0 {
-		return make([]float64, len(f.d.rows))
+		return make([]float64, f.lanes()*len(f.d.rows))
 	}
 	u := f.spareU[n-1]
 	f.spareU = f.spareU[:n-1]
-	return resize(u, len(f.d.rows))
+	return resize(u, f.lanes()*len(f.d.rows))
 }
 
 func (f *fitting) dropResidual(u []float64) { f.spareU = append(f.spareU, u) }
@@ -279,8 +283,8 @@ func (r *record) check(f *fitting) error {
 	if err := r.resolvable(f); err != nil {
 		return err
 	}
-	if !(r.cert.violation <= certified) || !(r.cert.gap <= certified) {
-		return fmt.Errorf("violation %.1e, gap %.1e: above %.0e", r.cert.violation, r.cert.gap, certified)
+	if !(r.cert.violation <= r.limit) || !(r.cert.gap <= r.limit) {
+		return fmt.Errorf("violation %.1e, gap %.1e: above %.0e", r.cert.violation, r.cert.gap, r.limit)
 	}
 	return nil
 }
@@ -288,9 +292,9 @@ func (r *record) check(f *fitting) error {
 // resolvable checks that rounding of the members' gradients is small beside
 // their thresholds.
 func (r *record) resolvable(f *fitting) error {
-	for k, i := range r.members {
-		if r.lambda > 0 && r.sign[k] != 0 && f.blur(r, i) > unresolved {
-			return errors.New(f.m.name(f.work.units[i]) + ": not resolvable in these units")
+	for _, c := range r.support {
+		if r.lambda > 0 && f.blur(r, c.place) > unresolved {
+			return errors.New(f.m.name(f.work.units[c.place]) + ": not resolvable in these units")
 		}
 	}
 	return nil
@@ -328,4 +332,9 @@ func (r *record) declare(f *fitting) {
 	slices.Sort(r.units)
 }
 
-func (m *Model) name(unit int32) string { return m.p.Names[m.design(unit)] }
+func (m *Model) name(unit int32) string {
+	if unit == m.interceptUnit() {
+		return "the intercept"
+	}
+	return m.p.Names[m.design(unit)]
+}

@@ -3,6 +3,7 @@ package solver
 import (
 	"cmp"
 	"context"
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -125,7 +126,7 @@ func (f *fitting) fitOf(r *record) Fit {
 	for _, c := range f.core.values(r) {
 		fit.Coef[(f.m.firstTerm(c.Candidate)+int(c.Term))*classes+int(c.Class)] = c.Value
 	}
-	fit.Intercept, fit.Always = f.core.rest(r)
+	fit.Intercept, fit.Always = f.rest(r)
 	return fit
 }
 
@@ -156,15 +157,21 @@ func (m *Model) unpenalised(ctx context.Context, s *Sample) (Fit, error) {
 		return Fit{}, err
 	}
 	units := make([]int32, m.candidates())
-	support := make([]choice, len(units))
 	for c := range units {
 		units[c] = int32(c)
 	}
 	f.work.add(f, units)
-	for c := range support {
-		support[c] = choice{place: int(f.work.place[int32(c)]), sign: 1}
+	var support []choice
+	for c := range units {
+		for lane := range f.lanes() {
+			support = append(support, choice{place: int(f.work.place[int32(c)]), lane: lane, sign: 1})
+		}
 	}
 	r, err := f.core.finish(support, 0)
+	var separation *SeparationError
+	if errors.As(err, &separation) {
+		return Fit{}, fmt.Errorf("solver: lambda 0: %w", err)
+	}
 	if err != nil {
 		return Fit{}, fmt.Errorf("solver: lambda 0 needs full column rank: %w: leave it out, or take a lambda above 0", err)
 	}
@@ -182,7 +189,12 @@ func (f *fitting) fullRank() error {
 	if len(f.still) > 0 {
 		return fmt.Errorf("solver: lambda 0 needs full column rank: %s does not vary over the rows used", m.name(f.still[0]))
 	}
-	if need := m.candidates() + len(m.p.Always) + 1; need > len(f.d.rows) {
+	for c, g := range f.groups {
+		if g != nil && len(g.kept) < len(m.p.Groups[c]) {
+			return fmt.Errorf("solver: lambda 0 needs full column rank: the columns of the group of %s are linearly dependent", m.name(int32(c)))
+		}
+	}
+	if need := len(m.Terms()) + len(m.p.Always) + 1; need > len(f.d.rows) {
 		return fmt.Errorf("solver: lambda 0 needs full column rank: %d rows for %d coefficients", len(f.d.rows), need)
 	}
 	return nil

@@ -65,11 +65,22 @@ type fitting struct {
 	fit     []float64
 	accept  func(r *record, shared bool)
 	path    *Path
+	left    *outside // the rows that the path is scored on; nil: none
 }
 
 // start makes the fitting ready for a draw: its rows, its always-in columns,
 // and the screening numbers of all candidates at the model without any.
 func (f *fitting) start(s *Sample) error {
+	if err := f.begin(s); err != nil {
+		return err
+	}
+	f.left = f.leftOf(s)
+	f.measure()
+	return nil
+}
+
+// begin reads the draw and fits its always-in columns.
+func (f *fitting) begin(s *Sample) error {
 	f.d.draw(s, f.m.rows)
 	if len(f.d.rows) < 2 {
 		return fmt.Errorf("the draw has %d rows of positive weight: at least 2 are needed", len(f.d.rows))
@@ -80,11 +91,7 @@ func (f *fitting) start(s *Sample) error {
 	f.entered = make(map[int32]bool)
 	f.failed, f.asked = nil, false
 	f.penalty = f.m.penalty.of(s)
-	if err := f.core.begin(); err != nil {
-		return err
-	}
-	f.measure()
-	return nil
+	return f.core.begin()
 }
 
 // constant reports whether the always-in columns leave nothing to explain.

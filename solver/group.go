@@ -2,6 +2,7 @@ package solver
 
 import (
 	"math"
+	"strconv"
 
 	"gonum.org/v1/gonum/stat/distuv"
 
@@ -113,6 +114,16 @@ func (p *Problem) groupWeight(k int) float64 {
 		return math.Sqrt(float64(k))
 	}
 	a := min(max(p.Luck, leastLuck), mostLuck)
-	block := distuv.ChiSquared{K: float64(k)}.Quantile(1 - a)
-	return math.Sqrt(block) / distuv.UnitNormal.Quantile(1-a/2)
+	block, single := distuv.ChiSquared{K: float64(k)}, distuv.ChiSquared{K: 1} // of one direction: z(1-a/2)^2
+	return rounded(math.Sqrt(block.Quantile(1-a) / single.Quantile(1-a)))
+}
+
+// rounded keeps twelve digits: the library's quantiles may differ beyond them from
+// machine to machine.
+func rounded(v float64) float64 {
+	r, err := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 11, 64), 64)
+	if err != nil {
+		return v
+	}
+	return r
 }

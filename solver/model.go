@@ -35,6 +35,8 @@ type Model struct {
 	penalty *penalty
 	first   []int     // per candidate: position of its first column in Terms; nil: all are single
 	table   []float64 // per unit: variance over all rows, for the constant test
+	exact   bool      // which core serves
+	shift   float64   // taken from a numeric outcome
 	scale   []float64 // per unit: fixed scale of the penalty; nil with ScaleDraw
 	lattice lattice
 	last    int
@@ -52,6 +54,8 @@ func NewModel(ctx context.Context, p Problem) (*Model, error) {
 	}
 	rows, _ := p.Design.Dims()
 	m := &Model{p: p, rows: rows, penalty: p.penalty(), first: p.firstTerms()}
+	m.exact = m.hasExact()
+	m.settle()
 	if err := m.measure(ctx); err != nil {
 		return nil, err
 	}
@@ -71,8 +75,6 @@ func (p *Problem) check() error {
 		return fmt.Errorf("solver: the table has %d rows: at least 2 are needed", rows)
 	case len(p.Candidates) == 0:
 		return errors.New("solver: no candidate predictors")
-	case len(p.Outcome) != rows:
-		return fmt.Errorf("solver: %d outcome values for %d rows", len(p.Outcome), rows)
 	case p.Case != nil && len(p.Case) != rows:
 		return fmt.Errorf("solver: %d case weights for %d rows", len(p.Case), rows)
 	case p.Relative != nil && len(p.Relative) != len(p.Candidates):
@@ -88,15 +90,16 @@ func (p *Problem) check() error {
 	case p.StopAfter < 0:
 		return fmt.Errorf("solver: stop_after is %d: it must not be negative", p.StopAfter)
 	}
+	if err := p.checkOutcome(rows); err != nil {
+		return err
+	}
+	if err := p.checkGroups(); err != nil {
+		return err
+	}
 	return p.checkValues()
 }
 
 func (p *Problem) checkValues() error {
-	for i, y := range p.Outcome {
-		if math.IsNaN(y) || math.IsInf(y, 0) {
-			return fmt.Errorf("solver: the outcome is %v in row %d", y, i)
-		}
-	}
 	for i, w := range p.Case {
 		if !(w >= 0) || math.IsInf(w, 0) {
 			return fmt.Errorf("solver: the case weight is %v in row %d: it must be a finite number, 0 or more", w, i)
@@ -294,7 +297,15 @@ func (m *Model) Terms() []int32 {
 // Fittable says why a draw can have no fit at all, not even without candidates:
 // one class only, fewer than five events, always-in columns that tell the
 // classes apart. Nil where nothing speaks against it.
-func (m *Model) Fittable(s *Sample) error { return nil }
+func (m *Model) Fittable(s *Sample) error {
+	if m.exact {
+		return nil
+	}
+	f := m.fitting()
+	defer m.release(f)
+	f.penalty = m.penalty
+	return f.begin(m.weighted(s))
+}
 
 // fitting returns a fitting from the pool.
 func (m *Model) fitting() *fitting {
@@ -306,7 +317,11 @@ func (m *Model) fitting() *fitting {
 
 func (m *Model) newFitting() *fitting {
 	f := &fitting{m: m}
-	f.core = exact{f}
+	if m.exact {
+		f.core = exact{f}
+	} else {
+		f.core = newCurved(f)
+	}
 	return f
 }
 

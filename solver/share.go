@@ -26,6 +26,8 @@ type sharing struct {
 	fixed  []int     // places of always-in columns
 	places []int     // candidates at the border, by unit
 	sign   []float64 // of their gradients
+	curved *curved   // of the curved core
+	found  *record   // the optimum that was found: for the curved core its fit stands
 }
 
 // share returns the record of the step on all candidates at the border, or nil
@@ -195,6 +197,9 @@ func (s *sharing) weight(place int) float64 { return s.f.penalty.weight[s.f.work
 // alone returns the coefficients of the fit on the basis alone, whatever their
 // signs: the normal equations of the step.
 func (s *sharing) alone(p *parts) []float64 {
+	if s.curved != nil {
+		return s.expressed(p)
+	}
 	w := &s.f.work
 	b := make([]float64, len(p.basis))
 	for q, i := range p.basis {
@@ -205,6 +210,26 @@ func (s *sharing) alone(p *parts) []float64 {
 	}
 	p.chol.solve(b)
 	return b
+}
+
+// expressed returns the coefficients on the basis of the fit that was found.
+func (s *sharing) expressed(p *parts) []float64 {
+	at := make(map[int]int, len(p.basis))
+	for q, i := range p.basis {
+		at[i] = q
+	}
+	out := make([]float64, len(p.basis))
+	for _, b := range s.found.blocks {
+		v := s.found.beta[b.at]
+		if q, ok := at[b.place]; ok {
+			out[q] += v
+			continue
+		}
+		t := s.products(p, b.place)
+		p.chol.solve(t)
+		kernel.AddScaled(v, t, out)
+	}
+	return out
 }
 
 // least returns the signed sizes of the least-squares coefficients on the
@@ -305,6 +330,9 @@ func (s *sharing) record(free []bool, x []float64) (*record, error) {
 	}
 	p := s.split(indices(free))
 	alone := s.alone(p)
+	if s.curved != nil {
+		return s.curved.shared(s, p, alone), nil
+	}
 	r := s.filled(p, alone)
 	for range refinements {
 		if r.worst(s.f) <= goodEnough {
@@ -344,7 +372,7 @@ func (s *sharing) corrected(p *parts, r *record, alone []float64) []float64 {
 func (s *sharing) filled(p *parts, alone []float64) *record {
 	basis, rest := s.coefficients(p, alone)
 	at := make(map[int]float64)
-	r := &record{lambda: s.lambda}
+	r := &record{lambda: s.lambda, limit: certified}
 	for q, i := range p.basis {
 		at[i] = basis[q]
 	}

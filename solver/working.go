@@ -68,7 +68,7 @@ func (w *working) multiply(f *fitting, from int) {
 			row[j] = kernel.Dot(w.z[i], w.z[j]) / f.d.total
 		}
 		w.h.append(row[:i+1])
-		if f.m.p.Family == Gaussian {
+		if f.m.exact {
 			w.c = append(w.c, kernel.Dot(w.z[i], f.d.y)/f.d.total)
 		}
 	}

@@ -1,0 +1,468 @@
+package solver
+
+import (
+	"fmt"
+	"math"
+	"slices"
+
+	"holdfast/solver/kernel"
+)
+
+const (
+	// newtonSteps bounds the proximal Newton steps at one lambda.
+	newtonSteps = 200
+	// solved is the violation, relative to the thresholds, at which the working
+	// set counts as solved: the finish goes on from there.
+	solved = 1e-7
+	// slow is how much of the violation a step may leave before the Hessian is
+	// made anew.
+	slow = 0.3
+	// sufficient is the share of the decrease that the model promises which a step
+	// must bring (Nocedal & Wright 2006, eq. 3.4).
+	sufficient = 1e-4
+	// halvings of a step.
+	halvings = 40
+)
+
+// curved is the core of every problem whose Hessian moves or whose penalty has
+// groups: proximal Newton steps (Lee, Sun & Saunders 2014, SIAM J. Optim.
+// 24:1420-1443), each a quadratic problem on the working set, with a line search
+// on the objective itself. Coefficients are numbered by place and lane:
+// place*lanes + lane.
+type curved struct {
+	f     *fitting
+	fam   family // bent where the working set's Hessian was made
+	rec   family // of the records, whose numbers must not depend on that
+	lanes int
+	fixed []choice // the always-in places that are not redundant, the intercept first
+
+	beta   []float64
+	offset []float64 // per row of the draw; nil: none
+	eta    []float64
+	u      []float64
+	g      []float64 // gradients at beta
+	value  float64   // objective at beta
+	lambda float64   // of value
+
+	model  quadratic   // of the step: Hessian where fam is bent
+	bent   bool        // the Hessian stands
+	a, b   [][]float64 // carriers of the Hessian
+	qp     activeSet
+	trial  []float64
+	lonely *record // the fit of the intercept alone
+}
+
+func newCurved(f *fitting) *curved {
+	return &curved{f: f, fam: newFamily(&f.m.p), rec: newFamily(&f.m.p), lanes: f.m.Classes()}
+}
+
+// begin fits the intercept alone, then with the always-in columns.
+func (c *curved) begin() error {
+	f := c.f
+	c.fam.take(&f.d)
+	c.rec.take(&f.d)
+	if err := c.rec.fittable(); err != nil {
+		return err
+	}
+	c.setOffset()
+	c.reset()
+	units := f.m.alwaysUnits()
+	if f.m.p.Family != Cox {
+		units = slices.Insert(units, 0, f.m.interceptUnit())
+	}
+	f.work.add(f, units)
+	c.grow()
+	empty := &record{lambda: math.Inf(1)}
+	var err error
+	c.fixed = c.fixed[:0]
+	if f.m.p.Family != Cox {
+		c.fixed = append(c.fixed, choice{place: 0})
+	}
+	if c.lonely, err = c.record(empty, nil, 1); err != nil {
+		return err
+	}
+	if f.rec, err = c.beginAlways(len(units)); err != nil {
+		return err
+	}
+	f.whole = kernel.Dot(c.lonely.u, c.lonely.u)
+	c.load(f.rec)
+	return nil
+}
+
+// beginAlways adds the always-in columns that are not redundant, in table order.
+func (c *curved) beginAlways(units int) (*record, error) {
+	f := c.f
+	var chol factor
+	var row []float64
+	for place := len(c.fixed); place < units; place++ {
+		row = row[:0]
+		for _, q := range c.fixed {
+			row = append(row, f.work.h.row[place][q.place])
+		}
+		if chol.size() < len(c.fixed) { // the intercept
+			chol.push(nil, f.work.h.row[0][0], 0)
+		}
+		if square := f.work.h.row[place][place]; square > 0 && chol.push(row, square, dependent) {
+			c.fixed = append(c.fixed, choice{place: place})
+		}
+	}
+	if len(c.fixed) > len(f.d.rows)-2 {
+		return nil, fmt.Errorf("%d always-in columns leave nothing of %d rows", len(c.fixed), len(f.d.rows))
+	}
+	r, err := c.record(c.lonely, nil, 1)
+	if err != nil {
+		return nil, err
+	}
+	if err := c.separated(r); err != nil {
+		return nil, err
+	}
+	if r.cert.violation > certifiedCurved {
+		return nil, fmt.Errorf("the fit without candidates has violation %.1e", r.cert.violation)
+	}
+	return r, nil
+}
+
+func (c *curved) setOffset() {
+	c.offset = nil
+	if o := c.f.m.p.Offset; o != nil {
+		c.offset = make([]float64, len(c.f.d.rows))
+		kernel.Gather(c.offset, o, c.f.d.rows, 0, 1)
+	}
+}
+
+// reset forgets the draw before.
+func (c *curved) reset() {
+	c.beta, c.g = c.beta[:0], c.g[:0]
+	c.model.units, c.model.c = c.model.units[:0], c.model.c[:0]
+	c.model.h.reset()
+	c.bent = false
+	c.a, c.b = c.a[:0], c.b[:0]
+	c.qp.reset()
+}
+
+// grow makes room for places that joined the working set.
+func (c *curved) grow() {
+	n := len(c.f.work.units) * c.lanes
+	for len(c.beta) < n {
+		c.model.units = append(c.model.units, c.f.work.units[len(c.beta)/c.lanes])
+		c.beta, c.g = append(c.beta, 0), append(c.g, 0)
+	}
+}
+
+// load starts the working set at a record.
+func (c *curved) load(r *record) {
+	clear(c.beta)
+	for _, b := range r.blocks {
+		for t := range b.width {
+			c.beta[(b.place+t)*c.lanes+b.lane] = r.beta[b.at+t]
+		}
+	}
+	c.lambda = 0
+}
+
+// predict overwrites eta with the linear predictors of coefficients by place and
+// lane.
+func (c *curved) predict(beta, eta []float64) {
+	f := c.f
+	n := len(f.d.rows)
+	var places []int
+	var values []float64
+	for lane := range c.lanes {
+		places, values = places[:0], values[:0]
+		for i := lane; i < len(beta); i += c.lanes {
+			if beta[i] != 0 {
+				places, values = append(places, i/c.lanes), append(values, beta[i])
+			}
+		}
+		part := eta[lane*n : (lane+1)*n]
+		f.work.fitted(places, values, part)
+		f.plain(part, c.offset)
+	}
+}
+
+// plain turns root-weighted fits into linear predictors.
+func (f *fitting) plain(eta, offset []float64) {
+	for k, r := range f.d.root {
+		eta[k] /= r
+	}
+	for k, o := range offset {
+		eta[k] += o
+	}
+}
+
+// at moves to coefficients and returns the objective there.
+func (c *curved) at(beta []float64, lambda float64) float64 {
+	n := len(c.f.d.rows) * c.lanes
+	c.eta, c.u = resize(c.eta, n), resize(c.u, n)
+	c.predict(beta, c.eta)
+	return c.fam.score(c.eta, c.u) + c.penalise(beta, lambda)
+}
+
+// penalise is the penalty of coefficients.
+func (c *curved) penalise(beta []float64, lambda float64) float64 {
+	sum := 0.0
+	c.each(func(unit int32, first, width int) {
+		size := c.norm(beta, first, width)
+		sum += float64(c.f.penalty.threshold(unit, lambda)*size) + float64(c.f.penalty.ridge(unit, lambda)*size*size/2)
+	})
+	return sum
+}
+
+// each goes through the blocks of candidates: unit, first coefficient, width. The
+// coefficients of a block lie lanes apart.
+func (c *curved) each(do func(unit int32, first, width int)) {
+	w := &c.f.work
+	for place := 0; place < len(w.units); {
+		width := w.width(place)
+		if u := w.units[place]; !c.f.penalty.always(u) {
+			for lane := range c.lanes {
+				do(u, place*c.lanes+lane, width)
+			}
+		}
+		place += width
+	}
+}
+
+func (c *curved) norm(v []float64, first, width int) float64 {
+	if width == 1 {
+		return math.Abs(v[first])
+	}
+	sum := 0.0
+	for t := range width {
+		x := v[first+t*c.lanes]
+		sum += float64(x * x)
+	}
+	return math.Sqrt(sum)
+}
+
+// gradients fills g at u, and returns the largest violation of the working set.
+func (c *curved) gradients(lambda float64) float64 {
+	f := c.f
+	n := len(f.d.rows)
+	for i := range c.g {
+		lane := i % c.lanes
+		c.g[i] = kernel.Dot(f.work.z[i/c.lanes], c.u[lane*n:(lane+1)*n]) / f.d.total
+	}
+	worst := 0.0
+	for _, q := range c.fixed {
+		for lane := range c.lanes {
+			worst = max(worst, math.Abs(c.g[q.place*c.lanes+lane])/lambda)
+		}
+	}
+	c.each(func(unit int32, first, width int) {
+		worst = max(worst, c.violation(unit, first, width, lambda))
+	})
+	return worst
+}
+
+// violation of one block at g.
+func (c *curved) violation(unit int32, first, width int, lambda float64) float64 {
+	p := c.f.penalty
+	t, ridge := p.threshold(unit, lambda), p.ridge(unit, lambda)
+	size := c.norm(c.beta, first, width)
+	if size == 0 {
+		return max(0, c.norm(c.g, first, width)/t-1)
+	}
+	sum := 0.0
+	for k := range width {
+		i := first + k*c.lanes
+		e := c.g[i] - float64(ridge*c.beta[i]) - float64(t*c.beta[i]/size)
+		sum += float64(e * e)
+	}
+	return math.Sqrt(sum) / t
+}
+
+// solve makes proximal Newton steps until the working set is solved.
+func (c *curved) solve(lambda float64) error {
+	c.grow()
+	c.value = c.at(c.beta, lambda)
+	worst := c.gradients(lambda)
+	for range newtonSteps {
+		if worst <= solved {
+			return nil
+		}
+		fresh := !c.bent
+		c.curve()
+		if err := c.target(lambda); err != nil {
+			return err
+		}
+		moved, whole := c.search(lambda)
+		now := c.gradients(lambda)
+		if !moved && fresh {
+			return c.stuck(now)
+		}
+		if !moved || !whole || now > slow*worst {
+			c.bent = false
+		}
+		worst = now
+	}
+	return fmt.Errorf("the proximal Newton method made %d steps", newtonSteps)
+}
+
+// good enough for the finish to go on from.
+const nearly = 1e-3
+
+// stuck judges a working set that no step improves any more: what is left is
+// rounding of the objective, or an error.
+func (c *curved) stuck(worst float64) error {
+	if worst <= nearly {
+		return nil
+	}
+	return fmt.Errorf("the line search ended at a violation of %.1e", worst)
+}
+
+// curve makes the Hessian of the working set, or extends it to places that joined.
+func (c *curved) curve() {
+	f := c.f
+	if !c.bent {
+		c.fam.bend(c.eta)
+		c.model.h.reset()
+		c.a, c.b = c.a[:0], c.b[:0]
+		c.qp.stale = true
+		c.bent = true
+	}
+	for i := len(c.a); i < len(c.beta); i++ {
+		var a, b []float64
+		if i < cap(c.a) {
+			a, b = c.a[:i+1][i], c.b[:i+1][i]
+		}
+		a, b = c.fam.carry(f.work.z[i/c.lanes], i%c.lanes, a, b)
+		c.a, c.b = append(c.a, a), append(c.b, b)
+	}
+	row := make([]float64, len(c.beta))
+	for i := len(c.model.h.row); i < len(c.beta); i++ {
+		for j := range i + 1 {
+			row[j] = c.curvature(c.a, c.b, i, j, i%c.lanes == j%c.lanes)
+		}
+		c.model.h.append(row[:i+1])
+	}
+}
+
+// curvature is one entry of the Hessian from its carriers.
+func (c *curved) curvature(a, b [][]float64, i, j int, sameLane bool) float64 {
+	h := 0.0
+	if sameLane {
+		h = kernel.Dot(a[i], a[j])
+	}
+	if len(b[i]) > 0 {
+		h -= kernel.Dot(b[i], b[j])
+	}
+	return h / c.f.d.total
+}
+
+// target solves the quadratic model at beta, into trial.
+func (c *curved) target(lambda float64) error {
+	c.model.c = resize(c.model.c, len(c.beta))
+	copy(c.model.c, c.g)
+	for i, b := range c.beta {
+		if b != 0 {
+			kernel.AddScaled(b, c.model.h.row[i], c.model.c)
+		}
+	}
+	c.trial = append(c.trial[:0], c.beta...)
+	if c.f.m.p.Groups != nil {
+		c.descend(lambda)
+		return nil
+	}
+	c.qp.grow(len(c.beta))
+	c.ensureFixed()
+	if err := c.qp.solve(&c.model, c.f.penalty, lambda); err != nil {
+		return err
+	}
+	copy(c.trial, c.qp.beta)
+	return nil
+}
+
+// descend solves the model by block coordinate descent.
+func (c *curved) descend(lambda float64) {
+	d := descent{h: &c.model.h, p: c.f.penalty, lambda: lambda, beta: c.trial, r: slices.Clone(c.g)}
+	for _, q := range c.fixed {
+		for lane := range c.lanes {
+			d.strips = append(d.strips, strip{c.f.work.units[q.place], q.place*c.lanes + lane, 1, 1})
+		}
+	}
+	c.each(func(unit int32, first, width int) {
+		d.strips = append(d.strips, strip{unit, first, width, c.lanes})
+	})
+	d.run()
+}
+
+// ensureFixed brings the unpenalised coefficients into the active set.
+func (c *curved) ensureFixed() {
+	if c.qp.stale {
+		c.qp.refactor(&c.model, c.f.penalty, c.f.lambda(c.f.cur))
+	}
+	for _, q := range c.fixed {
+		for lane := range c.lanes {
+			if i := q.place*c.lanes + lane; !c.qp.in[i] {
+				c.qp.push(&c.model, c.f.penalty, c.qp.lambda, i, 0)
+			}
+		}
+	}
+}
+
+// search goes from beta towards trial as far as the objective falls. It reports
+// whether it moved, and whether all the way.
+func (c *curved) search(lambda float64) (moved, whole bool) {
+	promise := c.penalise(c.trial, lambda) - c.penalise(c.beta, lambda)
+	for i, g := range c.g {
+		promise -= float64(g * (c.trial[i] - c.beta[i]))
+	}
+	from := slices.Clone(c.beta)
+	noise := float64(4e-16 * math.Abs(c.value))
+	for k, t := 0, 1.0; k < halvings; k, t = k+1, t/2 {
+		for i := range c.beta {
+			c.beta[i] = from[i] + float64(t*(c.trial[i]-from[i]))
+		}
+		if value := c.at(c.beta, lambda); value <= c.value+float64(sufficient*t*min(promise, 0))+noise && !math.IsNaN(value) {
+			moved = !slices.Equal(c.beta, from)
+			c.value = value
+			return moved, t == 1
+		}
+	}
+	copy(c.beta, from)
+	c.value = c.at(c.beta, lambda)
+	return false, false
+}
+
+func (c *curved) support() []choice {
+	var s []choice
+	c.each(func(_ int32, first, width int) {
+		if size := c.norm(c.beta, first, width); size > 0 {
+			q := choice{place: first / c.lanes, lane: first % c.lanes}
+			if width == 1 {
+				q.sign = math.Copysign(1, c.beta[first])
+			}
+			s = append(s, q)
+		}
+	})
+	return s
+}
+
+func (c *curved) score(u []float64) { copy(u, c.u) }
+
+func (c *curved) know() {
+	f := c.f
+	for _, u := range f.work.units {
+		if !f.penalty.always(u) {
+			f.end.value[u] = 0
+			f.end.ref[u] = f.req.number
+		}
+	}
+	c.each(func(unit int32, first, width int) {
+		f.end.value[unit] = max(f.end.value[unit], c.norm(c.g, first, width)/f.penalty.threshold(unit, 1))
+	})
+}
+
+// Windows are one step long, so there is nowhere to go back to.
+func (c *curved) save()          {}
+func (c *curved) keep(*record)   {}
+func (c *curved) back(_ float64) {}
+
+func (c *curved) finish(support []choice, lambda float64) (*record, error) {
+	return c.record(c.f.rec, support, lambda)
+}
+
+func (c *curved) loss(r *record) float64 { return r.loss }
+
+func (c *curved) nullLevel() []float64 { return c.level(c.lonely) }

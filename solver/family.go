@@ -1,0 +1,173 @@
+package solver
+
+import (
+	"fmt"
+	"math"
+
+	"holdfast/solver/kernel"
+)
+
+// family is what a kind of outcome supplies to the curved core for one draw:
+// loss, score and curvature. Linear predictors eta are plain, lane after lane;
+// score vectors are root-weighted: sqrt(w) times the negative derivative of the
+// loss, so that a gathered column's gradient is its product with them over N.
+type family interface {
+	// take reads the outcome of a draw's rows.
+	take(d *drawn)
+	// fittable says why no finite fit exists, whatever the columns; nil if one may.
+	fittable() error
+	// score overwrites u with the score at eta and returns the mean loss, which
+	// may be infinite where eta is far off.
+	score(eta, u []float64) float64
+	// bend fixes the point at which curvature is asked for.
+	bend(eta []float64)
+	// carry turns a gathered column into vectors a (and b, which may be empty) for
+	// one lane, so that the curvature of two of them is a'a - b'b over N, the first
+	// product only where their lanes are the same.
+	carry(z []float64, lane int, a, b []float64) (_, _ []float64)
+	// deviance is the mean unit deviance at eta (STATISTICS 11), for Cox -2 log
+	// partial likelihood.
+	deviance(eta []float64) float64
+}
+
+// newFamily returns the family of a problem.
+func newFamily(p *Problem) family {
+	switch p.Family {
+	case Binomial:
+		return &pointwise{p: p, at: binomialAt, unit: binomialDeviance, check: bothClasses}
+	case Poisson:
+		return &pointwise{p: p, at: poissonAt, unit: poissonDeviance, check: someCount}
+	case Multinomial:
+		return &multinomial{p: p}
+	case Cox:
+		return &cox{p: p}
+	}
+	return &pointwise{p: p, at: gaussianAt, unit: gaussianDeviance, check: anyOutcome}
+}
+
+// pointwise is a family whose loss is a sum over rows with one linear predictor
+// each.
+type pointwise struct {
+	p *Problem
+	// at returns loss, mean and variance function at eta.
+	at    func(y, eta float64) (loss, mu, v float64)
+	unit  func(y, eta float64) float64
+	check func(y, w []float64) error
+
+	d    *drawn
+	y    []float64
+	bent []float64 // square root of the variance function
+}
+
+func (f *pointwise) take(d *drawn) {
+	f.d = d
+	f.y = resize(f.y, len(d.rows))
+	kernel.Gather(f.y, f.p.Outcome, d.rows, 0, 1)
+}
+
+func (f *pointwise) fittable() error { return f.check(f.y, f.d.weight) }
+
+func (f *pointwise) score(eta, u []float64) float64 {
+	losses := make([]float64, len(eta))
+	for k, e := range eta {
+		loss, mu, _ := f.at(f.y[k], e)
+		losses[k], u[k] = loss, f.y[k]-mu
+	}
+	for k, r := range f.d.root {
+		u[k] *= r
+	}
+	return f.d.weighted(losses) / f.d.total
+}
+
+func (f *pointwise) bend(eta []float64) {
+	f.bent = resize(f.bent, len(eta))
+	for k, e := range eta {
+		_, _, v := f.at(f.y[k], e)
+		f.bent[k] = math.Sqrt(v)
+	}
+}
+
+func (f *pointwise) carry(z []float64, _ int, a, b []float64) (_, _ []float64) {
+	a = resize(a, len(z))
+	for k, s := range f.bent {
+		a[k] = s * z[k]
+	}
+	return a, b[:0]
+}
+
+func (f *pointwise) deviance(eta []float64) float64 {
+	unit := make([]float64, len(eta))
+	for k, e := range eta {
+		unit[k] = f.unit(f.y[k], e)
+	}
+	return f.d.weighted(unit) / f.d.total
+}
+
+func gaussianAt(y, eta float64) (loss, mu, v float64) {
+	r := y - eta
+	return r * r / 2, eta, 1
+}
+
+func gaussianDeviance(y, eta float64) float64 {
+	r := y - eta
+	return r * r
+}
+
+func anyOutcome([]float64, []float64) error { return nil }
+
+// binomialAt has e^-|eta| only, so that nothing overflows.
+func binomialAt(y, eta float64) (loss, mu, v float64) {
+	t := kernel.Exp(-math.Abs(eta))
+	below, above := t/(1+t), 1/(1+t)
+	mu = above
+	if eta < 0 {
+		mu = below
+	}
+	loss = kernel.Log1p(t)
+	if y > 0.5 && eta < 0 || y < 0.5 && eta > 0 {
+		loss += math.Abs(eta)
+	}
+	return loss, mu, float64(below * above)
+}
+
+// clip is how near to 0 or 1 a probability may be in a deviance (STATISTICS 11).
+const clip = 1e-15
+
+func binomialDeviance(y, eta float64) float64 {
+	_, mu, _ := binomialAt(y, eta)
+	if y < 0.5 {
+		_, mu, _ = binomialAt(y, -eta)
+	}
+	return -2 * kernel.Log(min(max(mu, clip), 1-clip))
+}
+
+func bothClasses(y, _ []float64) error {
+	for _, v := range y {
+		if v != y[0] {
+			return nil
+		}
+	}
+	return fmt.Errorf("the outcome is the same in all %d rows", len(y))
+}
+
+func poissonAt(y, eta float64) (loss, mu, v float64) {
+	mu = kernel.Exp(eta)
+	return mu - float64(y*eta), mu, mu
+}
+
+func poissonDeviance(y, eta float64) float64 {
+	mu := kernel.Exp(eta)
+	if y == 0 {
+		return 2 * mu
+	}
+	return 2 * (float64(y*(kernel.Log(y)-eta)) - (y - mu))
+}
+
+func someCount(y, _ []float64) error {
+	for _, v := range y {
+		if v > 0 {
+			return nil
+		}
+	}
+	return fmt.Errorf("all %d counts are 0", len(y))
+}

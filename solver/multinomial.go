@@ -1,0 +1,105 @@
+package solver
+
+import (
+	"fmt"
+	"math"
+
+	"holdfast/solver/kernel"
+)
+
+// multinomial is the symmetric multinomial logit: a linear predictor per class,
+// of which a common shift means nothing.
+type multinomial struct {
+	p    *Problem
+	d    *drawn
+	y    []int
+	p0   []float64 // probabilities at the bent point, class after class
+	root []float64 // their square roots
+}
+
+func (f *multinomial) take(d *drawn) {
+	f.d, f.y = d, f.y[:0]
+	for _, r := range d.rows {
+		f.y = append(f.y, int(f.p.Outcome[r]))
+	}
+}
+
+func (f *multinomial) fittable() error {
+	seen := make([]bool, f.p.Classes)
+	for _, c := range f.y {
+		seen[c] = true
+	}
+	for c, ok := range seen {
+		if !ok {
+			return fmt.Errorf("class %d of the outcome has no row", c)
+		}
+	}
+	return nil
+}
+
+// probabilities of one row into q, and the log of what they were divided by.
+func (f *multinomial) probabilities(eta []float64, k int, q []float64) float64 {
+	n, most := len(f.y), math.Inf(-1)
+	for c := range q {
+		most = max(most, eta[c*n+k])
+	}
+	sum := 0.0
+	for c := range q {
+		q[c] = kernel.Exp(eta[c*n+k] - most)
+		sum += q[c]
+	}
+	for c := range q {
+		q[c] /= sum
+	}
+	return most + kernel.Log(sum)
+}
+
+func (f *multinomial) score(eta, u []float64) float64 {
+	n := len(f.y)
+	losses, q := make([]float64, n), make([]float64, f.p.Classes)
+	for k, y := range f.y {
+		losses[k] = f.probabilities(eta, k, q) - eta[y*n+k]
+		root := 1.0
+		if f.d.root != nil {
+			root = f.d.root[k]
+		}
+		for c, v := range q {
+			if c == y {
+				v -= 1
+			}
+			u[c*n+k] = -root * v
+		}
+	}
+	return f.d.weighted(losses) / f.d.total
+}
+
+func (f *multinomial) bend(eta []float64) {
+	n, q := len(f.y), make([]float64, f.p.Classes)
+	f.p0, f.root = resize(f.p0, len(eta)), resize(f.root, len(eta))
+	for k := range f.y {
+		f.probabilities(eta, k, q)
+		for c, v := range q {
+			f.p0[c*n+k], f.root[c*n+k] = v, math.Sqrt(v)
+		}
+	}
+}
+
+// carry: the curvature between classes a and b is p_a (1{a=b} - p_b).
+func (f *multinomial) carry(z []float64, lane int, a, b []float64) (_, _ []float64) {
+	n := len(z)
+	a, b = resize(a, n), resize(b, n)
+	p, root := f.p0[lane*n:(lane+1)*n], f.root[lane*n:(lane+1)*n]
+	for k, v := range z {
+		a[k], b[k] = root[k]*v, p[k]*v
+	}
+	return a, b
+}
+
+func (f *multinomial) deviance(eta []float64) float64 {
+	unit, q := make([]float64, len(f.y)), make([]float64, f.p.Classes)
+	for k, y := range f.y {
+		f.probabilities(eta, k, q)
+		unit[k] = -2 * kernel.Log(min(max(q[y], clip), 1-clip))
+	}
+	return f.d.weighted(unit) / f.d.total
+}
