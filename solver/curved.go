@@ -283,7 +283,7 @@ func (c *curved) solve(lambda float64) error {
 		}
 		fresh := !c.bent
 		c.curve()
-		if err := c.target(lambda); err != nil {
+		if err := c.target(lambda, worst); err != nil {
 			return err
 		}
 		moved, whole := c.search(lambda)
@@ -351,7 +351,7 @@ func (c *curved) curvature(a, b [][]float64, i, j int, sameLane bool) float64 {
 }
 
 // target solves the quadratic model at beta, into trial.
-func (c *curved) target(lambda float64) error {
+func (c *curved) target(lambda, worst float64) error {
 	c.model.c = resize(c.model.c, len(c.beta))
 	copy(c.model.c, c.g)
 	for i, b := range c.beta {
@@ -361,7 +361,7 @@ func (c *curved) target(lambda float64) error {
 	}
 	c.trial = append(c.trial[:0], c.beta...)
 	if c.f.m.p.Groups != nil {
-		c.descend(lambda)
+		c.descend(lambda, worst)
 		return nil
 	}
 	c.qp.grow(len(c.beta))
@@ -374,8 +374,8 @@ func (c *curved) target(lambda float64) error {
 }
 
 // descend solves the model by block coordinate descent.
-func (c *curved) descend(lambda float64) {
-	d := descent{h: &c.model.h, p: c.f.penalty, lambda: lambda, beta: c.trial, r: slices.Clone(c.g)}
+func (c *curved) descend(lambda, worst float64) {
+	d := descent{h: &c.model.h, p: c.f.penalty, lambda: lambda, enough: settled * worst * lambda, beta: c.trial, r: slices.Clone(c.g)}
 	for _, q := range c.fixed {
 		for lane := range c.lanes {
 			d.strips = append(d.strips, strip{c.f.work.units[q.place], q.place*c.lanes + lane, 1, 1})

@@ -9,9 +9,10 @@ import (
 const (
 	// sweeps of block coordinate descent over one quadratic model.
 	sweeps = 2000
-	// settledShare is the largest move, as a share of lambda, at which a sweep ends
-	// the descent.
-	settledShare = 1e-10
+	// settled is the largest move, as a share of what is missing for the optimum of
+	// the problem itself, at which a sweep ends the descent: the model is no
+	// better than that (inexact steps, Lee, Sun & Saunders 2014, section 3).
+	settled = 0.03
 )
 
 // strip is a block of coefficients of a quadratic model: width of them, stride
@@ -30,6 +31,7 @@ type descent struct {
 	strips []strip
 	p      *penalty
 	lambda float64
+	enough float64 // largest move, in units of the gradient, at which a sweep is the last
 	beta   []float64
 	r      []float64 // gradient of the model at beta
 	block  []float64
@@ -41,10 +43,10 @@ func (d *descent) run() {
 	for k := range sweeps {
 		// Every fourth sweep looks at all blocks, the others at those that are not 0.
 		all := k%4 == 0
-		if d.sweep(all) > settledShare*d.lambda {
+		if d.sweep(all) > d.enough {
 			continue
 		}
-		if all || d.sweep(true) <= settledShare*d.lambda {
+		if all || d.sweep(true) <= d.enough {
 			return
 		}
 	}

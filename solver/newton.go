@@ -207,8 +207,8 @@ func (n *newton) correlation(b block) float64 {
 // converge makes Newton steps until what is missing is rounding.
 func (n *newton) converge() error {
 	n.evaluate()
-	if err := n.approach(); err != nil || len(n.r.gone) > 0 {
-		return err
+	if n.approach(); len(n.r.gone) > 0 {
+		return nil
 	}
 	stale := true
 	for k := range mostSteps {
@@ -242,34 +242,40 @@ func (n *newton) converge() error {
 	return n.balance()
 }
 
-// factorise makes the Hessian at the present coefficients and its factor.
-func (n *newton) factorise() error {
+// curve makes the Hessian of the loss at the present coefficients.
+func (n *newton) curve() {
 	c := n.c
 	c.rec.bend(n.eta)
 	var a, b [][]float64
+	var lane []int
 	for _, q := range n.r.blocks {
 		for t := range q.width {
 			x, y := c.rec.carry(c.f.work.z[q.place+t], q.lane, nil, nil)
-			a, b = append(a, x), append(b, y)
+			a, b, lane = append(a, x), append(b, y), append(lane, q.lane)
 		}
 	}
 	n.h.reset()
-	n.r.chol = factor{}
 	row := make([]float64, len(a))
+	for i := range a {
+		for j := range i + 1 {
+			row[j] = c.curvature(a, b, i, j, lane[i] == lane[j])
+		}
+		n.h.append(row[:i+1])
+	}
+}
+
+// factorise makes the Hessian of the objective and its factor.
+func (n *newton) factorise() error {
+	n.curve()
+	n.r.chol = factor{}
+	row := make([]float64, len(n.r.beta))
 	for _, q := range n.r.blocks {
 		for t := range q.width {
 			i := q.at + t
-			for _, o := range n.r.blocks {
-				for s := range o.width {
-					if j := o.at + s; j <= i {
-						row[j] = c.curvature(a, b, i, j, q.lane == o.lane)
-					}
-				}
-			}
-			n.h.append(row[:i+1])
+			copy(row, n.h.row[i][:i+1])
 			n.addPenalty(q, t, row)
 			if !n.r.chol.push(row[:i], row[i], breakdown) {
-				return fmt.Errorf("the support became linearly dependent at %s", c.f.m.name(q.unit))
+				return fmt.Errorf("the support became linearly dependent at %s", n.c.f.m.name(q.unit))
 			}
 		}
 	}
@@ -398,21 +404,19 @@ const near = 1e-5
 // approach brings a record with groups near its optimum by proximal Newton steps
 // on the support: far from it, Newton steps on a norm run into its kink at 0.
 // A group that ends there does not belong.
-func (n *newton) approach() error {
+func (n *newton) approach() {
 	groups := false
 	for _, b := range n.r.blocks {
 		groups = groups || b.width > 1
 	}
 	if !groups || n.r.lambda == 0 {
-		return nil
+		return
 	}
 	for range newtonSteps {
 		if n.worst <= near {
 			break
 		}
-		if err := n.factorise(); err != nil {
-			return err
-		}
+		n.curve()
 		if !n.descend() {
 			break
 		}
@@ -422,12 +426,11 @@ func (n *newton) approach() error {
 			n.r.gone = append(n.r.gone, b.choice)
 		}
 	}
-	return nil
 }
 
 // descend makes one proximal Newton step, and reports whether the objective fell.
 func (n *newton) descend() bool {
-	d := descent{h: &n.h, p: n.c.f.penalty, lambda: n.r.lambda, beta: slices.Clone(n.r.beta), r: slices.Clone(n.r.grad)}
+	d := descent{h: &n.h, p: n.c.f.penalty, lambda: n.r.lambda, enough: settled * n.worst * n.r.lambda, beta: slices.Clone(n.r.beta), r: slices.Clone(n.r.grad)}
 	for _, b := range n.r.blocks {
 		d.strips = append(d.strips, strip{b.unit, b.at, b.width, 1})
 	}
