@@ -197,14 +197,14 @@ func (a *arrowFile) rowwise() bool     { return false }
 
 // fill implements format: batch by batch, the columns of each at the same
 // time.
-func (a *arrowFile) fill(ctx context.Context, cols []int, out [][]float64, workers int) ([]rounded, error) {
+func (a *arrowFile) fill(ctx context.Context, sinks []sink, workers int) ([]rounded, error) {
 	f, err := os.Open(a.path)
 	if err != nil {
 		return nil, openFault(a.path, err)
 	}
 	defer f.Close()
-	total := make([]rounded, len(cols))
-	dictionaries := map[int64][]float64{}
+	total := make([]rounded, len(sinks))
+	dictionaries := newArrowDictionaries(len(sinks))
 	readers := make([]*bufferReader, workers)
 	for i := range readers {
 		readers[i] = &bufferReader{in: f}
@@ -215,7 +215,7 @@ func (a *arrowFile) fill(ctx context.Context, cols []int, out [][]float64, worke
 			return nil, inFile(a.path, err)
 		}
 		if b.dictionary {
-			if err := a.readDictionary(b, layout, cols, dictionaries, readers[0]); err != nil {
+			if err := a.readDictionary(b, layout, sinks, dictionaries, readers[0]); err != nil {
 				return nil, inFile(a.path, err)
 			}
 			continue
@@ -223,15 +223,18 @@ func (a *arrowFile) fill(ctx context.Context, cols []int, out [][]float64, worke
 		if b.rows == 0 {
 			continue
 		}
-		err = parallel(ctx, workers, len(cols), func(w, k int) error {
-			field := a.fields[cols[k]]
-			dst := out[k][b.first : b.first+b.rows]
-			rd, err := readers[w].column(layout, layout.fields[cols[k]], field, dst, b.first, dictionaries)
-			if err != nil {
-				return inColumn(a.path, field.name, err)
+		end := b.first + b.rows
+		err = parallel(ctx, workers, len(sinks), func(w, k int) (err error) {
+			s := sinks[k]
+			field, at := a.fields[s.col], layout.fields[s.col]
+			if s.texts != nil {
+				err = readers[w].text(layout, at, field, s.texts, s.texts.codes[b.first:end], b.first, dictionaries.text(field, k))
+			} else {
+				var rd rounded
+				rd, err = readers[w].column(layout, at, field, s.values[b.first:end], b.first, dictionaries.numbers)
+				total[k].merge(rd)
 			}
-			total[k].merge(rd)
-			return nil
+			return inColumn(a.path, field.name, err)
 		})
 		if err != nil {
 			return nil, err
@@ -240,28 +243,22 @@ func (a *arrowFile) fill(ctx context.Context, cols []int, out [][]float64, worke
 	return total, nil
 }
 
-// readDictionary reads the values of a dictionary of numbers, if a column
-// asked for uses it.
-func (a *arrowFile) readDictionary(b arrowBatch, layout *batchLayout, cols []int, dictionaries map[int64][]float64, r *bufferReader) error {
-	for _, c := range cols {
-		field := a.fields[c]
+// readDictionary reads the values of a dictionary, if a column asked for uses
+// it.
+func (a *arrowFile) readDictionary(b arrowBatch, layout *batchLayout, sinks []sink, dictionaries *arrowDictionaries, r *bufferReader) error {
+	for _, s := range sinks {
+		field := a.fields[s.col]
 		if !field.dictionary || field.id != b.id {
 			continue
 		}
 		field.dictionary = false
-		need := b.rows * int64(field.width()) / 8
-		if layout.codec == arrowRaw && need > b.size || tooDense(need, b.size, false) {
-			return damagedf("a dictionary claims %d values in %d bytes", b.rows, b.size)
+		err := dictionaries.claim(b, layout, field, a.total)
+		if err == nil && s.texts != nil {
+			err = dictionaries.readText(b, layout, field, r)
+		} else if err == nil {
+			err = dictionaries.readNumbers(b, layout, field, r)
 		}
-		values := make([]float64, b.rows)
-		if _, err := r.column(layout, layout.fields[0], field, values, 0, nil); err != nil {
-			return inColumn(a.path, field.name, err)
-		}
-		if b.delta {
-			values = append(append([]float64(nil), dictionaries[b.id]...), values...)
-		}
-		dictionaries[b.id] = values
-		return nil
+		return inColumn(a.path, field.name, err)
 	}
 	return nil
 }
@@ -281,8 +278,8 @@ type arrowNode struct{ length, nulls int64 }
 
 type arrowBuffer struct{ offset, length int64 }
 
-// fieldLayout is a field's first node and first buffer.
-type fieldLayout struct{ node, buffer int }
+// fieldLayout is a field's first node, first buffer and number of buffers.
+type fieldLayout struct{ node, buffer, count int }
 
 // layoutOf reads a batch's metadata.
 func (a *arrowFile) layoutOf(b arrowBatch) (l *batchLayout, err error) {
@@ -320,8 +317,10 @@ func (a *arrowFile) layoutOf(b arrowBatch) (l *batchLayout, err error) {
 	}
 	w := layoutWalk{version: version, variadic: variadic, buffers: len(l.buffers)}
 	for _, f := range fields {
-		l.fields = append(l.fields, fieldLayout{w.node, w.buffer})
+		at := fieldLayout{node: w.node, buffer: w.buffer}
 		w.pass(f)
+		at.count = w.buffer - at.buffer
+		l.fields = append(l.fields, at)
 	}
 	if w.node > len(l.nodes) || w.buffer > len(l.buffers) {
 		return nil, damagedf("a batch has fewer buffers than its columns need")

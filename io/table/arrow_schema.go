@@ -225,7 +225,7 @@ func (a arrowField) kind() (Kind, string) {
 	case arrowBool:
 		return Boolean, ""
 	case arrowUTF8, arrowLargeUTF8, arrowUTF8View:
-		return Text, "is text"
+		return Text, plainReason
 	case arrowDuration:
 		return Date, "is a duration, not a number"
 	case arrowDate, arrowTime, arrowTimestamp, arrowInterval:

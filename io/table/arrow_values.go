@@ -6,6 +6,9 @@ import (
 	"math"
 	"math/big"
 	"os"
+
+	"github.com/klauspost/compress/zstd"
+	"github.com/pierrec/lz4/v4"
 )
 
 // bufferReader reads columns of Arrow batches into float64. It keeps its
@@ -16,27 +19,24 @@ type bufferReader struct {
 	values []byte
 	valid  []byte
 	number big.Int
+
+	stream textStream
+	lz4    *lz4.Reader
+	zstd   *zstd.Decoder
 }
 
 // column decodes one column of a batch into dst, one value per row. first is
 // the table row of dst[0].
 func (r *bufferReader) column(l *batchLayout, at fieldLayout, f arrowField, dst []float64, first int64, dictionaries map[int64][]float64) (rd rounded, err error) {
 	defer guard(&err)
-	node := l.nodes[at.node]
-	if node.length != int64(len(dst)) {
-		return rd, damagedf("a batch of %d rows has %d values", len(dst), node.length)
-	}
 	n := int64(len(dst))
 	width := int64(f.width())
 	if f.dictionary {
 		width = int64(f.indexBits)
 	}
-	var valid []byte
-	if b := l.buffers[at.buffer]; node.nulls != 0 && b.length > 0 {
-		if r.valid, err = r.buffer(l, b, (n+7)/8, r.valid); err != nil {
-			return rd, err
-		}
-		valid = r.valid
+	valid, err := r.validity(l, at, len(dst))
+	if err != nil {
+		return rd, err
 	}
 	if r.values, err = r.buffer(l, l.buffers[at.buffer+1], (n*width+7)/8, r.values); err != nil {
 		return rd, err

@@ -185,18 +185,19 @@ func (c *csvFile) eachField(f *csvFields, columns int, line int64, each func(k i
 
 // fill implements format: the whole file is read, the columns asked for are
 // kept.
-func (c *csvFile) fill(ctx context.Context, cols []int, out [][]float64, workers int) ([]rounded, error) {
+func (c *csvFile) fill(ctx context.Context, sinks []sink, workers int) ([]rounded, error) {
 	target := make([]int, len(c.cols))
 	for k := range target {
 		target[k] = -1
 	}
-	for i, k := range cols {
-		target[k] = i
+	for i, s := range sinks {
+		target[s.col] = i
 	}
 	found := make([][]rounded, workers)
+	caches := make([][]textCache, workers)
 	rows, err := c.blocks(ctx, workers, func(w int, b csvBlock) error {
 		if found[w] == nil {
-			found[w] = make([]rounded, len(cols))
+			found[w], caches[w] = make([]rounded, len(sinks)), newTextCaches(sinks)
 		}
 		var fields csvFields
 		return c.records(b, &fields, func(row, line int64) error {
@@ -206,6 +207,10 @@ func (c *csvFile) fill(ctx context.Context, cols []int, out [][]float64, workers
 			return c.eachField(&fields, len(c.cols), line, func(k int, field []byte) error {
 				i := target[k]
 				if i < 0 {
+					return nil
+				}
+				if text := sinks[i].texts; text != nil {
+					text.codes[row] = caches[w][i].cell(field, row)
 					return nil
 				}
 				v, kind := parseCell(field)
@@ -219,7 +224,7 @@ func (c *csvFile) fill(ctx context.Context, cols []int, out [][]float64, workers
 						found[w][i].add(row)
 					}
 				}
-				out[i][row] = v
+				sinks[i].values[row] = v
 				return nil
 			})
 		})
@@ -230,13 +235,31 @@ func (c *csvFile) fill(ctx context.Context, cols []int, out [][]float64, workers
 	if rows != c.total {
 		return nil, faultf(c.path, "the file has changed since it was opened: start again")
 	}
-	total := make([]rounded, len(cols))
+	total := make([]rounded, len(sinks))
 	for _, f := range found {
 		for i := range f {
 			total[i].merge(f[i])
 		}
 	}
 	return total, nil
+}
+
+// newTextCaches returns a cache for every column of text.
+func newTextCaches(sinks []sink) []textCache {
+	caches := make([]textCache, len(sinks))
+	for i, s := range sinks {
+		caches[i].texts = s.texts
+	}
+	return caches
+}
+
+// cell returns the code of a cell. The words for a missing number stand for a
+// missing text too.
+func (c *textCache) cell(field []byte, row int64) int32 {
+	if b := bytes.TrimSpace(field); len(b) <= 4 && missingWords[string(b)] {
+		return noCode
+	}
+	return c.add(field, row)
 }
 
 // blocks cuts the file into blocks of whole records and has them worked on at

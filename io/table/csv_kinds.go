@@ -192,7 +192,7 @@ func (t *csvTally) column(name string) Column {
 		c.Kind, c.Type = Text, "text"
 		c.Reason = fmt.Sprintf("is text: row %d (line %d) holds %s, not a number%s", t.text.row, t.text.line, quote(t.text.value), commaHint(t.text.value))
 	case t.texts > 0:
-		c.Kind, c.Type, c.Reason = Text, "text", "is text"
+		c.Kind, c.Type, c.Reason = Text, "text", plainReason
 		if hint := commaHint(t.text.value); hint != "" {
 			c.Reason = fmt.Sprintf("is text: row %d (line %d) holds %s%s", t.text.row, t.text.line, quote(t.text.value), hint)
 		}

@@ -35,10 +35,92 @@ func digest(v []float64, buf []byte) (sum [32]byte) {
 	return sum
 }
 
+// digestLevels returns the SHA-256 of a column's levels and codes, and of the
+// level that stands apart: a reference, or a success.
+func digestLevels(c coding, apart int) (sum [32]byte) {
+	h := sha256.New()
+	writeInt(h, int64(len(c.names)))
+	writeInt(h, int64(apart))
+	for _, name := range c.names {
+		writeInt(h, int64(len(name)))
+		h.Write([]byte(name))
+	}
+	buf := make([]byte, 0, 4*digestBlock)
+	for i, k := range c.codes {
+		if buf = binary.LittleEndian.AppendUint32(buf, uint32(k)); len(buf) == cap(buf) || i == len(c.codes)-1 {
+			h.Write(buf)
+			buf = buf[:0]
+		}
+	}
+	h.Sum(sum[:0])
+	return sum
+}
+
+// print is what goes into the fingerprint of one column.
+type print struct {
+	role byte
+	name string
+	sum  [32]byte
+}
+
+// letter is a predictor's role in the fingerprint.
+func (p *predictor) letter() byte {
+	switch {
+	case p.always && p.category:
+		return 'A'
+	case p.category:
+		return 'C'
+	case p.always:
+		return 'a'
+	}
+	return 'c'
+}
+
+// sidePrints are those of the columns that are no predictors. They are taken
+// after the outcome and the strata are settled over the rows used.
+func (l *loading) sidePrints() (out []print) {
+	o, d := &l.outcome, l.data
+	buf := make([]byte, digestBlock*8)
+	numbers := func(role byte, c *column) {
+		if c != nil {
+			out = append(out, print{role, c.Name, digest(pickRows(c.values, d.Rows), buf)})
+		}
+	}
+	levels := func(role byte, c *column, levels coding, apart int) {
+		out = append(out, print{role, c.Name, digestLevels(levels, apart)})
+	}
+	switch l.req.Outcome.Measure {
+	case AsNumber:
+		numbers('o', o.column)
+	case AsCount:
+		numbers('n', o.column)
+	case AsYesNo:
+		levels('y', o.column, o.levels, 1)
+	case AsClasses:
+		levels('k', o.column, o.levels, -1)
+	case AsSurvival:
+		numbers('t', o.time)
+		levels('e', o.event, o.status, 1)
+		numbers('l', o.entry)
+		for k, c := range o.strata {
+			levels('s', c, o.stratum[k], -1)
+		}
+	}
+	numbers('f', o.offset)
+	numbers('x', o.exposure)
+	numbers('w', l.weight)
+	for k, c := range l.within {
+		if c != nil { // the outcome stands above
+			levels('d', c, l.withinParts[k], -1)
+		}
+	}
+	return out
+}
+
 // fingerprint combines the digests of the columns with their names and roles
 // and the positions of the rows used. Columns are hashed apart and then
 // together, so that they can be hashed at the same time.
-func fingerprint(tableRows int, rows []int32, roles []byte, names []string, digests [][32]byte) string {
+func fingerprint(tableRows int, rows []int32, prints []print) string {
 	h := sha256.New()
 	h.Write([]byte("holdfast table 1\n"))
 	writeInt(h, int64(tableRows))
@@ -46,12 +128,12 @@ func fingerprint(tableRows int, rows []int32, roles []byte, names []string, dige
 	for _, r := range rows {
 		writeInt(h, int64(r))
 	}
-	writeInt(h, int64(len(names)))
-	for j, name := range names {
-		h.Write(roles[j : j+1])
-		writeInt(h, int64(len(name)))
-		h.Write([]byte(name))
-		h.Write(digests[j][:])
+	writeInt(h, int64(len(prints)))
+	for _, p := range prints {
+		h.Write([]byte{p.role})
+		writeInt(h, int64(len(p.name)))
+		h.Write([]byte(p.name))
+		h.Write(p.sum[:])
 	}
 	return hex.EncodeToString(h.Sum(nil))
 }

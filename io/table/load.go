@@ -3,19 +3,20 @@ package table
 import (
 	"context"
 	"fmt"
+	"slices"
 	"sync"
 	"sync/atomic"
-
-	"holdfast/solver"
 )
 
 // Load reads the columns that a fit needs, all rows of them, and centres
-// them. Memory taken: 8 bytes per row and column, and a bounded workspace per
-// worker. Whatever is wrong with the table or the request is an *Error.
+// them. Memory taken: 8 bytes per row and column of X, and of the outcome and
+// what belongs to it; 4 bytes per row and column that is read by its levels
+// while it lasts; and a bounded workspace per worker. Whatever is wrong with
+// the table or the request is an *Error.
 func (s *Source) Load(ctx context.Context, r Request) (*Data, error) {
 	l := &loading{src: s, req: r, workers: workersOr(r.Workers)}
 	for _, step := range []func(context.Context) error{
-		l.choose, l.read, l.weigh, l.checkOutcome, l.countGaps, l.applyPolicy, l.finish,
+		l.choose, l.read, l.weigh, l.findLevels, l.checkOutcome, l.countGaps, l.applyPolicy, l.finish,
 	} {
 		if err := ctx.Err(); err != nil {
 			return nil, err
@@ -27,23 +28,55 @@ func (s *Source) Load(ctx context.Context, r Request) (*Data, error) {
 	return l.data, nil
 }
 
-// loading is a Load under way. Columns are numbered as they are read:
-// candidates, always, then outcome and weight where asked for.
+// loading is a Load under way.
 type loading struct {
 	src     *Source
 	req     Request
 	workers int
-	cols    []Column
-	from    []int // position in the table of each column
-	p       int   // candidates and always
-	n       int   // rows of the table
-	values  [][]float64
-	rounded []rounded
-	used    []uint64 // rows that count, before missing values are looked at; nil: all
-	zero    int      // rows of weight 0
-	gaps    []Gaps   // per candidate and always
-	holed   []uint64 // rows in which any of those has a gap
-	data    *Data
+	n       int // rows of the table
+
+	columns    []*column // all that are read, each once, predictors first
+	byName     map[string]*column
+	roles      map[string]string // of the columns that may have only one
+	predictors []*predictor      // candidates, then always; those left out are gone
+	outcome    outcome
+	weight     *column
+	within     []*column // nil for the outcome
+
+	withinParts []coding // per column of within: its levels over the rows used
+
+	used  []uint64 // rows that count; nil: all
+	zero  int      // rows of weight 0
+	holed []uint64 // rows in which a predictor has a gap
+	data  *Data
+}
+
+// column is a column of the table that is read.
+type column struct {
+	Column
+	at      int       // position in the table
+	most    int       // levels that are wanted of it; 0: none are
+	inX     bool      // its numbers become a column of X
+	values  []float64 // of numbers
+	texts   *texts    // of text
+	rounded rounded
+}
+
+// predictor is a candidate or an always-in column.
+type predictor struct {
+	*column
+	always   bool
+	category bool
+	levels   coding // of a category
+	gaps     Gaps
+	filled   int64 // gaps of a category that took a level
+}
+
+func (p *predictor) role() string {
+	if p.always {
+		return "an always-in column"
+	}
+	return "a candidate"
 }
 
 func (l *loading) path() string { return l.src.path }
@@ -51,69 +84,104 @@ func (l *loading) path() string { return l.src.path }
 // choose finds the columns asked for and refuses what cannot be had.
 func (l *loading) choose(context.Context) error {
 	l.data = &Data{}
-	if o := l.req.Outcome; o.Measure != AsNumber || o.Offset != "" || o.Exposure != "" || len(l.req.Categories) > 0 || len(l.req.Within) > 0 {
-		return faultf(l.path(), "only an outcome that is a number, and columns of numbers, are read by this version")
-	}
+	l.byName, l.roles = map[string]*column{}, map[string]string{}
 	if err := l.checkRows(); err != nil {
 		return err
 	}
-	all := l.src.format.columns()
-	at := make(map[string]int, len(all))
-	for i, c := range all {
-		at[c.Name] = i
-	}
-	taken := map[string]string{}
-	pick := func(role, name string) error {
-		i, ok := at[name]
-		if !ok {
-			return faultf(l.path(), "there is no column called %s (asked for as %s)", quote(name), role)
-		}
-		if other, twice := taken[name]; twice {
-			return columnFaultf(l.path(), name, "cannot be %s and %s at once", other, role)
-		}
-		taken[name] = role
-		if !all[i].Usable {
-			return columnFaultf(l.path(), name, "cannot be %s: %s", role, all[i].Reason)
-		}
-		l.from, l.cols = append(l.from, i), append(l.cols, all[i])
-		return nil
-	}
 	if len(l.req.Candidates) == 0 {
-		return &Error{Path: l.path(), Why: l.noCandidates(all)}
+		return &Error{Path: l.path(), Why: l.noCandidates(l.src.format.columns())}
 	}
-	for _, name := range l.req.Candidates {
-		if err := pick("a candidate", name); err != nil {
+	positions := make(map[string]int, len(l.src.format.columns()))
+	for i, c := range l.src.format.columns() {
+		positions[c.Name] = i
+	}
+	ask := asking{l, positions}
+	for _, step := range []func() error{ask.predictors, ask.outcome, ask.weight, ask.within} {
+		if err := step(); err != nil {
 			return err
 		}
 	}
-	for _, name := range l.req.Always {
-		if err := pick("an always-in column", name); err != nil {
+	return l.checkCells(0)
+}
+
+// asking looks the columns of a request up.
+type asking struct {
+	*loading
+	positions map[string]int // of every column of the table
+}
+
+// only is column for a column that has no other role.
+func (l asking) only(role, name string, most int) (*column, error) {
+	if other, twice := l.roles[name]; twice {
+		return nil, columnFaultf(l.path(), name, "cannot be %s and %s at once", other, role)
+	}
+	c, err := l.column(role, name, most)
+	if err == nil {
+		l.roles[name] = role
+	}
+	return c, err
+}
+
+// column returns a column of the table, noted to be read: as numbers, or by at
+// most so many levels.
+func (l asking) column(role, name string, most int) (*column, error) {
+	at, ok := l.positions[name]
+	if !ok {
+		return nil, faultf(l.path(), "there is no column called %s (asked for as %s)", quote(name), role)
+	}
+	found := l.src.format.columns()[at]
+	switch {
+	case most == 0 && found.Kind == Text:
+		return nil, columnFaultf(l.path(), name, "cannot be %s: %s, and a number is needed", role, found.Reason)
+	case most == 0 && !found.Usable, !found.levelled():
+		return nil, columnFaultf(l.path(), name, "cannot be %s: %s", role, found.Reason)
+	}
+	c := l.byName[name]
+	if c == nil {
+		c = &column{Column: found, at: at}
+		l.byName[name], l.columns = c, append(l.columns, c)
+	}
+	c.most = max(c.most, most)
+	return c, nil
+}
+
+// predictors finds candidates and always-in columns.
+func (l asking) predictors() error {
+	for i, name := range slices.Concat(l.req.Candidates, l.req.Always) {
+		p := &predictor{always: i >= len(l.req.Candidates), category: slices.Contains(l.req.Categories, name)}
+		at, known := l.positions[name]
+		p.category = p.category || known && l.src.format.columns()[at].Kind == Text
+		most := 0
+		if p.category {
+			most = MostLevels
+		}
+		var err error
+		if p.column, err = l.only(p.role(), name, most); err != nil {
 			return err
 		}
+		p.inX = !p.category
+		l.loading.predictors = append(l.loading.predictors, p)
 	}
-	l.p = len(l.from)
-	if l.req.Outcome.Column != "" {
-		if err := pick("the outcome", l.req.Outcome.Column); err != nil {
-			return err
-		}
-	}
+	return l.checkCategories()
+}
+
+// weight finds the column of case weights.
+func (l asking) weight() (err error) {
 	if l.req.Weight != "" {
-		if err := pick("the case weight", l.req.Weight); err != nil {
-			return err
-		}
+		l.loading.weight, err = l.only("the case weight", l.req.Weight, 0)
 	}
-	return checkMemory(l.path(), l.n, len(l.from), l.req.Memory)
+	return err
 }
 
 // noCandidates explains a table or a request without candidates.
 func (l *loading) noCandidates(all []Column) string {
 	for _, c := range all {
-		if c.Usable && c.Name != l.req.Outcome.Column && c.Name != l.req.Weight {
+		if c.levelled() && c.Name != l.req.Outcome.Column && c.Name != l.req.Weight {
 			return "no candidate column was asked for"
 		}
 	}
 	for _, c := range all {
-		if !c.Usable {
+		if !c.levelled() {
 			return fmt.Sprintf("no column is left that could be a candidate (%s: %s)", quote(c.Name), c.Reason)
 		}
 	}
@@ -136,25 +204,70 @@ func (l *loading) checkRows() error {
 	return nil
 }
 
-// read fills one block of memory, column after column.
+// checkCells refuses a table that cannot be held: the columns that are read,
+// and so many indicator columns, which are made when the others are there.
+func (l *loading) checkCells(indicators int) error {
+	if indicators > 0 && l.req.Memory <= 0 {
+		return checkMemory(l.path(), l.n, indicators, 0)
+	}
+	numbers, halves := indicators, 0
+	for _, c := range l.columns {
+		if c.Kind != Text {
+			numbers++
+		}
+		if c.most > 0 { // codes take half as much
+			halves++
+		}
+	}
+	return checkMemory(l.path(), l.n, numbers+(halves+1)/2, l.req.Memory)
+}
+
+// read fills one block of memory with what becomes X, column after column, and
+// others with the rest.
 func (l *loading) read(ctx context.Context) error {
 	if err := l.src.unchanged(); err != nil {
 		return err
 	}
-	l.values = newColumns(l.n, len(l.from))
-	var err error
-	l.rounded, err = l.src.format.fill(ctx, l.from, l.values, l.workers)
+	inX, beside := 0, 0
+	for _, c := range l.columns {
+		switch {
+		case c.Kind == Text:
+			c.texts = newTexts(l.n, c.most)
+		case c.inX:
+			inX++
+		default:
+			beside++
+		}
+	}
+	block, rest := newColumns(l.n, inX), newColumns(l.n, beside)
+	sinks := make([]sink, len(l.columns))
+	for i, c := range l.columns {
+		switch {
+		case c.texts != nil:
+		case c.inX:
+			c.values, block = block[0], block[1:]
+		default:
+			c.values, rest = rest[0], rest[1:]
+		}
+		sinks[i] = sink{col: c.at, values: c.values, texts: c.texts}
+	}
+	found, err := l.src.format.fill(ctx, sinks, l.workers)
 	if err != nil {
 		return err
 	}
-	for i, r := range l.rounded {
+	for i, r := range found {
+		l.columns[i].rounded = r
 		if r.count > 0 {
-			l.data.Notes = append(l.data.Notes, fmt.Sprintf(
-				"column %s: %s cannot be held exactly and %s rounded to the nearest float64 (the first in row %d)",
-				quote(l.cols[i].Name), plural(r.count, "integer"), wasWere(r.count), r.first))
+			l.note("column %s: %s cannot be held exactly and %s rounded to the nearest float64 (the first in row %d)",
+				quote(l.columns[i].Name), plural(r.count, "integer"), wasWere(r.count), r.first)
 		}
 	}
 	return nil
+}
+
+// note adds a sentence that the user should read.
+func (l *loading) note(format string, args ...any) {
+	l.data.Notes = append(l.data.Notes, fmt.Sprintf(format, args...))
 }
 
 // newColumns returns p slices of n values that lie one behind the other.
@@ -170,11 +283,11 @@ func newColumns(n, p int) [][]float64 {
 // weigh checks the case weights and takes rows of weight 0 out of use.
 func (l *loading) weigh(context.Context) error {
 	l.data.TableRows = l.n
-	if l.req.Weight == "" {
+	if l.weight == nil {
 		return nil
 	}
-	w := l.values[len(l.values)-1]
-	if err := l.checkComplete(l.req.Weight, "case weight", w); err != nil {
+	w := l.weight.values
+	if err := l.checkComplete(l.weight, "case weight", w); err != nil {
 		return err
 	}
 	var negative []int
@@ -195,7 +308,7 @@ func (l *loading) weigh(context.Context) error {
 	if l.zero == 0 {
 		l.used = nil
 	} else {
-		l.data.Notes = append(l.data.Notes, fmt.Sprintf("%s of weight 0 %s left out", plural(int64(l.zero), "row"), wasWere(int64(l.zero))))
+		l.note("%s of weight 0 %s left out", plural(int64(l.zero), "row"), wasWere(int64(l.zero)))
 	}
 	if l.n-l.zero < 2 {
 		return columnFaultf(l.path(), l.req.Weight, "only %s a weight above 0", plural(int64(l.n-l.zero), "row has", "rows have"))
@@ -203,34 +316,33 @@ func (l *loading) weigh(context.Context) error {
 	return nil
 }
 
-// checkOutcome refuses an outcome with anything but finite numbers.
-func (l *loading) checkOutcome(context.Context) error {
-	if l.req.Outcome.Column == "" {
-		return nil
-	}
-	return l.checkComplete(l.req.Outcome.Column, "outcome", l.values[l.p])
-}
+// inUse reports whether row i counts.
+func (l *loading) inUse(i int) bool { return l.used == nil || l.used[i>>6]>>(i&63)&1 == 1 }
 
 // checkComplete names the rows in use in which a column has no finite number.
-func (l *loading) checkComplete(name, role string, v []float64) error {
+func (l *loading) checkComplete(c *column, role string, v []float64) error {
 	var absent, bad []int
 	for i, x := range v {
 		switch {
-		case !notFinite(x) || l.used != nil && l.used[i>>6]>>(i&63)&1 == 0:
+		case !notFinite(x) || !l.inUse(i):
 		case isMissing(x):
 			absent = append(absent, i)
 		default:
 			bad = append(bad, i)
 		}
 	}
-	advice := "complete it, or leave these rows out of the table (it is never filled)"
 	switch {
 	case len(absent) > 0:
-		return columnFaultf(l.path(), name, "the %s is missing in %s: %s", role, rowList(absent), advice)
+		return l.incomplete(c, role, "missing", absent)
 	case len(bad) > 0:
-		return columnFaultf(l.path(), name, "the %s is NaN or infinite in %s: %s", role, rowList(bad), advice)
+		return l.incomplete(c, role, "NaN or infinite", bad)
 	}
 	return nil
+}
+
+func (l *loading) incomplete(c *column, role, what string, rows []int) error {
+	return columnFaultf(l.path(), c.Name, "the %s is %s in %s: complete it, or leave these rows out of the table (it is never filled)",
+		role, what, rowList(rows))
 }
 
 // each runs work for 0..count-1 on the workers; every worker has an own
@@ -264,101 +376,4 @@ func parallel(ctx context.Context, workers, count int, work func(worker, i int) 
 		return first.err
 	}
 	return ctx.Err()
-}
-
-// finish compacts, fingerprints and centres the columns.
-func (l *loading) finish(ctx context.Context) error {
-	rows := l.rowsUsed()
-	n := l.n
-	if rows != nil {
-		n = len(rows)
-		l.data.Rows = rows
-	}
-	digests := make([][32]byte, len(l.values))
-	holes := make([][]uint64, l.p)
-	l.data.Centre, l.data.Deviation = make([]float64, l.p), make([]float64, l.p)
-	buffers := make([][]byte, l.workers)
-	err := l.each(ctx, len(l.values), func(w, j int) error {
-		if buffers[w] == nil {
-			buffers[w] = make([]byte, digestBlock*8)
-		}
-		v := compact(l.values[j], rows)
-		l.values[j] = v
-		digests[j] = digest(v, buffers[w])
-		if j >= l.p {
-			return nil
-		}
-		c, ok := centreOf(v)
-		if !ok {
-			return columnFaultf(l.path(), l.cols[j].Name, "values are too far apart for float64: rescale the column")
-		}
-		l.data.Centre[j] = c
-		holes[j] = centre(v, c)
-		l.data.Deviation[j] = deviation(v)
-		return nil
-	})
-	if err != nil {
-		return err
-	}
-	l.assemble(n, digests, holes)
-	return nil
-}
-
-// assemble puts the finished columns where the caller finds them.
-func (l *loading) assemble(n int, digests [][32]byte, holes [][]uint64) {
-	d, c := l.data, len(l.req.Candidates)-len(l.data.Excluded)
-	d.Candidates, d.Always = names(l.cols[:c]), names(l.cols[c:l.p])
-	masks := map[int32][]uint64{}
-	for j, m := range holes {
-		if m != nil {
-			masks[int32(j)] = m
-		}
-	}
-	if len(masks) == 0 {
-		masks = nil
-	}
-	d.Names = names(l.cols[:l.p])
-	for j := range l.p {
-		if j < c {
-			d.CandidateColumns = append(d.CandidateColumns, []int32{int32(j)})
-		} else {
-			d.AlwaysColumns = append(d.AlwaysColumns, []int32{int32(j)})
-		}
-	}
-	d.X = solver.NewDense(n, l.values[:l.p:l.p], masks)
-	rest := l.values[l.p:]
-	if l.req.Outcome.Column != "" {
-		d.Outcome, rest = append([]float64(nil), rest[0]...), rest[1:]
-	}
-	if l.req.Weight != "" {
-		d.Weight = append([]float64(nil), rest[0]...)
-	}
-	d.Fingerprint = fingerprint(l.n, d.Rows, l.roles(c), names(l.cols), digests)
-}
-
-// roles returns one letter per column read.
-func (l *loading) roles(candidates int) []byte {
-	roles := make([]byte, 0, len(l.cols))
-	for j := range l.p {
-		if j < candidates {
-			roles = append(roles, 'c')
-		} else {
-			roles = append(roles, 'a')
-		}
-	}
-	if l.req.Outcome.Column != "" {
-		roles = append(roles, 'o')
-	}
-	if l.req.Weight != "" {
-		roles = append(roles, 'w')
-	}
-	return roles
-}
-
-func names(cols []Column) []string {
-	out := make([]string, len(cols))
-	for i, c := range cols {
-		out[i] = c.Name
-	}
-	return out
 }

@@ -31,7 +31,7 @@ func tryLoad(t testing.TB, path string, r Request) (*Data, error) {
 	return s.Load(t.Context(), r)
 }
 
-func column(d *Data, j int) []float64 {
+func centred(d *Data, j int) []float64 {
 	n, _ := d.X.Dims()
 	return d.X.Panel([]int32{int32(j)}, 0, n, nil)[0]
 }
@@ -64,7 +64,7 @@ func TestCentreOfShiftedColumns(t *testing.T) {
 		if rel := math.Abs(d.Deviation[j]/sd - 1); rel > 1e-14 {
 			t.Errorf("%s: deviation %v, want %v (relative error %.1e)", c.name, d.Deviation[j], sd, rel)
 		}
-		for i, v := range column(d, j) {
+		for i, v := range centred(d, j) {
 			if exact := new(big.Float).Sub(new(big.Float).SetFloat64(c.cells[i].(float64)), new(big.Float).SetFloat64(d.Centre[j])); c.name != "x0" {
 				if f, acc := exact.Float64(); acc != big.Exact || f != v {
 					t.Fatalf("%s row %d: %v is not the exact difference", c.name, i, v)
@@ -242,7 +242,7 @@ func TestDropRows(t *testing.T) {
 		t.Errorf("notes %q, want %q", d.Notes, want)
 	}
 	for j := range p {
-		for i, v := range column(d, j) {
+		for i, v := range centred(d, j) {
 			r := int(d.Rows[i])
 			if want := float64(r*r%17) + 1e8 + []float64{0, 0, 1, 2}[j] - d.Centre[j]; v != want {
 				t.Fatalf("column %d row %d is %v, want %v", j, i, v, want)
@@ -295,7 +295,7 @@ func TestFillMean(t *testing.T) {
 	if want := math.Sqrt(square / 40); math.Abs(d.Deviation[1]/want-1) > 1e-12 {
 		t.Errorf("deviation %v, want %v", d.Deviation[1], want)
 	}
-	for i, v := range column(d, 1) {
+	for i, v := range centred(d, 1) {
 		if i%2 == 0 && v != 0 {
 			t.Errorf("the missing cell in row %d holds %v", i, v)
 		}
@@ -364,15 +364,16 @@ func TestRoundedIntegersAreSaid(t *testing.T) {
 }
 
 func TestRequestsThatCannotBeMet(t *testing.T) {
-	path := writeText(t, tempFile(t, "t.csv"), "y,a,feed,b\n1,1,algae,2\n2,2,yeast,3\n3,5,algae,1\n")
+	path := writeText(t, tempFile(t, "t.csv"), "y,a,feed,b,day\n1,1,algae,2,2024-01-31\n2,2,yeast,3,2024-02-01\n3,5,algae,1,2024-02-02\n")
 	for _, c := range []struct {
 		r    Request
 		want []string
 	}{
 		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"nope"}}, []string{`there is no column called "nope" (asked for as a candidate)`}},
 		{Request{Outcome: Outcome{Column: "z"}, Candidates: []string{"a"}}, []string{`there is no column called "z" (asked for as the outcome)`}},
-		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "feed"}}, []string{`column "feed": cannot be a candidate: is text`}},
-		{Request{Outcome: Outcome{Column: "feed"}, Candidates: []string{"a"}}, []string{`column "feed": cannot be the outcome: is text`}},
+		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "day"}}, []string{`column "day": cannot be a candidate: is a date or time, not a number`}},
+		{Request{Outcome: Outcome{Column: "feed"}, Candidates: []string{"a"}}, []string{`column "feed": cannot be the outcome: is text, and a number is needed (kind = "yes-no" and kind = "classes" read text)`}},
+		{Request{Outcome: Outcome{Column: "y"}, Weight: "feed", Candidates: []string{"a"}}, []string{`column "feed": cannot be the case weight: is text, and a number is needed`}},
 		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "y"}}, []string{`column "y": cannot be a candidate and the outcome at once`}},
 		{Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"a", "a"}}, []string{`column "a": cannot be a candidate and a candidate at once`}},
 		{Request{Outcome: Outcome{Column: "y"}}, []string{"no candidate column was asked for"}},
@@ -381,9 +382,9 @@ func TestRequestsThatCannotBeMet(t *testing.T) {
 		_, err := tryLoad(t, path, c.r)
 		wantError(t, err, c.want...)
 	}
-	text := writeText(t, tempFile(t, "t.csv"), "y,feed\n1,a\n2,b\n3,c\n")
+	text := writeText(t, tempFile(t, "t.csv"), "y,day\n1,2024-01-31\n2,2024-02-01\n3,2024-02-02\n")
 	_, err := tryLoad(t, text, Request{Outcome: Outcome{Column: "y"}})
-	wantError(t, err, `no column is left that could be a candidate ("feed": is text)`)
+	wantError(t, err, `no column is left that could be a candidate ("day": is a date or time, not a number)`)
 }
 
 func TestTablesThatCannotBeRead(t *testing.T) {

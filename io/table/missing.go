@@ -13,16 +13,19 @@ import (
 // countGaps counts missing, NaN and infinite cells of candidates and always-in
 // columns over the rows in use.
 func (l *loading) countGaps(ctx context.Context) error {
-	l.gaps = make([]Gaps, l.p)
 	words := (l.n + 63) / 64
 	masks := make([][]uint64, l.workers)
-	err := l.each(ctx, l.p, func(w, j int) error {
+	err := l.each(ctx, len(l.predictors), func(w, j int) error {
 		if masks[w] == nil {
 			masks[w] = make([]uint64, words)
 		}
-		g := gapsOf(l.values[j], l.used, masks[w])
-		g.Column = l.cols[j].Name
-		l.gaps[j] = g
+		p := l.predictors[j]
+		if p.category {
+			p.gaps = gapsOfLevels(p.levels.codes, l.used, masks[w])
+		} else {
+			p.gaps = gapsOf(p.values, l.used, masks[w])
+		}
+		p.gaps.Column = p.Name
 		return nil
 	})
 	if err != nil {
@@ -70,6 +73,29 @@ func gapsOf(v []float64, used, mark []uint64) Gaps {
 	return g
 }
 
+// gapsOfLevels is gapsOf for a category.
+func gapsOfLevels(codes []int32, used, mark []uint64) Gaps {
+	var g Gaps
+	var rows int64
+	for i, k := range codes {
+		if used == nil || used[i>>6]>>(i&63)&1 == 1 {
+			rows++
+			if k < 0 {
+				g.Missing++
+			}
+		}
+	}
+	if g.Missing == 0 || g.Missing == rows {
+		return g
+	}
+	for i, k := range codes {
+		if k < 0 && (used == nil || used[i>>6]>>(i&63)&1 == 1) {
+			mark[i>>6] |= 1 << (i & 63)
+		}
+	}
+	return g
+}
+
 // excludeEmpty leaves out candidates that hold no value at all, except under
 // Refuse, where every gap is refused.
 func (l *loading) excludeEmpty() {
@@ -77,35 +103,26 @@ func (l *loading) excludeEmpty() {
 		return
 	}
 	full := int64(l.n - l.zero)
-	keep, candidates := 0, len(l.req.Candidates)
-	for j := range l.values {
-		if j < candidates && l.gaps[j].Missing+l.gaps[j].NaN == full {
-			l.data.Excluded = append(l.data.Excluded, Exclusion{l.cols[j].Name, "no row has a value"})
-			continue
+	l.leaveOut(func(_ int, p *predictor) string {
+		if p.gaps.Missing+p.gaps.NaN == full {
+			return noValue
 		}
-		l.values[keep], l.cols[keep], l.rounded[keep] = l.values[j], l.cols[j], l.rounded[j]
-		if j < l.p {
-			l.gaps[keep] = l.gaps[j]
-		}
-		keep++
-	}
-	gone := len(l.values) - keep
-	l.p -= gone
-	l.values, l.cols, l.gaps = l.values[:keep], l.cols[:keep], l.gaps[:l.p]
+		return ""
+	})
 }
 
 // applyPolicy refuses, or decides what happens to the gaps.
 func (l *loading) applyPolicy(context.Context) error {
-	if len(l.data.Excluded) == len(l.req.Candidates) {
-		return faultf(l.path(), "no candidate is left: in none of %s does any row have a value", plural(int64(len(l.req.Candidates)), "candidate"))
+	if err := l.anyLeft(); err != nil {
+		return err
 	}
 	worst := l.worstFirst()
 	if len(worst) == 0 {
 		return nil
 	}
-	for j := len(l.req.Candidates) - len(l.data.Excluded); j < l.p; j++ {
-		if l.req.Missing != Refuse && l.gaps[j].Total() == int64(l.n-l.zero) {
-			return columnFaultf(l.path(), l.cols[j].Name, "cannot be an always-in column: no row has a value")
+	for _, p := range l.predictors {
+		if p.always && l.req.Missing != Refuse && p.gaps.Total() == int64(l.n-l.zero) {
+			return columnFaultf(l.path(), p.Name, "cannot be an always-in column: %s", noValue)
 		}
 	}
 	switch l.req.Missing {
@@ -121,9 +138,9 @@ func (l *loading) applyPolicy(context.Context) error {
 // among equals.
 func (l *loading) worstFirst() []Gaps {
 	var out []Gaps
-	for _, g := range l.gaps {
-		if g.Total() > 0 {
-			out = append(out, g)
+	for _, p := range l.predictors {
+		if p.gaps.Total() > 0 {
+			out = append(out, p.gaps)
 		}
 	}
 	sort.SliceStable(out, func(a, b int) bool { return out[a].Total() > out[b].Total() })
@@ -153,8 +170,7 @@ func (l *loading) dropRows(worst []Gaps) error {
 		}
 		l.used[i] &^= w
 	}
-	l.data.Notes = append(l.data.Notes, fmt.Sprintf(
-		"drop-rows left out %d of %d rows (%.1f %%) because of gaps in %s: %s", lost, before, share, plural(int64(len(worst)), "column"), gapList(worst)))
+	l.note("drop-rows left out %d of %d rows (%.1f %%) because of gaps in %s: %s", lost, before, share, plural(int64(len(worst)), "column"), gapList(worst))
 	return nil
 }
 
@@ -172,24 +188,41 @@ func (l *loading) gapFault(gaps []Gaps, why string) error {
 	return &Error{Path: l.path(), Why: why, Gaps: gaps, Rows: l.n - l.zero, Lost: l.lost()}
 }
 
-// fillMean keeps the gaps, except infinite values.
+// fillMean keeps the gaps of numbers, except infinite values, and fills those
+// of categories.
 func (l *loading) fillMean(worst []Gaps) error {
-	var infinite []Gaps
+	var infinite, numbers []Gaps
 	var cells int64
+	category := map[string]bool{}
+	for _, p := range l.predictors {
+		category[p.Name] = p.category
+	}
 	for _, g := range worst {
 		if g.Infinite > 0 {
 			infinite = append(infinite, Gaps{Column: g.Column, Infinite: g.Infinite})
 		}
-		cells += g.Total()
+		if !category[g.Column] {
+			numbers = append(numbers, g)
+			cells += g.Total()
+		}
 	}
 	if len(infinite) > 0 {
 		sort.SliceStable(infinite, func(a, b int) bool { return infinite[a].Infinite > infinite[b].Infinite })
 		return l.gapFault(infinite, fmt.Sprintf(
 			"infinite values are never filled: %s; correct them, leave these columns out, or use missing = \"drop-rows\"", gapList(infinite)))
 	}
-	l.data.Missing = worst
-	l.data.Notes = append(l.data.Notes, fmt.Sprintf("fill-mean: %s in %s take%s the mean of the draw",
-		plural(cells, "cell"), plural(int64(len(worst)), "column"), thirdPerson(cells)))
+	l.data.Missing = numbers
+	if cells > 0 {
+		l.note("fill-mean: %s in %s take%s the mean of the draw",
+			plural(cells, "cell"), plural(int64(len(numbers)), "column"), thirdPerson(cells))
+	}
+	for _, p := range l.predictors {
+		if p.category && p.gaps.Missing > 0 {
+			level := l.fillLevel(p)
+			l.note("fill-mean: %s of category %s take%s its most frequent level, %s",
+				plural(p.filled, "cell"), quote(p.Name), thirdPerson(p.filled), quote(level))
+		}
+	}
 	return nil
 }
 
@@ -207,8 +240,9 @@ func (l *loading) refusal(worst []Gaps) string {
 			empty++
 		}
 	}
+	p := len(l.predictors)
 	fmt.Fprintf(&b, "leaving %s out keeps all %d rows and %d of %d columns; missing = \"drop-rows\" keeps %d rows",
-		itThem(len(worst)), rows, l.p-len(worst), l.p, rows-lost)
+		itThem(len(worst)), rows, p-len(worst), p, rows-lost)
 	if empty > 0 {
 		fmt.Fprintf(&b, " (without %s that %s no value at all)", plural(int64(empty), "column"), hasHave(empty))
 	}

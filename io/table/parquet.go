@@ -75,7 +75,7 @@ type chunkTask struct {
 
 // fill implements format. Row groups are read one after the other, the
 // columns of each at the same time.
-func (s *parquetSet) fill(ctx context.Context, cols []int, out [][]float64, workers int) ([]rounded, error) {
+func (s *parquetSet) fill(ctx context.Context, sinks []sink, workers int) ([]rounded, error) {
 	var tasks []chunkTask
 	for i, pf := range s.files {
 		row := pf.firstRow
@@ -84,7 +84,7 @@ func (s *parquetSet) fill(ctx context.Context, cols []int, out [][]float64, work
 			row += pf.groups[g].rows
 		}
 	}
-	total := make([]rounded, len(cols))
+	total := make([]rounded, len(sinks))
 	readers := make([]*chunkReader, workers)
 	open := -1
 	var f *os.File
@@ -104,7 +104,7 @@ func (s *parquetSet) fill(ctx context.Context, cols []int, out [][]float64, work
 			}
 			open = t.file
 		}
-		if err := s.fillGroup(ctx, f, t, cols, out, total, readers); err != nil {
+		if err := s.fillGroup(ctx, f, t, sinks, total, readers); err != nil {
 			return nil, err
 		}
 	}
@@ -112,30 +112,35 @@ func (s *parquetSet) fill(ctx context.Context, cols []int, out [][]float64, work
 }
 
 // fillGroup reads the columns of one row group.
-func (s *parquetSet) fillGroup(ctx context.Context, f *os.File, t chunkTask, cols []int, out [][]float64, total []rounded, readers []*chunkReader) error {
+func (s *parquetSet) fillGroup(ctx context.Context, f *os.File, t chunkTask, sinks []sink, total []rounded, readers []*chunkReader) error {
 	pf := s.files[t.file]
 	group := &pf.groups[t.group]
 	if group.rows == 0 {
 		return nil
 	}
-	return parallel(ctx, len(readers), len(cols), func(w, k int) error {
+	end := t.first + group.rows
+	return parallel(ctx, len(readers), len(sinks), func(w, k int) (err error) {
 		if readers[w] == nil {
 			readers[w] = &chunkReader{}
 		}
-		l := s.leaves[t.file][cols[k]]
-		dst := out[k][t.first : t.first+group.rows]
-		rd, err := readers[w].read(f, group.chunks[l.chunk], l, dst, t.first)
-		if err != nil {
-			return inColumn(pf.path, s.cols[cols[k]].Name, err)
+		l := s.leaves[t.file][sinks[k].col]
+		chunk := group.chunks[l.chunk]
+		if text := sinks[k].texts; text != nil {
+			err = readers[w].readText(f, chunk, l, text, text.codes[t.first:end], t.first)
+		} else {
+			var rd rounded
+			rd, err = readers[w].read(f, chunk, l, sinks[k].values[t.first:end], t.first)
+			total[k].merge(rd)
 		}
-		total[k].merge(rd)
-		return nil
+		return inColumn(pf.path, s.cols[sinks[k].col].Name, err)
 	})
 }
 
 // inColumn is inFile for errors met in a column.
 func inColumn(path, column string, err error) error {
-	err = inFile(path, err)
+	if err = inFile(path, err); err == nil {
+		return nil
+	}
 	var e *Error
 	if errors.As(err, &e) && e.Column == "" {
 		e.Column = column

@@ -34,6 +34,12 @@ type pages struct {
 	queue  []file.Page
 	page   file.Page
 
+	text     bool   // values are text: they are not queued but left in values
+	words    []byte // of text: the dictionary
+	entries  int    // of text: values in the dictionary
+	values   []byte // of text: the values of the current page
+	encoding int32  // of text: how they are stored
+
 	count  int    // rows of the current page
 	filled int    // of them with a value
 	valid  []byte // bit per row of the current page; empty: all have a value
@@ -67,6 +73,8 @@ const (
 	encodingRLE         = 3
 	encodingBitPacked   = 4
 	encodingDeltaBinary = 5
+	encodingDeltaLength = 6
+	encodingDeltaText   = 7
 	encodingRLEDict     = 8
 	encodingSplit       = 9
 )
@@ -89,6 +97,7 @@ func (p *pages) open(f *os.File, c columnChunk, l *leaf, rows int64) {
 	}
 	p.left, p.codec, p.leaf, p.rows = c.length+100, c.codec, l, rows
 	p.queue, p.page = p.queue[:0], nil
+	p.text, p.words, p.entries, p.values = false, nil, 0, nil
 }
 
 // next reads pages up to the next data page and queues them for the column
@@ -279,13 +288,14 @@ func grow(b []byte, n int) []byte {
 }
 
 // dictionary queues a dictionary page. Its bytes outlive the page, so they
-// are not taken from the kept buffer.
+// are not taken from the kept buffer. It may have more values than there are
+// rows: some writers put the dictionary of a whole table into every row group.
 func (p *pages) dictionary(h pageHeader) error {
 	least := max(p.leaf.width(), 1) // bytes of a value; byte arrays have their length in front
 	if p.leaf.physical == physicalByteArray {
 		least = 4
 	}
-	if int64(h.values) > p.rows || int64(h.values)*least > int64(h.plain) {
+	if int64(h.values) > max(p.rows, dictionaryEntries) || int64(h.values)*least > int64(h.plain) {
 		return damagedf("a dictionary of %d values and %d bytes for %d rows", h.values, h.plain, p.rows)
 	}
 	stored, err := p.stored(h)
@@ -295,6 +305,10 @@ func (p *pages) dictionary(h pageHeader) error {
 	plain := make([]byte, h.plain)
 	if err := unpack(p.codec, plain, stored); err != nil {
 		return err
+	}
+	if p.text {
+		p.words, p.entries = plain, int(h.values)
+		return nil
 	}
 	p.queue = append(p.queue, file.NewDictionaryPage(memory.NewBufferBytes(plain), h.values, parquet.Encoding(h.encoding)))
 	return nil
@@ -475,6 +489,10 @@ func (p *pages) takeLevels(has func(row int) bool) {
 // offer queues the values of a page for the column reader.
 func (p *pages) offer(encoding int32, values []byte) error {
 	if p.filled == 0 {
+		return nil
+	}
+	if p.text {
+		p.values, p.encoding = values, encoding
 		return nil
 	}
 	switch encoding {

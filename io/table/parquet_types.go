@@ -119,7 +119,7 @@ func (e schemaElement) kind() (Kind, string) {
 	}
 	switch e.logical {
 	case logicalString, logicalEnum, logicalJSON:
-		return Text, "is text"
+		return Text, plainReason
 	case logicalDate, logicalTime, logicalTimestamp:
 		return Date, "is a date or time, not a number"
 	case logicalBSON, logicalUUID:

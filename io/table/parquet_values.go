@@ -27,13 +27,8 @@ type chunkReader struct {
 // is the table row of dst[0], for the count of rounded integers.
 func (r *chunkReader) read(f *os.File, c columnChunk, l *leaf, dst []float64, first int64) (rd rounded, err error) {
 	defer guard(&err)
-	switch {
-	case c.elsewhere:
-		return rd, refusef("the column lies in another file, which is not read")
-	case c.sealed:
-		return rd, refusef("the column is encrypted: write a copy that is not")
-	case c.values != int64(len(dst)):
-		return rd, damagedf("a column chunk claims %d values for %d rows", c.values, len(dst))
+	if err := c.readable(len(dst)); err != nil {
+		return rd, err
 	}
 	r.pages.open(f, c, l, int64(len(dst)))
 	col := file.NewColumnReader(l.descr, &r.pages, memory.DefaultAllocator, nil)
@@ -52,6 +47,19 @@ func (r *chunkReader) read(f *os.File, c columnChunk, l *leaf, dst []float64, fi
 		row += r.pages.count
 	}
 	return rd, nil
+}
+
+// readable refuses a chunk that lies elsewhere, or does not hold a value per row.
+func (c columnChunk) readable(rows int) error {
+	switch {
+	case c.elsewhere:
+		return refusef("the column lies in another file, which is not read")
+	case c.sealed:
+		return refusef("the column is encrypted: write a copy that is not")
+	case c.values != int64(rows):
+		return damagedf("a column chunk claims %d values for %d rows", c.values, rows)
+	}
+	return nil
 }
 
 // spread moves the values at the front of v to the rows that have one, from

@@ -167,6 +167,7 @@ type target struct {
 	values  []float64
 	larger  float64 // the larger of two values
 	twofold bool
+	levels  *coding // of text with more than two levels; values are their numbers
 }
 
 func newTarget(name string, v []float64) *target {
@@ -198,10 +199,19 @@ func (sc *scan) compare(c *ColumnSummary, v, scratch []float64) {
 	if sc.target == nil || c.Name == sc.target.name || c.Constant {
 		return
 	}
-	c.Correlation = correlation(v, sc.target.values)
+	if sc.target.levels != nil {
+		c.Correlation = correlationRatio(v, *sc.target.levels)
+	} else {
+		c.Correlation = correlation(v, sc.target.values)
+	}
 	if sc.target.twofold {
 		c.AUC = sc.target.auc(v, scratch)
 	}
+	c.judgeLeak()
+}
+
+// judgeLeak says whether a column seems to be the outcome itself.
+func (c *ColumnSummary) judgeLeak() {
 	c.Leak = math.Abs(c.Correlation) >= LeakCorrelation || c.AUC > leakAUC || c.AUC < 1-leakAUC
 }
 

@@ -160,7 +160,7 @@ func TestScanInManyBatches(t *testing.T) {
 	for k := range parts.Columns {
 		nan := math.NaN()
 		parts.Columns[k] = ColumnSummary{Column: s.format.columns()[k], Min: nan, Max: nan, Mean: nan, SD: nan, Serial: nan, Correlation: nan, AUC: nan}
-		if parts.Columns[k].Usable {
+		if parts.Columns[k].levelled() {
 			must(t, sc.columns(t.Context(), []int{k}, parts))
 		}
 	}
@@ -181,9 +181,9 @@ func TestLeakOfANumberOutcome(t *testing.T) {
 }
 
 func TestScanErrors(t *testing.T) {
-	s, err := Open(writeText(t, tempFile(t, "t.csv"), "y,feed\n1,a\n2,b\n"))
+	s, err := Open(writeText(t, tempFile(t, "t.csv"), "y,day\n1,2024-01-31\n2,2024-02-01\n"))
 	must(t, err)
-	wantError(t, second(s.Scan(t.Context(), "feed")), `column "feed": cannot be the outcome: is text`)
+	wantError(t, second(s.Scan(t.Context(), "day")), `column "day": cannot be the outcome: is a date or time, not a number`)
 	wantError(t, second(s.Scan(t.Context(), "z")), `there is no column called "z" (asked for as the outcome)`)
 	s, err = Open(writeText(t, tempFile(t, "t.csv"), "y,feed\n"))
 	must(t, err)

@@ -20,7 +20,7 @@ const (
 	Number  Kind = iota // floating point of any width, decimals
 	Integer             // integers of any width, signed or not
 	Boolean             // false and true, read as 0 and 1
-	Text                // text, or a dictionary of text: a category to be
+	Text                // text, or a dictionary of text: read by its levels
 	Date                // dates, times, timestamps, durations
 	Binary              // bytes without a meaning known here
 	Nested              // lists, structs, maps, unions
@@ -44,21 +44,31 @@ type Column struct {
 	Name   string
 	Type   string // type in the words of the file format, for people
 	Kind   Kind
-	Usable bool   // can be a candidate, an always-in column, an outcome or a weight
+	Usable bool   // its values are numbers
 	Reason string // why not, if it is not usable
 }
+
+// levelled reports whether a column can be read by its levels.
+func (c Column) levelled() bool { return c.Usable || c.Kind == Text }
 
 // format is an opened table in one of the file formats.
 type format interface {
 	columns() []Column
 	rows() int64
-	// fill reads the columns with the positions cols, all usable, into out: a
-	// slice of rows() values each. Missing cells become the value missing.
-	// It returns, column by column, the integers that were rounded.
-	fill(ctx context.Context, cols []int, out [][]float64, workers int) ([]rounded, error)
+	// fill reads columns into their sinks. It returns, sink by sink, the
+	// integers that were rounded.
+	fill(ctx context.Context, sinks []sink, workers int) ([]rounded, error)
 	// rowwise reports that every call of fill reads the whole file, so that
 	// many columns should be asked for at once.
 	rowwise() bool
+}
+
+// sink is a column to be read, and where its rows() cells go: numbers into
+// values, missing cells as the value missing; text into codes of texts.
+type sink struct {
+	col    int // position among the columns
+	values []float64
+	texts  *texts // of columns of text alone
 }
 
 // Source is an opened table: its columns and number of rows are known, its

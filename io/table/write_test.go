@@ -288,12 +288,14 @@ func readAll(t testing.TB, path string) (map[string][]float64, []Column) {
 	}
 	n, _ := s.Rows()
 	out := newColumns(int(n), len(at))
-	for _, c := range out {
+	var sinks []sink
+	for k, c := range out {
 		for i := range c {
 			c[i] = -12345 // a cell that is never written shows
 		}
+		sinks = append(sinks, sink{col: at[k], values: c})
 	}
-	_, err = s.format.fill(t.Context(), at, out, 2)
+	_, err = s.format.fill(t.Context(), sinks, 2)
 	must(t, err)
 	got := map[string][]float64{}
 	for i, k := range at {
