@@ -121,7 +121,21 @@ func TestLossCanBeFound(t *testing.T) {
 			}
 		}
 		checkQuiet(t, seed, tab, ofLoss, score)
+		if cove, lagoon := shareOf(tab.Text("site"), "cove", lost), shareOf(tab.Text("site"), "lagoon", lost); cove < lagoon+0.1 {
+			t.Errorf("seed %d: %.2f of the cove are lost and %.2f of the lagoon", seed, cove, lagoon)
+		}
 	}
+}
+
+// shareOf is the mean of y in one site.
+func shareOf(site []string, name string, y []float64) float64 {
+	sum, n := 0.0, 0.0
+	for i, s := range site {
+		if s == name {
+			sum, n = sum+y[i], n+1
+		}
+	}
+	return sum / n
 }
 
 // scoreWithin is the score statistic of a logistic regression on one column at

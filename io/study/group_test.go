@@ -46,6 +46,8 @@ func TestPredictors(t *testing.T) {
 		{"text by name", "[candidates]\ntake = [\"ph\", \"feed\"]\nalways = [\"site\"]", "feed ph", "feed site", "feed ph site"},
 		{"codes", "[candidates]\ntake = [\"ph\", \"t*\"]\ncategories = [\"tank\"]", "ph tank temp_1 temp_2", "tank", "ph tank"},
 		{"codes by pattern", "[candidates]\ntake = [\"ph\", \"t*\"]\nalways = [\"sal_1\"]\ncategories = [\"sal_*\", \"?ank\"]", "ph tank temp_1 temp_2", "sal_1 tank", "sal_1 ph"},
+		{"named in another order", "[candidates]\ntake = [\"t*\", \"sal_1\", \"ph\"]\ncategories = [\"tank\", \"sal_1\"]", "sal_1 ph tank temp_1 temp_2", "sal_1 tank", "sal_1 ph tank"},
+		{"named by its place", "[candidates]\ntake = [\"ph\", \"sal_*\"]\ncategories = [\"sal_1\"]", "sal_1 ph sal_2", "sal_1", "sal_1 ph"},
 		{"text named as category", "[candidates]\ntake = [\"feed\", \"ph\"]\ncategories = [\"feed\"]", "feed ph", "feed", "feed ph"},
 		{"a group", left + "[candidates.groups]\nsalinity = [\"sal_*\"]", "salinity(sal_1 sal_2) feed ph tank site temp_1 temp_2", "feed site", ""},
 		{"members in table order", left + "[candidates.groups]\nmix = [\"temp_1\", \"ph\", \"sal_2\"]", "sal_1 feed mix(ph sal_2 temp_1) tank site temp_2", "feed site", ""},
