@@ -61,3 +61,31 @@ func ExampleDrawn() {
 	fmt.Println(total, "rows drawn in all")
 	// Output: 5 rows drawn in all
 }
+
+// Tanks of three sites, drawn within each; a half needs two tanks that lost
+// their larvae (the first three rows), or the pair is drawn anew.
+func ExamplePlan_Draw() {
+	plan, err := resample.NewPlan(resample.Plan{
+		Rows: 9, Number: 2, Seed: 3,
+		Within: []int32{0, 0, 0, 0, 1, 1, 1, 1, 2},
+		Jitter: 0.5, Keys: []string{"ph", "salinity"},
+	})
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	plan.Fit = func(s *solver.Sample) error {
+		if lost := s.Weight(0) + s.Weight(1) + s.Weight(2); lost < 2 {
+			return fmt.Errorf("%v with larvae lost, and at least 2 are needed", lost)
+		}
+		return nil
+	}
+	fmt.Println("in each half:", plan.Half(), "sites of one tank:", plan.Lone())
+	fmt.Println(plan.Check())
+	_, redraws, err := plan.Draw(1)
+	fmt.Println(redraws, err)
+	// Output:
+	// in each half: 4 sites of one tank: [2]
+	// resample: none of 105 pairs of halves that were tried can be fitted: 1 with larvae lost, and at least 2 are needed
+	// 20 1 with larvae lost, and at least 2 are needed
+}
