@@ -49,7 +49,7 @@ var ofLoss = []effect{
 	{"ammonia_d05", 1.0},
 	{"salinity_d03", -0.9},
 	{"fertilised_share", -0.9},
-	{"larval_density_d01", 0.4},
+	{"larval_density_d01", 0.25},
 	{"vibrio_d07", 1.0},
 }
 
