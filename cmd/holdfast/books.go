@@ -57,6 +57,9 @@ func (b *books) add(c rundir.Certificate) {
 	p.Violation, p.Gap = math.Max(p.Violation, c.Violation), math.Max(p.Gap, c.Gap)
 	p.Borderline += c.Borderline
 	p.Twins += c.Twins
+	if c.Redraws > 0 {
+		p.Redrawn++
+	}
 	if c.Uncertified {
 		p.Uncertified = append(p.Uncertified, c.Draw)
 	}
@@ -105,4 +108,17 @@ func (b *books) uncertified() (list []int) {
 		list = append(list, p.Uncertified...)
 	}
 	return list
+}
+
+// redrawn counts the draws of the share that were made anew.
+func (b *books) redrawn() (n int) {
+	for _, p := range b.parts {
+		n += p.Redrawn
+	}
+	return n
+}
+
+// redrawnText says how many draws were made anew.
+func redrawnText(n int) string {
+	return count(int64(n), "draw") + " made anew, because rows that were drawn could not be fitted"
 }

@@ -11,7 +11,6 @@ import (
 
 	"holdfast/io/deal"
 	"holdfast/resample"
-	"holdfast/solver"
 )
 
 // dealOptions is what `deal` is told beside the question.
@@ -198,8 +197,8 @@ func (d *dealing) read(ctx context.Context) error {
 	if d.settled, err = l.settle(); err != nil {
 		return err
 	}
-	if d.model, err = solver.NewModel(ctx, d.problem(d.final.Penalty.StopAfter, nil)); err != nil {
-		return wrong(err, "")
+	if d.model, err = d.p.ready(ctx, d.settled); err != nil {
+		return err
 	}
 	if d.dir == nil {
 		return nil

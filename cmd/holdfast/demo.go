@@ -3,6 +3,7 @@ package main
 import (
 	"context"
 	"fmt"
+	"io"
 	"os"
 	"path/filepath"
 	"slices"
@@ -12,6 +13,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"holdfast/io/demo"
+	"holdfast/io/rundir"
 )
 
 // demoSeed makes the table of the demonstration.
@@ -23,8 +25,9 @@ func (p *program) demoCommand() *cobra.Command {
 		Short: "the whole job on an invented table: an oyster hatchery",
 		Long: `demo writes an invented table (240 batches of oyster larvae, 1,200 columns, of
 which 12 matter) and its study into DIR, runs it, judges it and shows the
-outcome. Without DIR it takes demo, or the first of demo-2, demo-3, ... that is
-not there yet.`,
+outcome. It also writes a second table and two studies of it, a yes-no outcome and
+a survival time, and says how to run them. Without DIR it takes demo, or the first
+of demo-2, demo-3, ... that is not there yet.`,
 		Example: "  holdfast demo",
 		Args:    between(0, "DIR"),
 		RunE: action(func(ctx context.Context, args []string) error {
@@ -65,12 +68,36 @@ func (p *program) demo(ctx context.Context, dir string) error {
 	if err := p.draft(ctx, question{path: path, outcome: demo.Outcome}, studyPath); err != nil {
 		return err
 	}
+	if err := p.writeBatches(dir); err != nil {
+		return err
+	}
 	q := question{path: studyPath}
 	p.typed = []string{"run", studyPath} // what goes on with this run: a demo of its own would begin anew
 	if err := p.run(ctx, q, runOptions{}); err != nil {
 		return err
 	}
 	return p.closeDemo(path, studyPath, q.runPath())
+}
+
+// writeBatches writes the second table and its studies.
+func (p *program) writeBatches(dir string) error {
+	path := filepath.Join(dir, demo.BatchesFile)
+	fmt.Fprintf(p.err, "writing a second one, %d batches and what became of them: %s\n", demo.Batches, path)
+	if err := demo.MakeBatches(demoSeed).Write(path); err != nil {
+		return err
+	}
+	for _, s := range demo.Studies() {
+		path := filepath.Join(dir, s.File)
+		err := rundir.WriteFile(path, func(w io.Writer) error {
+			_, err := io.WriteString(w, s.Text)
+			return err
+		})
+		if err != nil {
+			return err
+		}
+		fmt.Fprintln(p.err, "study written to "+path)
+	}
+	return nil
 }
 
 // closeDemo compares what was found with what matters, which only invented
@@ -118,5 +145,9 @@ What to type next:
   holdfast fit %[3]s
   holdfast draft YOUR-TABLE --outcome COLUMN --out YOUR-STUDY.toml
 `, path, demo.Outcome, studyPath, runPath)
+	fmt.Fprintln(p.err, "Other kinds of outcome, in the same folder:")
+	for _, s := range demo.Studies() {
+		fmt.Fprintf(p.err, "  holdfast run %s   # %s\n", filepath.Join(filepath.Dir(path), s.File), s.About)
+	}
 	return nil
 }

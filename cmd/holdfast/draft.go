@@ -141,14 +141,32 @@ func factsOf(s *table.Summary) study.Facts {
 	}
 	for _, c := range s.Columns {
 		f.Columns = append(f.Columns, study.Fact{
-			Column:  study.Column{Name: c.Name, Usable: c.Usable, Reason: c.Reason},
-			Missing: c.Missing + c.NaN, Infinite: c.Infinite,
+			Column:  factColumn(c),
+			Missing: c.Missing + c.NaN, Infinite: c.Infinite, Levels: levelsOf(c),
 			Constant: c.Constant, TwoValued: len(c.Values) == 2, Whole: c.Whole, Unique: c.Unique,
 			Rising: c.Monotone, Date: c.Dates != "", Min: c.Min, Max: c.Max,
 			R: defined(c.Correlation), AUC: defined(c.AUC), Serial: defined(c.Serial),
 		})
 	}
 	return f
+}
+
+// factColumn is a column in the words of package study.
+func factColumn(c table.ColumnSummary) study.Column {
+	column := columnOf(c.Column)
+	if c.NoLevels != "" {
+		column.Reason = c.NoLevels
+	}
+	return column
+}
+
+// levelsOf lists the values of a column, where there are few.
+func levelsOf(c table.ColumnSummary) []study.Level {
+	var list []study.Level
+	for _, l := range c.Levels {
+		list = append(list, study.Level{Text: l.Name, Rows: l.Count})
+	}
+	return list
 }
 
 // defined is x, or nil where it does not exist.

@@ -6,11 +6,13 @@ import (
 	"encoding/json"
 	"fmt"
 	"os"
+	"slices"
 	"strconv"
 
 	"github.com/spf13/cobra"
 	"golang.org/x/term"
 
+	"holdfast/io/study"
 	"holdfast/solver"
 )
 
@@ -29,8 +31,10 @@ func (p *program) fitCommand() *cobra.Command {
 		Use:   "fit STUDY|TABLE [--outcome COL] [--lambda L,...] [--case-weights FILE]",
 		Short: "one fit on all rows, without draws",
 		Long: `fit prints the fit on all rows at the lambdas given: the intercept first, then
-every coefficient that is not zero, on the original scale. Without --lambda it
-prints a summary of the whole path. Lambda 0 is the fit without a penalty.`,
+every coefficient that is not zero, on the original scale; of a category those of
+its levels, column=level. For classes each has a value for every class. Without
+--lambda it prints a summary of the whole path. Lambda 0 is the fit without a
+penalty.`,
 		Example: "  holdfast fit demo/study.toml --lambda 2.5",
 		Args:    exactly("STUDY"),
 	}
@@ -58,15 +62,14 @@ func (p *program) fit(ctx context.Context, q question, o fitOptions) error {
 		return err
 	}
 	p.tell(l)
-	weight, err := l.weights(o.weights)
+	model, err := l.model(ctx, o.weights)
 	if err != nil {
 		return err
 	}
-	model, err := solver.NewModel(ctx, l.problem(l.study.Penalty.StopAfter, weight))
-	if err != nil {
-		return wrong(err, "")
+	if l.study.Penalty.Jitter != 1 {
+		fmt.Fprintln(p.err, "penalty.jitter is for draws: this fit has the penalty without it")
 	}
-	sample := solver.AllRows(len(l.data.Outcome))
+	sample := solver.AllRows(l.rows())
 	var fits []solver.Fit
 	if len(o.lambdas) > 0 {
 		fits, err = model.FitAt(ctx, sample, o.lambdas)
@@ -77,6 +80,27 @@ func (p *program) fit(ctx context.Context, q question, o fitOptions) error {
 		return wrong(err, "")
 	}
 	return p.printFits(l, fits, o)
+}
+
+// model is that of all rows, with case weights of a file where one is named.
+func (l *loaded) model(ctx context.Context, weights string) (*solver.Model, error) {
+	problem := l.problem()
+	weight, err := l.weights(weights)
+	if err != nil {
+		return nil, err
+	}
+	if weight != nil {
+		problem.Case = weight
+	}
+	if l.grouped() && problem.GroupWeight == solver.GroupEven {
+		s, err := l.settle() // what groups pay follows from the decision
+		if err != nil {
+			return nil, err
+		}
+		problem.Luck = s.luck()
+	}
+	model, err := solver.NewModel(ctx, problem)
+	return model, wrong(err, "")
 }
 
 // printFits prints the fits that are certified, and says which are not.
@@ -119,39 +143,64 @@ func (p *program) printSummary(fits []solver.Fit) error {
 // printCoefficients prints a line for every coefficient.
 func (p *program) printCoefficients(l *loaded, fits []solver.Fit, all bool) error {
 	w := csv.NewWriter(p.out)
-	w.Write([]string{"lambda", "kind", "predictor", "coefficient"})
+	head := []string{"lambda", "kind", "predictor", "coefficient"}
+	if l.classes() != nil {
+		head = slices.Insert(head, 2, "class")
+	}
+	w.Write(head)
 	for _, f := range fits {
-		lambda := full(f.Lambda)
-		w.Write([]string{lambda, "intercept", "", full(f.Intercept[0])})
-		for _, t := range l.terms(f, all) {
-			w.Write([]string{lambda, t.kind, p.shown(t.name), full(t.value)})
+		for _, c := range l.coefficients(f) {
+			for class, value := range c.values {
+				if value == 0 && !all && c.kind != "intercept" {
+					continue
+				}
+				line := []string{full(f.Lambda), c.kind, p.shown(c.name), full(value)}
+				if l.classes() != nil {
+					line = slices.Insert(line, 2, p.shown(l.classes()[class]))
+				}
+				w.Write(line)
+			}
 		}
 	}
 	w.Flush()
 	return w.Error()
 }
 
-// coefficient is one coefficient with its name.
-type coefficient struct {
-	kind, name string
-	value      float64
+// classes are the levels of an outcome of classes; nil for others.
+func (l *loaded) classes() []string {
+	if l.study.Outcome.Kind != study.Classes {
+		return nil
+	}
+	return l.data.Classes
 }
 
-// terms are the coefficients of a fit: always-in columns, then candidates,
-// those that are zero only if all are asked for.
-func (l *loaded) terms(f solver.Fit, all bool) []coefficient {
+// coefficient is what a column adds: a value, or one for each class.
+type coefficient struct {
+	kind, name string
+	values     []float64
+}
+
+// coefficients are all those of a fit: the intercept where there is one,
+// always-in columns, then candidates.
+func (l *loaded) coefficients(f solver.Fit) []coefficient {
 	var list []coefficient
-	for i, v := range f.Always {
-		if all || v != 0 {
-			list = append(list, coefficient{"always", l.data.Always[i], v})
+	if len(f.Intercept) > 0 {
+		list = append(list, coefficient{"intercept", "", f.Intercept})
+	}
+	classes := max(1, len(l.classes()))
+	add := func(kind string, columns []int32, values []float64) {
+		for i, name := range l.columnNames(columns) {
+			list = append(list, coefficient{kind, name, values[i*classes : (i+1)*classes]})
 		}
 	}
-	for i, v := range f.Coef {
-		if all || v != 0 {
-			list = append(list, coefficient{"candidate", l.data.Candidates[l.fitted[i]], v})
-		}
-	}
+	add("always", l.alwaysColumns(), f.Always)
+	add("candidate", columnsOf(l.fitted), f.Coef)
 	return list
+}
+
+// zero reports whether a column adds nothing.
+func (c coefficient) zero() bool {
+	return !slices.ContainsFunc(c.values, func(v float64) bool { return v != 0 })
 }
 
 // shown is a name as it is written to stdout: as it is, but on a terminal
@@ -163,51 +212,81 @@ func (p *program) shown(name string) string {
 	return name
 }
 
-// objectiveText says what is minimised, and so on which scale lambda is.
-const objectiveText = "(1/N) sum_i w_i (y_i - eta_i)^2/2 + lambda sum_j v_j (mix |s_j b_j| + (1-mix)/2 (s_j b_j)^2)"
+// fitJSON is a fit in `fit --json`. Intercept and coefficients are numbers, or
+// objects by class.
+type fitJSON struct {
+	Lambda       float64  `json:"lambda"`
+	Intercept    any      `json:"intercept"`
+	Coefficients ordered  `json:"coefficients"`
+	Selected     int      `json:"selected"`
+	Loss         float64  `json:"loss"`
+	Violation    float64  `json:"violation"`
+	Gap          *float64 `json:"gap"`
+	Value        float64  `json:"objective"`
+}
 
 // fitsJSON is the document of `fit --json`.
 func (l *loaded) fitsJSON(fits []solver.Fit, all bool) any {
-	type fitJSON struct {
-		Lambda       float64 `json:"lambda"`
-		Intercept    float64 `json:"intercept"`
-		Coefficients byName  `json:"coefficients"`
-		Selected     int     `json:"selected"`
-		Loss         float64 `json:"loss"`
-		Violation    float64 `json:"violation"`
-		Gap          float64 `json:"gap"`
-		Value        float64 `json:"objective"`
-	}
 	list := make([]fitJSON, len(fits))
 	for i, f := range fits {
-		list[i] = fitJSON{
-			Lambda: f.Lambda, Intercept: f.Intercept[0], Coefficients: l.terms(f, all),
-			Selected: f.Selected, Loss: f.Loss, Violation: f.Violation, Gap: f.Gap, Value: f.Objective,
+		j := fitJSON{
+			Lambda: f.Lambda, Coefficients: ordered{}, Selected: f.Selected,
+			Loss: f.Loss, Violation: f.Violation, Gap: defined(f.Gap), Value: f.Objective,
 		}
+		for _, c := range l.coefficients(f) {
+			switch {
+			case c.kind == "intercept":
+				j.Intercept = l.valueJSON(c)
+			case all || !c.zero():
+				j.Coefficients = append(j.Coefficients, member{c.name, l.valueJSON(c)})
+			}
+		}
+		list[i] = j
 	}
 	return struct {
 		Kind      string    `json:"kind"`
 		Objective string    `json:"objective"`
 		Fits      []fitJSON `json:"fits"`
-	}{l.study.Outcome.Kind.String(), objectiveText, list}
+	}{l.study.Outcome.Kind.String(), l.objective(), list}
 }
 
-// byName writes coefficients as one JSON object, in their order.
-type byName []coefficient
+// valueJSON is a coefficient as JSON: a number, or an object by class.
+func (l *loaded) valueJSON(c coefficient) any {
+	if l.classes() == nil {
+		return c.values[0]
+	}
+	by := ordered{}
+	for i, class := range l.classes() {
+		by = append(by, member{class, c.values[i]})
+	}
+	return by
+}
+
+// ordered is a JSON object whose members keep their order.
+type ordered []member
+
+type member struct {
+	name  string
+	value any
+}
 
 // MarshalJSON implements json.Marshaler.
-func (list byName) MarshalJSON() ([]byte, error) {
+func (list ordered) MarshalJSON() ([]byte, error) {
 	text := []byte{'{'}
-	for i, t := range list {
-		name, err := json.Marshal(t.name)
-		if err != nil {
-			return nil, err
-		}
+	for i, m := range list {
 		if i > 0 {
 			text = append(text, ',')
 		}
-		text = append(append(text, name...), ':')
-		text = append(text, full(t.value)...)
+		for k, v := range []any{m.name, m.value} {
+			if k > 0 {
+				text = append(text, ':')
+			}
+			part, err := json.Marshal(v)
+			if err != nil {
+				return nil, err
+			}
+			text = append(text, part...)
+		}
 	}
 	return append(text, '}'), nil
 }

@@ -22,9 +22,9 @@ func (p *program) inspectCommand() *cobra.Command {
 	c := &cobra.Command{
 		Use:   "inspect TABLE|STUDY [--outcome COL] [--quick]",
 		Short: "what a table holds, and what of it would mislead or be refused",
-		Long: `inspect reads a table and says what it holds: kinds, missing values, constant
-columns, copies, columns that are nearly the same, and, with an outcome, what
-looks like the outcome in other clothes. For a study it also says whether a run
+		Long: `inspect reads a table and says what it holds: kinds, categories, missing values,
+constant columns, copies, columns that are nearly the same, and, with an outcome,
+its kind, and what looks like the outcome in other clothes. For a study it also says whether a run
 would be refused.`,
 		Example: "  holdfast inspect demo/hatchery.parquet --outcome survival_d21",
 		Args:    exactly("TABLE"),
@@ -44,6 +44,7 @@ would be refused.`,
 type inspection struct {
 	path     string
 	summary  *table.Summary
+	outcome  *study.Outcome // nil: nobody said
 	flags    []study.Flag
 	quick    bool
 	copies   []likeness
@@ -72,11 +73,7 @@ func (p *program) inspect(ctx context.Context, q question, o inspectOptions) err
 		return wrong(err, "")
 	}
 	if q.outcome != "" {
-		facts := factsOf(i.summary)
-		facts.Path = i.path
-		if i.flags, err = facts.Flags(); err != nil {
-			i.refuse(err)
-		}
+		i.draft()
 	}
 	if isStudy(q.path) {
 		q.outcome = "" // it came from the study
@@ -109,7 +106,7 @@ func (i *inspection) openFor(q *question) (*table.Source, error) {
 		if err != nil {
 			return nil, err
 		}
-		path, q.outcome = s.TablePath(), s.Outcome.Column
+		path, q.outcome, i.outcome = s.TablePath(), s.Outcome.Column, &s.Outcome
 	} else if len(q.sets) > 0 {
 		if err := q.check(); err != nil {
 			return nil, err
@@ -122,18 +119,46 @@ func (i *inspection) openFor(q *question) (*table.Source, error) {
 	return source, checkOutcome(source, q.outcome)
 }
 
+// draft finds what a draft would say. Of a table it also takes the kind of
+// outcome.
+func (i *inspection) draft() {
+	facts := factsOf(i.summary)
+	facts.Path = i.path
+	if i.outcome != nil {
+		facts.Kind = &i.outcome.Kind
+	}
+	var err error
+	if i.flags, err = facts.Flags(); err != nil {
+		i.refuse(err)
+		return
+	}
+	if i.outcome != nil {
+		return
+	}
+	_, drafted, err := study.Draft(facts)
+	if err != nil {
+		i.refuse(err)
+		return
+	}
+	i.outcome = &drafted.Outcome
+}
+
 // tryStudy does what a run does before its first fit.
 func (i *inspection) tryStudy(ctx context.Context, q question) error {
 	a, err := q.open(ctx)
 	if err != nil {
 		return i.found(ctx, err)
 	}
+	i.outcome = &a.study.Outcome
 	l, err := a.load(ctx, 0)
 	if err != nil {
 		return i.found(ctx, err)
 	}
 	s, err := l.settle()
 	if err != nil {
+		return i.found(ctx, err)
+	}
+	if _, err := s.ready(ctx); err != nil {
 		return i.found(ctx, err)
 	}
 	i.decision = inWords(s.decision)

@@ -7,6 +7,7 @@ import (
 	"strings"
 	"text/tabwriter"
 
+	"holdfast/io/study"
 	"holdfast/io/table"
 )
 
@@ -21,10 +22,11 @@ func (p *program) printInspection(i *inspection) error {
 		fmt.Fprintf(w, "%s\t%s\n", label, oneLine(text))
 	}
 	line("kinds", i.kinds())
-	line("not usable", listed(i.columns(func(c table.ColumnSummary) string { return unless(c.Usable, c.Reason) })))
+	line("categories", listed(i.columns(categoryText)))
+	line("not usable", listed(i.columns(func(c table.ColumnSummary) string { return unless(usable(c), reason(c)) })))
 	line("missing", listed(i.columns(gaps)))
 	line("constant", listed(i.columns(func(c table.ColumnSummary) string { return unless(!c.Constant, fmt.Sprintf("%.6g", c.Min+0)) })))
-	line("look like labels", listed(i.columns(label)))
+	line("look like labels", listed(i.columns(i.label)))
 	line("rounded", listed(i.columns(func(c table.ColumnSummary) string {
 		return unless(c.Rounded == 0, fmt.Sprintf("%d integers too large for an exact number", c.Rounded))
 	})))
@@ -43,20 +45,113 @@ func (p *program) printInspection(i *inspection) error {
 	return nil
 }
 
+// usable reports whether a column can be a predictor, as numbers or as a
+// category.
+func usable(c table.ColumnSummary) bool { return c.Usable || len(c.Levels) > 0 }
+
+// reason says why a column cannot be used.
+func reason(c table.ColumnSummary) string { return factColumn(c).Reason }
+
+// categoryText describes a column of text that can be a category.
+func categoryText(c table.ColumnSummary) string {
+	if c.Kind != table.Text || len(c.Levels) < 2 {
+		return ""
+	}
+	return fmt.Sprintf("%d levels", len(c.Levels))
+}
+
 // printOutcome describes the outcome and what looks like it.
 func (i *inspection) printOutcome(line func(label, text string)) {
-	if i.summary.Outcome == "" {
+	if i.outcome == nil && i.summary.Outcome == "" {
 		line("outcome", "not said (--outcome COLUMN)")
 		return
 	}
-	for _, c := range i.summary.Columns {
-		if c.Name == i.summary.Outcome {
-			line("outcome", fmt.Sprintf("%s: %.4g to %.4g, mean %.4g, standard deviation %.4g", c.Name, c.Min, c.Max, c.Mean, c.SD))
-		}
+	line("outcome", i.outcomeText())
+	if i.summary.Outcome == "" {
+		return // a survival time has no single column to be compared with
 	}
 	line("suspected leaks", listed(i.columns(func(c table.ColumnSummary) string {
 		return unless(!c.Leak || c.Name == i.summary.Outcome, leakReason(c))
 	})))
+}
+
+// outcomeText describes the outcome by its kind.
+func (i *inspection) outcomeText() string {
+	if i.outcome == nil {
+		c, _ := i.column(i.summary.Outcome)
+		return c.Name + ": " + valuesText(c)
+	}
+	o := *i.outcome
+	text := explained(o)
+	if o.Kind != study.Number {
+		text += " (" + o.Kind.String() + ")"
+	}
+	c, _ := i.column(o.Column)
+	switch o.Kind {
+	case study.Survival:
+		text += ": " + i.eventsText(o)
+	case study.YesNo, study.Classes:
+		text += ": " + i.levelsText(c)
+	default:
+		text += ": " + valuesText(c)
+	}
+	for _, role := range []struct{ word, column string }{
+		{"success", o.Success}, {"entry", o.Entry}, {"strata", strings.Join(o.Strata, ", ")},
+		{"offset", o.Offset}, {"exposure", o.Exposure}, {"case weights", o.CaseWeight},
+	} {
+		if role.column != "" {
+			text += "; " + role.word + " " + role.column
+		}
+	}
+	return text
+}
+
+// column finds a column by its name.
+func (i *inspection) column(name string) (table.ColumnSummary, bool) {
+	for _, c := range i.summary.Columns {
+		if c.Name == name {
+			return c, true
+		}
+	}
+	return table.ColumnSummary{}, false
+}
+
+// valuesText describes numbers.
+func valuesText(c table.ColumnSummary) string {
+	return fmt.Sprintf("%.4g to %.4g, mean %.4g, standard deviation %.4g", c.Min, c.Max, c.Mean, c.SD)
+}
+
+// levelsText counts the rows of each value.
+func (i *inspection) levelsText(c table.ColumnSummary) string {
+	if len(c.Levels) == 0 {
+		return fmt.Sprintf("more than %d values", table.MostLevels)
+	}
+	words := make([]string, len(c.Levels))
+	for k, l := range c.Levels {
+		words[k] = fmt.Sprintf("%s in %d", l.Name, l.Count)
+	}
+	return listed(words) + fmt.Sprintf(" of %s", count(i.summary.Rows, "row"))
+}
+
+// eventsText counts the events of a survival time.
+func (i *inspection) eventsText(o study.Outcome) string {
+	if n := i.events(o); n != nil {
+		return count(*n, "event") + " in " + count(i.summary.Rows, "row")
+	}
+	return "the events were not counted"
+}
+
+// events counts the rows in which the event was seen; nil where the column does
+// not say so in two values.
+func (i *inspection) events(o study.Outcome) *int64 {
+	if c, known := i.column(o.Event); known && o.Kind == study.Survival {
+		for _, l := range c.Levels {
+			if l.Name == o.Success || o.Success == "" && (l.Name == "1" || l.Name == "true") {
+				return &l.Count
+			}
+		}
+	}
+	return nil
 }
 
 // leakReason is the figure by which a column looks like the outcome.
@@ -153,9 +248,11 @@ func gaps(c table.ColumnSummary) string {
 	return strings.Join(words, ", ")
 }
 
-// label says why a column of numbers looks like a label and no measurement.
-func label(c table.ColumnSummary) string {
+// label says why a column looks like a label and no measurement.
+func (i *inspection) label(c table.ColumnSummary) string {
 	switch {
+	case c.Kind == table.Text && len(c.Levels) > 1 && int64(len(c.Levels)) == i.summary.Rows:
+		return "text, none twice"
 	case !c.Usable:
 		return ""
 	case c.RowNumber:
@@ -197,8 +294,17 @@ func byStrength(a, b float64) int {
 
 // listed joins words, as far as a line goes.
 func listed(words []string) string {
+	text := briefly(words)
+	if len(words) > mostListed {
+		text += "; --json lists all"
+	}
+	return text
+}
+
+// briefly joins the first words, and says how many there are more.
+func briefly(words []string) string {
 	if more := len(words) - mostListed; more > 0 {
-		words = append(slices.Clone(words[:mostListed]), fmt.Sprintf("and %d more; --json lists all", more))
+		words = append(slices.Clone(words[:mostListed]), fmt.Sprintf("and %d more", more))
 	}
 	return strings.Join(words, ", ")
 }
@@ -224,6 +330,22 @@ type columnJSON struct {
 	Correlation *float64 `json:"outcome_correlation"`
 	AUC         *float64 `json:"outcome_auc"`
 	Leak        bool     `json:"leak"`
+
+	Levels []levelJSON `json:"levels,omitempty"`
+}
+
+// levelJSON is a value and its rows.
+type levelJSON struct {
+	Level string `json:"level"`
+	Rows  int64  `json:"rows"`
+}
+
+// levelsJSON lists values.
+func levelsJSON(list []table.Level) (levels []levelJSON) {
+	for _, l := range list {
+		levels = append(levels, levelJSON{l.Name, l.Count})
+	}
+	return levels
 }
 
 // flagJSON is a line of what a draft says.
@@ -239,9 +361,9 @@ func (i *inspection) document() any {
 	columns := make([]columnJSON, len(i.summary.Columns))
 	for k, c := range i.summary.Columns {
 		columns[k] = columnJSON{
-			Name: c.Name, Type: c.Type, Kind: c.Kind.String(), Usable: c.Usable, Reason: c.Reason,
+			Name: c.Name, Type: c.Type, Kind: c.Kind.String(), Usable: usable(c), Reason: unless(usable(c), reason(c)),
 			Missing: c.Missing, NaN: c.NaN, Infinite: c.Infinite, Rounded: c.Rounded,
-			Constant: c.Constant, Label: label(c),
+			Constant: c.Constant, Label: i.label(c), Levels: levelsJSON(c.Levels),
 			Min: defined(c.Min), Max: defined(c.Max), Mean: defined(c.Mean), SD: defined(c.SD),
 			Correlation: defined(c.Correlation), AUC: defined(c.AUC), Leak: c.Leak && c.Name != i.summary.Outcome,
 		}
@@ -260,10 +382,30 @@ func (i *inspection) document() any {
 		Near     []likeness   `json:"nearly_the_same"`
 		Flags    []flagJSON   `json:"flags"`
 		Refused  []string     `json:"refused"`
+		outcomeJSON
 	}{
 		i.path, i.summary.Rows, i.summary.Outcome, columns, !i.quick,
-		some(i.copies), some(i.near), flags, some(i.refusals),
+		some(i.copies), some(i.near), flags, some(i.refusals), i.outcomeJSON(),
 	}
+}
+
+// outcomeJSON says what is explained; null where it was not said.
+type outcomeJSON struct {
+	Kind    *string `json:"kind"`
+	Success *string `json:"success"`
+	Events  *int64  `json:"events"`
+}
+
+func (i *inspection) outcomeJSON() (o outcomeJSON) {
+	if i.outcome == nil {
+		return o
+	}
+	kind := i.outcome.Kind.String()
+	o.Kind, o.Events = &kind, i.events(*i.outcome)
+	if i.outcome.Success != "" {
+		o.Success = &i.outcome.Success
+	}
+	return o
 }
 
 // some makes an empty list of none, so that JSON has [] and not null.

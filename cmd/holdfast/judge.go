@@ -155,11 +155,7 @@ func (e *evidence) judge(o judgeOptions) (*judged, error) {
 	if err != nil {
 		return nil, err
 	}
-	n := len(e.run.Identity.Candidates)
-	judgement, err := selection.Judge(e.draws, bootstrap, selection.Predictors{
-		Names: e.run.Identity.Candidates, Deviations: e.run.Meta.Deviation[:n],
-		Always: e.run.Identity.Always, AlwaysDeviations: e.run.Meta.Deviation[n:],
-	}, decision)
+	judgement, err := selection.Judge(e.draws, bootstrap, e.run.Predictors(), decision)
 	if err != nil {
 		return nil, wrong(err, "")
 	}

@@ -111,9 +111,9 @@ func (p *program) plan(ctx context.Context, q question, o planOptions) (*foresee
 	if err != nil {
 		return nil, err
 	}
-	model, err := solver.NewModel(ctx, s.problem(s.final.Penalty.StopAfter, nil))
+	model, err := p.ready(ctx, s)
 	if err != nil {
-		return nil, wrong(err, "")
+		return nil, err
 	}
 	return s.foresee(ctx, model, o, time.Since(start))
 }
@@ -186,7 +186,7 @@ func (s *settled) foresee(ctx context.Context, model *solver.Model, o planOption
 // footprint is what a run of a loaded table holds in memory.
 func (s *settled) footprint(model *solver.Model) footprint {
 	return footprint{
-		table: tableBytes(len(s.data.Outcome), len(s.data.Candidates)+len(s.data.Always)),
+		table: tableBytes(s.rows(), len(s.data.Names)),
 		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number,
 	}
 }

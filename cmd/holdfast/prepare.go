@@ -21,8 +21,7 @@ type loaded struct {
 	roles    *study.Roles
 	data     *table.Data
 	excluded []rundir.Excluded // asked for and no candidate, with reasons
-	fitted   []int32           // columns of data.X that are fitted as candidates
-	relative []float64         // penalty weight of each of them; nil: all 1
+	fitted   []predictor
 }
 
 // load reads the columns that the study asks for and takes constant columns
@@ -32,21 +31,30 @@ func (a *asked) load(ctx context.Context, workers int) (*loaded, error) {
 	if err != nil {
 		return nil, wrong(err, "")
 	}
-	data, err := a.source.Load(ctx, table.Request{
-		Outcome: table.Outcome{Column: roles.Outcome}, Candidates: roles.Candidates, Always: roles.Always,
-		Missing: policy(a.study.Table.Missing), AcceptLoss: a.study.Table.AcceptLoss, Workers: workers, Memory: a.memory,
-	})
+	data, err := a.source.Load(ctx, a.request(roles, workers))
 	if err != nil {
 		return nil, a.tableFault(err)
 	}
 	l := &loaded{asked: a, roles: roles, data: data}
 	for _, e := range roles.Excluded {
-		l.excluded = append(l.excluded, rundir.Excluded{Column: e.Name, Reason: e.Reason})
+		l.exclude(e.Name, e.Reason, "")
 	}
 	for _, e := range data.Excluded {
-		l.excluded = append(l.excluded, rundir.Excluded{Column: e.Column, Reason: e.Reason})
+		l.exclude(e.Column, e.Reason, "")
 	}
 	return l, l.examine(ctx)
+}
+
+// request is what a fit needs of the table.
+func (a *asked) request(roles *study.Roles, workers int) table.Request {
+	s := a.study
+	return table.Request{
+		Outcome: outcomeOf(s.Outcome), Weight: s.Outcome.CaseWeight,
+		Candidates: roles.Candidates, Always: roles.Always,
+		Categories: roles.Categories, Reference: s.Candidates.Reference, Named: roles.Named,
+		Within:  roles.Within,
+		Missing: policy(s.Table.Missing), AcceptLoss: s.Table.AcceptLoss, Workers: workers, Memory: a.memory,
+	}
 }
 
 // tableFault says what is wrong with the table and, where cells are missing,
@@ -81,90 +89,45 @@ func gapHint(e *table.Error) string {
 // fewestRows is what two halves take.
 const fewestRows = 4
 
-// examine finds constant columns and copies among the candidates.
-func (l *loaded) examine(ctx context.Context) error {
-	all := make([]int32, len(l.data.Candidates))
-	for j := range all {
-		all[j] = int32(j)
-	}
-	found, err := solver.Examine(ctx, l.data.X, all)
-	if err != nil {
-		return wrong(err, "")
-	}
-	out := make(map[int32]bool)
-	for _, j := range found.Constant {
-		out[j] = true
-		l.excluded = append(l.excluded, rundir.Excluded{Column: l.data.Candidates[j], Reason: "constant over the rows used"})
-	}
-	for _, c := range found.Copies {
-		out[c.Col] = true
-		l.excluded = append(l.excluded, rundir.Excluded{
-			Column: l.data.Candidates[c.Col], Reason: "copy up to shift and scale", Of: l.data.Candidates[c.Of],
-		})
-	}
-	relative := l.relativeOf()
-	for _, j := range all {
-		if out[j] {
-			continue
-		}
-		l.fitted = append(l.fitted, j)
-		if relative != nil {
-			l.relative = append(l.relative, relative[l.data.Candidates[j]])
-		}
-	}
-	if len(l.fitted) == 0 {
-		return wrong(fmt.Errorf("holdfast: no candidate is left: all %d are constant over the rows used", len(all)),
-			"holdfast inspect shows what the table holds")
-	}
-	return nil
+// rows is the number of rows used.
+func (l *loaded) rows() int {
+	rows, _ := l.data.X.Dims()
+	return rows
 }
 
-// relativeOf is the study's relative penalty by column; nil: all 1.
-func (l *loaded) relativeOf() map[string]float64 {
-	if l.roles.Relative == nil {
-		return nil
+// problem is what the solver is asked, without what follows from the decision.
+func (l *loaded) problem() solver.Problem {
+	s := l.study
+	p := solver.Problem{
+		Design: l.data.X, Always: l.alwaysColumns(), Centre: l.data.Centre, Names: l.data.Names,
+		Family: measures[s.Outcome.Kind].family, Outcome: l.data.Outcome, Survival: l.data.Survival,
+		Offset: l.data.Offset, Case: l.data.Weight,
+		Mix: s.Penalty.Mix, Scale: s.Penalty.Scale, GroupWeight: groupWeight(s.Penalty.GroupWeight),
+		Ratio: s.Penalty.Ratio, Floor: s.Penalty.Floor, StopAfter: s.Penalty.StopAfter,
 	}
-	by := make(map[string]float64, len(l.roles.Candidates))
-	for i, name := range l.roles.Candidates {
-		by[name] = l.roles.Relative[i]
+	l.units(&p)
+	if p.Family == solver.Multinomial {
+		p.Classes = len(l.data.Classes)
 	}
-	return by
+	if p.Survival != nil {
+		p.Survival.Ties = tiesOf(s.Outcome.Ties)
+	}
+	return p
 }
 
-// names are those of the candidates that are fitted.
-func (l *loaded) names() []string {
-	names := make([]string, len(l.fitted))
-	for i, j := range l.fitted {
-		names[i] = l.data.Candidates[j]
+// groupWeight is the study's word in that of package solver.
+func groupWeight(w study.GroupWeight) solver.GroupWeight {
+	if w == study.Sqrt {
+		return solver.GroupSqrt
 	}
-	return names
-}
-
-// problem is what the solver is asked, with paths that stop after so many
-// predictors (0: never).
-func (l *loaded) problem(stopAfter int, weight []float64) solver.Problem {
-	always := make([]int32, len(l.data.Always))
-	for i := range always {
-		always[i] = int32(len(l.data.Candidates) + i)
-	}
-	p := l.study.Penalty
-	return solver.Problem{
-		Design: l.data.X, Candidates: l.fitted, Always: always, Centre: l.data.Centre,
-		Names:   append(append([]string{}, l.data.Candidates...), l.data.Always...),
-		Outcome: l.data.Outcome, Case: weight,
-		Mix: p.Mix, Scale: p.Scale, Relative: l.relative,
-		Ratio: p.Ratio, Floor: p.Floor, StopAfter: stopAfter,
-	}
+	return solver.GroupEven
 }
 
 // plan is the study's plan of draws over the rows used.
 func (l *loaded) plan() (resample.Plan, error) {
-	design := resample.Halves
-	if l.study.Draws.Design == study.Bootstrap {
-		design = resample.Bootstrap
-	}
 	plan, err := resample.NewPlan(resample.Plan{
-		Rows: len(l.data.Outcome), Design: design, Number: l.study.Draws.Number, Seed: l.study.Draws.Seed,
+		Rows: l.rows(), Design: drawDesign(l.study), Number: l.study.Draws.Number, Seed: l.study.Draws.Seed,
+		Case: l.data.Weight, Within: l.data.Within, Jitter: l.study.Penalty.Jitter, Keys: l.names(),
 	})
 	return plan, wrong(err, "")
 }
@@ -172,9 +135,10 @@ func (l *loaded) plan() (resample.Plan, error) {
 // settled is a loaded question with its decision made and its draws planned.
 type settled struct {
 	*loaded
-	plan     resample.Plan
-	final    *study.Study // every key resolved
-	decision selection.Decision
+	plan      resample.Plan
+	final     *study.Study // every key resolved
+	decision  selection.Decision
+	effective *effective // what case weights leave of a draw; nil: there are none
 }
 
 // settle plans the draws and makes the decision of record.
@@ -183,11 +147,42 @@ func (l *loaded) settle() (*settled, error) {
 	if err != nil {
 		return nil, err
 	}
-	final, decision, err := l.study.Settle(len(l.fitted), plan.Half(), len(l.data.Always))
+	final, decision, err := l.study.Settle(len(l.fitted), plan.Half(), len(l.alwaysColumns()))
 	if err != nil {
 		return nil, wrong(err, "")
 	}
 	return &settled{loaded: l, plan: plan, final: final, decision: decision}, nil
+}
+
+// luck is the chance of a single column to be let in by luck, by which groups
+// pay for their size: that of the run directory, or selected over candidates.
+func (s *settled) luck() float64 {
+	if s.asked.luck > 0 {
+		return s.asked.luck
+	}
+	return float64(s.decision.Selected) / float64(len(s.fitted))
+}
+
+// ready makes the model, and the draws such that they can be fitted. A
+// question of which no draw can be fitted is refused.
+func (s *settled) ready(ctx context.Context) (*solver.Model, error) {
+	p := s.problem()
+	p.StopAfter, p.Luck = s.final.Penalty.StopAfter, s.luck()
+	model, err := solver.NewModel(ctx, p)
+	if err != nil {
+		return nil, wrong(err, "")
+	}
+	s.plan.Fit = model.Fittable
+	return model, wrong(s.plan.Check(), "")
+}
+
+// lone names the strata of one row, which are in no half.
+func (s *settled) lone() []string {
+	var names []string
+	for _, code := range s.plan.Lone() {
+		names = append(names, s.data.WithinLevels[code])
+	}
+	return names
 }
 
 // tellDraft prints the study that was drafted, if one was.
@@ -207,6 +202,26 @@ func (p *program) tell(l *loaded) {
 	if len(l.excluded) > 0 {
 		fmt.Fprintf(p.err, "left out by themselves: %s\n", oneLine(exclusions(l.excluded)))
 	}
+}
+
+// ready makes the model of a question, and says what the user should know of
+// its draws before they are made.
+func (p *program) ready(ctx context.Context, s *settled) (*solver.Model, error) {
+	if lone := s.lone(); len(lone) > 0 {
+		p.note("strata of one row, which is in no half: " + briefly(lone))
+	}
+	model, err := s.ready(ctx)
+	if err != nil {
+		return nil, err
+	}
+	if s.effective = weigh(s.plan); s.effective == nil {
+		return model, nil
+	}
+	fmt.Fprintln(p.err, s.effective)
+	if small(s.effective.median, s.effective.rows) {
+		p.note(fewCount(s.effective.median, s.effective.rows))
+	}
+	return model, nil
 }
 
 // mostListed is how many names a line of talk lists.

@@ -24,8 +24,10 @@ func openExisting(out string) (*rundir.Dir, error) {
 }
 
 // follow takes over what a run directory has settled and the study leaves open:
-// where the paths stop followed from the decision that was of record.
+// where the paths stop, and what groups pay, followed from the decision that was
+// of record.
 func (a *asked) follow(run rundir.Run) {
+	a.luck = run.Identity.Penalty.Luck
 	if a.study.Penalty.StopAfter == 0 {
 		a.study.Penalty.StopAfter = run.Identity.Penalty.StopAfter
 	}

@@ -48,15 +48,26 @@ func (p *program) rows(ctx context.Context, q question, draw int, asJSON bool) e
 		return err
 	}
 	p.tellDraft(a)
-	plan, err := l.plan()
+	s, err := l.settle()
 	if err != nil {
 		return err
 	}
+	if _, err = s.ready(ctx); err != nil {
+		return err
+	}
+	plan := s.plan
 	if draw < 0 || draw >= plan.Number {
 		return misuse(fmt.Sprintf("holdfast rows: --draw %d: the study has draws 0 to %d", draw, plan.Number-1), "")
 	}
+	sample, redraws, why := plan.Draw(draw)
+	if redraws > 0 {
+		fmt.Fprintf(p.err, "drawn anew %s, because rows that were drawn could not be fitted\n", timesText(redraws))
+	}
+	if why != nil {
+		fmt.Fprintf(p.err, "draw %d cannot be fitted still, and has no path: %s\n", draw, oneLine(why.Error()))
+	}
 	list := []drawnRow{}
-	for i, count := range resample.Drawn(plan.Sample(draw)) {
+	for i, count := range resample.Drawn(sample) {
 		row := i
 		if l.data.Rows != nil {
 			row = int(l.data.Rows[i])
@@ -78,4 +89,12 @@ func (p *program) rows(ctx context.Context, q question, draw int, asJSON bool) e
 type drawnRow struct {
 	Row   int `json:"row"`
 	Count int `json:"count"`
+}
+
+// timesText writes how often something was done.
+func timesText(n int) string {
+	if n == 1 {
+		return "once"
+	}
+	return fmt.Sprintf("%d times", n)
 }

@@ -8,11 +8,13 @@ import (
 	"io/fs"
 	"os"
 	"runtime/debug"
+	"slices"
 	"time"
 
 	"github.com/spf13/cobra"
 
 	"holdfast/io/rundir"
+	"holdfast/io/study"
 	"holdfast/io/table"
 	"holdfast/resample"
 	"holdfast/selection"
@@ -174,8 +176,8 @@ func (r *runner) prepare(ctx context.Context, q question) error {
 	if r.settled, err = l.settle(); err != nil {
 		return err
 	}
-	if r.model, err = solver.NewModel(ctx, r.problem(r.final.Penalty.StopAfter, nil)); err != nil {
-		return wrong(err, "")
+	if r.model, err = r.p.ready(ctx, r.settled); err != nil {
+		return err
 	}
 	if err := r.boundMemory(); err != nil {
 		return err
@@ -221,10 +223,7 @@ func (r *runner) checkTable(a *asked) error {
 
 // boundMemory chooses blocks and workers by the memory there is.
 func (r *runner) boundMemory() (err error) {
-	f := footprint{
-		table: tableBytes(len(r.data.Outcome), len(r.data.Candidates)+len(r.data.Always)),
-		shape: r.model.Shape(r.plan.Half()), draws: r.plan.Number,
-	}
+	f := r.footprint(r.model)
 	asked := r.o.workers
 	if r.o.workers, r.block, err = f.fit(r.limit, asked); err != nil {
 		return wrong(fmt.Errorf("holdfast: %w", err), "allow more memory, or take fewer columns")
@@ -337,6 +336,9 @@ func (r *runner) kept(ctx context.Context, err error, mine int) error {
 // closePart says what a part leaves to be done.
 func (r *runner) closePart() error {
 	fmt.Fprintf(r.talk, "%s is whole; when all are: holdfast judge %s\n", r.o.share, shellWord(r.o.out))
+	if n := r.books.redrawn(); n > 0 {
+		fmt.Fprintf(r.talk, "%s\n", redrawnText(n))
+	}
 	if n := len(r.books.uncertified()); n > 0 {
 		return incomplete(fmt.Sprintf("holdfast: %d draws of %s end early, at a fit that could not be certified", n, r.o.share),
 			"they count with what they have; holdfast judge says what that means")
@@ -367,7 +369,7 @@ func (r *runner) lastWord(err error) {
 func (r *runner) tellPlan(there, missing int) {
 	d := r.decision
 	fmt.Fprintf(r.talk, "rows: %d, candidates: %d, draws: %d (%s), seed: %d, workers: %d\n",
-		len(r.data.Outcome), len(r.fitted), r.plan.Number, r.plan.Design, r.plan.Seed, r.o.workers)
+		r.rows(), len(r.fitted), r.plan.Number, r.plan.Design, r.plan.Seed, r.o.workers)
 	if there > 0 || r.o.share.only {
 		fmt.Fprintf(r.talk, "%s: %d draws are there, %d are to be made\n", r.o.share, there, missing)
 	}
@@ -392,36 +394,48 @@ func inWords(d selection.Decision) string {
 
 // identity is what decides the bits of the draws.
 func (s *settled) identity() rundir.Identity {
-	p, d := s.final.Penalty, s.final.Draws
-	return rundir.Identity{
+	p, d, o := s.final.Penalty, s.final.Draws, s.final.Outcome
+	id := rundir.Identity{
 		Fingerprint: s.data.Fingerprint,
-		Outcome:     s.roles.Outcome, Kind: s.final.Outcome.Kind.String(),
-		Candidates: s.names(), Always: s.data.Always,
+		Kind:        o.Kind.String(), Outcome: o.Column, Success: o.Success,
+		Offset: o.Offset, Exposure: o.Exposure, CaseWeight: o.CaseWeight,
+		Candidates: s.names(), Always: s.always(), Terms: s.terms(), Reference: s.references(),
 		Missing: s.final.Table.Missing.String(),
 		Penalty: rundir.Penalty{
-			Mix: p.Mix, Scale: p.Scale.String(), Relative: p.Relative,
+			Mix: p.Mix, Scale: p.Scale.String(), Relative: p.Relative, Jitter: p.Jitter,
 			Ratio: p.Ratio, Floor: p.Floor, StopAfter: p.StopAfter,
 		},
-		Draws: rundir.Draws{Design: d.Design.String(), Seed: d.Seed},
+		Draws: rundir.Draws{Design: d.Design.String(), Within: s.roles.Within, Seed: d.Seed},
 	}
+	if o.Kind == study.Classes {
+		id.Classes = s.data.Classes
+	}
+	if o.Kind == study.Survival {
+		id.Time, id.Event, id.Entry, id.Strata, id.Ties = o.Time, o.Event, o.Entry, o.Strata, o.Ties.String()
+	}
+	if s.grouped() {
+		id.Penalty.GroupWeight = p.GroupWeight.String()
+	}
+	if s.grouped() && p.GroupWeight == study.Even {
+		id.Penalty.Luck = s.luck()
+	}
+	return id
 }
 
 // meta is what else the directory remembers.
 func (s *settled) meta(model *solver.Model, parts int) rundir.Meta {
 	m := rundir.Meta{
 		Tool: version(), Kernel: solver.Kernel(), Parts: parts,
-		TableRows: s.data.TableRows, Rows: len(s.data.Outcome), Number: s.plan.Number,
+		TableRows: s.data.TableRows, Rows: s.rows(), Number: s.plan.Number,
 		LambdaMax: model.LambdaMax(), LastStep: model.LastStep(), Excluded: s.excluded,
+		Lone: s.lone(),
 	}
-	add := func(j int) {
+	if s.effective != nil {
+		m.EffectiveSize = s.effective.median
+	}
+	for _, j := range slices.Concat(columnsOf(s.fitted), s.alwaysColumns()) {
 		m.Centre = append(m.Centre, s.data.Centre[j])
 		m.Deviation = append(m.Deviation, s.data.Deviation[j])
-	}
-	for _, j := range s.fitted {
-		add(int(j))
-	}
-	for i := range s.data.Always {
-		add(len(s.data.Candidates) + i)
 	}
 	return m
 }

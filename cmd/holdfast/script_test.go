@@ -1,6 +1,8 @@
 package main
 
 import (
+	"encoding/csv"
+	"math"
 	"os"
 	"os/exec"
 	"path/filepath"
@@ -37,6 +39,7 @@ func TestScripts(t *testing.T) {
 		Cmds: map[string]func(ts *testscript.TestScript, neg bool, args []string){
 			"exits":     exits,
 			"disjoint":  disjoint,
+			"near":      near,
 			"interrupt": interrupt,
 			"damage":    damage,
 			"appendrow": appendRow,
@@ -83,6 +86,46 @@ func disjoint(ts *testscript.TestScript, neg bool, args []string) {
 			ts.Fatalf("%q is in both", line)
 		}
 	}
+}
+
+// near holds two CSV files to be equal but for rounding: numbers to 1e-7 of the
+// larger, other cells to the byte. A column that is named is not looked at: near
+// FILE FILE [COLUMN].
+func near(ts *testscript.TestScript, neg bool, args []string) {
+	if neg || len(args) < 2 || len(args) > 3 {
+		ts.Fatalf("usage: near FILE FILE [COLUMN]")
+	}
+	a, b := records(ts, args[0]), records(ts, args[1])
+	if len(a) != len(b) || len(a) < 2 {
+		ts.Fatalf("%d and %d lines", len(a), len(b))
+	}
+	for i := range a {
+		for j := range a[i] {
+			if len(args) == 3 && a[0][j] == args[2] {
+				continue
+			}
+			if !nearText(a[i][j], b[i][j]) {
+				ts.Fatalf("line %d: %s in %s and %s in %s", i+1, a[i][j], args[0], b[i][j], args[1])
+			}
+		}
+	}
+}
+
+// records reads a CSV file.
+func records(ts *testscript.TestScript, path string) [][]string {
+	list, err := csv.NewReader(strings.NewReader(ts.ReadFile(path))).ReadAll()
+	ts.Check(err)
+	return list
+}
+
+// nearText compares two cells.
+func nearText(a, b string) bool {
+	x, err := strconv.ParseFloat(a, 64)
+	y, bad := strconv.ParseFloat(b, 64)
+	if err != nil || bad != nil {
+		return a == b
+	}
+	return math.Abs(x-y) <= 1e-7*max(math.Abs(x), math.Abs(y))
 }
 
 // interrupt starts a command, waits until a file that fits a glob is there,

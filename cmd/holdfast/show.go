@@ -3,6 +3,7 @@ package main
 import (
 	"fmt"
 	"io"
+	"maps"
 	"os"
 	"path/filepath"
 	"slices"
@@ -16,13 +17,17 @@ import (
 
 // info is what a report says beside the judgement.
 func (j *judged) info(v view) report.Info {
+	id := &j.run.Identity
 	i := report.Info{
-		Outcome: j.run.Identity.Outcome, Kind: j.run.Identity.Kind,
-		Record: j.run.Decision, PerSD: v.perSD,
-		Full: filepath.Join(j.dir.Path(), "stability.csv"),
+		Outcome: id.Outcome, Kind: id.Kind, Success: id.Success, References: references(id),
+		Record: j.run.Decision, PerSD: v.perSD, Warnings: j.cautions(),
+		Full: filepath.Join(j.dir.Path(), "stability.csv"), FullTerms: filepath.Join(j.dir.Path(), "terms.parquet"),
+	}
+	if id.Outcome == "" {
+		i.Outcome = id.Time // of survival
 	}
 	if j.explored && !j.saved {
-		i.Full = "--json, or --save"
+		i.Full, i.FullTerms = "--json, or --save", "--json, or --save"
 	}
 	for _, e := range j.run.Meta.Excluded {
 		if e.Of != "" {
@@ -30,6 +35,35 @@ func (j *judged) info(v view) report.Info {
 		}
 	}
 	return i
+}
+
+// references are the levels that others are measured against: of candidates,
+// of columns that are always in, of members of groups.
+func references(id *rundir.Identity) (list []report.Reference) {
+	left := maps.Clone(id.Reference)
+	for _, name := range slices.Concat(id.Candidates, id.Always, slices.Sorted(maps.Keys(id.Reference))) {
+		if level, there := left[name]; there {
+			list = append(list, report.Reference{Column: name, Level: level})
+			delete(left, name)
+		}
+	}
+	return list
+}
+
+// cautions are what the making of the draws has to say to a judgement.
+func (j *judged) cautions() (list []string) {
+	m := &j.run.Meta
+	rows := m.Rows
+	if !j.bootstrap() {
+		rows /= 2
+	}
+	if m.EffectiveSize > 0 && small(m.EffectiveSize, rows) {
+		list = append(list, fewCount(m.EffectiveSize, rows))
+	}
+	if n := len(m.Lone); n > 0 {
+		list = append(list, fmt.Sprintf("strata of one row, which is in no half: %s", briefly(m.Lone)))
+	}
+	return list
 }
 
 // seen is the judgement in the units that the view asks for.
@@ -55,7 +89,7 @@ func (p *program) show(j *judged, v view) error {
 		fmt.Fprintln(p.err, "warning: explored after seeing the result: the decision of record is "+inWords(*j.run.Decision))
 	}
 	said := slices.Clone(p.told)
-	for _, w := range slices.Concat(j.judgement.Warnings, j.judgement.Decision.Notes) {
+	for _, w := range slices.Concat(j.judgement.Warnings, j.judgement.Decision.Notes, j.cautions()) {
 		if !slices.Contains(said, w) {
 			said = append(said, w)
 			fmt.Fprintln(p.err, "warning: "+oneLine(w))

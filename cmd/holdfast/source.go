@@ -36,8 +36,9 @@ type asked struct {
 	question
 	study   *study.Study
 	source  *table.Source
-	drafted []byte // text of the study where it was drafted for a table
-	memory  int64  // bytes that the table may take; 0: what the machine has free
+	drafted []byte  // text of the study where it was drafted for a table
+	memory  int64   // bytes that the table may take; 0: what the machine has free
+	luck    float64 // of the run directory that is gone on with; 0: it follows from the decision
 }
 
 // isStudy reports whether path names a study file and not a table.
@@ -153,9 +154,14 @@ func (q question) runPath() string {
 func (a *asked) columns() []study.Column {
 	var cols []study.Column
 	for _, c := range a.source.Columns() {
-		cols = append(cols, study.Column{Name: c.Name, Usable: c.Usable, Reason: c.Reason})
+		cols = append(cols, columnOf(c))
 	}
 	return cols
+}
+
+// columnOf is a column of the table in the words of package study.
+func columnOf(c table.Column) study.Column {
+	return study.Column{Name: c.Name, Usable: c.Usable, Reason: c.Reason, Text: c.Kind == table.Text}
 }
 
 // policy is the study's rule for missing values in the words of package table.

@@ -42,6 +42,8 @@ type status struct {
 	Run         string       `json:"run"`
 	Draws       int          `json:"draws"` // that the run is to have
 	Done        int          `json:"done"`
+	Redrawn     int          `json:"redrawn"`      // draws made anew because they could not be fitted
+	Uncertified []int        `json:"uncertified"`  // draws that end early, at a fit that was not certified
 	Damaged     []string     `json:"damaged"`      // blocks that cannot be used
 	Left        *float64     `json:"left_seconds"` // null: nothing is running, or too little is known
 	LastFailure *string      `json:"last_failure"`
@@ -86,7 +88,8 @@ func readStatus(path string, now time.Time) (*status, error) {
 		return nil, err
 	}
 	run := dir.Run()
-	s := &status{Run: path, Draws: run.Meta.Number, Done: found.Count, Damaged: []string{}}
+	s := &status{Run: path, Draws: run.Meta.Number, Done: found.Count, Damaged: []string{}, Uncertified: []int{}}
+	s.countDraws(found.Certificates)
 	for _, d := range found.Damaged {
 		s.Damaged = append(s.Damaged, d.Path)
 	}
@@ -101,6 +104,19 @@ func readStatus(path string, now time.Time) (*status, error) {
 	}
 	s.conclude(records)
 	return s, nil
+}
+
+// countDraws counts the draws that are whole and not as they should be.
+func (s *status) countDraws(list []rundir.Certificate) {
+	for _, c := range list {
+		if c.Redraws > 0 {
+			s.Redrawn++
+		}
+		if c.Uncertified {
+			s.Uncertified = append(s.Uncertified, c.Draw)
+		}
+	}
+	slices.Sort(s.Uncertified)
 }
 
 // countParts says how many draws each part has, and how many are done.
@@ -185,6 +201,12 @@ func (s *status) conclude(records []rundir.Part) {
 // print shows a status to people.
 func (s *status) print(out io.Writer) error {
 	fmt.Fprintf(out, "%s: %d of %d draws are whole\n", oneLine(s.Run), s.Done, s.Draws)
+	if s.Redrawn > 0 {
+		fmt.Fprintln(out, redrawnText(s.Redrawn))
+	}
+	if n := len(s.Uncertified); n > 0 {
+		fmt.Fprintf(out, "%s early, at a fit that could not be certified: %s\n", endText(n), ranges(s.Uncertified))
+	}
 	for _, path := range s.Damaged {
 		fmt.Fprintf(out, "damaged, made again by the next run: %s\n", oneLine(path))
 	}
@@ -220,4 +242,12 @@ func (s *status) print(out io.Writer) error {
 // timeText writes a time for people.
 func timeText(s float64) string {
 	return time.Duration(s * float64(time.Second)).Round(time.Second).String()
+}
+
+// endText writes how many draws end.
+func endText(n int) string {
+	if n == 1 {
+		return "1 draw ends"
+	}
+	return fmt.Sprintf("%d draws end", n)
 }

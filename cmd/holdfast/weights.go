@@ -17,6 +17,10 @@ func (l *loaded) weights(path string) ([]float64, error) {
 	if path == "" {
 		return nil, nil
 	}
+	if column := l.study.Outcome.CaseWeight; column != "" {
+		return nil, misuse(fmt.Sprintf("holdfast fit: --case-weights: the study has case weights already, in column %q", column),
+			"leave --case-weights out, or take those of the study out with --set outcome.case_weight=")
+	}
 	all, err := readWeights(path)
 	if err != nil {
 		return nil, wrong(err, "")

@@ -1,0 +1,73 @@
+package main
+
+import (
+	"fmt"
+	"slices"
+
+	"holdfast/resample"
+	"holdfast/solver"
+)
+
+// mostWeighed is the number of draws that the effective size is taken over.
+const mostWeighed = 200
+
+// effective is what case weights leave of the rows of a draw: (sum w)^2 / sum w^2
+// (Kish 1965, Survey Sampling, section 11.7), that of as many rows of equal
+// weight.
+type effective struct {
+	median, smallest float64
+	rows             int // of a draw
+	design           resample.Design
+}
+
+// weigh finds the effective size of the draws of a plan; nil without case
+// weights.
+func weigh(plan resample.Plan) *effective {
+	if plan.Case == nil {
+		return nil
+	}
+	e := effective{rows: plan.Units(), design: plan.Design}
+	step := 1
+	if plan.Design == resample.Halves {
+		e.rows, step = plan.Units()/2, 2
+	}
+	var sizes []float64
+	for draw := 0; draw < min(plan.Number, mostWeighed); draw += step {
+		sample := plan.Sample(draw)
+		sizes = append(sizes, effectiveSize(sample))
+		if plan.Design == resample.Halves {
+			sizes = append(sizes, effectiveSize(sample.Left)) // the partner
+		}
+	}
+	slices.Sort(sizes)
+	e.median, e.smallest = sizes[len(sizes)/2], sizes[0]
+	return &e
+}
+
+// effectiveSize is that of one draw, rows drawn twice counting twice.
+func effectiveSize(s *solver.Sample) float64 {
+	var sum, squares float64
+	for row, count := range resample.Drawn(s) {
+		w := s.Case[row]
+		sum += float64(float64(count) * w)
+		squares += float64(float64(float64(count)*w) * w)
+	}
+	return sum * sum / squares
+}
+
+// String says it to people.
+func (e *effective) String() string {
+	what := "a half"
+	if e.design == resample.Bootstrap {
+		what = "a draw"
+	}
+	return fmt.Sprintf("case weights make the %d rows of %s worth %.4g of equal weight (median; %.4g at least)", e.rows, what, e.median, e.smallest)
+}
+
+// small reports whether a few rows decide: less than half of them count.
+func small(median float64, rows int) bool { return median < float64(rows)/2 }
+
+// fewCount is the warning where a few rows decide.
+func fewCount(median float64, rows int) string {
+	return fmt.Sprintf("few rows decide what is chosen: case weights make the %d of a draw worth %.4g of equal weight", rows, median)
+}
