@@ -16,7 +16,8 @@ import (
 )
 
 // frequencies is a file of testdata/frequencies: selection counts made by
-// scikit-learn 1.2.1's lasso on listed rows (bench/peer/frequencies.py).
+// other programs on listed rows (testdata/SOURCES.md), of a numeric outcome by
+// scikit-learn 1.2.1's lasso (bench/peer/frequencies.py).
 type frequencies struct {
 	Table      string       `json:"table"`
 	Outcome    string       `json:"outcome"`
@@ -25,6 +26,12 @@ type frequencies struct {
 	Ratio      float64      `json:"ratio"`
 	Floor      float64      `json:"floor"`
 	StopAfter  int          `json:"stop_after"`
+	Family     string       `json:"family"` // the rest of these are of frequency_families_test.go
+	Classes    []string     `json:"classes"`
+	Offset     string       `json:"offset"`
+	Event      string       `json:"event"`
+	Ties       string       `json:"ties"`
+	Strata     string       `json:"strata"`
 	LambdaMax  float64      `json:"lambda_max"`
 	Predictors []string     `json:"predictors"`
 	Regions    []capRegion  `json:"regions"`
@@ -88,16 +95,18 @@ func (f frequencies) samples(t *testing.T, rows int) []*solver.Sample {
 // are proven with margins above 1e-7, so agreement must be exact.
 func TestFrequencies(t *testing.T) {
 	for _, name := range []string{"diabetes", "gasoline"} {
-		t.Run(name, func(t *testing.T) {
-			f := readFrequencies(t, name)
-			paths := f.fit(t)
-			f.compareEntries(t, paths)
-			draws := f.draws(paths)
-			for _, want := range f.Regions {
-				f.compareCounts(t, draws, want)
-				f.compareJudgement(t, draws, want)
-			}
-		})
+		t.Run(name, func(t *testing.T) { compareFrequencies(t, name) })
+	}
+}
+
+func compareFrequencies(t *testing.T, name string) {
+	f := readFrequencies(t, name)
+	paths := f.fit(t)
+	f.compareEntries(t, paths)
+	draws := f.draws(paths)
+	for _, want := range f.Regions {
+		f.compareCounts(t, draws, want)
+		f.compareJudgement(t, draws, want)
 	}
 }
 
@@ -105,18 +114,14 @@ func TestFrequencies(t *testing.T) {
 func (f frequencies) fit(t *testing.T) []solver.Path {
 	t.Helper()
 	tab := readTable(t, filepath.Join("..", "testdata", f.Table))
-	var x [][]float64
-	for _, name := range f.Predictors {
-		x = append(x, tab.numbers(t, name))
-	}
-	p := problemOf(x, tab.numbers(t, f.Outcome))
+	p := f.problem(t, tab)
 	p.Names, p.Ratio, p.Floor, p.StopAfter = f.Predictors, f.Ratio, f.Floor, f.StopAfter
 	model, err := solver.NewModel(context.Background(), p)
 	if err != nil {
 		t.Fatal(err)
 	}
 	if d := math.Abs(model.LambdaMax() - f.LambdaMax); d > 1e-12*f.LambdaMax {
-		t.Fatalf("lambda_max %.17g, scikit-learn's columns give %.17g", model.LambdaMax(), f.LambdaMax)
+		t.Fatalf("lambda_max %.17g, the other program's columns give %.17g", model.LambdaMax(), f.LambdaMax)
 	}
 	var paths []solver.Path
 	for block := range slices.Chunk(f.samples(t, tab.rows), 16) {
@@ -147,7 +152,7 @@ func (f frequencies) compareEntries(t *testing.T, paths []solver.Path) {
 			got = append(got, [3]int32{e.Candidate, e.Step, sign})
 		}
 		if !slices.Equal(got, f.Entries[d]) {
-			t.Errorf("draw %d: entries (predictor, step, sign)\n%v, scikit-learn\n%v", d, got, f.Entries[d])
+			t.Errorf("draw %d: entries (predictor, step, sign)\n%v, the other program\n%v", d, got, f.Entries[d])
 		}
 	}
 }
@@ -162,7 +167,7 @@ func (f frequencies) draws(paths []solver.Path) []selection.Draw {
 			out[d].Entries = append(out[d].Entries, selection.Entry{Predictor: e.Candidate, Step: e.Step, Negative: e.Negative})
 		}
 		for _, c := range p.Coefs {
-			out[d].Coefs = append(out[d].Coefs, selection.Coef{Step: c.Step, Predictor: c.Candidate, Value: c.Value})
+			out[d].Coefs = append(out[d].Coefs, selection.Coef{Step: c.Step, Predictor: c.Candidate, Term: c.Term, Class: c.Class, Value: c.Value})
 		}
 	}
 	return out
@@ -184,7 +189,7 @@ func (f frequencies) compareCounts(t *testing.T, draws []selection.Draw, want ca
 	}
 	for j, name := range f.Predictors {
 		if counts[j] != want.Counts[j] || both[j] != want.BothHalves[j] {
-			t.Errorf("q %d: %s in %d draws and %d pairs, scikit-learn %d and %d", want.Selected, name, counts[j], both[j], want.Counts[j], want.BothHalves[j])
+			t.Errorf("q %d: %s in %d draws and %d pairs, the other program %d and %d", want.Selected, name, counts[j], both[j], want.Counts[j], want.BothHalves[j])
 		}
 	}
 }
@@ -216,13 +221,13 @@ func (f frequencies) compareJudgement(t *testing.T, draws []selection.Draw, want
 	if err != nil {
 		t.Fatal(err)
 	}
-	predictors := selection.Predictors{Names: f.Predictors, Deviations: ones(len(f.Predictors))}
+	predictors := selection.Predictors{Names: f.Predictors, Classes: f.Classes, Deviations: ones(len(f.Predictors))}
 	judged, err := selection.Judge(draws, false, predictors, decision)
 	if err != nil {
 		t.Fatal(err)
 	}
 	if judged.CapBinding != want.CapBinding {
-		t.Errorf("q %d: cap binding in %d draws, scikit-learn %d", want.Selected, judged.CapBinding, want.CapBinding)
+		t.Errorf("q %d: cap binding in %d draws, the other program %d", want.Selected, judged.CapBinding, want.CapBinding)
 	}
 	for _, row := range judged.Rows {
 		if row.BothHalves == nil {
@@ -230,7 +235,7 @@ func (f frequencies) compareJudgement(t *testing.T, draws []selection.Draw, want
 		}
 		pairs := float64(want.BothHalves[row.Index]) / float64(f.Draws/2)
 		if row.Count != want.Counts[row.Index] || *row.BothHalves != pairs {
-			t.Errorf("q %d: %s chosen in %d draws, both halves %v; scikit-learn %d, %v", want.Selected, row.Predictor, row.Count, *row.BothHalves, want.Counts[row.Index], pairs)
+			t.Errorf("q %d: %s chosen in %d draws, both halves %v; the other program %d, %v", want.Selected, row.Predictor, row.Count, *row.BothHalves, want.Counts[row.Index], pairs)
 		}
 	}
 }
