@@ -34,6 +34,7 @@ func (l *loading) findLevels(ctx context.Context) error {
 	err := l.each(ctx, len(l.predictors), func(_, j int) error {
 		if p := l.predictors[j]; p.category {
 			p.levels, faults[j] = p.coding(MostLevels)
+			p.levels.reorder(func(a, b int) bool { return p.levels.names[a] < p.levels.names[b] })
 			if faults[j] == "" {
 				faults[j] = p.notWhole()
 			}

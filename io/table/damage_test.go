@@ -30,14 +30,10 @@ func survive(t testing.TB, path string, text []byte) error {
 	}
 	s, err := Open(path)
 	if err == nil {
-		var r Request
-		for _, c := range s.Columns() {
-			if c.Usable {
-				r.Candidates = append(r.Candidates, c.Name)
-			}
+		for _, r := range askedOfDamage(s.Columns()) {
+			_, loaded := s.Load(t.Context(), r)
+			err = errors.Join(err, loaded)
 		}
-		r.Missing, r.Memory, r.Workers = FillMean, testLimit, 2
-		_, err = s.Load(t.Context(), r)
 		if _, scanned := s.scan(t.Context(), "", testLimit); scanned != nil {
 			err = errors.Join(err, scanned)
 		}
@@ -57,11 +53,36 @@ func survive(t testing.TB, path string, text []byte) error {
 	return err
 }
 
-func leavesOf(err error) []error {
-	if j, ok := err.(interface{ Unwrap() []error }); ok {
-		return j.Unwrap()
+// askedOfDamage are the questions that a damaged file is asked: for all numbers,
+// and for the levels of all text.
+func askedOfDamage(cols []Column) []Request {
+	numbers := Request{Missing: FillMean, Memory: testLimit, Workers: 2}
+	levels := numbers
+	for _, c := range cols {
+		switch {
+		case c.Usable:
+			numbers.Candidates = append(numbers.Candidates, c.Name)
+		case c.Kind == Text:
+			levels.Candidates = append(levels.Candidates, c.Name)
+		}
 	}
-	return []error{err}
+	out := []Request{numbers}
+	if len(levels.Candidates) > 0 {
+		out = append(out, levels)
+	}
+	return out
+}
+
+func leavesOf(err error) []error {
+	j, ok := err.(interface{ Unwrap() []error })
+	if !ok {
+		return []error{err}
+	}
+	var out []error
+	for _, e := range j.Unwrap() {
+		out = append(out, leavesOf(e)...)
+	}
+	return out
 }
 
 // damageable are small files of every binary format.
@@ -80,6 +101,8 @@ func damageable(t testing.TB) map[string][]byte {
 		few[len(few)-1].cells = append([]any{}, few[len(few)-1].cells...)
 		few[len(few)-1].cells[i] = fmt.Sprint("level ", i%3)
 	}
+	feeds, _ := feeds(20)
+	few = append(few, feeds[1], feeds[4]) // plain and short
 	level := testColumn{"level", &arrow.DictionaryType{IndexType: arrow.PrimitiveTypes.Int8, ValueType: arrow.PrimitiveTypes.Float64}, nil}
 	for i := range 20 {
 		level.cells = append(level.cells, float64(i%3))
@@ -95,6 +118,12 @@ func damageable(t testing.TB) map[string][]byte {
 	keep(writeParquet(t, filepath.Join(dir, "two.parquet"), few, 20, parquet.WithDataPageVersion(parquet.DataPageV2), parquet.WithCompression(compress.Codecs.Zstd),
 		parquet.WithDictionaryFor("i64", false), parquet.WithEncodingFor("i64", parquet.Encodings.DeltaBinaryPacked), parquet.WithStats(false)))
 	keep(writeParquet(t, filepath.Join(dir, "snappy.parquet"), few[:3], 20, parquet.WithCompression(compress.Codecs.Snappy), parquet.WithStats(false)))
+	keep(writeParquet(t, filepath.Join(dir, "lengths.parquet"), feeds[:2], 20, parquet.WithDictionaryDefault(false),
+		parquet.WithEncodingFor("plain", parquet.Encodings.DeltaLengthByteArray), parquet.WithStats(false)))
+	keep(writeParquet(t, filepath.Join(dir, "shared.parquet"), feeds[:2], 9, parquet.WithDictionaryDefault(false),
+		parquet.WithEncodingFor("plain", parquet.Encodings.DeltaByteArray), parquet.WithStats(false)))
+	keep(writeArrow(t, filepath.Join(dir, "views.arrow"), feeds, 20, false))
+	keep(writeArrow(t, filepath.Join(dir, "zstd.arrow"), feeds, 20, false, ipc.WithZstd()))
 	keep(writeArrow(t, filepath.Join(dir, "file.arrow"), append(few, level), 20, false))
 	keep(writeArrow(t, filepath.Join(dir, "stream.arrow"), append(few, level), 11, true, ipc.WithLZ4()))
 	return out
@@ -283,10 +312,72 @@ func FuzzIPC(f *testing.F) {
 	f.Fuzz(func(t *testing.T, b []byte) { survive(t, path, b) })
 }
 
+// FuzzOutcome reads the columns of a file of text as everything that an
+// outcome is made of. What is read must be what its kind promises.
+func FuzzOutcome(f *testing.F) {
+	f.Add([]byte("a,b,c\nalive,1,0\ndead,2,1\nalive,3,1\n"), uint8(1), "alive")
+	f.Add([]byte("a,b,c\n3,1,0\n0,2,true\n7,3,1\n"), uint8(2), "")
+	f.Add([]byte("a,b,c\nspat,1,0\nveliger,2,true\nspat,3,1\n"), uint8(3), "")
+	f.Add([]byte("a,b,c\n3,1,0\n2,2,1\n7,3,1\n"), uint8(4), "1")
+	f.Add([]byte("a,b,c\n3,1,no\n2,2,yes\n7,3,yes\n"), uint8(4), "yes")
+	path := filepath.Join(f.TempDir(), "t.csv")
+	f.Fuzz(func(t *testing.T, b []byte, measure uint8, success string) {
+		must(t, os.WriteFile(path, b, 0o644))
+		s, err := Open(path)
+		if err != nil || len(s.Columns()) < 3 {
+			return
+		}
+		a, x, c := s.Columns()[0].Name, s.Columns()[1].Name, s.Columns()[2].Name
+		r := Request{Outcome: Outcome{Measure: Measure(measure % 5), Column: a, Success: success}, Candidates: []string{x}, Within: []string{c}, Memory: testLimit, Workers: 2}
+		if r.Outcome.Measure == AsSurvival {
+			r.Outcome.Column, r.Outcome.Time, r.Outcome.Event = "", a, c
+			r.Within = []string{OutcomeStratum}
+		}
+		d, err := s.Load(t.Context(), r)
+		if err != nil {
+			var ours *Error
+			if !errors.As(err, &ours) {
+				t.Fatalf("the error is a %T: %v", err, err)
+			}
+			return
+		}
+		checkPromise(t, d, r.Outcome.Measure)
+	})
+}
+
+// checkPromise holds loaded data to what the solver and the draws may expect.
+func checkPromise(t *testing.T, d *Data, m Measure) {
+	t.Helper()
+	n, _ := d.X.Dims()
+	if len(d.Within) != n || len(d.WithinLevels) == 0 {
+		t.Fatalf("%d of %d rows have a stratum", len(d.Within), n)
+	}
+	for _, k := range d.Within {
+		if k < 0 || int(k) >= len(d.WithinLevels) {
+			t.Fatalf("stratum %d of %d", k, len(d.WithinLevels))
+		}
+	}
+	if m == AsSurvival {
+		if len(d.Survival.Time) != n || len(d.Survival.Event) != n {
+			t.Fatal("a row has no time or no status")
+		}
+		return
+	}
+	if len(d.Outcome) != n || (m == AsYesNo) && len(d.Classes) != 2 {
+		t.Fatalf("%d outcomes of %d rows, classes %v", len(d.Outcome), n, d.Classes)
+	}
+	for _, y := range d.Outcome {
+		whole := y == math.Trunc(y) && y >= 0
+		if notFinite(y) || m != AsNumber && !whole || (m == AsYesNo || m == AsClasses) && int(y) >= len(d.Classes) {
+			t.Fatalf("%v is no outcome of kind %v", y, m)
+		}
+	}
+}
+
 func FuzzCSV(f *testing.F) {
 	for _, s := range []string{
 		"a,b\n1,2\n3,NA\n", "\xef\xbb\xbfa;b\r\n\"1\";2,5\r\n", "a\tb\n\"x\ny\"\t\"\"\"\"\n", "\"", "a,b\n1,\"2", "a|b\n|\n\n|1", "a,b\n1e999,0x10\n-Inf,nan\n",
-		"a,a\n1,2\n", "\n\n", "a\n1\n\n2\n", "a,b\n99999999999999999999,1_0\n2024-01-31,true\n", "\x1f\x8b\x08\x00",
+		"a,b\nalgae,1\nNA,2\n\"yeast, dry\",3\n", "a,b,c\nx,1,2\n\xff,2,x\n x ,3,\"y\"\"\"\n", "a,a\n1,2\n", "\n\n", "a\n1\n\n2\n", "a,b\n99999999999999999999,1_0\n2024-01-31,true\n", "\x1f\x8b\x08\x00",
 	} {
 		f.Add([]byte(s))
 	}

@@ -177,9 +177,9 @@ func codeNumbers(v []float64, kind Kind, most int) (c coding, fault string) {
 		case x != x:
 			code = noCode
 		case math.IsInf(x, 0):
-			return c, fmt.Sprintf("row %d holds an infinite value", i)
+			return coding{}, fmt.Sprintf("row %d holds an infinite value", i)
 		case !known && len(found) == most:
-			return c, tooMany(most)
+			return coding{}, tooMany(most)
 		case !known:
 			code = int32(len(found))
 			numbers[x], found = code, append(found, x)

@@ -309,3 +309,112 @@ func TestRunsOfPositions(t *testing.T) {
 		t.Error("no bits are no zero")
 	}
 }
+
+// A column of nothing but different texts takes the memory of its codes, and
+// collecting stops early; so does reading where the format allows.
+func TestTextsThatAllDiffer(t *testing.T) {
+	const n = 150_000
+	dir := t.TempDir()
+	var cells []any
+	var b strings.Builder
+	b.WriteString("id,x\n")
+	numbers := make([]any, n)
+	for i := range n {
+		id := fmt.Sprintf("larva number %09d of the year", i)
+		cells = append(cells, id)
+		fmt.Fprintf(&b, "%s,%d\n", id, i%7)
+		numbers[i] = float64(i % 7)
+	}
+	cols := []testColumn{{"id", arrow.BinaryTypes.String, cells}, {"x", arrow.PrimitiveTypes.Float64, numbers}}
+	view := []testColumn{{"id", arrow.BinaryTypes.StringView, cells}, cols[1]}
+	for _, path := range []string{
+		writeParquet(t, filepath.Join(dir, "t.parquet"), cols, 40_000),
+		writeArrow(t, filepath.Join(dir, "t.arrow"), cols, n, false),
+		writeArrow(t, filepath.Join(dir, "z.arrow"), cols, n, false, ipc.WithZstd()),
+		writeArrow(t, filepath.Join(dir, "v.arrow"), view, n, false),
+		writeText(t, filepath.Join(dir, "t.csv"), b.String()),
+	} {
+		s, err := Open(path)
+		must(t, err)
+		before := allocated()
+		d, err := s.Load(t.Context(), Request{Candidates: []string{"id", "x"}, Workers: 1})
+		must(t, err)
+		taken := allocated() - before
+		t.Logf("%s: %d MB were taken for %d MB of cells", filepath.Base(path), taken>>20, 12*n>>20)
+		if taken > 12*n+20<<20 {
+			t.Errorf("%s: %d MB were taken for %d MB of cells", filepath.Base(path), taken>>20, 12*n>>20)
+		}
+		if got := fmt.Sprint(d.Excluded); got != "[{id has more than 50 levels}]" {
+			t.Errorf("%s: left out %s", filepath.Base(path), got)
+		}
+	}
+}
+
+// Sizes that a file of text claims, and cannot keep.
+func TestClaimsOfText(t *testing.T) {
+	huge := []byte{0xff, 0xff, 0xff, 0x7f, 'a'}
+	if _, err := (&plainText{rest: huge}).next(); err == nil {
+		t.Error("a text longer than its page is accepted")
+	}
+	if _, err := newTextDictionary(huge, 1); err == nil {
+		t.Error("an entry longer than its dictionary is accepted")
+	}
+	p := &pages{left: 1000, codec: codecNone, leaf: &leaf{physical: physicalByteArray}, rows: 10}
+	if err := p.dictionary(pageHeader{values: 1 << 30, plain: 1 << 30, packed: 900}); err == nil {
+		t.Error("a dictionary of 2^30 entries is accepted")
+	}
+	d := newArrowDictionaries(1)
+	text := arrowField{typ: arrowUTF8}
+	for name, c := range map[string]struct {
+		b  arrowBatch
+		l  batchLayout
+		ok bool
+	}{
+		"in order":      {arrowBatch{rows: 100, size: 900}, batchLayout{codec: arrowRaw}, true},
+		"beyond bytes":  {arrowBatch{rows: 1000, size: 900}, batchLayout{codec: arrowRaw}, false},
+		"beyond codecs": {arrowBatch{rows: 1 << 40, size: 900}, batchLayout{codec: arrowZstd}, false},
+		"beyond memory": {arrowBatch{rows: 1 << 24, size: 1 << 20}, batchLayout{codec: arrowZstd}, false},
+	} {
+		if err := d.claim(c.b, &c.l, text, 50); (err == nil) != c.ok {
+			t.Errorf("%s: %v", name, err)
+		}
+	}
+	short := &viewBuffer{plain: []byte("abc"), size: 3}
+	for _, c := range [][2]int64{{-1, 1}, {4, 1}, {0, 4}, {1 << 40, 1}} {
+		if _, err := short.word(c[0], c[1]); err == nil {
+			t.Errorf("text %v of 3 bytes is accepted", c)
+		}
+	}
+}
+
+// Differences that add up to lengths which no page has, and shared beginnings
+// that make ever longer texts of nothing, take no memory.
+func TestSharedBeginningsDoNotGrow(t *testing.T) {
+	const n = 100_000
+	uv := func(v uint64) []byte { return binary.AppendUvarint(nil, v) }
+	zig := func(v int64) []byte { return binary.AppendVarint(nil, v) }
+	rise := func(first, step int64) []byte { // first, first+step, ...
+		b := join(uv(1<<16), uv(1), uv(n), zig(first))
+		for range 2 {
+			b = append(b, join(zig(step), []byte{0})...)
+		}
+		return b
+	}
+	const word = 100
+	page := join(rise(0, word), rise(word, 0), []byte(strings.Repeat("x", n*word)))
+	shared, err := newSharedText(page, n)
+	must(t, err)
+	texts := newTexts(n, MostLevels)
+	before := allocated()
+	for i := range n { // the last would have ten million bytes
+		if _, err := shared.code(texts, int64(i)); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if taken := allocated() - before; taken > 1<<20+n*word {
+		t.Errorf("%d bytes were taken", taken)
+	}
+	if _, fault := texts.coding(MostLevels); fault != "row 10 holds a text of more than 1000 bytes, which is no level" {
+		t.Errorf("it is said that the column %s", fault)
+	}
+}
