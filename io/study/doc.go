@@ -11,7 +11,12 @@
 //     has as its name is that column, whatever characters it holds; any other
 //     text with * ? [ or \ is a pattern.
 //   - roles: which columns are outcome, candidates and always in the model.
-//   - draft: a study proposed from the shape of a table.
+//   - predictor: one unit of selection that candidates make: a column, a
+//     category (a column read by its levels, as text always is) or a group of
+//     columns. Penalties, budget and frequencies are per predictor.
+//   - kind: what the outcome is: number, yes-no, count, classes or survival.
+//   - draft: a study proposed from the shape of a table and the values of the
+//     outcome.
 //
 // # Steps
 //

@@ -49,6 +49,46 @@ leave = ["sal_d1"]
 	// [ph sal_d2] [0.5 1] [sal_d1] [{sal_note text}] <nil>
 }
 
+// A group and a category are one predictor each, and a relative penalty is
+// that of a predictor.
+func ExampleRoles() {
+	text := `[table]
+path = "batches.parquet"
+[outcome]
+kind = "yes-no"
+column = "fate"
+success = "lost"
+[candidates]
+always = ["site"]
+[candidates.groups]
+salinity = ["sal_*"]
+[penalty.relative]
+salinity = 0.5
+`
+	s, err := study.Parse("study.toml", []byte(text), nil)
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	roles, err := s.Resolve([]study.Column{
+		{Name: "site", Text: true}, {Name: "feed", Text: true}, {Name: "sal_d1", Usable: true},
+		{Name: "ph", Usable: true}, {Name: "sal_d2", Usable: true}, {Name: "fate", Text: true},
+	})
+	if err != nil {
+		fmt.Println(err)
+		return
+	}
+	for i, p := range roles.Predictors {
+		fmt.Println(p.Name, p.Columns, roles.Relative[i])
+	}
+	fmt.Println("categories", roles.Categories, "balanced", roles.Within)
+	// Output:
+	// feed [feed] 1
+	// salinity [sal_d1 sal_d2] 0.5
+	// ph [ph] 1
+	// categories [site feed] balanced [outcome]
+}
+
 // A table of 240 rows and 40 candidates; the reasons stand beside the settings.
 func ExampleDraft() {
 	facts := study.Facts{Path: "hatchery.parquet", Outcome: "survival_d21", Rows: 240, Incomplete: 0}
