@@ -33,7 +33,6 @@ type activeSet struct {
 	g       []float64 // c - H beta, per place
 	in      []bool    // per place
 	lambda  float64   // for which chol's diagonal was made
-	stale   bool      // the Hessian is another one than chol was made of
 	out     int       // place that the last exchange took out; -1: none
 	b, row  []float64 // scratch
 }
@@ -41,7 +40,7 @@ type activeSet struct {
 func (a *activeSet) reset() {
 	a.members, a.sign, a.beta, a.g, a.in = a.members[:0], a.sign[:0], a.beta[:0], a.g[:0], a.in[:0]
 	a.chol.truncate(0)
-	a.lambda, a.stale = 0, false
+	a.lambda = 0
 }
 
 // grow makes room for members that joined the working set.
@@ -93,7 +92,7 @@ func (a *activeSet) refactor(w *quadratic, p *penalty, lambda float64) {
 			a.beta[i], a.in[i] = 0, false
 		}
 	}
-	a.lambda, a.stale = lambda, false
+	a.lambda = lambda
 }
 
 // products returns column i's products with the first k members.
@@ -108,7 +107,7 @@ func (a *activeSet) products(w *quadratic, i, k int) []float64 {
 // solve moves to the optimum at lambda, from wherever it stands.
 func (a *activeSet) solve(w *quadratic, p *penalty, lambda float64) error {
 	a.grow(len(w.units))
-	if a.stale || p.quadratic() && a.lambda != lambda {
+	if p.quadratic() && a.lambda != lambda {
 		a.refactor(w, p, lambda)
 	}
 	single := false

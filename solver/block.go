@@ -4,6 +4,8 @@ import (
 	"context"
 	"math"
 	"sync"
+
+	"holdfast/solver/kernel"
 )
 
 // blockBytes bounds the gathered columns of the draws that one worker fits
@@ -180,6 +182,12 @@ func (f *fitting) rest(r *record) (intercepts, always []float64) {
 	}
 	for _, c := range f.core.values(r) {
 		subtract(f.m.columns(c.Candidate)[c.Term], f.meanOf(c.Candidate, int(c.Term)), c.Value, int(c.Class))
+	}
+	if lanes > 1 { // a common shift means nothing: they sum to zero (DESIGN 4)
+		mean := kernel.Sum(intercepts) / float64(lanes)
+		for lane := range intercepts {
+			intercepts[lane] -= mean
+		}
 	}
 	return intercepts, always
 }

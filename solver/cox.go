@@ -37,7 +37,6 @@ type cox struct {
 	died   []float64 // per tie: of the deaths
 	full   []float64 // per tie: hazard added from it up to the earliest of the stratum, that of those who outlive it
 	less   []float64 // per tie: how much less of it those who die there bear
-	bent   []float64 // per row: what turns a gathered column into vector a
 }
 
 // tie is the events of one stratum at one time.
@@ -355,32 +354,38 @@ func (f *cox) score(eta, u []float64) float64 {
 	return loss / f.d.total
 }
 
-func (f *cox) bend(eta []float64) {
+func (f *cox) bend(eta []float64) curvature {
 	f.expose(eta)
 	f.hazards()
-	f.bent = resize(f.bent, len(eta))
-	for i := range f.bent {
-		f.bent[i] = math.Sqrt(max(0, f.risk[i]*f.hazard(i)))
+	c := &coxCurvature{f: f, root: make([]float64, len(eta)), risk: slices.Clone(f.risk), scale: make([]float64, len(f.terms))}
+	for i := range c.root {
+		c.root[i] = math.Sqrt(max(0, f.risk[i]*f.hazard(i)))
 		if f.d.root != nil {
-			f.bent[i] /= f.d.root[i]
+			c.root[i] /= f.d.root[i]
+			c.risk[i] /= f.d.root[i]
 		}
 	}
+	for q, t := range f.terms {
+		c.scale[q] = math.Sqrt(t.weight) / f.left(t)
+	}
+	return c
 }
 
-// carry: the information is the sum over terms of the weighted variance of the
-// column over the risk set: second moments in a, means in b.
-func (f *cox) carry(z []float64, _ int, a, b []float64) (_, _ []float64) {
-	a = resize(a, len(z))
-	for i, s := range f.bent {
-		a[i] = s * z[i]
-	}
-	b = resize(b, len(f.terms))
-	part := func(i int32) float64 {
-		v := f.risk[i] * z[i]
-		if f.d.root != nil {
-			v /= f.d.root[i]
-		}
-		return v
+// coxCurvature is the information: the sum over terms of the weighted variance of a
+// column over the risk set, second moments in a, means in b.
+type coxCurvature struct {
+	f     *cox
+	root  []float64 // per row: sqrt(risk * hazard / w)
+	risk  []float64 // per row, over sqrt(w)
+	scale []float64 // per term: sqrt(weight) over what it counts of the risk sum
+}
+
+func (c *coxCurvature) carry(z []float64, _ int) (a, b []float64) {
+	f := c.f
+	a, b = make([]float64, len(z)), make([]float64, len(f.terms))
+	part := make([]float64, len(z))
+	for i, v := range z {
+		a[i], part[i] = c.root[i]*v, c.risk[i]*v
 	}
 	sum, added, taken := 0.0, 0, 0
 	for k, t := range f.ties {
@@ -389,17 +394,17 @@ func (f *cox) carry(z []float64, _ int, a, b []float64) (_, _ []float64) {
 			added, taken = f.begins(k)
 		}
 		for ; added < t.added; added++ {
-			sum += part(f.byTime[added])
+			sum += part[f.byTime[added]]
 		}
 		for ; taken < t.taken; taken++ {
-			sum -= part(f.byEntry[taken])
+			sum -= part[f.byEntry[taken]]
 		}
 		died := 0.0
 		for _, i := range t.dead {
-			died += part(i)
+			died += part[i]
 		}
 		for q := t.from; q < t.to; q++ {
-			b[q] = math.Sqrt(f.terms[q].weight) * (sum - float64(f.terms[q].gone*died)) / f.left(f.terms[q])
+			b[q] = c.scale[q] * (sum - float64(f.terms[q].gone*died))
 		}
 	}
 	return a, b

@@ -31,8 +31,7 @@ const (
 // place*lanes + lane.
 type curved struct {
 	f     *fitting
-	fam   family // bent where the working set's Hessian was made
-	rec   family // of the records, whose numbers must not depend on that
+	fam   family
 	lanes int
 	fixed []choice // the always-in places that are not redundant, the intercept first
 
@@ -44,24 +43,23 @@ type curved struct {
 	value  float64   // objective at beta
 	lambda float64   // of value
 
-	model  quadratic   // of the step: Hessian where fam is bent
-	bent   bool        // the Hessian stands
-	a, b   [][]float64 // carriers of the Hessian
+	bend   *hessian  // of the steps: that of the record before, or a later one
+	which  []int     // coefficients of the step's model: all that may move
+	model  quadratic // of these
 	qp     activeSet
 	trial  []float64
 	lonely *record // the fit of the intercept alone
 }
 
 func newCurved(f *fitting) *curved {
-	return &curved{f: f, fam: newFamily(&f.m.p), rec: newFamily(&f.m.p), lanes: f.m.Classes()}
+	return &curved{f: f, fam: newFamily(&f.m.p), lanes: f.m.Classes()}
 }
 
 // begin fits the intercept alone, then with the always-in columns.
 func (c *curved) begin() error {
 	f := c.f
 	c.fam.take(&f.d)
-	c.rec.take(&f.d)
-	if err := c.rec.fittable(); err != nil {
+	if err := c.fam.fittable(); err != nil {
 		return err
 	}
 	c.setOffset()
@@ -133,18 +131,13 @@ func (c *curved) setOffset() {
 // reset forgets the draw before.
 func (c *curved) reset() {
 	c.beta, c.g = c.beta[:0], c.g[:0]
-	c.model.units, c.model.c = c.model.units[:0], c.model.c[:0]
-	c.model.h.reset()
-	c.bent = false
-	c.a, c.b = c.a[:0], c.b[:0]
-	c.qp.reset()
+	c.bend = nil
 }
 
 // grow makes room for places that joined the working set.
 func (c *curved) grow() {
 	n := len(c.f.work.units) * c.lanes
 	for len(c.beta) < n {
-		c.model.units = append(c.model.units, c.f.work.units[len(c.beta)/c.lanes])
 		c.beta, c.g = append(c.beta, 0), append(c.g, 0)
 	}
 }
@@ -272,17 +265,23 @@ func (c *curved) violation(unit int32, first, width int, lambda float64) float64
 	return math.Sqrt(sum) / t
 }
 
-// solve makes proximal Newton steps until the working set is solved.
+// solve makes proximal Newton steps until the working set is solved. The Hessian
+// is that of the record before while it serves.
 func (c *curved) solve(lambda float64) error {
 	c.grow()
 	c.value = c.at(c.beta, lambda)
 	worst := c.gradients(lambda)
+	if c.lambda != lambda {
+		c.lambda, c.bend = lambda, c.f.rec.bend
+	}
+	fresh := c.bend == nil
 	for range newtonSteps {
 		if worst <= solved {
 			return nil
 		}
-		fresh := !c.bent
-		c.curve()
+		if c.bend == nil {
+			c.bend = c.newHessian(c.fam.bend(c.eta))
+		}
 		if err := c.target(lambda, worst); err != nil {
 			return err
 		}
@@ -291,19 +290,20 @@ func (c *curved) solve(lambda float64) error {
 		if !moved && fresh {
 			return c.stuck(now)
 		}
-		if !moved || !whole || now > slow*worst {
-			c.bent = false
+		if fresh = !moved || !whole || now > slow*worst; fresh {
+			c.bend = nil
 		}
 		worst = now
 	}
 	return fmt.Errorf("the proximal Newton method made %d steps", newtonSteps)
 }
 
-// good enough for the finish to go on from.
+// nearly is the violation at which the finish can go on from a working set that
+// no step improves any more.
 const nearly = 1e-3
 
-// stuck judges a working set that no step improves any more: what is left is
-// rounding of the objective, or an error.
+// stuck judges such a working set: what is left is rounding of the objective, or
+// an error.
 func (c *curved) stuck(worst float64) error {
 	if worst <= nearly {
 		return nil
@@ -311,62 +311,46 @@ func (c *curved) stuck(worst float64) error {
 	return fmt.Errorf("the line search ended at a violation of %.1e", worst)
 }
 
-// curve makes the Hessian of the working set, or extends it to places that joined.
-func (c *curved) curve() {
-	f := c.f
-	if !c.bent {
-		c.fam.bend(c.eta)
-		c.model.h.reset()
-		c.a, c.b = c.a[:0], c.b[:0]
-		c.qp.stale = true
-		c.bent = true
-	}
-	for i := len(c.a); i < len(c.beta); i++ {
-		var a, b []float64
-		if i < cap(c.a) {
-			a, b = c.a[:i+1][i], c.b[:i+1][i]
+// choose lists the coefficients of the step's model: those that are not 0 or not
+// penalised, and those that violate; the others stay at 0.
+func (c *curved) choose(lambda float64) {
+	c.which = c.which[:0]
+	for _, q := range c.fixed {
+		for lane := range c.lanes {
+			c.which = append(c.which, q.place*c.lanes+lane)
 		}
-		a, b = c.fam.carry(f.work.z[i/c.lanes], i%c.lanes, a, b)
-		c.a, c.b = append(c.a, a), append(c.b, b)
 	}
-	row := make([]float64, len(c.beta))
-	for i := len(c.model.h.row); i < len(c.beta); i++ {
-		for j := range i + 1 {
-			row[j] = c.curvature(c.a, c.b, i, j, i%c.lanes == j%c.lanes)
+	c.each(func(unit int32, first, width int) {
+		if c.norm(c.beta, first, width) > 0 || c.norm(c.g, first, width) > c.f.penalty.threshold(unit, lambda) {
+			for t := range width {
+				c.which = append(c.which, first+t*c.lanes)
+			}
 		}
-		c.model.h.append(row[:i+1])
-	}
-}
-
-// curvature is one entry of the Hessian from its carriers.
-func (c *curved) curvature(a, b [][]float64, i, j int, sameLane bool) float64 {
-	h := 0.0
-	if sameLane {
-		h = kernel.Dot(a[i], a[j])
-	}
-	if len(b[i]) > 0 {
-		h -= kernel.Dot(b[i], b[j])
-	}
-	return h / c.f.d.total
+	})
 }
 
 // target solves the quadratic model at beta, into trial.
 func (c *curved) target(lambda, worst float64) error {
-	c.model.c = resize(c.model.c, len(c.beta))
-	copy(c.model.c, c.g)
-	for i, b := range c.beta {
-		if b != 0 {
-			kernel.AddScaled(b, c.model.h.row[i], c.model.c)
-		}
+	c.choose(lambda)
+	m := &c.model
+	c.bend.among(c.which, &m.h)
+	m.c, m.units = resize(m.c, len(c.which)), m.units[:0]
+	c.trial = resize(c.trial, len(c.which))
+	for k, i := range c.which {
+		m.units = append(m.units, c.f.work.units[i/c.lanes])
+		m.c[k], c.trial[k] = c.g[i], c.beta[i]
 	}
-	c.trial = append(c.trial[:0], c.beta...)
 	if c.f.m.p.Groups != nil {
 		c.descend(lambda, worst)
 		return nil
 	}
-	c.qp.grow(len(c.beta))
-	c.ensureFixed()
-	if err := c.qp.solve(&c.model, c.f.penalty, lambda); err != nil {
+	for k, b := range c.trial {
+		if b != 0 {
+			kernel.AddScaled(b, m.h.row[k], m.c)
+		}
+	}
+	c.startActive(lambda)
+	if err := c.qp.solve(m, c.f.penalty, lambda); err != nil {
 		return err
 	}
 	copy(c.trial, c.qp.beta)
@@ -375,28 +359,38 @@ func (c *curved) target(lambda, worst float64) error {
 
 // descend solves the model by block coordinate descent.
 func (c *curved) descend(lambda, worst float64) {
-	d := descent{h: &c.model.h, p: c.f.penalty, lambda: lambda, enough: settled * worst * lambda, beta: c.trial, r: slices.Clone(c.g)}
-	for _, q := range c.fixed {
-		for lane := range c.lanes {
-			d.strips = append(d.strips, strip{c.f.work.units[q.place], q.place*c.lanes + lane, 1, 1})
-		}
+	d := descent{
+		h: &c.model.h, p: c.f.penalty, lambda: lambda, enough: settled * worst * lambda,
+		beta: c.trial, r: slices.Clone(c.model.c),
 	}
-	c.each(func(unit int32, first, width int) {
-		d.strips = append(d.strips, strip{unit, first, width, c.lanes})
-	})
+	for k := 0; k < len(c.which); {
+		unit, lane, width := c.model.units[k], c.which[k]%c.lanes, 1
+		for k+width < len(c.which) && c.model.units[k+width] == unit && c.which[k+width]%c.lanes == lane {
+			width++
+		}
+		d.strips = append(d.strips, strip{unit, k, width})
+		k += width
+	}
 	d.run()
 }
 
-// ensureFixed brings the unpenalised coefficients into the active set.
-func (c *curved) ensureFixed() {
-	if c.qp.stale {
-		c.qp.refactor(&c.model, c.f.penalty, c.f.lambda(c.f.cur))
-	}
-	for _, q := range c.fixed {
-		for lane := range c.lanes {
-			if i := q.place*c.lanes + lane; !c.qp.in[i] {
-				c.qp.push(&c.model, c.f.penalty, c.qp.lambda, i, 0)
-			}
+// startActive starts the active set at the coefficients that are not 0 or not
+// penalised.
+func (c *curved) startActive(lambda float64) {
+	c.qp.reset()
+	c.qp.grow(len(c.which))
+	c.qp.lambda = lambda
+	for k := range c.which {
+		free := c.f.penalty.always(c.model.units[k])
+		if !free && c.trial[k] == 0 {
+			continue
+		}
+		sign := 0.0
+		if !free {
+			sign = math.Copysign(1, c.trial[k])
+		}
+		if c.qp.push(&c.model, c.f.penalty, lambda, k, sign) {
+			c.qp.beta[k] = c.trial[k]
 		}
 	}
 }
@@ -404,15 +398,18 @@ func (c *curved) ensureFixed() {
 // search goes from beta towards trial as far as the objective falls. It reports
 // whether it moved, and whether all the way.
 func (c *curved) search(lambda float64) (moved, whole bool) {
-	promise := c.penalise(c.trial, lambda) - c.penalise(c.beta, lambda)
-	for i, g := range c.g {
-		promise -= float64(g * (c.trial[i] - c.beta[i]))
+	from, to := slices.Clone(c.beta), slices.Clone(c.beta)
+	for k, i := range c.which {
+		to[i] = c.trial[k]
 	}
-	from := slices.Clone(c.beta)
+	promise := c.penalise(to, lambda) - c.penalise(from, lambda)
+	for i, g := range c.g {
+		promise -= float64(g * (to[i] - from[i]))
+	}
 	noise := float64(4e-16 * math.Abs(c.value))
 	for k, t := 0, 1.0; k < halvings; k, t = k+1, t/2 {
 		for i := range c.beta {
-			c.beta[i] = from[i] + float64(t*(c.trial[i]-from[i]))
+			c.beta[i] = from[i] + float64(t*(to[i]-from[i]))
 		}
 		if value := c.at(c.beta, lambda); value <= c.value+float64(sufficient*t*min(promise, 0))+noise && !math.IsNaN(value) {
 			moved = !slices.Equal(c.beta, from)

@@ -15,11 +15,11 @@ const (
 	settled = 0.03
 )
 
-// strip is a block of coefficients of a quadratic model: width of them, stride
-// apart.
+// strip is a block of coefficients of a quadratic model: width of them, from
+// first.
 type strip struct {
-	unit                 int32
-	first, width, stride int
+	unit         int32
+	first, width int
 }
 
 // descent solves a quadratic model with groups by block coordinate descent
@@ -71,12 +71,7 @@ func (d *descent) sweep(all bool) float64 {
 }
 
 func (d *descent) size(s strip) float64 {
-	sum := 0.0
-	for k := range s.width {
-		v := d.beta[s.first+k*s.stride]
-		sum += float64(v * v)
-	}
-	return math.Sqrt(sum)
+	return length(d.beta[s.first : s.first+s.width])
 }
 
 // shrink makes one proximal step on a block.
@@ -87,7 +82,7 @@ func (d *descent) shrink(s strip) float64 {
 	}
 	d.block = resize(d.block, s.width)
 	for k := range s.width {
-		i := s.first + k*s.stride
+		i := s.first + k
 		d.block[k] = d.r[i] + float64(steep*d.beta[i])
 	}
 	size, share, most := length(d.block), 0.0, 0.0
@@ -95,7 +90,7 @@ func (d *descent) shrink(s strip) float64 {
 		share = (1 - t/size) / (steep + ridge)
 	}
 	for k := range s.width {
-		i := s.first + k*s.stride
+		i := s.first + k
 		by := float64(share*d.block[k]) - d.beta[i]
 		most = max(most, steep*math.Abs(by))
 		d.move(i, by)
@@ -110,7 +105,7 @@ func (d *descent) steepness(s strip) float64 {
 	for k := range s.width {
 		sum := 0.0
 		for l := range s.width {
-			sum += math.Abs(d.h.row[s.first+k*s.stride][s.first+l*s.stride])
+			sum += math.Abs(d.h.row[s.first+k][s.first+l])
 		}
 		most = max(most, sum)
 	}

@@ -19,12 +19,8 @@ type family interface {
 	// score overwrites u with the score at eta and returns the mean loss, which
 	// may be infinite where eta is far off.
 	score(eta, u []float64) float64
-	// bend fixes the point at which curvature is asked for.
-	bend(eta []float64)
-	// carry turns a gathered column into vectors a (and b, which may be empty) for
-	// one lane, so that the curvature of two of them is a'a - b'b over N, the first
-	// product only where their lanes are the same.
-	carry(z []float64, lane int, a, b []float64) (_, _ []float64)
+	// bend returns the curvature at eta.
+	bend(eta []float64) curvature
 	// deviance is the mean unit deviance at eta (STATISTICS 11), for Cox -2 log
 	// partial likelihood.
 	deviance(eta []float64) float64
@@ -54,9 +50,8 @@ type pointwise struct {
 	unit  func(y, eta float64) float64
 	check func(y, w []float64) error
 
-	d    *drawn
-	y    []float64
-	bent []float64 // square root of the variance function
+	d *drawn
+	y []float64
 }
 
 func (f *pointwise) take(d *drawn) {
@@ -79,20 +74,24 @@ func (f *pointwise) score(eta, u []float64) float64 {
 	return f.d.weighted(losses) / f.d.total
 }
 
-func (f *pointwise) bend(eta []float64) {
-	f.bent = resize(f.bent, len(eta))
+func (f *pointwise) bend(eta []float64) curvature {
+	root := make([]float64, len(eta))
 	for k, e := range eta {
 		_, _, v := f.at(f.y[k], e)
-		f.bent[k] = math.Sqrt(v)
+		root[k] = math.Sqrt(v)
 	}
+	return pointwiseCurvature(root)
 }
 
-func (f *pointwise) carry(z []float64, _ int, a, b []float64) (_, _ []float64) {
-	a = resize(a, len(z))
-	for k, s := range f.bent {
+// pointwiseCurvature is the square root of the variance function, by row.
+type pointwiseCurvature []float64
+
+func (c pointwiseCurvature) carry(z []float64, _ int) (a, b []float64) {
+	a = make([]float64, len(z))
+	for k, s := range c {
 		a[k] = s * z[k]
 	}
-	return a, b[:0]
+	return a, nil
 }
 
 func (f *pointwise) deviance(eta []float64) float64 {

@@ -46,6 +46,7 @@ type record struct {
 	blocks  []block  // of the curved core, in place of members and sign
 	gone    []choice // groups that the curved core found to be better off at 0
 	loss    float64  // likewise: mean loss
+	bend    *hessian // likewise: where it was last made
 }
 
 // certificate is how well a fit meets its optimality conditions.

@@ -10,11 +10,9 @@ import (
 // multinomial is the symmetric multinomial logit: a linear predictor per class,
 // of which a common shift means nothing.
 type multinomial struct {
-	p    *Problem
-	d    *drawn
-	y    []int
-	p0   []float64 // probabilities at the bent point, class after class
-	root []float64 // their square roots
+	p *Problem
+	d *drawn
+	y []int
 }
 
 func (f *multinomial) take(d *drawn) {
@@ -73,22 +71,26 @@ func (f *multinomial) score(eta, u []float64) float64 {
 	return f.d.weighted(losses) / f.d.total
 }
 
-func (f *multinomial) bend(eta []float64) {
+func (f *multinomial) bend(eta []float64) curvature {
 	n, q := len(f.y), make([]float64, f.p.Classes)
-	f.p0, f.root = resize(f.p0, len(eta)), resize(f.root, len(eta))
+	c := &multinomialCurvature{p: make([]float64, len(eta)), root: make([]float64, len(eta))}
 	for k := range f.y {
 		f.probabilities(eta, k, q)
-		for c, v := range q {
-			f.p0[c*n+k], f.root[c*n+k] = v, math.Sqrt(v)
+		for l, v := range q {
+			c.p[l*n+k], c.root[l*n+k] = v, math.Sqrt(v)
 		}
 	}
+	return c
 }
 
-// carry: the curvature between classes a and b is p_a (1{a=b} - p_b).
-func (f *multinomial) carry(z []float64, lane int, a, b []float64) (_, _ []float64) {
+// multinomialCurvature is the probabilities, class after class, and their square
+// roots: the curvature between classes a and b is p_a (1{a=b} - p_b).
+type multinomialCurvature struct{ p, root []float64 }
+
+func (c *multinomialCurvature) carry(z []float64, lane int) (a, b []float64) {
 	n := len(z)
-	a, b = resize(a, n), resize(b, n)
-	p, root := f.p0[lane*n:(lane+1)*n], f.root[lane*n:(lane+1)*n]
+	a, b = make([]float64, n), make([]float64, n)
+	p, root := c.p[lane*n:(lane+1)*n], c.root[lane*n:(lane+1)*n]
 	for k, v := range z {
 		a[k], b[k] = root[k]*v, p[k]*v
 	}

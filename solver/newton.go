@@ -44,6 +44,7 @@ func (c *curved) record(prev *record, support []choice, lambda float64) (*record
 	}
 	n.lineUp(support)
 	n.start(prev)
+	n.r.bend = prev.bend
 	if err := n.converge(); err != nil {
 		return nil, err
 	}
@@ -60,8 +61,7 @@ type newton struct {
 	worst   float64
 	value   float64 // smooth objective: signs stand
 	h       symmetric
-	fresh   bool // chol belongs to the present coefficients
-	endless int  // steps in a row that moved far and gained little
+	endless int // steps in a row that moved far and gained little
 }
 
 // lineUp lists the blocks in an order that is free of history.
@@ -110,7 +110,7 @@ func (n *newton) start(prev *record) {
 // evaluate fills what belongs to the present coefficients.
 func (n *newton) evaluate() {
 	n.predict()
-	n.r.loss = n.c.rec.score(n.eta, n.r.u)
+	n.r.loss = n.c.fam.score(n.eta, n.r.u)
 	n.gradients()
 	n.value, n.worst = n.r.loss, 0
 	for _, b := range n.r.blocks {
@@ -210,23 +210,27 @@ func (n *newton) converge() error {
 	if n.approach(); len(n.r.gone) > 0 {
 		return nil
 	}
-	stale := true
+	if len(n.r.blocks) == 0 {
+		return nil
+	}
+	fresh := n.r.bend == nil
+	if err := n.factorise(false); err != nil {
+		return err
+	}
 	for k := range mostSteps {
-		if n.worst <= goodEnough || len(n.r.blocks) == 0 {
+		if n.worst <= goodEnough {
 			break
-		}
-		n.fresh = stale
-		if stale {
-			if err := n.factorise(); err != nil {
-				return err
-			}
 		}
 		before := n.worst
 		whole, moved := n.step()
-		if !moved && n.fresh {
+		if !moved && fresh {
 			break
 		}
-		stale = !moved || !whole || n.worst > slow*before
+		if fresh = !moved || !whole || n.worst > slow*before; fresh && n.worst > goodEnough {
+			if err := n.factorise(true); err != nil {
+				return err
+			}
+		}
 		if err := n.escaping(); err != nil {
 			return err
 		}
@@ -234,39 +238,28 @@ func (n *newton) converge() error {
 			break
 		}
 	}
-	if len(n.r.chol.row) == 0 && len(n.r.blocks) > 0 {
-		if err := n.factorise(); err != nil {
-			return err
-		}
-	}
 	return n.balance()
 }
 
-// curve makes the Hessian of the loss at the present coefficients.
-func (n *newton) curve() {
+// curve puts the Hessian of the loss together: where it was last made, or, if that
+// serves no longer, at the present coefficients.
+func (n *newton) curve(anew bool) {
 	c := n.c
-	c.rec.bend(n.eta)
-	var a, b [][]float64
-	var lane []int
+	if anew || n.r.bend == nil {
+		n.r.bend = c.newHessian(c.fam.bend(n.eta))
+	}
+	var list []int
 	for _, q := range n.r.blocks {
 		for t := range q.width {
-			x, y := c.rec.carry(c.f.work.z[q.place+t], q.lane, nil, nil)
-			a, b, lane = append(a, x), append(b, y), append(lane, q.lane)
+			list = append(list, (q.place+t)*c.lanes+q.lane)
 		}
 	}
-	n.h.reset()
-	row := make([]float64, len(a))
-	for i := range a {
-		for j := range i + 1 {
-			row[j] = c.curvature(a, b, i, j, lane[i] == lane[j])
-		}
-		n.h.append(row[:i+1])
-	}
+	n.r.bend.among(list, &n.h)
 }
 
 // factorise makes the Hessian of the objective and its factor.
-func (n *newton) factorise() error {
-	n.curve()
+func (n *newton) factorise(anew bool) error {
+	n.curve(anew)
 	n.r.chol = factor{}
 	row := make([]float64, len(n.r.beta))
 	for _, q := range n.r.blocks {
@@ -412,14 +405,19 @@ func (n *newton) approach() {
 	if !groups || n.r.lambda == 0 {
 		return
 	}
+	anew := false
 	for range newtonSteps {
 		if n.worst <= near {
 			break
 		}
-		n.curve()
-		if !n.descend() {
+		fresh := anew || n.r.bend == nil
+		n.curve(anew)
+		before := n.worst
+		moved := n.descend()
+		if !moved && fresh {
 			break
 		}
+		anew = !moved || n.worst > slow*before
 	}
 	for _, b := range n.r.blocks {
 		if b.width > 1 && length(n.r.beta[b.at:b.at+b.width]) == 0 {
@@ -432,7 +430,7 @@ func (n *newton) approach() {
 func (n *newton) descend() bool {
 	d := descent{h: &n.h, p: n.c.f.penalty, lambda: n.r.lambda, enough: settled * n.worst * n.r.lambda, beta: slices.Clone(n.r.beta), r: slices.Clone(n.r.grad)}
 	for _, b := range n.r.blocks {
-		d.strips = append(d.strips, strip{b.unit, b.at, b.width, 1})
+		d.strips = append(d.strips, strip{b.unit, b.at, b.width})
 	}
 	d.run()
 	from, value := slices.Clone(n.r.beta), n.objective()
