@@ -145,9 +145,9 @@ What to type next:
   holdfast fit %[3]s
   holdfast draft YOUR-TABLE --outcome COLUMN --out YOUR-STUDY.toml
 `, path, demo.Outcome, studyPath, runPath)
-	fmt.Fprintln(p.err, "Other kinds of outcome, in the same folder:")
+	fmt.Fprintln(p.err, "Other kinds of outcome, on the second table:")
 	for _, s := range demo.Studies() {
-		fmt.Fprintf(p.err, "  holdfast run %s   # %s\n", filepath.Join(filepath.Dir(path), s.File), s.About)
+		fmt.Fprintf(p.err, "  holdfast run %s\n    %s\n", filepath.Join(filepath.Dir(path), s.File), s.About)
 	}
 	return nil
 }

@@ -173,7 +173,15 @@ func (s *settled) ready(ctx context.Context) (*solver.Model, error) {
 		return nil, wrong(err, "")
 	}
 	s.plan.Fit = model.Fittable
-	return model, wrong(s.plan.Check(), "")
+	return model, wrong(s.plan.Check(), fittable[s.study.Outcome.Kind])
+}
+
+// fittable says what every half must hold, for a question of which none can be
+// fitted.
+var fittable = map[study.Kind]string{
+	study.YesNo:    "every half must hold rows of both values, and columns that are always in must not tell them apart",
+	study.Classes:  "every half must hold rows of every class: join classes that are rare, or leave their rows out",
+	study.Survival: "every half must see 5 events: more rows with an event are needed",
 }
 
 // lone names the strata of one row, which are in no half.
