@@ -202,7 +202,7 @@ func (f *fitting) addCoarse(r *record, out []int32, within func(int32) float64) 
 // square of x).
 func (f *fitting) blur(r *record, place int) float64 {
 	w := &f.work
-	size := math.Sqrt(float64(w.mean[place]*w.mean[place])/float64(w.scale[place]*w.scale[place]) + w.h.row[place][place])
+	size := math.Sqrt(float64(w.mean[place]*w.mean[place])/float64(w.scale[place]*w.scale[place]) + w.square[place])
 	return rounding * r.spread * size / f.penalty.threshold(w.units[place], r.lambda)
 }
 

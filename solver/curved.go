@@ -43,16 +43,18 @@ type curved struct {
 	value  float64   // objective at beta
 	lambda float64   // of value
 
-	bend   *hessian  // of the steps: that of the record before, or a later one
-	which  []int     // coefficients of the step's model: all that may move
-	model  quadratic // of these
-	qp     activeSet
-	trial  []float64
-	lonely *record // the fit of the intercept alone
+	bend    *hessian // of the steps: that of the record before, or a later one
+	which   []int    // coefficients of the step's model: all that may move
+	chosen  map[int]bool
+	modelOf *hessian  // that the model was made of
+	model   quadratic // of these
+	qp      activeSet
+	trial   []float64
+	lonely  *record // the fit of the intercept alone
 }
 
 func newCurved(f *fitting) *curved {
-	return &curved{f: f, fam: newFamily(&f.m.p), lanes: f.m.Classes()}
+	return &curved{f: f, fam: newFamily(&f.m.p), chosen: make(map[int]bool), lanes: f.m.Classes()}
 }
 
 // begin fits the intercept alone, then with the always-in columns.
@@ -90,6 +92,7 @@ func (c *curved) begin() error {
 // beginAlways adds the always-in columns that are not redundant, in table order.
 func (c *curved) beginAlways(units int) (*record, error) {
 	f := c.f
+	f.work.complete(f.d.total)
 	var chol factor
 	var row []float64
 	for place := len(c.fixed); place < units; place++ {
@@ -131,7 +134,7 @@ func (c *curved) setOffset() {
 // reset forgets the draw before.
 func (c *curved) reset() {
 	c.beta, c.g = c.beta[:0], c.g[:0]
-	c.bend = nil
+	c.bend, c.modelOf = nil, nil
 }
 
 // grow makes room for places that joined the working set.
@@ -311,33 +314,44 @@ func (c *curved) stuck(worst float64) error {
 	return fmt.Errorf("the line search ended at a violation of %.1e", worst)
 }
 
-// choose lists the coefficients of the step's model: those that are not 0 or not
-// penalised, and those that violate; the others stay at 0.
+// choose brings into the step's model what is not 0 or not penalised, and what
+// violates; the other coefficients stay at 0. A model keeps what it has while its
+// Hessian stands.
 func (c *curved) choose(lambda float64) {
-	c.which = c.which[:0]
+	if c.modelOf != c.bend {
+		c.modelOf, c.which = c.bend, c.which[:0]
+		c.model.units, c.model.h.row = c.model.units[:0], c.model.h.row[:0]
+		c.qp.reset()
+		clear(c.chosen)
+	}
+	bring := func(i int) {
+		if !c.chosen[i] {
+			c.chosen[i] = true
+			c.which = append(c.which, i)
+			c.model.units = append(c.model.units, c.f.work.units[i/c.lanes])
+		}
+	}
 	for _, q := range c.fixed {
 		for lane := range c.lanes {
-			c.which = append(c.which, q.place*c.lanes+lane)
+			bring(q.place*c.lanes + lane)
 		}
 	}
 	c.each(func(unit int32, first, width int) {
 		if c.norm(c.beta, first, width) > 0 || c.norm(c.g, first, width) > c.f.penalty.threshold(unit, lambda) {
 			for t := range width {
-				c.which = append(c.which, first+t*c.lanes)
+				bring(first + t*c.lanes)
 			}
 		}
 	})
+	c.bend.extend(c.which, &c.model.h)
 }
 
 // target solves the quadratic model at beta, into trial.
 func (c *curved) target(lambda, worst float64) error {
 	c.choose(lambda)
 	m := &c.model
-	c.bend.among(c.which, &m.h)
-	m.c, m.units = resize(m.c, len(c.which)), m.units[:0]
-	c.trial = resize(c.trial, len(c.which))
+	m.c, c.trial = resize(m.c, len(c.which)), resize(c.trial, len(c.which))
 	for k, i := range c.which {
-		m.units = append(m.units, c.f.work.units[i/c.lanes])
 		m.c[k], c.trial[k] = c.g[i], c.beta[i]
 	}
 	if c.f.m.p.Groups != nil {
@@ -374,15 +388,16 @@ func (c *curved) descend(lambda, worst float64) {
 	d.run()
 }
 
-// startActive starts the active set at the coefficients that are not 0 or not
-// penalised.
+// startActive brings into the active set what is not 0 or not penalised.
 func (c *curved) startActive(lambda float64) {
-	c.qp.reset()
 	c.qp.grow(len(c.which))
+	if c.f.penalty.quadratic() && c.qp.lambda != lambda {
+		c.qp.refactor(&c.model, c.f.penalty, lambda)
+	}
 	c.qp.lambda = lambda
 	for k := range c.which {
 		free := c.f.penalty.always(c.model.units[k])
-		if !free && c.trial[k] == 0 {
+		if c.qp.in[k] || !free && c.trial[k] == 0 {
 			continue
 		}
 		sign := 0.0

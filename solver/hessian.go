@@ -54,17 +54,15 @@ func (h *hessian) entry(k, j int) float64 {
 	return v / h.f.d.total
 }
 
-// among overwrites out with the Hessian among coefficients, in their order.
-func (h *hessian) among(list []int, out *symmetric) {
-	at := make([]int, len(list))
-	for k, i := range list {
-		at[k] = h.place(i)
-	}
-	out.reset()
+// extend brings out, the Hessian among the first coefficients of a list, up to all
+// of it.
+func (h *hessian) extend(list []int, out *symmetric) {
 	row := make([]float64, len(list))
-	for k := range at {
+	for k := len(out.row); k < len(list); k++ {
+		at := h.place(list[k])
 		for j := range k + 1 {
-			row[j] = h.row[max(at[k], at[j])][min(at[k], at[j])]
+			o := h.index[list[j]]
+			row[j] = h.row[max(at, o)][min(at, o)]
 		}
 		out.append(row[:k+1])
 	}

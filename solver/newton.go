@@ -197,7 +197,7 @@ func (n *newton) correlation(b block) float64 {
 	size := length(n.r.u[b.lane*rows:(b.lane+1)*rows]) / math.Sqrt(f.d.total)
 	most := 0.0
 	for t := range b.width {
-		if d := math.Sqrt(f.work.h.row[b.place+t][b.place+t]) * size; d > 0 {
+		if d := math.Sqrt(f.work.square[b.place+t]) * size; d > 0 {
 			most = max(most, math.Abs(n.residue[b.at+t])/d)
 		}
 	}
@@ -254,7 +254,8 @@ func (n *newton) curve(anew bool) {
 			list = append(list, (q.place+t)*c.lanes+q.lane)
 		}
 	}
-	n.r.bend.among(list, &n.h)
+	n.h.reset()
+	n.r.bend.extend(list, &n.h)
 }
 
 // factorise makes the Hessian of the objective and its factor.

@@ -13,6 +13,7 @@ func (c *curved) share(r *record, near []choice) (*record, error) {
 	if c.lanes > 1 {
 		return c.shareClasses(r, near)
 	}
+	c.f.work.complete(c.f.d.total)
 	for _, q := range append(slices.Clone(near), r.support...) {
 		if c.f.work.width(q.place) > 1 {
 			return c.shareGroups(r, near)

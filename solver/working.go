@@ -10,11 +10,12 @@ import (
 // on the draw and on its own units only, not on when or why they joined.
 type working struct {
 	quadratic
-	place map[int32]int32 // of a unit's first column
-	scale []float64       // what a column was divided by: penalty units
-	mean  []float64       // draw mean less centre
-	z     [][]float64     // root * (x - mean) / scale
-	spare [][]float64     // column buffers of earlier draws
+	place  map[int32]int32 // of a unit's first column
+	scale  []float64       // what a column was divided by: penalty units
+	mean   []float64       // draw mean less centre
+	z      [][]float64     // root * (x - mean) / scale
+	square []float64       // z'z / N of each column
+	spare  [][]float64     // column buffers of earlier draws
 }
 
 // quadratic is a penalised least-squares problem: minimise (1/2) b'Hb - c'b
@@ -28,6 +29,7 @@ type quadratic struct {
 func (w *working) reset() {
 	w.spare = append(w.spare, w.z...)
 	w.units, w.scale, w.mean, w.z, w.c = w.units[:0], w.scale[:0], w.mean[:0], w.z[:0], w.c[:0]
+	w.square = w.square[:0]
 	w.h.reset()
 	if w.place == nil {
 		w.place = make(map[int32]int32)
@@ -59,18 +61,28 @@ func (w *working) add(f *fitting, units []int32) {
 	w.multiply(f, from)
 }
 
-// multiply extends the Gram matrix, and the products with the outcome where it
-// is a number.
+// multiply notes the squares of new columns and, for the exact core, extends the
+// Gram matrix and the products with the outcome.
 func (w *working) multiply(f *fitting, from int) {
-	row := make([]float64, len(w.z))
+	if f.m.exact {
+		w.complete(f.d.total)
+	}
 	for i := from; i < len(w.z); i++ {
-		for j := range i + 1 {
-			row[j] = kernel.Dot(w.z[i], w.z[j]) / f.d.total
-		}
-		w.h.append(row[:i+1])
+		w.square = append(w.square, kernel.Dot(w.z[i], w.z[i])/f.d.total)
 		if f.m.exact {
 			w.c = append(w.c, kernel.Dot(w.z[i], f.d.y)/f.d.total)
 		}
+	}
+}
+
+// complete brings the Gram matrix up to the columns that are there.
+func (w *working) complete(total float64) {
+	row := make([]float64, len(w.z))
+	for i := len(w.h.row); i < len(w.z); i++ {
+		for j := range i + 1 {
+			row[j] = kernel.Dot(w.z[i], w.z[j]) / total
+		}
+		w.h.append(row[:i+1])
 	}
 }
 
