@@ -9,7 +9,7 @@ import (
 // BenchmarkDraws reads 1,000 draws of 5,000 coefficients in blocks of 16.
 func BenchmarkDraws(b *testing.B) {
 	const draws, steps, support, size = 1000, 100, 50, 16
-	path := solver.Path{First: 0, Last: steps - 1, Intercepts: make([]float64, steps), Always: make([]float64, 2*steps)}
+	path := solver.Path{First: 0, Last: steps - 1, Intercepts: make([]float64, steps), Always: make([]float64, 2*steps), Deviance: make([]float64, steps)}
 	for j := range int32(support) {
 		path.Entries = append(path.Entries, solver.Entry{Candidate: j, Step: 0})
 	}

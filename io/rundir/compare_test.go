@@ -85,7 +85,7 @@ func checkChange(t *testing.T, d *Dir, id Identity, meta Meta, want Change) {
 }
 
 // The same for what only some kinds of outcome have, and for groups and
-// categories.
+// categories; two directories that are to be read together are refused alike.
 func TestCompareNamesEveryChangeOfAKind(t *testing.T) {
 	terms := func(name string, columns ...string) func(*Identity) {
 		return func(i *Identity) {
@@ -120,6 +120,7 @@ func TestCompareNamesEveryChangeOfAKind(t *testing.T) {
 		{"survival", func(i *Identity) { i.Event = "dead" }, "outcome.event", "settled", "dead"},
 		{"survival", func(i *Identity) { i.Entry = "" }, "outcome.entry", "from_day", "not set"},
 		{"survival", func(i *Identity) { i.Strata = []string{"season", "site"} }, "outcome.strata", "1 columns", "2 columns, among them site"},
+		{"survival", func(i *Identity) { i.Success = "on shell" }, "outcome.success", "not set", "on shell"},
 		{"survival", func(i *Identity) { i.Ties = "efron" }, "outcome.ties", "breslow", "efron"},
 	}
 	for _, c := range cases {
@@ -130,7 +131,13 @@ func TestCompareNamesEveryChangeOfAKind(t *testing.T) {
 		}
 		meta := metaOf(&id, 4)
 		c.change(&id)
-		checkChange(t, d, id, meta, Change{c.key, c.old, c.now})
+		want := Change{c.key, c.old, c.now}
+		checkChange(t, d, id, meta, want)
+		var m *Mismatch
+		_, err := Patience{}.OpenTogether([]string{d.Path(), runOf(t, id, 4).Path()})
+		if !errors.As(err, &m) || !reflect.DeepEqual(m.Changes, []Change{want}) {
+			t.Errorf("%s, of two directories: %v", c.key, err)
+		}
 	}
 }
 

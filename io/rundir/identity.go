@@ -27,7 +27,7 @@ type Identity struct {
 
 	Kind    string   `json:"kind"`              // number, yes-no, count, classes or survival
 	Outcome string   `json:"outcome,omitempty"` // column; none for survival
-	Success string   `json:"success,omitempty"` // of yes-no: the text that counts as 1
+	Success string   `json:"success,omitempty"` // of yes-no: the text that counts as 1; of survival: that of an event, if not 1 or true
 	Classes []string `json:"classes,omitempty"` // of classes: the levels, by their numbers
 
 	// Of survival: columns, and the treatment of ties.
@@ -176,8 +176,8 @@ func (id *Identity) checkOutcome() error {
 		return errors.New("outcome: kind survival has time, event and ties, and no outcome column")
 	case !survival && (id.Time != "" || id.Event != "" || id.Entry != "" || id.Ties != "" || len(id.Strata) > 0):
 		return fmt.Errorf("outcome: time, event, entry, ties and strata are for kind survival, not for %s", id.Kind)
-	case (id.Kind == kindYesNo) != (id.Success != ""):
-		return fmt.Errorf("outcome: success %q for kind %s: yes-no has one, and no other kind", id.Success, id.Kind)
+	case id.Kind == kindYesNo && id.Success == "" || id.Kind != kindYesNo && !survival && id.Success != "":
+		return fmt.Errorf("outcome: success %q for kind %s: yes-no has one, survival may, and no other kind", id.Success, id.Kind)
 	case (id.Kind == kindClasses) != (len(id.Classes) > 1):
 		return fmt.Errorf("outcome: %d classes for kind %s: classes has two or more, and no other kind any", len(id.Classes), id.Kind)
 	}
