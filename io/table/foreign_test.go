@@ -1,6 +1,7 @@
 package table
 
 import (
+	"context"
 	"encoding/csv"
 	"math"
 	"os"
@@ -8,6 +9,11 @@ import (
 	"strconv"
 	"strings"
 	"testing"
+
+	"github.com/apache/arrow/go/v17/arrow/array"
+	"github.com/apache/arrow/go/v17/arrow/memory"
+	"github.com/apache/arrow/go/v17/parquet/file"
+	"github.com/apache/arrow/go/v17/parquet/pqarrow"
 )
 
 // Files of other writers (parquet-mr, parquet-cpp, pyarrow, Rust) and encodings
@@ -160,4 +166,56 @@ func TestLevelsOfTheOldestFiles(t *testing.T) {
 	if _, err := p.splitOne(h, []byte{1}); err == nil {
 		t.Error("a page shorter than its levels is accepted")
 	}
+}
+
+// Text of other writers is read as the Arrow library reads it; of one file the
+// values follow a rule.
+func TestTextOfOtherWriters(t *testing.T) {
+	for name, columns := range map[string]int{
+		"delta_length_byte_array.parquet": 1, "data_index_bloom_encoding_stats.parquet": 1, "datapage_v2.snappy.parquet": 1, "sort_columns.parquet": 1,
+	} {
+		got := readTexts(t, foreignFile(name), 1000)
+		if len(got) != columns {
+			t.Errorf("%s: %d columns of text", name, len(got))
+		}
+		for column, cells := range got {
+			if want := libraryTexts(t, foreignFile(name), column); cells != want {
+				t.Errorf("%s: column %s is %.200s, want %.200s", name, column, cells, want)
+			}
+		}
+	}
+	for i, cell := range strings.Split(readTexts(t, foreignFile("delta_length_byte_array.parquet"), 1000)["FRUIT"], ",") {
+		if want := "apple_banana_mango" + strconv.Itoa(i*i); cell != want {
+			t.Fatalf("row %d is %s, want %s", i, cell, want)
+		}
+	}
+}
+
+// libraryTexts reads a column with the Arrow library.
+func libraryTexts(t *testing.T, path, column string) string {
+	t.Helper()
+	f, err := file.OpenParquetFile(path, false)
+	must(t, err)
+	defer f.Close()
+	r, err := pqarrow.NewFileReader(f, pqarrow.ArrowReadProperties{}, memory.DefaultAllocator)
+	must(t, err)
+	tab, err := r.ReadTable(context.Background())
+	must(t, err)
+	defer tab.Release()
+	var cells []string
+	for k := range int(tab.NumCols()) {
+		if tab.Schema().Field(k).Name != column {
+			continue
+		}
+		for _, chunk := range tab.Column(k).Data().Chunks() {
+			for i := range chunk.Len() {
+				cell := "-"
+				if chunk.IsValid(i) {
+					cell = strings.TrimSpace(chunk.(*array.String).Value(i)) // blanks around do not count here
+				}
+				cells = append(cells, cell)
+			}
+		}
+	}
+	return strings.Join(cells, ",")
 }

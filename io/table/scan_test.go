@@ -5,6 +5,7 @@ import (
 	"math"
 	"math/rand/v2"
 	"path/filepath"
+	"strings"
 	"testing"
 
 	"github.com/apache/arrow/go/v17/arrow"
@@ -181,9 +182,14 @@ func TestLeakOfANumberOutcome(t *testing.T) {
 }
 
 func TestScanErrors(t *testing.T) {
-	s, err := Open(writeText(t, tempFile(t, "t.csv"), "y,day\n1,2024-01-31\n2,2024-02-01\n"))
+	var dated strings.Builder
+	for i := range MostLevels + 1 {
+		fmt.Fprintf(&dated, "%d,2024-01-%02d,tank %d\n", i, i%28+1, i)
+	}
+	s, err := Open(writeText(t, tempFile(t, "t.csv"), "y,day,id\n"+dated.String()))
 	must(t, err)
 	wantError(t, second(s.Scan(t.Context(), "day")), `column "day": cannot be the outcome: is a date or time, not a number`)
+	wantError(t, second(s.Scan(t.Context(), "id")), `column "id": cannot be the outcome: has more than 50 levels`)
 	wantError(t, second(s.Scan(t.Context(), "z")), `there is no column called "z" (asked for as the outcome)`)
 	s, err = Open(writeText(t, tempFile(t, "t.csv"), "y,feed\n"))
 	must(t, err)
@@ -206,5 +212,112 @@ func TestScanOfRealTables(t *testing.T) {
 	near(t, "bmi correlation", sum.Columns[3].Correlation, stat.Correlation(got["bmi"], got["y"], nil))
 	if sex := sum.Columns[2]; len(sex.Values) != 2 || sex.Values[0].Value != 1 || sex.Values[1].Value != 2 {
 		t.Errorf("sex has the values %v", sex.Values)
+	}
+}
+
+// A scan tells the levels of text, of two-valued columns and of the outcome.
+func TestScanTellsLevels(t *testing.T) {
+	for _, path := range inEveryFormat(t, larvae()) {
+		s, err := Open(path)
+		must(t, err)
+		sum, err := s.Scan(t.Context(), "grade")
+		must(t, err)
+		want := map[string]string{
+			"lost": "[{false 7} {true 5}]", "fate": "[{alive 7} {dead 5}]", "stage": "[{pediveliger 2} {spat 6} {veliger 4}]", "grade": "[{2 5} {3 3} {10 4}]",
+			"settled": "[{0 3} {1 9}]", "site": "[{north 5} {south 4} {west 3}]",
+		}
+		for _, c := range sum.Columns {
+			if got := fmt.Sprint(c.Levels); got != want[c.Name] && (want[c.Name] != "" || got != "[]") {
+				t.Errorf("%s: column %s has the levels %s, want %s", filepath.Base(path), c.Name, got, want[c.Name])
+			}
+			if c.Kind == Text && (c.Missing != 0 || c.Distinct != len(c.Levels) || c.Constant) {
+				t.Errorf("column %s: %d missing, %d different, constant %v", c.Name, c.Missing, c.Distinct, c.Constant)
+			}
+		}
+	}
+}
+
+// What is text is compared as text: two levels as 0 and 1, more by the
+// correlation ratio and Cramer's V. Values by gonum and by hand.
+func TestScanComparesText(t *testing.T) {
+	var b strings.Builder
+	b.WriteString("y,fate,site,place,twin,id,stage,x\n")
+	var y, fate []float64
+	sums, counts := map[string]float64{}, map[string]float64{}
+	for i := range 120 {
+		alive := i*7%5 < 2
+		site := []string{"north", "south", "west"}[i*11%3]
+		v := float64(i*37%101)/10 + 3*is(alive) + 4*is(site == "west")
+		y, fate = append(y, v), append(fate, is(!alive))
+		sums[site], counts[site] = sums[site]+v, counts[site]+1
+		word := pick(alive, "alive", "dead")
+		place := site
+		if i == 5 {
+			place = ""
+		}
+		fmt.Fprintf(&b, "%v,%s,%s,%s,%s,tank %d,%s,%v\n", v, word, site, place, strings.ToUpper(word), i, "s-"+site, i%4)
+	}
+	at := func(outcome string) map[string]ColumnSummary {
+		out := map[string]ColumnSummary{}
+		for _, c := range scanText(t, b.String(), outcome).Columns {
+			out[c.Name] = c
+		}
+		return out
+	}
+	number, two, three := at("y"), at("fate"), at("site")
+	near(t, "y with two levels", number["fate"].Correlation, stat.Correlation(fate, y, nil))
+	near(t, "two levels with y", two["y"].Correlation, stat.Correlation(y, fate, nil))
+	near(t, "two levels with y, auc", two["y"].AUC, areaUnderCurve(y, fate))
+	mean, variance := stat.PopMeanVariance(y, nil)
+	between := 0.0
+	for site, n := range counts {
+		between += n * (sums[site]/n - mean) * (sums[site]/n - mean)
+	}
+	ratio := math.Sqrt(1 - (1-between/(120*variance))*119/117)
+	near(t, "y with three levels", number["site"].Correlation, ratio)
+	near(t, "three levels with y", three["y"].Correlation, ratio)
+	for name, c := range map[string]ColumnSummary{"twin of two": two["twin"], "twin of three": three["stage"], "twin with a gap": three["place"]} {
+		if !c.Leak || math.Abs(math.Abs(c.Correlation)-1) > 1e-12 {
+			t.Errorf("%s: correlation %v, leak %v", name, c.Correlation, c.Leak)
+		}
+	}
+	if c := number["id"]; c.NoLevels != "has more than 50 levels" || c.Levels != nil || c.Leak || c.Distinct != MostLevels+1 {
+		t.Errorf("id: %+v", c)
+	}
+	if number["site"].Leak || two["x"].Leak || number["place"].Missing != 1 {
+		t.Errorf("leaks %v %v, %d missing", number["site"].Leak, two["x"].Leak, number["place"].Missing)
+	}
+}
+
+// Cramer's V of the table 10 20 / 30 5 by hand: chi-squared is n (ad-bc)^2 over
+// the product of the margins.
+func TestCramersV(t *testing.T) {
+	var a, b coding
+	a.names, b.names = []string{"x", "y", "unused"}, []string{"p", "q"}
+	for _, c := range []struct {
+		x, y  int32
+		count int
+	}{{0, 0, 10}, {0, 1, 20}, {1, 0, 30}, {1, 1, 5}, {noCode, 0, 7}, {1, noCode, 3}} {
+		for range c.count {
+			a.codes, b.codes = append(a.codes, c.x), append(b.codes, c.y)
+		}
+	}
+	d := 10.0*5 - 20.0*30
+	near(t, "V", cramersV(a, b), math.Sqrt(d*d/(30*35*40*25)))
+	if v := cramersV(a, coding{names: []string{"p"}, codes: make([]int32, len(a.codes))}); !math.IsNaN(v) {
+		t.Errorf("V with a constant is %v", v)
+	}
+}
+
+// Gaps in text that can be a candidate take rows out, labels do not; text tells
+// rows apart.
+func TestScanCountsRowsWithText(t *testing.T) {
+	var b strings.Builder
+	b.WriteString("y,site,id\n")
+	for i := range 80 {
+		fmt.Fprintf(&b, "%d,%s,%s\n", i%9, pick(i%10 == 3, "", []string{"a", "b"}[i%2]), pick(i%10 == 4, "", fmt.Sprint("tank ", i)))
+	}
+	if sum := scanText(t, b.String(), "y"); sum.Incomplete != 8 {
+		t.Errorf("%d rows with a gap, want 8", sum.Incomplete)
 	}
 }

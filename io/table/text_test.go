@@ -1,7 +1,9 @@
 package table
 
 import (
+	"bytes"
 	"encoding/binary"
+	"errors"
 	"fmt"
 	"math/rand/v2"
 	"os"
@@ -417,4 +419,68 @@ func TestSharedBeginningsDoNotGrow(t *testing.T) {
 	if _, fault := texts.coding(MostLevels); fault != "row 10 holds a text of more than 1000 bytes, which is no level" {
 		t.Errorf("it is said that the column %s", fault)
 	}
+}
+
+// FuzzTextPage decodes pages of text as they lie in memory, without the guard
+// that stands around a whole file: damage must be an error, never a panic, and
+// what is read must be made of the page's bytes.
+func FuzzTextPage(f *testing.F) {
+	f.Add([]byte("\x01\x00\x00\x00a\x02\x00\x00\x00bc"), []byte{}, uint8(encodingPlain), uint16(2))
+	f.Add([]byte("\x02\x03\xe4\x04\x01"), []byte("\x01\x00\x00\x00a\x00\x00\x00\x00\x01\x00\x00\x00b\x01\x00\x00\x00c"), uint8(encodingRLEDict), uint16(10))
+	f.Add([]byte("\x08\x01\x03\x04\x00\x00aabbcc"), []byte{}, uint8(encodingDeltaLength), uint16(3))
+	f.Add([]byte("\x08\x01\x03\x00\x04\x00\x08\x01\x03\x06\x01\x02\x00\x00abcdef"), []byte{}, uint8(encodingDeltaText), uint16(3))
+	f.Fuzz(func(t *testing.T, page, dictionary []byte, encoding uint8, values uint16) {
+		p := &pages{count: int(values), filled: int(values), values: page, encoding: int32(encoding)}
+		words, err := newTextDictionary(dictionary, bytes.Count(dictionary, []byte{0, 0, 0})/2)
+		if err != nil {
+			words = nil
+		}
+		texts := newTexts(int(values), MostLevels)
+		if p.decodeText(texts, words, texts.codes, 0) != nil {
+			return
+		}
+		for i, k := range texts.codes {
+			if k < oddCode || int(k) >= len(texts.names) {
+				t.Fatalf("row %d has the code %d of %d", i, k, len(texts.names))
+			}
+		}
+	})
+}
+
+// FuzzArrowText does the same for the buffers of an Arrow column.
+func FuzzArrowText(f *testing.F) {
+	offsets := func(v ...uint32) (b []byte) {
+		for _, x := range v {
+			b = binary.LittleEndian.AppendUint32(b, x)
+		}
+		return b
+	}
+	f.Add(offsets(0, 1, 3, 3), []byte("abc"), uint8(arrowUTF8), uint8(3), int8(arrowRaw))
+	f.Add(offsets(0, 0, 2, 0, 2, 0), []byte("abc"), uint8(arrowLargeUTF8), uint8(2), int8(arrowRaw))
+	f.Add(join(offsets(2), []byte("ab__________"), offsets(13), []byte("abcd"), offsets(0, 1)), []byte("_abcdefghijklmnop"), uint8(arrowUTF8View), uint8(2), int8(arrowRaw))
+	f.Add(join(binary.LittleEndian.AppendUint64(nil, 8), offsets(0, 1)), join(binary.LittleEndian.AppendUint64(nil, 1<<20), []byte("abc")), uint8(arrowUTF8), uint8(1), int8(arrowZstd))
+	f.Add(join(binary.LittleEndian.AppendUint64(nil, 1<<63-1), offsets(0, 1)), join(binary.LittleEndian.AppendUint64(nil, 1<<64-1), []byte("abc")), uint8(arrowUTF8), uint8(1), int8(arrowLZ4))
+	file, err := os.Create(filepath.Join(f.TempDir(), "buffers"))
+	must(f, err)
+	f.Cleanup(func() { file.Close() })
+	f.Fuzz(func(t *testing.T, where, data []byte, typ, rows uint8, codec int8) {
+		_, err := file.WriteAt(join(where, data), 0)
+		must(t, err)
+		l := &batchLayout{rows: int64(rows), size: int64(len(where) + len(data)), codec: codec, nodes: []arrowNode{{int64(rows), 0}},
+			buffers: []arrowBuffer{{0, 0}, {0, int64(len(where))}, {int64(len(where)), int64(len(data))}}}
+		r := &bufferReader{in: file}
+		texts := newTexts(int(rows), MostLevels)
+		err = r.eachText(l, fieldLayout{count: 3}, arrowField{typ: typ}, int(rows), func(i int, word []byte) bool {
+			if len(word) > longestLevel+1 {
+				t.Fatalf("a text of %d bytes is handed on", len(word))
+			}
+			texts.codes[i] = texts.add(word, int64(i))
+			return true
+		})
+		var ours damaged
+		var refused *Error
+		if err != nil && !errors.As(err, &ours) && !errors.As(err, &refused) {
+			t.Fatalf("the error is a %T: %v", err, err)
+		}
+	})
 }
