@@ -10,6 +10,7 @@ import (
 	"strconv"
 	"strings"
 
+	"holdfast/io/study"
 	"holdfast/solver"
 )
 
@@ -74,13 +75,31 @@ const (
 
 // footprint is what a run holds in memory, in bytes.
 type footprint struct {
-	table int64        // values, outcome, missing cells
-	shape solver.Shape // of a draw's fit
-	draws int          // that are judged in the end
+	table   int64        // values, outcome, missing cells
+	shape   solver.Shape // of a draw's fit
+	draws   int          // that are judged in the end
+	columns int          // of the candidates, those of groups among them; 0: one each
 }
 
-// tableBytes is what a table takes in memory.
-func tableBytes(rows, columns int) int64 { return 8 * int64(rows) * int64(columns+1) }
+// tableBytes is what a table takes in memory: so many columns of predictors, and
+// vectors of the outcome and what goes with it.
+func tableBytes(rows, columns, vectors int) int64 {
+	return 8 * int64(rows) * (int64(columns) + int64(vectors))
+}
+
+// vectors counts the columns beside the predictors that a study keeps in memory.
+func vectors(s *study.Study) int {
+	n := 1
+	if s.Outcome.Kind == study.Survival {
+		n = 4 // time, entry, event, stratum
+	}
+	for _, column := range []string{s.Outcome.Offset + s.Outcome.Exposure, s.Outcome.CaseWeight, strings.Join(s.Draws.Within, "")} {
+		if column != "" {
+			n++
+		}
+	}
+	return n
+}
 
 // live is what is in use at once: the table and either what reading it takes,
 // the workers' fits, or the draws that are judged.
@@ -90,17 +109,24 @@ func (f footprint) live(workers, block int) int64 {
 
 // reading is what the reading of a column takes beside its values (its place in
 // the file, its name in several lists): 3 KB, measured with 10,000 columns.
-func (f footprint) reading() int64 { return (3 << 10) * int64(f.shape.Candidates+f.shape.Always) }
+func (f footprint) reading() int64 {
+	return (3 << 10) * int64(max(f.columns, f.shape.Candidates)+f.shape.Always)
+}
 
 // judging is what the draws take when they are judged: 24 bytes a coefficient,
 // at each step a sixth of those that enter in all (measured; paths end early and
-// fill up slowly).
+// fill up slowly, and of several classes few have one). A group has one for each
+// of its columns.
 func (f footprint) judging() int64 {
 	entered := min(f.shape.Candidates, f.shape.DrawRows)
 	if s := f.shape.StopAfter; s > 0 {
 		entered = min(entered, s)
 	}
-	return 24*int64(f.draws)*int64(entered)*int64(f.shape.Steps)/6 + 512*int64(f.shape.Candidates)
+	bytes := 24 * int64(f.draws) * int64(entered) * int64(f.shape.Steps) / 6
+	if f.columns > f.shape.Candidates {
+		bytes = bytes * int64(f.columns) / int64(f.shape.Candidates)
+	}
+	return bytes + 512*int64(f.shape.Candidates)
 }
 
 // peak is what the process takes at most where no limit is set: what is in use,
@@ -178,7 +204,7 @@ func limitMemory(limit int64) {
 // be fitted at all, before anything but its shape is known.
 func leastForTable(rows, columns int) int64 {
 	return footprint{
-		table: tableBytes(rows, columns),
+		table: tableBytes(rows, columns, 1),
 		shape: solver.Shape{Rows: rows, DrawRows: rows / 2, Candidates: columns, Steps: 1, StopAfter: 1},
 	}.least(1, 2)
 }

@@ -46,7 +46,7 @@ func TestSizeText(t *testing.T) {
 // refusal whose number is enough.
 func TestFit(t *testing.T) {
 	f := footprint{
-		table: tableBytes(2000, 5000), draws: 20,
+		table: tableBytes(2000, 5000, 1), draws: 20,
 		shape: solver.Shape{Rows: 2000, DrawRows: 1000, Candidates: 5000, Steps: 104, StopAfter: 100},
 	}
 	const workers = 8

@@ -119,7 +119,9 @@ func (p *program) plan(ctx context.Context, q question, o planOptions) (*foresee
 }
 
 // foreseeShape says what the shape of the table alone tells. Columns that turn
-// out to be constant or copies still count, and so do rows that are dropped.
+// out to be constant or copies still count, and so do rows that are dropped; how
+// many levels a category has, and how many rows a stratum, is not known, so a
+// category counts as one column and the rows as one stratum.
 func (a *asked) foreseeShape(o planOptions) (*foreseen, error) {
 	roles, err := a.study.Resolve(a.columns())
 	if err != nil {
@@ -133,16 +135,17 @@ func (a *asked) foreseeShape(o planOptions) (*foreseen, error) {
 	if err != nil {
 		return nil, wrong(err, "")
 	}
-	final, decision, err := a.study.Settle(len(roles.Candidates), plan.Half(), len(roles.Always))
+	final, decision, err := a.study.Settle(len(roles.Predictors), plan.Half(), len(roles.Always))
 	if err != nil {
 		return nil, wrong(err, "")
 	}
 	shape := solver.Shape{
-		Rows: int(rows), DrawRows: drawRows(plan), Candidates: len(roles.Candidates), Always: len(roles.Always),
+		Rows: int(rows), DrawRows: drawRows(plan), Candidates: len(roles.Predictors), Always: len(roles.Always),
 		Steps: solver.Steps(final.Penalty.Ratio, final.Penalty.Floor), StopAfter: final.Penalty.StopAfter, Mix: final.Penalty.Mix,
 	}
 	return newForeseen(o, plan, decision, footprint{
-		table: tableBytes(int(rows), len(roles.Candidates)+len(roles.Always)), shape: shape, draws: plan.Number,
+		table: tableBytes(int(rows), len(roles.Candidates)+len(roles.Always), vectors(a.study)),
+		shape: shape, draws: plan.Number, columns: len(roles.Candidates),
 	})
 }
 
@@ -186,8 +189,8 @@ func (s *settled) foresee(ctx context.Context, model *solver.Model, o planOption
 // footprint is what a run of a loaded table holds in memory.
 func (s *settled) footprint(model *solver.Model) footprint {
 	return footprint{
-		table: tableBytes(s.rows(), len(s.data.Names)),
-		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number,
+		table: tableBytes(s.rows(), len(s.data.Names), vectors(s.study)),
+		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number, columns: len(columnsOf(s.fitted)),
 	}
 }
 
