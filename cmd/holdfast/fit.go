@@ -231,7 +231,10 @@ func (l *loaded) fitsJSON(fits []solver.Fit, all bool) any {
 	for i, f := range fits {
 		j := fitJSON{
 			Lambda: f.Lambda, Coefficients: ordered{}, Selected: f.Selected,
-			Loss: f.Loss, Violation: f.Violation, Gap: defined(f.Gap), Value: f.Objective,
+			Loss: f.Loss, Violation: f.Violation, Value: f.Objective,
+		}
+		if l.study.Outcome.Kind == study.Number {
+			j.Gap = &f.Gap // others are certified without one
 		}
 		for _, c := range l.coefficients(f) {
 			switch {
