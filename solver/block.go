@@ -35,9 +35,11 @@ func (m *Model) long() bool { return m.rows >= 2*m.candidates() }
 // from the optimum does.
 func (f *fitting) window() int {
 	switch {
+	case !f.m.exact:
+		return 1
 	case f.m.whim != nil:
 		return f.m.whim.window()
-	case !f.m.long() || !f.m.exact:
+	case !f.m.long():
 		return 1
 	case f.ahead == 0:
 		f.ahead = firstWindow

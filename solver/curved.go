@@ -51,6 +51,10 @@ type curved struct {
 	qp      activeSet
 	trial   []float64
 	lonely  *record // the fit of the intercept alone
+	// seen is, for Cox, the Hessian at the fit of no column: the likelihood does not
+	// see what columns do before the first event, or alike in a stratum, so what is
+	// redundant must be told by it. Nil elsewhere: the Gram matrix tells.
+	seen *hessian
 }
 
 func newCurved(f *fitting) *curved {
@@ -81,6 +85,11 @@ func (c *curved) begin() error {
 	if c.lonely, err = c.record(empty, nil, 1); err != nil {
 		return err
 	}
+	if f.m.p.Family == Cox {
+		eta := make([]float64, len(f.d.rows))
+		f.plain(eta, c.offset)
+		c.seen = c.newHessian(c.fam.bend(eta))
+	}
 	if f.rec, err = c.beginAlways(len(units)); err != nil {
 		return err
 	}
@@ -89,21 +98,21 @@ func (c *curved) begin() error {
 	return nil
 }
 
+// seenShare is the share of a square in seen that must remain for a column not to
+// depend on others: it is a difference, and has fewer digits than the Gram matrix.
+const seenShare = 1e-10
+
 // beginAlways adds the always-in columns that are not redundant, in table order.
 func (c *curved) beginAlways(units int) (*record, error) {
 	f := c.f
 	f.work.complete(f.d.total)
-	var chol factor
-	var row []float64
+	s := &sharing{f: f, curved: c, lambda: 0}
+	p := &parts{}
+	for _, q := range c.fixed { // the intercept
+		s.join(p, q.place*c.lanes, -1)
+	}
 	for place := len(c.fixed); place < units; place++ {
-		row = row[:0]
-		for _, q := range c.fixed {
-			row = append(row, f.work.h.row[place][q.place])
-		}
-		if chol.size() < len(c.fixed) { // the intercept
-			chol.push(nil, f.work.h.row[0][0], 0)
-		}
-		if square := f.work.h.row[place][place]; square > 0 && chol.push(row, square, dependent) {
+		if f.work.square[place] > 0 && s.informs(place*c.lanes) && s.join(p, place*c.lanes, -1) {
 			c.fixed = append(c.fixed, choice{place: place})
 		}
 	}
@@ -134,7 +143,7 @@ func (c *curved) setOffset() {
 // reset forgets the draw before.
 func (c *curved) reset() {
 	c.beta, c.g = c.beta[:0], c.g[:0]
-	c.bend, c.modelOf = nil, nil
+	c.bend, c.modelOf, c.seen = nil, nil, nil
 }
 
 // grow makes room for places that joined the working set.

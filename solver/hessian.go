@@ -54,15 +54,19 @@ func (h *hessian) entry(k, j int) float64 {
 	return v / h.f.d.total
 }
 
+// between returns one entry.
+func (h *hessian) between(i, j int) float64 {
+	a, b := h.place(i), h.place(j)
+	return h.row[max(a, b)][min(a, b)]
+}
+
 // extend brings out, the Hessian among the first coefficients of a list, up to all
 // of it.
 func (h *hessian) extend(list []int, out *symmetric) {
 	row := make([]float64, len(list))
 	for k := len(out.row); k < len(list); k++ {
-		at := h.place(list[k])
 		for j := range k + 1 {
-			o := h.index[list[j]]
-			row[j] = h.row[max(at, o)][min(at, o)]
+			row[j] = h.between(list[k], list[j])
 		}
 		out.append(row[:k+1])
 	}

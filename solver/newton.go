@@ -38,18 +38,23 @@ type block struct {
 // No state of the solver enters.
 func (c *curved) record(prev *record, support []choice, lambda float64) (*record, error) {
 	c.grow()
-	n := &newton{c: c, r: &record{lambda: lambda, limit: certifiedCurved}}
-	if c.f.m.p.Family == Gaussian {
-		n.r.limit = certified
-	}
-	n.lineUp(support)
-	n.start(prev)
-	n.r.bend = prev.bend
+	n := c.newton(prev, support, lambda)
 	if err := n.converge(); err != nil {
 		return nil, err
 	}
 	n.certify()
 	return n.r, nil
+}
+
+// newton starts a record at the one before.
+func (c *curved) newton(prev *record, support []choice, lambda float64) *newton {
+	n := &newton{c: c, r: &record{lambda: lambda, limit: certifiedCurved, bend: prev.bend}}
+	if c.f.m.p.Family == Gaussian {
+		n.r.limit = certified
+	}
+	n.lineUp(support)
+	n.start(prev)
+	return n
 }
 
 // newton is a record in the making.
@@ -61,7 +66,8 @@ type newton struct {
 	worst   float64
 	value   float64 // smooth objective: signs stand
 	h       symmetric
-	endless int // steps in a row that moved far and gained little
+	endless int  // steps in a row that moved far and gained little
+	anySign bool // single columns may have the other sign: a basis of candidates that share
 }
 
 // lineUp lists the blocks in an order that is free of history.
@@ -234,7 +240,7 @@ func (n *newton) converge() error {
 		if err := n.escaping(); err != nil {
 			return err
 		}
-		if k > 20 && n.wrong() {
+		if k > 20 && !n.anySign && n.wrong() {
 			break
 		}
 	}
@@ -609,6 +615,9 @@ func (c *curved) values(r *record) []Coef {
 		}
 		v := slices.Clone(r.beta[b.at : b.at+b.width])
 		if f.m.single(b.unit) {
+			if v[0] == 0 {
+				continue
+			}
 			list = append(list, Coef{Candidate: b.unit, Class: int32(b.lane), Value: v[0] / f.work.scale[b.place]})
 			continue
 		}

@@ -4,6 +4,7 @@ import (
 	"context"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 )
 
@@ -113,7 +114,7 @@ func difference(a, b Path, tolerance float64) string {
 	}
 	for i, c := range a.Coefs {
 		d := b.Coefs[i]
-		if c.Step != d.Step || c.Candidate != d.Candidate {
+		if c.Step != d.Step || c.Candidate != d.Candidate || c.Term != d.Term || c.Class != d.Class {
 			return "supports"
 		}
 		if !(math.Abs(c.Value-d.Value) <= tolerance*largest) {
@@ -129,6 +130,9 @@ func difference(a, b Path, tolerance float64) string {
 		if !(math.Abs(a.Always[i]-b.Always[i]) <= tolerance*(1+math.Abs(a.Always[i]))) {
 			return "always-in coefficients"
 		}
+	}
+	if tolerance == 0 && !slices.Equal(a.Deviance, b.Deviance) {
+		return "deviances"
 	}
 	if tolerance == 0 && (a.Violation != b.Violation || a.Gap != b.Gap) {
 		return "certificates"

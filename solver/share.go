@@ -23,8 +23,8 @@ const mostShared = 3000
 type sharing struct {
 	f      *fitting
 	lambda float64
-	fixed  []int     // places of always-in columns
-	places []int     // candidates at the border, by unit
+	fixed  []int     // coefficients of always-in columns
+	places []int     // those of candidates at the border, by unit: place*lanes + lane
 	sign   []float64 // of their gradients
 	curved *curved   // of the curved core
 	found  *record   // the optimum that was found: for the curved core its fit stands
@@ -83,7 +83,7 @@ func (s *sharing) settle(x []float64) (*record, error) {
 	}
 	for range 20 * (len(x) + 10) {
 		p := s.split(largestFirst(free, x))
-		target := s.least(p, s.alone(p))
+		target := s.spreadOut(p, s.alone(p))
 		if s.move(p, x, target, free) {
 			continue
 		}
@@ -174,9 +174,8 @@ func (s *sharing) split(free []int) *parts {
 }
 
 func (s *sharing) join(p *parts, place, which int) bool {
-	w := &s.f.work
 	row := s.products(p, place)
-	if !p.chol.push(row, w.h.row[place][place]+s.f.penalty.ridge(w.units[place], s.lambda), dependent) {
+	if !p.chol.push(row, s.square(place), s.least()) {
 		return false
 	}
 	p.basis, p.which = append(p.basis, place), append(p.which, which)
@@ -186,13 +185,45 @@ func (s *sharing) join(p *parts, place, which int) bool {
 func (s *sharing) products(p *parts, place int) []float64 {
 	row := make([]float64, len(p.basis))
 	for q, j := range p.basis {
-		row[q] = s.f.work.h.row[place][j]
+		row[q] = s.gram(place, j)
 	}
 	return row
 }
 
+// gram is the product of the columns of two coefficients over N. What several
+// classes have in common does not change the fit, so it is taken out.
+func (s *sharing) gram(i, j int) float64 {
+	lanes := s.f.lanes()
+	if s.curved != nil && s.curved.seen != nil {
+		return s.curved.seen.between(i, j)
+	}
+	g := s.f.work.h.row[i/lanes][j/lanes]
+	if lanes == 1 {
+		return g
+	}
+	if i%lanes == j%lanes {
+		return g - g/float64(lanes)
+	}
+	return -g / float64(lanes)
+}
+
+// square is what a coefficient has on the diagonal of the Hessian.
+func (s *sharing) square(i int) float64 {
+	return s.gram(i, i) + s.f.penalty.ridge(s.unit(i), s.lambda)
+}
+
+// least is the share of a square below which a coefficient depends on others.
+func (s *sharing) least() float64 {
+	if s.curved != nil && s.curved.seen != nil {
+		return seenShare
+	}
+	return dependent
+}
+
+func (s *sharing) unit(i int) int32 { return s.f.work.units[i/s.f.lanes()] }
+
 // weight of a basis column in the sum of squares: none for always-in columns.
-func (s *sharing) weight(place int) float64 { return s.f.penalty.weight[s.f.work.units[place]] }
+func (s *sharing) weight(i int) float64 { return s.f.penalty.weight[s.unit(i)] }
 
 // alone returns the coefficients of the fit on the basis alone, whatever their
 // signs: the normal equations of the step.
@@ -220,23 +251,23 @@ func (s *sharing) expressed(p *parts) []float64 {
 	}
 	out := make([]float64, len(p.basis))
 	for _, b := range s.found.blocks {
-		v := s.found.beta[b.at]
-		if q, ok := at[b.place]; ok {
+		v, i := s.found.beta[b.at], b.place*s.f.lanes()+b.lane
+		if q, ok := at[i]; ok {
 			out[q] += v
 			continue
 		}
-		t := s.products(p, b.place)
+		t := s.products(p, i)
 		p.chol.solve(t)
 		kernel.AddScaled(v, t, out)
 	}
 	return out
 }
 
-// least returns the signed sizes of the least-squares coefficients on the
+// spreadOut returns the signed sizes of the least-squares coefficients on the
 // parts, for the fit whose basis coefficients are alone. The rest takes over
 // from the basis: b_basis = alone - T b_rest with T the rest's coordinates, so
 // that (V + T'VT) b_rest = T'V alone.
-func (s *sharing) least(p *parts, alone []float64) []float64 {
+func (s *sharing) spreadOut(p *parts, alone []float64) []float64 {
 	basis, rest := s.coefficients(p, alone)
 	x := make([]float64, len(s.places))
 	for q, k := range p.which {
@@ -314,9 +345,8 @@ func (s *sharing) release(p *parts, target []float64, free []bool) int {
 
 // depends reports whether a column lies in the span of the basis.
 func (s *sharing) depends(p *parts, place int) bool {
-	w := &s.f.work
 	trial := factor{row: p.chol.row[:len(p.chol.row):len(p.chol.row)]}
-	return !trial.push(s.products(p, place), w.h.row[place][place]+s.f.penalty.ridge(w.units[place], s.lambda), dependent)
+	return !trial.push(s.products(p, place), s.square(place), s.least())
 }
 
 // record makes the record of the free candidates that are not zero, by numbers
@@ -329,10 +359,10 @@ func (s *sharing) record(free []bool, x []float64) (*record, error) {
 		}
 	}
 	p := s.split(indices(free))
-	alone := s.alone(p)
 	if s.curved != nil {
-		return s.curved.shared(s, p, alone), nil
+		return s.curved.shared(s, p)
 	}
+	alone := s.alone(p)
 	r := s.filled(p, alone)
 	for range refinements {
 		if r.worst(s.f) <= goodEnough {
