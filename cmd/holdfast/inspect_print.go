@@ -22,7 +22,7 @@ func (p *program) printInspection(i *inspection) error {
 		fmt.Fprintf(w, "%s\t%s\n", label, oneLine(text))
 	}
 	line("kinds", i.kinds())
-	line("categories", listed(i.columns(categoryText)))
+	line("categories", listed(i.columns(i.category)))
 	line("not usable", listed(i.columns(func(c table.ColumnSummary) string { return unless(usable(c), reason(c)) })))
 	line("missing", listed(i.columns(gaps)))
 	line("constant", listed(i.columns(func(c table.ColumnSummary) string { return unless(!c.Constant, fmt.Sprintf("%.6g", c.Min+0)) })))
@@ -52,9 +52,9 @@ func usable(c table.ColumnSummary) bool { return c.Usable || len(c.Levels) > 0 }
 // reason says why a column cannot be used.
 func reason(c table.ColumnSummary) string { return factColumn(c).Reason }
 
-// categoryText describes a column of text that can be a category.
-func categoryText(c table.ColumnSummary) string {
-	if c.Kind != table.Text || len(c.Levels) < 2 {
+// category describes a column of text that can be a category.
+func (i *inspection) category(c table.ColumnSummary) string {
+	if c.Kind != table.Text || len(c.Levels) < 2 || c.Name == i.summary.Outcome {
 		return ""
 	}
 	return fmt.Sprintf("%d levels", len(c.Levels))

@@ -47,6 +47,19 @@ func explained(o study.Outcome) string {
 	return o.Column
 }
 
+// kindText says how the outcome is taken, and what counts; empty for numbers,
+// which are taken as they stand.
+func kindText(o study.Outcome) string {
+	if o.Kind == study.Number {
+		return ""
+	}
+	text := o.Kind.String()
+	if o.Success != "" {
+		text += fmt.Sprintf(", success %q", o.Success)
+	}
+	return text
+}
+
 // losses say what a family minimises, for the scale of lambda.
 var losses = map[solver.Family]string{
 	solver.Gaussian:    "(1/N) sum_i w_i (y_i - eta_i)^2/2",

@@ -367,7 +367,10 @@ func (r *runner) lastWord(err error) {
 
 // tellPlan says what is about to happen, and what was decided.
 func (r *runner) tellPlan(there, missing int) {
-	d := r.decision
+	d, o := r.decision, r.study.Outcome
+	if kind := kindText(o); kind != "" {
+		fmt.Fprintf(r.talk, "outcome: %s (%s)\n", oneLine(explained(o)), oneLine(kind))
+	}
 	fmt.Fprintf(r.talk, "rows: %d, candidates: %d, draws: %d (%s), seed: %d, workers: %d\n",
 		r.rows(), len(r.fitted), r.plan.Number, r.plan.Design, r.plan.Seed, r.o.workers)
 	if there > 0 || r.o.share.only {
