@@ -15,6 +15,9 @@ type Shape struct {
 	Steps      int     // lattice steps of a complete path
 	StopAfter  int     // distinct candidates that end a path; 0: none
 	Mix        float64 // of the penalty; 0: 1, the lasso
+	Columns    int     // of all candidates; 0: as many as candidates, no groups
+	Classes    int     // coefficients of each column; 0: 1
+	Curved     bool    // not a numeric outcome on single columns alone
 }
 
 // Shape returns that of the model's draws of so many rows.
@@ -22,6 +25,7 @@ func (m *Model) Shape(drawRows int) Shape {
 	return Shape{
 		Rows: m.rows, DrawRows: drawRows, Candidates: m.candidates(), Always: len(m.p.Always),
 		Steps: m.last + 1, StopAfter: m.p.StopAfter, Mix: m.p.Mix,
+		Columns: len(m.Terms()), Classes: m.Classes(), Curved: !m.exact,
 	}
 }
 
@@ -36,7 +40,7 @@ func Steps(ratio, floor float64) int {
 func (s Shape) BlockLimit() int {
 	columns := min(s.Candidates, max(s.DrawRows, 1), 100)
 	bytes := int64(8 * max(s.DrawRows, 1) * columns)
-	if s.elasticNet() {
+	if s.elasticNet() || s.Curved {
 		bytes = s.Workspace(1)
 	}
 	return int(max(2, min(kernel.MaxLanes, blockBytes/max(bytes, 1))))
@@ -52,9 +56,20 @@ const (
 	perWindow    = 12  // more of them where the window is longer than a step
 	workingShare = 1.6 // working set over candidates that entered
 	perPlace     = 18  // Gram matrix, factor and records, per place squared
+	perCarried   = 3   // columns that Hessians are made of, per coefficient
+	perPair      = 40  // Hessians and factors, per coefficient squared
 	perDraw      = 16 << 10
 	vectors      = 11 // of a draw's rows: outcome, residuals, lanes
 )
+
+// classesIn is in how many classes a column is that has entered, together with what
+// the Hessians of an even number of classes hold beside.
+func classesIn(lanes float64) float64 {
+	if lanes == 1 {
+		return 1
+	}
+	return 2.3
+}
 
 // Workspace estimates the bytes that one worker holds at the end of a block of
 // so many draws, beside the table: for each draw the screening numbers of all
@@ -72,15 +87,25 @@ func (s Shape) Workspace(draws int) int64 {
 	} else {
 		entered /= 2 // far fewer fit the noise down to a usual floor
 	}
-	places := float64(s.Always) + min(float64(s.Candidates), workingShare*entered)
+	width := 1.0
+	if s.Columns > s.Candidates {
+		width = float64(s.Columns) / float64(s.Candidates)
+	}
+	lanes := float64(max(1, s.Classes))
+	places := float64(s.Always) + width*min(float64(s.Candidates), workingShare*entered)
 	row := 8 * float64(s.DrawRows)
 	candidate, references := float64(perCandidate), steps
-	if s.Rows >= 2*s.Candidates {
+	if s.Rows >= 2*s.Candidates && !s.Curved {
 		candidate += perWindow
 		references /= firstWindow
 	}
-	snapshot := min(snapshotBytes, row*references)
-	draw := float64(candidate*float64(s.Candidates)) + float64(row*(places+vectors)) + snapshot +
-		float64(perPlace*places*places) + float64(8*entered*steps)
+	draw := float64(candidate*float64(s.Candidates)) + float64(row*(places+vectors*lanes)) +
+		min(snapshotBytes, row*lanes*references) + float64(8*entered*width*lanes*steps)
+	if s.Curved {
+		coefficients := (float64(s.Always) + 1 + width*entered) * classesIn(lanes)
+		draw += float64(row*perCarried*coefficients) + float64(perPair*coefficients*coefficients)
+	} else {
+		draw += float64(perPlace * places * places)
+	}
 	return int64(math.Ceil((draw + perDraw) * float64(draws)))
 }

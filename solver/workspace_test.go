@@ -5,6 +5,7 @@ import (
 	"math"
 	"math/rand/v2"
 	"runtime"
+	"strings"
 	"testing"
 )
 
@@ -32,6 +33,32 @@ func TestWorkspace(t *testing.T) {
 				t.Errorf("%d bytes are live, the estimate is %d: %.2f of it", got, want, ratio)
 			}
 		})
+	}
+}
+
+// TestCurvedWorkspace: the same for the other kinds of outcome and for groups,
+// within a factor of 1.6, since how many Hessians are held depends on the data.
+func TestCurvedWorkspace(t *testing.T) {
+	for _, c := range []struct {
+		rows, candidates, stop, draws int
+	}{
+		{400, 2000, 40, 4},
+		{2000, 300, 40, 2},
+	} {
+		base := randomModel(t, c.rows, c.candidates, c.stop, 0.05).p
+		for kind, q := range kindsOf(base) {
+			q.Floor, q.Ratio = 0.05, 0.9
+			m := mustModel(t, q)
+			got := liveBytes(t, m, c.draws)
+			want := m.Shape(c.rows / 2).Workspace(c.draws)
+			most := 1.6
+			if strings.Contains(kind, "groups") {
+				most = 4 // few groups have entered at this floor
+			}
+			if ratio := float64(want) / float64(got); !(ratio > 1/1.6 && ratio < most) {
+				t.Errorf("%v %s: %d bytes are live, the estimate is %d: %.2f of it", c, kind, got, want, ratio)
+			}
+		}
 	}
 }
 
@@ -108,12 +135,15 @@ func heapInUse() int64 {
 func TestWorkspaceGrows(t *testing.T) {
 	base := Shape{Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 40}
 	for name, more := range map[string]Shape{
-		"rows":       {2000, 1000, 2000, 2, 100, 40, 1},
-		"candidates": {1000, 500, 4000, 2, 100, 40, 1},
-		"always":     {1000, 500, 2000, 20, 100, 40, 1},
-		"steps":      {1000, 500, 2000, 2, 200, 40, 1},
-		"stop after": {1000, 500, 2000, 2, 100, 80, 1},
-		"no stop":    {1000, 500, 2000, 2, 100, 0, 1},
+		"rows":       {Rows: 2000, DrawRows: 1000, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 40},
+		"candidates": {Rows: 1000, DrawRows: 500, Candidates: 4000, Always: 2, Steps: 100, StopAfter: 40},
+		"always":     {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 20, Steps: 100, StopAfter: 40},
+		"steps":      {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 200, StopAfter: 40},
+		"stop after": {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 80},
+		"groups":     {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 40, Columns: 5000},
+		"classes":    {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 40, Classes: 3, Curved: true},
+		"curved":     {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100, StopAfter: 40, Curved: true},
+		"no stop":    {Rows: 1000, DrawRows: 500, Candidates: 2000, Always: 2, Steps: 100},
 	} {
 		if more.Workspace(2) <= base.Workspace(2) {
 			t.Errorf("%s: %d bytes, not more than %d", name, more.Workspace(2), base.Workspace(2))
