@@ -210,7 +210,7 @@ func (id *Identity) checkPenalty() error {
 		return fmt.Errorf("penalty: mix %v, ratio %v, floor %v, stop_after %d: outside their ranges",
 			p.Mix, p.Ratio, p.Floor, p.StopAfter)
 	}
-	if !(p.Jitter > 0 && p.Jitter <= 1) || !(p.Luck >= 0 && p.Luck < 1) {
+	if !(p.Jitter > 0 && p.Jitter <= 1) || !(p.Luck >= 0 && p.Luck <= 1) {
 		return fmt.Errorf("penalty: jitter %v, luck %v: outside their ranges", p.Jitter, p.Luck)
 	}
 	if id.shape().terms != nil && (p.GroupWeight == "" || p.GroupWeight == "even" && p.Luck == 0) {
