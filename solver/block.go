@@ -173,6 +173,9 @@ func (f *fitting) rest(r *record) (intercepts, always []float64) {
 		return nil, always
 	}
 	lanes := f.lanes()
+	for lane := range intercepts {
+		intercepts[lane] += f.m.shift
+	}
 	subtract := func(j int32, mean, b float64, lane int) {
 		intercepts[lane] = math.FMA(-b, f.m.p.Centre[j]+mean, intercepts[lane])
 	}

@@ -653,7 +653,7 @@ func (c *curved) level(r *record) []float64 {
 	}
 	out := make([]float64, c.lanes)
 	for lane := range out {
-		out[lane] = c.f.m.shift + r.beta[r.blocks[lane].at]
+		out[lane] = r.beta[r.blocks[lane].at]
 	}
 	return out
 }
