@@ -75,10 +75,9 @@ const (
 
 // footprint is what a run holds in memory, in bytes.
 type footprint struct {
-	table   int64        // values, outcome, missing cells
-	shape   solver.Shape // of a draw's fit
-	draws   int          // that are judged in the end
-	columns int          // of the candidates, those of groups among them; 0: one each
+	table int64        // values, outcome, missing cells
+	shape solver.Shape // of a draw's fit
+	draws int          // that are judged in the end
 }
 
 // tableBytes is what a table takes in memory: so many columns of predictors, and
@@ -110,7 +109,7 @@ func (f footprint) live(workers, block int) int64 {
 // reading is what the reading of a column takes beside its values (its place in
 // the file, its name in several lists): 3 KB, measured with 10,000 columns.
 func (f footprint) reading() int64 {
-	return (3 << 10) * int64(max(f.columns, f.shape.Candidates)+f.shape.Always)
+	return (3 << 10) * int64(max(f.shape.Columns, f.shape.Candidates)+f.shape.Always)
 }
 
 // judging is what the draws take when they are judged: 24 bytes a coefficient,
@@ -123,8 +122,8 @@ func (f footprint) judging() int64 {
 		entered = min(entered, s)
 	}
 	bytes := 24 * int64(f.draws) * int64(entered) * int64(f.shape.Steps) / 6
-	if f.columns > f.shape.Candidates {
-		bytes = bytes * int64(f.columns) / int64(f.shape.Candidates)
+	if f.shape.Columns > f.shape.Candidates {
+		bytes = bytes * int64(f.shape.Columns) / int64(f.shape.Candidates)
 	}
 	return bytes + 512*int64(f.shape.Candidates)
 }

@@ -36,7 +36,7 @@ func (p *program) planCommand() *cobra.Command {
 time by number of workers, peak memory, disk, the work that is lost if the run is
 killed, and into how many parts it is worth dividing. It ends with the error
 budget: threshold, selected, all three bounds. With --no-fit nothing but the
-table's shape is read: memory is exact from it, wall time is not known.`,
+table's shape is read: memory follows from it, wall time is not known.`,
 		Example: "  holdfast plan demo/study.toml",
 		Args:    exactly("STUDY"),
 	}
@@ -100,6 +100,9 @@ func (p *program) plan(ctx context.Context, q question, o planOptions) (*foresee
 	}
 	if o.noFit {
 		p.tellDraft(a)
+		if a.study.Outcome.Kind == study.Classes {
+			fmt.Fprintf(p.err, "how many classes there are is not known without reading: memory is for %d\n", unreadClasses)
+		}
 		return a.foreseeShape(o)
 	}
 	l, err := a.load(ctx, o.workers)
@@ -142,12 +145,20 @@ func (a *asked) foreseeShape(o planOptions) (*foreseen, error) {
 	shape := solver.Shape{
 		Rows: int(rows), DrawRows: drawRows(plan), Candidates: len(roles.Predictors), Always: len(roles.Always),
 		Steps: solver.Steps(final.Penalty.Ratio, final.Penalty.Floor), StopAfter: final.Penalty.StopAfter, Mix: final.Penalty.Mix,
+		Columns: len(roles.Candidates), Curved: final.Outcome.Kind != study.Number || len(roles.Groups)+len(roles.Categories) > 0,
+	}
+	if final.Outcome.Kind == study.Classes {
+		shape.Classes = unreadClasses
 	}
 	return newForeseen(o, plan, decision, footprint{
 		table: tableBytes(int(rows), len(roles.Candidates)+len(roles.Always), vectors(a.study)),
-		shape: shape, draws: plan.Number, columns: len(roles.Candidates),
+		shape: shape, draws: plan.Number,
 	})
 }
+
+// unreadClasses is the number of classes that is planned for where the outcome
+// is not read.
+const unreadClasses = 3
 
 // drawDesign is the study's way of drawing in the words of package resample.
 func drawDesign(s *study.Study) resample.Design {
@@ -190,7 +201,7 @@ func (s *settled) foresee(ctx context.Context, model *solver.Model, o planOption
 func (s *settled) footprint(model *solver.Model) footprint {
 	return footprint{
 		table: tableBytes(s.rows(), len(s.data.Names), vectors(s.study)),
-		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number, columns: len(columnsOf(s.fitted)),
+		shape: model.Shape(drawRows(s.plan)), draws: s.plan.Number,
 	}
 }
 
