@@ -22,8 +22,9 @@ func (p *program) draftCommand() *cobra.Command {
 		Use:   "draft TABLE --outcome COL [--out study.toml]",
 		Short: "writes a study for a table, with the reason beside each setting",
 		Long: `draft looks at a table and writes a commented study that runs unchanged: settings
-by the table's shape, identifiers and suspected leaks of the outcome left out,
-the reason beside each. Without --out the study goes to stdout.`,
+by the table's shape, the kind of outcome by its values, identifiers and suspected
+leaks of the outcome left out, the reason beside each. A survival time has to be
+written into the study by hand. Without --out the study goes to stdout.`,
 		Example: "  holdfast draft demo/hatchery.parquet --outcome survival_d21",
 		Args:    exactly("TABLE"),
 	}
