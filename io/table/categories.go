@@ -10,9 +10,12 @@ import (
 
 // checkCategories refuses categories and references that are no predictors.
 func (l asking) checkCategories() error {
+	if len(l.req.Categories)+len(l.req.Reference) == 0 {
+		return nil
+	}
 	category := map[string]bool{}
 	for _, p := range l.loading.predictors {
-		category[p.Name] = p.category
+		category[p.Name] = p.category != nil
 	}
 	for _, name := range l.req.Categories {
 		if _, ok := category[name]; !ok {
@@ -32,9 +35,11 @@ func (l asking) checkCategories() error {
 func (l *loading) findLevels(ctx context.Context) error {
 	faults := make([]string, len(l.predictors))
 	err := l.each(ctx, len(l.predictors), func(_, j int) error {
-		if p := l.predictors[j]; p.category {
-			p.levels, faults[j] = p.coding(MostLevels)
-			p.levels.reorder(func(a, b int) bool { return p.levels.names[a] < p.levels.names[b] })
+		if p := &l.predictors[j]; p.category != nil {
+			var levels coding
+			levels, faults[j] = p.coding(MostLevels)
+			levels.reorder(func(a, b int) bool { return levels.names[a] < levels.names[b] })
+			p.category.levels = levels
 			if faults[j] == "" {
 				faults[j] = p.notWhole()
 			}
@@ -44,11 +49,11 @@ func (l *loading) findLevels(ctx context.Context) error {
 	if err != nil {
 		return err
 	}
-	for j, p := range l.predictors {
-		switch {
-		case !p.category:
+	for j := range l.predictors {
+		switch p := &l.predictors[j]; {
+		case p.category == nil:
 		case faults[j] != "" && l.named(p):
-			return columnFaultf(l.path(), p.Name, "cannot be %s: %s", p.role(), faults[j])
+			return columnFaultf(l.path(), p.Name, "cannot be %s: %s", p.title(), faults[j])
 		case faults[j] != "":
 			continue
 		case p.Kind == Text && p.Reason != plainReason:
@@ -87,9 +92,9 @@ func (l *loading) named(p *predictor) bool {
 
 // leaveOut takes out the candidates for which why gives a reason.
 func (l *loading) leaveOut(why func(j int, p *predictor) string) {
-	var kept []*predictor
+	kept := l.predictors[:0]
 	for j, p := range l.predictors {
-		if reason := why(j, p); reason != "" && !p.always {
+		if reason := why(j, &p); reason != "" && !p.always {
 			l.data.Excluded = append(l.data.Excluded, Exclusion{p.Name, reason})
 			continue
 		}
@@ -121,8 +126,8 @@ const noValue = "no row has a value"
 // candidates with a single one.
 func (l *loading) settleLevels(ctx context.Context, rows []int32) error {
 	err := l.each(ctx, len(l.predictors), func(_, j int) error {
-		if p := l.predictors[j]; p.category {
-			p.levels = p.levels.keep(rows)
+		if c := l.predictors[j].category; c != nil {
+			c.levels = c.levels.keep(rows)
 		}
 		return nil
 	})
@@ -130,13 +135,14 @@ func (l *loading) settleLevels(ctx context.Context, rows []int32) error {
 		return err
 	}
 	l.leaveOut(func(_ int, p *predictor) string {
-		if !p.category || len(p.levels.names) > 1 {
+		if p.category == nil || len(p.category.levels.names) > 1 {
 			return ""
 		}
+		level := quote(p.category.levels.names[0])
 		if p.always {
-			l.note("always-in category %s has one level, %s, and adds nothing", quote(p.Name), quote(p.levels.names[0]))
+			l.note("always-in category %s has one level, %s, and adds nothing", quote(p.Name), level)
 		}
-		return fmt.Sprintf("has one level, %s, in all rows", quote(p.levels.names[0]))
+		return fmt.Sprintf("has one level, %s, in all rows", level)
 	})
 	return l.anyLeft()
 }
@@ -147,10 +153,11 @@ func (l *loading) reference(p *predictor) (int, error) {
 	if !given {
 		return 0, nil
 	}
-	if k := p.levels.find(levelAsTyped(asked, p.Kind)); k >= 0 {
+	levels := &p.category.levels
+	if k := levels.find(levelAsTyped(asked, p.Kind)); k >= 0 {
 		return k, nil
 	}
-	return 0, columnFaultf(l.path(), p.Name, "no row has the reference level %s; its levels are %s", quote(asked), levelList(p.levels.levels()))
+	return 0, columnFaultf(l.path(), p.Name, "no row has the reference level %s; its levels are %s", quote(asked), levelList(levels.levels()))
 }
 
 // indicator writes the column of one level: 1 where a row has it, else 0.
@@ -165,9 +172,9 @@ func (c *coding) indicator(level int, v []float64) {
 
 // fillLevel gives rows in use without a level the most frequent one of the
 // rows in use, of several the first, and returns it.
-func (l *loading) fillLevel(p *predictor) string {
-	counts := make([]int64, len(p.levels.names))
-	for i, k := range p.levels.codes {
+func (l *loading) fillLevel(c *category) string {
+	counts := make([]int64, len(c.levels.names))
+	for i, k := range c.levels.codes {
 		if k >= 0 && l.inUse(i) {
 			counts[k]++
 		}
@@ -178,11 +185,11 @@ func (l *loading) fillLevel(p *predictor) string {
 			best = k
 		}
 	}
-	for i, k := range p.levels.codes {
+	for i, k := range c.levels.codes {
 		if k < 0 && l.inUse(i) {
-			p.levels.codes[i] = int32(best)
-			p.filled++
+			c.levels.codes[i] = int32(best)
+			c.filled++
 		}
 	}
-	return p.levels.names[best]
+	return c.levels.names[best]
 }

@@ -66,9 +66,9 @@ type print struct {
 // letter is a predictor's role in the fingerprint.
 func (p *predictor) letter() byte {
 	switch {
-	case p.always && p.category:
+	case p.always && p.category != nil:
 		return 'A'
-	case p.category:
+	case p.category != nil:
 		return 'C'
 	case p.always:
 		return 'a'

@@ -2,6 +2,7 @@ package table
 
 import (
 	"context"
+	"slices"
 
 	"holdfast/solver"
 )
@@ -40,8 +41,8 @@ type layout struct {
 	*loading
 	rows      []int32 // used; nil: all
 	n         int     // rows used
-	reference []int   // per predictor: level without an indicator
-	first     []int   // per predictor: its first column of X; one more at the end
+	reference []int32 // per predictor: level without an indicator
+	first     []int32 // per predictor: its first column of X; one more at the end
 	cols      [][]float64
 	holes     [][]uint64
 	prints    []print // per predictor
@@ -54,20 +55,21 @@ func (l *loading) layOut(rows []int32) (*layout, error) {
 		x.n = len(rows)
 	}
 	total, indicators := 0, 0
-	for _, p := range l.predictors {
-		reference, count := 0, 1
-		if p.category {
-			var err error
-			if reference, err = l.reference(p); err != nil {
+	x.reference, x.first = make([]int32, len(l.predictors)), make([]int32, len(l.predictors)+1)
+	for j := range l.predictors {
+		count := 1
+		if p := &l.predictors[j]; p.category != nil {
+			reference, err := l.reference(p)
+			if err != nil {
 				return nil, err
 			}
-			count = len(p.levels.names) - 1
+			x.reference[j] = int32(reference)
+			count = len(p.category.levels.names) - 1
 			indicators += count
 		}
-		x.reference, x.first = append(x.reference, reference), append(x.first, total)
 		total += count
+		x.first[j+1] = int32(total)
 	}
-	x.first = append(x.first, total)
 	if err := l.checkCells(indicators); err != nil {
 		return nil, err
 	}
@@ -76,7 +78,7 @@ func (l *loading) layOut(rows []int32) (*layout, error) {
 	l.data.Centre, l.data.Deviation = make([]float64, total), make([]float64, total)
 	room := newColumns(x.n, indicators)
 	for j, p := range l.predictors {
-		if p.category {
+		if p.category != nil {
 			room = room[copy(x.cols[x.first[j]:x.first[j+1]], room):]
 		}
 	}
@@ -87,10 +89,10 @@ func (l *loading) layOut(rows []int32) (*layout, error) {
 func (x *layout) fill(ctx context.Context) error {
 	buffers := make([][]byte, x.workers)
 	return x.each(ctx, len(x.predictors), func(w, j int) error {
-		p := x.predictors[j]
+		p := &x.predictors[j]
 		x.prints[j] = print{role: p.letter(), name: p.Name}
-		if p.category {
-			x.prints[j].sum = digestLevels(p.levels, x.reference[j])
+		if p.category != nil {
+			x.prints[j].sum = digestLevels(p.category.levels, int(x.reference[j]))
 			x.fillIndicators(j)
 			return nil
 		}
@@ -107,7 +109,7 @@ func (x *layout) fill(ctx context.Context) error {
 }
 
 // centre puts v into X as column k, centred.
-func (x *layout) centre(k int, v []float64) bool {
+func (x *layout) centre(k int32, v []float64) bool {
 	c, ok := centreOf(v)
 	if ok {
 		x.cols[k], x.data.Centre[k], x.holes[k] = v, c, centre(v, c)
@@ -119,9 +121,9 @@ func (x *layout) centre(k int, v []float64) bool {
 // fillIndicators writes the columns of a category, one per level but the
 // reference.
 func (x *layout) fillIndicators(j int) {
-	k, levels := x.first[j], &x.predictors[j].levels
+	k, levels := x.first[j], &x.predictors[j].category.levels
 	for level := range levels.names {
-		if level == x.reference[j] {
+		if level == int(x.reference[j]) {
 			continue
 		}
 		levels.indicator(level, x.cols[k])
@@ -147,33 +149,33 @@ func (l *loading) assemble(x *layout) {
 	for k := range columns {
 		columns[k] = int32(k)
 	}
-	for j, p := range l.predictors {
+	candidates := slices.IndexFunc(l.predictors, func(p predictor) bool { return p.always })
+	if candidates < 0 {
+		candidates = len(l.predictors)
+	}
+	d.Candidates, d.CandidateColumns = make([]string, 0, candidates), make([][]int32, 0, candidates)
+	d.Names = make([]string, 0, len(columns))
+	for j := range l.predictors {
+		p := &l.predictors[j]
 		own := columns[x.first[j]:x.first[j+1]:x.first[j+1]]
 		if p.always {
 			d.Always, d.AlwaysColumns = append(d.Always, p.Name), append(d.AlwaysColumns, own)
 		} else {
 			d.Candidates, d.CandidateColumns = append(d.Candidates, p.Name), append(d.CandidateColumns, own)
 		}
-		d.Names = append(d.Names, p.columnNames(x.reference[j])...)
-		if p.category {
-			d.Categories = append(d.Categories, Category{
-				Column: p.Name, Levels: p.levels.levels(), Reference: p.levels.names[x.reference[j]], Filled: p.filled,
-			})
+		if p.category == nil {
+			d.Names = append(d.Names, p.Name)
+			continue
 		}
+		levels := &p.category.levels
+		for k, level := range levels.names {
+			if k != int(x.reference[j]) {
+				d.Names = append(d.Names, p.Name+"="+level)
+			}
+		}
+		d.Categories = append(d.Categories, Category{
+			Column: p.Name, Levels: levels.levels(), Reference: levels.names[x.reference[j]], Filled: p.category.filled,
+		})
 	}
 	d.Fingerprint = fingerprint(l.n, d.Rows, append(x.prints, l.sidePrints()...))
-}
-
-// columnNames names a predictor's columns of X.
-func (p *predictor) columnNames(reference int) []string {
-	if !p.category {
-		return []string{p.Name}
-	}
-	var out []string
-	for k, level := range p.levels.names {
-		if k != reference {
-			out = append(out, p.Name+"="+level)
-		}
-	}
-	return out
 }

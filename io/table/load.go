@@ -35,10 +35,8 @@ type loading struct {
 	workers int
 	n       int // rows of the table
 
-	columns    []*column // all that are read, each once, predictors first
-	byName     map[string]*column
-	roles      map[string]string // of the columns that may have only one
-	predictors []*predictor      // candidates, then always; those left out are gone
+	columns    []column    // all that are read, each once, predictors first; never grown, so that pointers hold
+	predictors []predictor // candidates, then always; those left out are gone
 	outcome    outcome
 	weight     *column
 	within     []*column // nil for the outcome
@@ -51,28 +49,34 @@ type loading struct {
 	data  *Data
 }
 
-// column is a column of the table that is read.
+// column is a column of the table that is read. There may be a hundred thousand
+// of it and of predictor, so they are kept small.
 type column struct {
-	Column
-	at      int       // position in the table
-	most    int       // levels that are wanted of it; 0: none are
-	inX     bool      // its numbers become a column of X
-	values  []float64 // of numbers
-	texts   *texts    // of text
-	rounded rounded
+	*Column
+	at     int32     // position in the table
+	most   int32     // levels that are wanted of it; 0: none are
+	inX    bool      // its numbers become a column of X
+	role   string    // empty: none that excludes others
+	values []float64 // of numbers
+	texts  *texts    // of text
 }
 
 // predictor is a candidate or an always-in column.
 type predictor struct {
 	*column
 	always   bool
-	category bool
-	levels   coding // of a category
+	category *category // nil for a column of numbers
 	gaps     Gaps
-	filled   int64 // gaps of a category that took a level
 }
 
-func (p *predictor) role() string {
+// category is what is known of a predictor that is read by its levels.
+type category struct {
+	levels coding
+	filled int64 // gaps that took a level
+}
+
+// title names the predictor's role.
+func (p *predictor) title() string {
 	if p.always {
 		return "an always-in column"
 	}
@@ -84,18 +88,20 @@ func (l *loading) path() string { return l.src.path }
 // choose finds the columns asked for and refuses what cannot be had.
 func (l *loading) choose(context.Context) error {
 	l.data = &Data{}
-	l.byName, l.roles = map[string]*column{}, map[string]string{}
 	if err := l.checkRows(); err != nil {
 		return err
 	}
 	if len(l.req.Candidates) == 0 {
 		return &Error{Path: l.path(), Why: l.noCandidates(l.src.format.columns())}
 	}
-	positions := make(map[string]int, len(l.src.format.columns()))
-	for i, c := range l.src.format.columns() {
-		positions[c.Name] = i
+	all := l.src.format.columns()
+	ask := asking{loading: l, positions: make(map[string]int32, len(all)), asked: make([]*column, len(all))}
+	for i := range all {
+		ask.positions[all[i].Name] = int32(i)
 	}
-	ask := asking{l, positions}
+	const others = 7 // columns of an outcome, and the weight
+	l.columns = make([]column, 0, len(l.req.Candidates)+len(l.req.Always)+len(l.req.Outcome.Strata)+len(l.req.Within)+others)
+	l.predictors = make([]predictor, 0, len(l.req.Candidates)+len(l.req.Always))
 	for _, step := range []func() error{ask.predictors, ask.outcome, ask.weight, ask.within} {
 		if err := step(); err != nil {
 			return err
@@ -107,17 +113,18 @@ func (l *loading) choose(context.Context) error {
 // asking looks the columns of a request up.
 type asking struct {
 	*loading
-	positions map[string]int // of every column of the table
+	positions map[string]int32 // of every column of the table
+	asked     []*column        // by position: what is read of it
 }
 
 // only is column for a column that has no other role.
 func (l asking) only(role, name string, most int) (*column, error) {
-	if other, twice := l.roles[name]; twice {
-		return nil, columnFaultf(l.path(), name, "cannot be %s and %s at once", other, role)
+	if at, known := l.positions[name]; known && l.asked[at] != nil && l.asked[at].role != "" {
+		return nil, columnFaultf(l.path(), name, "cannot be %s and %s at once", l.asked[at].role, role)
 	}
 	c, err := l.column(role, name, most)
 	if err == nil {
-		l.roles[name] = role
+		c.role = role
 	}
 	return c, err
 }
@@ -129,37 +136,39 @@ func (l asking) column(role, name string, most int) (*column, error) {
 	if !ok {
 		return nil, faultf(l.path(), "there is no column called %s (asked for as %s)", quote(name), role)
 	}
-	found := l.src.format.columns()[at]
+	found := &l.src.format.columns()[at]
 	switch {
 	case most == 0 && found.Kind == Text:
 		return nil, columnFaultf(l.path(), name, "cannot be %s: %s, and a number is needed", role, found.Reason)
 	case most == 0 && !found.Usable, !found.levelled():
 		return nil, columnFaultf(l.path(), name, "cannot be %s: %s", role, found.Reason)
 	}
-	c := l.byName[name]
-	if c == nil {
-		c = &column{Column: found, at: at}
-		l.byName[name], l.columns = c, append(l.columns, c)
+	if l.asked[at] == nil {
+		l.columns = append(l.columns, column{Column: found, at: at})
+		l.asked[at] = &l.columns[len(l.columns)-1]
 	}
-	c.most = max(c.most, most)
+	c := l.asked[at]
+	c.most = max(c.most, int32(most))
 	return c, nil
 }
 
 // predictors finds candidates and always-in columns.
 func (l asking) predictors() error {
+	categories := make(map[string]bool, len(l.req.Categories))
+	for _, name := range l.req.Categories {
+		categories[name] = true
+	}
 	for i, name := range slices.Concat(l.req.Candidates, l.req.Always) {
-		p := &predictor{always: i >= len(l.req.Candidates), category: slices.Contains(l.req.Categories, name)}
-		at, known := l.positions[name]
-		p.category = p.category || known && l.src.format.columns()[at].Kind == Text
+		p := predictor{always: i >= len(l.req.Candidates)}
 		most := 0
-		if p.category {
-			most = MostLevels
+		if at, known := l.positions[name]; categories[name] || known && l.src.format.columns()[at].Kind == Text {
+			p.category, most = &category{}, MostLevels
 		}
 		var err error
-		if p.column, err = l.only(p.role(), name, most); err != nil {
+		if p.column, err = l.only(p.title(), name, most); err != nil {
 			return err
 		}
-		p.inX = !p.category
+		p.inX = p.category == nil
 		l.loading.predictors = append(l.loading.predictors, p)
 	}
 	return l.checkCategories()
@@ -211,7 +220,8 @@ func (l *loading) checkCells(indicators int) error {
 		return checkMemory(l.path(), l.n, indicators, 0)
 	}
 	numbers, halves := indicators, 0
-	for _, c := range l.columns {
+	for i := range l.columns {
+		c := &l.columns[i]
 		if c.Kind != Text {
 			numbers++
 		}
@@ -229,10 +239,10 @@ func (l *loading) read(ctx context.Context) error {
 		return err
 	}
 	inX, beside := 0, 0
-	for _, c := range l.columns {
-		switch {
+	for i := range l.columns {
+		switch c := &l.columns[i]; {
 		case c.Kind == Text:
-			c.texts = newTexts(l.n, c.most)
+			c.texts = newTexts(l.n, int(c.most))
 		case c.inX:
 			inX++
 		default:
@@ -241,7 +251,8 @@ func (l *loading) read(ctx context.Context) error {
 	}
 	block, rest := newColumns(l.n, inX), newColumns(l.n, beside)
 	sinks := make([]sink, len(l.columns))
-	for i, c := range l.columns {
+	for i := range l.columns {
+		c := &l.columns[i]
 		switch {
 		case c.texts != nil:
 		case c.inX:
@@ -249,14 +260,13 @@ func (l *loading) read(ctx context.Context) error {
 		default:
 			c.values, rest = rest[0], rest[1:]
 		}
-		sinks[i] = sink{col: c.at, values: c.values, texts: c.texts}
+		sinks[i] = sink{col: int(c.at), values: c.values, texts: c.texts}
 	}
 	found, err := l.src.format.fill(ctx, sinks, l.workers)
 	if err != nil {
 		return err
 	}
 	for i, r := range found {
-		l.columns[i].rounded = r
 		if r.count > 0 {
 			l.note("column %s: %s cannot be held exactly and %s rounded to the nearest float64 (the first in row %d)",
 				quote(l.columns[i].Name), plural(r.count, "integer"), wasWere(r.count), r.first)

@@ -19,9 +19,9 @@ func (l *loading) countGaps(ctx context.Context) error {
 		if masks[w] == nil {
 			masks[w] = make([]uint64, words)
 		}
-		p := l.predictors[j]
-		if p.category {
-			p.gaps = gapsOfLevels(p.levels.codes, l.used, masks[w])
+		p := &l.predictors[j]
+		if p.category != nil {
+			p.gaps = gapsOfLevels(p.category.levels.codes, l.used, masks[w])
 		} else {
 			p.gaps = gapsOf(p.values, l.used, masks[w])
 		}
@@ -195,7 +195,9 @@ func (l *loading) fillMean(worst []Gaps) error {
 	var cells int64
 	category := map[string]bool{}
 	for _, p := range l.predictors {
-		category[p.Name] = p.category
+		if p.category != nil {
+			category[p.Name] = true
+		}
 	}
 	for _, g := range worst {
 		if g.Infinite > 0 {
@@ -217,10 +219,10 @@ func (l *loading) fillMean(worst []Gaps) error {
 			plural(cells, "cell"), plural(int64(len(numbers)), "column"), thirdPerson(cells))
 	}
 	for _, p := range l.predictors {
-		if p.category && p.gaps.Missing > 0 {
-			level := l.fillLevel(p)
+		if c := p.category; c != nil && p.gaps.Missing > 0 {
+			level := l.fillLevel(c)
 			l.note("fill-mean: %s of category %s take%s its most frequent level, %s",
-				plural(p.filled, "cell"), quote(p.Name), thirdPerson(p.filled), quote(level))
+				plural(c.filled, "cell"), quote(p.Name), thirdPerson(c.filled), quote(level))
 		}
 	}
 	return nil

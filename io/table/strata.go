@@ -72,8 +72,8 @@ func (l *loading) settleWithin(rows []int32) error {
 // have had its gaps filled.
 func (l *loading) withinLevels(c *column) (coding, error) {
 	for _, p := range l.predictors {
-		if p.column == c && p.filled > 0 {
-			return p.levels, nil
+		if p.column == c && p.category != nil && p.category.filled > 0 {
+			return p.category.levels, nil
 		}
 	}
 	return l.stratumLevels(c, "stratum of the draws")
