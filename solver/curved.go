@@ -457,6 +457,9 @@ func (c *curved) support() []choice {
 			s = append(s, q)
 		}
 	})
+	if c.f.m.p.Groups != nil {
+		return c.independent(s)
+	}
 	return s
 }
 

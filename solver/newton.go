@@ -220,7 +220,7 @@ func (n *newton) converge() error {
 		return nil
 	}
 	fresh := n.r.bend == nil
-	if err := n.factorise(false); err != nil {
+	if err := n.factorise(false); err != nil || len(n.r.gone) > 0 {
 		return err
 	}
 	for k := range mostSteps {
@@ -233,7 +233,7 @@ func (n *newton) converge() error {
 			break
 		}
 		if fresh = !moved || !whole || n.worst > slow*before; fresh && n.worst > goodEnough {
-			if err := n.factorise(true); err != nil {
+			if err := n.factorise(true); err != nil || len(n.r.gone) > 0 {
 				return err
 			}
 		}
@@ -275,10 +275,20 @@ func (n *newton) factorise(anew bool) error {
 			copy(row, n.h.row[i][:i+1])
 			n.addPenalty(q, t, row)
 			if !n.r.chol.push(row[:i], row[i], breakdown) {
-				return fmt.Errorf("the support became linearly dependent at %s", n.c.f.m.name(q.unit))
+				return n.depends(q)
 			}
 		}
 	}
+	return nil
+}
+
+// depends takes a candidate whose columns depend on those before it out of the
+// support: it will stand on the border, where shares are settled.
+func (n *newton) depends(q block) error {
+	if n.c.f.penalty.always(q.unit) || n.r.lambda == 0 || n.anySign {
+		return fmt.Errorf("the support became linearly dependent at %s", n.c.f.m.name(q.unit))
+	}
+	n.r.gone = append(n.r.gone, q.choice)
 	return nil
 }
 

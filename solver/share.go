@@ -23,11 +23,12 @@ const mostShared = 3000
 type sharing struct {
 	f      *fitting
 	lambda float64
-	fixed  []int     // coefficients of always-in columns
-	places []int     // those of candidates at the border, by unit: place*lanes + lane
-	sign   []float64 // of their gradients
-	curved *curved   // of the curved core
-	found  *record   // the optimum that was found: for the curved core its fit stands
+	fixed  []int             // coefficients of always-in columns
+	places []int             // those of candidates at the border, by unit: place*lanes + lane
+	sign   []float64         // of their gradients
+	curved *curved           // of the curved core
+	found  *record           // the optimum that was found: for the curved core its fit stands
+	along  map[int][]float64 // of a group: its column along its gradient
 }
 
 // share returns the record of the step on all candidates at the border, or nil
@@ -195,9 +196,9 @@ func (s *sharing) products(p *parts, place int) []float64 {
 func (s *sharing) gram(i, j int) float64 {
 	lanes := s.f.lanes()
 	if s.curved != nil && s.curved.seen != nil {
-		return s.curved.seen.between(i, j)
+		return s.seen(i, j)
 	}
-	g := s.f.work.h.row[i/lanes][j/lanes]
+	g := s.product(i, j)
 	if lanes == 1 {
 		return g
 	}
@@ -252,6 +253,9 @@ func (s *sharing) expressed(p *parts) []float64 {
 	out := make([]float64, len(p.basis))
 	for _, b := range s.found.blocks {
 		v, i := s.found.beta[b.at], b.place*s.f.lanes()+b.lane
+		if b.width > 1 {
+			v = length(s.found.beta[b.at : b.at+b.width])
+		}
 		if q, ok := at[i]; ok {
 			out[q] += v
 			continue
