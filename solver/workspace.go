@@ -92,17 +92,17 @@ func (s Shape) Workspace(draws int) int64 {
 		width = float64(s.Columns) / float64(s.Candidates)
 	}
 	lanes := float64(max(1, s.Classes))
-	places := float64(s.Always) + width*min(float64(s.Candidates), workingShare*entered)
+	places := float64(s.Always) + float64(width*min(float64(s.Candidates), workingShare*entered))
 	row := 8 * float64(s.DrawRows)
 	candidate, references := float64(perCandidate), steps
 	if s.Rows >= 2*s.Candidates && !s.Curved {
 		candidate += perWindow
 		references /= firstWindow
 	}
-	draw := float64(candidate*float64(s.Candidates)) + float64(row*(places+vectors*lanes)) +
+	draw := float64(candidate*float64(s.Candidates)) + float64(row*(places+float64(vectors*lanes))) +
 		min(snapshotBytes, row*lanes*references) + float64(8*entered*width*lanes*steps)
 	if s.Curved {
-		coefficients := (float64(s.Always) + 1 + width*entered) * classesIn(lanes)
+		coefficients := (float64(s.Always) + 1 + float64(width*entered)) * classesIn(lanes)
 		draw += float64(row*perCarried*coefficients) + float64(perPair*coefficients*coefficients)
 	} else {
 		draw += float64(perPlace * places * places)

@@ -47,6 +47,9 @@ func TestCurvedWorkspace(t *testing.T) {
 	} {
 		base := randomModel(t, c.rows, c.candidates, c.stop, 0.05).p
 		for kind, q := range kindsOf(base) {
+			if strings.Contains(kind, "equal groups") {
+				continue // a dozen candidates, all of which enter: memory is no question
+			}
 			q.Floor, q.Ratio = 0.05, 0.9
 			m := mustModel(t, q)
 			got := liveBytes(t, m, c.draws)
