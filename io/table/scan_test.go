@@ -321,3 +321,26 @@ func TestScanCountsRowsWithText(t *testing.T) {
 		t.Errorf("%d rows with a gap, want 8", sum.Incomplete)
 	}
 }
+
+// A text that is a label tells no rows apart: 80 rows of five columns of nine
+// values may repeat by chance, whatever the label.
+func TestLabelsSayNothingAboutRepeats(t *testing.T) {
+	var b strings.Builder
+	b.WriteString("y,a,b,c,d,id\n")
+	for i := range 80 {
+		fmt.Fprintf(&b, "%d,%d,%d,%d,%d,tank %d\n", i%9, i*2%9, i*4%9, i*5%9, i*7%9, i)
+	}
+	if sum := scanText(t, b.String(), "y"); sum.Repeats != 0 {
+		t.Errorf("%d repeats", sum.Repeats)
+	}
+	if sum := scanText(t, strings.ReplaceAll(b.String(), "tank ", ""), "y"); sum.Repeats != 0 {
+		t.Errorf("%d repeats with numbers for labels", sum.Repeats)
+	}
+	text := b.String()
+	for i := range 80 {
+		text = strings.Replace(text, fmt.Sprintf(",tank %d\n", i), fmt.Sprintf(",feed %d\n", i%27), 1)
+	}
+	if sum := scanText(t, text, "y"); sum.Repeats != 53 {
+		t.Errorf("%d repeats of 53 where text of 27 levels tells enough", sum.Repeats)
+	}
+}

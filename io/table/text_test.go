@@ -484,3 +484,24 @@ func FuzzArrowText(f *testing.F) {
 		}
 	})
 }
+
+// Text behind views is read a window at a time, forwards and back.
+func TestViewsBeyondOneWindow(t *testing.T) {
+	var cells []any
+	var want []string
+	for i := range 3000 {
+		word := fmt.Sprintf("larva number %06d of the year", i*7919%3000)
+		cells, want = append(cells, word), append(want, word)
+	}
+	path := writeArrow(t, tempFile(t, "t.arrow"), []testColumn{{"id", arrow.BinaryTypes.StringView, cells}}, 3000, false)
+	if got := readTexts(t, path, 5000)["id"]; got != strings.Join(want, ",") {
+		t.Errorf("%.200s", got)
+	}
+	text := []byte(strings.Repeat("0123456789", 3000))
+	v := &viewBuffer{in: bytes.NewReader(text), size: int64(len(text))}
+	for _, at := range []int64{0, 8180, 8190, 20000, 19990, 5, 29980, 8185} {
+		if word, err := v.word(at, 20); err != nil || string(word) != string(text[at:at+20]) {
+			t.Errorf("at %d: %s, %v", at, word, err)
+		}
+	}
+}
