@@ -148,8 +148,8 @@ func (c *coding) reorder(less func(a, b int) bool) {
 	}
 	sort.SliceStable(order, func(i, j int) bool { return less(order[i], order[j]) })
 	names, place := make([]string, len(order)), make([]int32, len(order))
-	for now, was := range order {
-		names[now], place[was] = c.names[was], int32(now)
+	for to, from := range order {
+		names[to], place[from] = c.names[from], int32(to)
 	}
 	c.names = names
 	c.renumber(place)
