@@ -11,13 +11,17 @@ import (
 // attempts bounds the rounds of settling a support at the border.
 const attempts = 50
 
+// together is in how many of them all violators join a support at once; after that
+// the lowest alone.
+const together = 10
+
 // acceptStep turns the working set's support at step cur into a record, if all
 // candidates bear it out. It returns the units that violate and are not in the
 // working set yet; an error where the step cannot be certified.
 func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 	lambda := f.lambda(f.cur)
 	support = slices.Clone(support)
-	for range attempts {
+	for attempt := range attempts {
 		r, err := f.core.finish(support, lambda)
 		if err != nil {
 			return nil, err
@@ -35,9 +39,12 @@ func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 			f.dropResidual(r.u)
 			return v.fresh, nil
 		}
-		if v.violator != nil {
+		if len(v.violators) > 0 {
 			f.dropResidual(r.u)
-			support = append(support, *v.violator)
+			if attempt >= together {
+				v.violators = v.violators[:1]
+			}
+			support = append(support, v.violators...)
 			continue
 		}
 		return nil, f.conclude(r, v.near)
@@ -82,9 +89,9 @@ func (f *fitting) excess(r *record, places []choice) float64 {
 
 // verdict is what the candidates outside a record's support say of it.
 type verdict struct {
-	fresh    []int32  // violators to be brought into the working set
-	violator *choice  // the lowest violator that is in it already
-	near     []choice // candidates on the border, that may stay out
+	fresh     []int32  // violators to be brought into the working set
+	violators []choice // violators that are in it already, the lowest first
+	near      []choice // candidates on the border, that may stay out
 }
 
 // judge checks every candidate outside the support, by a proven margin or by a
@@ -127,8 +134,8 @@ func (f *fitting) judgeOne(r *record, c int32, lane, known int, v *verdict) erro
 		if !slices.Contains(v.fresh, c) {
 			v.fresh = append(v.fresh, c)
 		}
-	case v.violator == nil:
-		v.violator = &side
+	default:
+		v.violators = append(v.violators, side)
 	}
 	return nil
 }

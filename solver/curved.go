@@ -14,6 +14,9 @@ const (
 	// solved is the violation, relative to the thresholds, at which the working
 	// set counts as solved: the finish goes on from there.
 	solved = 1e-7
+	// solvedGroups is the same with groups, where the descent gains digits slowly and
+	// the finish, which has Newton steps, fast.
+	solvedGroups = 1e-4
 	// slow is how much of the violation a step may leave before the Hessian is
 	// made anew.
 	slow = 0.3
@@ -286,9 +289,12 @@ func (c *curved) solve(lambda float64) error {
 	if c.lambda != lambda {
 		c.lambda, c.bend = lambda, c.f.rec.bend
 	}
-	fresh := c.bend == nil
+	fresh, enough := c.bend == nil, solved
+	if c.f.m.p.Groups != nil {
+		enough = solvedGroups
+	}
 	for range newtonSteps {
-		if worst <= solved {
+		if worst <= enough {
 			return nil
 		}
 		if c.bend == nil {

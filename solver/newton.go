@@ -192,6 +192,8 @@ func (n *newton) missing(b block) float64 {
 		return n.correlation(b)
 	case p.always(b.unit):
 		return math.Abs(e[0]) / n.r.lambda
+	case b.width > 1 && size == 0:
+		return max(0, length(e)/t-1)
 	}
 	return length(e) / t
 }
@@ -210,41 +212,79 @@ func (n *newton) correlation(b block) float64 {
 	return most
 }
 
-// converge makes Newton steps until what is missing is rounding.
+// converge makes Newton steps until what is missing is rounding. With groups they
+// take turns with proximal steps: far from the optimum a Newton step on a norm runs
+// into its kink at 0.
 func (n *newton) converge() error {
 	n.evaluate()
-	if n.approach(); len(n.r.gone) > 0 {
-		return nil
-	}
 	if len(n.r.blocks) == 0 {
 		return nil
 	}
-	fresh := n.r.bend == nil
-	if err := n.factorise(false); err != nil || len(n.r.gone) > 0 {
-		return err
-	}
-	for k := range mostSteps {
-		if n.worst <= goodEnough {
-			break
+	groups := n.groups()
+	for k := range rounds {
+		if groups && !n.approach(math.Pow(closer, float64(k+1))) {
+			return nil
 		}
-		before := n.worst
-		whole, moved := n.step()
-		if !moved && fresh {
-			break
-		}
-		if fresh = !moved || !whole || n.worst > slow*before; fresh && n.worst > goodEnough {
-			if err := n.factorise(true); err != nil || len(n.r.gone) > 0 {
-				return err
-			}
-		}
-		if err := n.escaping(); err != nil {
+		done, err := n.descendNewton(groups)
+		if err != nil {
 			return err
 		}
-		if k > 20 && !n.anySign && n.wrong() {
+		if done || len(n.r.gone) > 0 {
 			break
 		}
 	}
 	return n.balance()
+}
+
+const (
+	// rounds of proximal and Newton steps, and how much less may be missing before
+	// the Newton steps of each.
+	rounds = 30
+	closer = 0.1
+)
+
+// groups reports whether a penalised group is in.
+func (n *newton) groups() bool {
+	for _, b := range n.r.blocks {
+		if b.width > 1 && n.r.lambda > 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// descendNewton makes Newton steps to the end. With groups it gives up, and is not
+// done, where a step has to be cut.
+func (n *newton) descendNewton(groups bool) (done bool, err error) {
+	fresh := n.r.bend == nil
+	if err := n.factorise(false); err != nil || len(n.r.gone) > 0 {
+		return true, err
+	}
+	for k := range mostSteps {
+		if n.worst <= goodEnough {
+			return true, nil
+		}
+		before := n.worst
+		whole, moved := n.step()
+		if !moved && fresh {
+			return !groups || n.worst <= near, nil
+		}
+		if groups && !whole && moved && n.worst > near {
+			return false, nil
+		}
+		if fresh = !moved || !whole || n.worst > slow*before; fresh && n.worst > goodEnough {
+			if err := n.factorise(true); err != nil || len(n.r.gone) > 0 {
+				return true, err
+			}
+		}
+		if err := n.escaping(); err != nil {
+			return true, err
+		}
+		if k > 20 && !n.anySign && n.wrong() {
+			return true, nil
+		}
+	}
+	return true, nil
 }
 
 // curve puts the Hessian of the loss together: where it was last made, or, if that
@@ -408,23 +448,16 @@ func (n *newton) wrong() bool {
 	return false
 }
 
-// near is the violation from which Newton steps find the way by themselves.
+// near is the violation from which a Newton method that ends has ended at the
+// optimum, as far as rounding goes.
 const near = 1e-5
 
-// approach brings a record with groups near its optimum by proximal Newton steps
-// on the support: far from it, Newton steps on a norm run into its kink at 0.
-// A group that ends there does not belong.
-func (n *newton) approach() {
-	groups := false
-	for _, b := range n.r.blocks {
-		groups = groups || b.width > 1
-	}
-	if !groups || n.r.lambda == 0 {
-		return
-	}
+// approach makes proximal Newton steps until no more than enough is missing. It
+// returns false, and notes them, where groups end at 0: they do not belong.
+func (n *newton) approach(enough float64) bool {
 	anew := false
 	for range newtonSteps {
-		if n.worst <= near {
+		if zero, leaves := n.resting(); n.worst <= enough && !leaves && (!zero || n.worst <= near) {
 			break
 		}
 		fresh := anew || n.r.bend == nil
@@ -441,6 +474,18 @@ func (n *newton) approach() {
 			n.r.gone = append(n.r.gone, b.choice)
 		}
 	}
+	return len(n.r.gone) == 0
+}
+
+// resting reports whether groups are at 0, and whether one of them is to leave it.
+func (n *newton) resting() (zero, leaves bool) {
+	for _, b := range n.r.blocks {
+		if b.width > 1 && length(n.r.beta[b.at:b.at+b.width]) == 0 {
+			zero = true
+			leaves = leaves || length(n.r.grad[b.at:b.at+b.width]) > n.c.f.penalty.threshold(b.unit, n.r.lambda)*(1+enterTolerance)
+		}
+	}
+	return zero, leaves
 }
 
 // descend makes one proximal Newton step, and reports whether the objective fell.
