@@ -5,15 +5,12 @@ import (
 	"slices"
 
 	"holdfast/resample"
-	"holdfast/solver"
 )
 
 // mostWeighed is the number of draws that the effective size is taken over.
 const mostWeighed = 200
 
-// effective is what case weights leave of the rows of a draw: (sum w)^2 / sum w^2
-// (Kish 1965, Survey Sampling, section 11.7), that of as many rows of equal
-// weight.
+// effective is what case weights leave of the rows of the draws of a plan.
 type effective struct {
 	median, smallest float64
 	rows             int // of a draw
@@ -34,25 +31,14 @@ func weigh(plan resample.Plan) *effective {
 	var sizes []float64
 	for draw := 0; draw < min(plan.Number, mostWeighed); draw += step {
 		sample := plan.Sample(draw)
-		sizes = append(sizes, effectiveSize(sample))
+		sizes = append(sizes, resample.EffectiveSize(sample))
 		if plan.Design == resample.Halves {
-			sizes = append(sizes, effectiveSize(sample.Left)) // the partner
+			sizes = append(sizes, resample.EffectiveSize(sample.Left)) // the partner
 		}
 	}
 	slices.Sort(sizes)
 	e.median, e.smallest = sizes[len(sizes)/2], sizes[0]
 	return &e
-}
-
-// effectiveSize is that of one draw, rows drawn twice counting twice.
-func effectiveSize(s *solver.Sample) float64 {
-	var sum, squares float64
-	for row, count := range resample.Drawn(s) {
-		w := s.Case[row]
-		sum += float64(float64(count) * w)
-		squares += float64(float64(float64(count)*w) * w)
-	}
-	return sum * sum / squares
 }
 
 // String says it to people.
