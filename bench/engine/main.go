@@ -45,7 +45,10 @@ type report struct {
 	Kernel     string       `json:"kernel"`
 	Violation  float64      `json:"violation"`
 	Gap        float64      `json:"gap"`
+	Fits       int          `json:"fits"`      // certified
+	Unreached  int          `json:"unreached"` // from the one that could not be certified down to the floor
 	Failed     int          `json:"not_certified"`
+	Redraws    int          `json:"redraws"`
 	Borderline int          `json:"borderline"`
 	Entries    [][][2]int32 `json:"entries,omitempty"` // per draw: column, step
 }
@@ -71,7 +74,7 @@ func run() error {
 
 func parse() (settings, error) {
 	var s settings
-	name := flag.String("shape", "wide", "wide, tall or long")
+	name := flag.String("shape", "wide", "table: a name of bench/shape")
 	flag.StringVar(&s.dir, "dir", "bench/out", "folder of the tables")
 	flag.IntVar(&s.draws, "draws", 64, "number of draws")
 	flag.IntVar(&s.workers, "workers", 1, "workers")
@@ -93,11 +96,11 @@ const garbage = 128 << 20
 func (s settings) measure() (*report, error) {
 	r := &report{Workers: s.workers, Draws: s.draws, Kernel: solver.Kernel()}
 	start := time.Now()
-	cols, y, err := s.shape.Read(s.dir)
+	table, err := s.shape.Read(s.dir)
 	if err != nil {
 		return nil, err
 	}
-	problem := problemOf(cols, y, s.ratio, s.floor)
+	problem := s.shape.Problem(table, s.ratio, s.floor)
 	r.ReadTime = lap(&start)
 	model, err := solver.NewModel(context.Background(), problem)
 	if err != nil {
@@ -106,14 +109,14 @@ func (s settings) measure() (*report, error) {
 	r.ModelTime = lap(&start)
 	debug.SetGCPercent(int(min(100, max(100*garbage/int64(8*s.shape.Rows*s.shape.Cols), 2))))
 	before := shape.CPUTime()
-	paths, err := s.fit(model)
+	paths, err := s.fit(table, model)
 	if err != nil {
 		return nil, err
 	}
 	r.FitTime, r.CPUPerDraw = lap(&start), (shape.CPUTime()-before)/float64(s.draws)
 	r.PerDraw = r.FitTime / float64(s.draws)
 	r.LambdaMax, r.Steps = model.LambdaMax(), model.LastStep()+1
-	r.describe(paths, s.entries)
+	r.describe(model, paths, s.entries)
 	r.PeakMemory, err = shape.PeakMemory()
 	return r, err
 }
@@ -126,36 +129,13 @@ func lap(start *time.Time) float64 {
 	return d
 }
 
-// problemOf centres the columns in place; every column is a candidate.
-func problemOf(cols [][]float64, y []float64, ratio, floor float64) solver.Problem {
-	p := solver.Problem{Outcome: y, Mix: 1, Ratio: ratio, Floor: floor, Centre: make([]float64, len(cols)), Names: make([]string, len(cols))}
-	for j, c := range cols {
-		p.Centre[j] = centre(c)
-		p.Candidates = append(p.Candidates, int32(j))
-		p.Names[j] = fmt.Sprintf("x%d", j)
-	}
-	p.Design = solver.NewDense(len(y), cols, nil)
-	return p
-}
-
-func centre(x []float64) float64 {
-	mean := 0.0
-	for _, v := range x {
-		mean += v
-	}
-	mean /= float64(len(x))
-	for i := range x {
-		x[i] -= mean
-	}
-	return mean
-}
-
 // fit makes and fits all draws as a run does, but keeps them in memory.
-func (s settings) fit(model *solver.Model) ([]solver.Path, error) {
-	plan, err := s.shape.Plan(s.draws, s.seed)
+func (s settings) fit(table shape.Table, model *solver.Model) ([]solver.Path, error) {
+	plan, err := s.shape.Plan(table, s.draws, s.seed)
 	if err != nil {
 		return nil, err
 	}
+	plan.Fit = model.Fittable
 	if s.profile != "" {
 		f, err := os.Create(s.profile)
 		if err != nil {
@@ -183,12 +163,15 @@ func (m *memory) Put(draws []int, paths []solver.Path) error {
 }
 
 // describe adds the certificates and, if asked for, the entries.
-func (r *report) describe(paths []solver.Path, entries bool) {
+func (r *report) describe(model *solver.Model, paths []solver.Path, entries bool) {
 	for _, p := range paths {
 		r.Violation, r.Gap = max(r.Violation, p.Violation), max(r.Gap, p.Gap)
 		r.Borderline += p.Borderline
+		r.Redraws += p.Redraws
+		r.Fits += p.Last - p.First + 1
 		if p.Stop == solver.StopUncertified {
 			r.Failed++
+			r.Unreached += model.LastStep() - p.Last
 		}
 		if !entries {
 			continue

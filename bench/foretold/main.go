@@ -26,6 +26,7 @@ import (
 	"time"
 
 	"holdfast/bench/shape"
+	"holdfast/solver"
 )
 
 type settings struct {
@@ -71,6 +72,9 @@ func (s settings) measure(names []string) error {
 
 // prepare writes table and study where they are not there yet.
 func (s settings) prepare(sh shape.Shape) error {
+	if sh.Family != solver.Gaussian {
+		return fmt.Errorf("%s: its outcome is no number, and the study written here is for one", sh.Name)
+	}
 	study := fmt.Sprintf("[table]\npath = \"%s.csv\"\n[outcome]\ncolumn = \"y\"\n[draws]\nnumber = %d\n", sh.Name, s.draws)
 	if err := os.WriteFile(s.in(sh.Name+".toml"), []byte(study), 0o644); err != nil {
 		return err
@@ -83,18 +87,18 @@ func (s settings) prepare(sh shape.Shape) error {
 		return err
 	}
 	w := bufio.NewWriterSize(f, 1<<20)
-	cols, y := sh.Make(1)
-	for j := range cols {
+	t := sh.Make(1)
+	for j := range t.Columns {
 		fmt.Fprintf(w, "x%d,", j)
 	}
 	fmt.Fprintln(w, "y")
 	var line []byte
-	for i := range y {
+	for i, y := range t.Outcome {
 		line = line[:0]
-		for _, c := range cols {
+		for _, c := range t.Columns {
 			line = append(strconv.AppendFloat(line, c[i], 'g', 9, 64), ',')
 		}
-		line = append(strconv.AppendFloat(line, y[i], 'g', 9, 64), '\n')
+		line = append(strconv.AppendFloat(line, y, 'g', 9, 64), '\n')
 		w.Write(line)
 	}
 	return errors.Join(w.Flush(), f.Close())

@@ -4,12 +4,14 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+
+	"holdfast/solver"
 )
 
 // Files are the paths of a shape's table in a folder.
 type Files struct {
 	Columns string // candidates
-	Outcome string // one column
+	Outcome string // one column, for Cox two: time and event
 	Draws   string // rows of every draw
 }
 
@@ -28,11 +30,15 @@ func (s Shape) Keep(dir string, seed uint64) error {
 	if exists(files.Columns) && exists(files.Outcome) {
 		return nil
 	}
-	cols, y := s.Make(seed)
-	if err := WriteColumns(files.Outcome, [][]float64{y}); err != nil {
+	t := s.Make(seed)
+	outcome := [][]float64{t.Outcome}
+	if t.Event != nil {
+		outcome = append(outcome, t.Event)
+	}
+	if err := WriteColumns(files.Outcome, outcome); err != nil {
 		return err
 	}
-	return WriteColumns(files.Columns, cols)
+	return WriteColumns(files.Columns, t.Columns)
 }
 
 func exists(path string) bool {
@@ -41,15 +47,28 @@ func exists(path string) bool {
 }
 
 // Read reads a table that Keep wrote.
-func (s Shape) Read(dir string) (cols [][]float64, outcome []float64, err error) {
-	files := s.In(dir)
-	cols, err = ReadColumns(files.Columns, s.Rows, s.Cols)
+func (s Shape) Read(dir string) (Table, error) {
+	t, err := s.readOutcome(dir)
 	if err != nil {
-		return nil, nil, err
+		return Table{}, err
 	}
-	y, err := ReadColumns(files.Outcome, s.Rows, 1)
+	t.Columns, err = ReadColumns(s.In(dir).Columns, s.Rows, s.Cols)
+	return t, err
+}
+
+// readOutcome reads a table without its columns.
+func (s Shape) readOutcome(dir string) (Table, error) {
+	width := 1
+	if s.Family == solver.Cox {
+		width = 2
+	}
+	columns, err := ReadColumns(s.In(dir).Outcome, s.Rows, width)
 	if err != nil {
-		return nil, nil, fmt.Errorf("outcome: %w", err)
+		return Table{}, fmt.Errorf("outcome: %w", err)
 	}
-	return cols, y[0], nil
+	t := Table{Outcome: columns[0]}
+	if width == 2 {
+		t.Event = columns[1]
+	}
+	return t, nil
 }

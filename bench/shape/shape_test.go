@@ -4,15 +4,19 @@ import (
 	"math"
 	"os"
 	"path/filepath"
+	"reflect"
 	"slices"
 	"testing"
+
+	"holdfast/solver"
 )
 
 // TestNeighbours holds the columns to the law they are said to follow:
 // variance 1, correlation 0.5^k at distance k. 4 standard errors.
 func TestNeighbours(t *testing.T) {
 	s := Shape{Rows: 20_000, Cols: 6, Signals: 2, SNR: 1}
-	cols, y := s.Make(3)
+	made := s.Make(3)
+	cols, y := made.Columns, made.Outcome
 	bound := 4 / math.Sqrt(float64(s.Rows))
 	for distance := range 4 {
 		product := 0.0
@@ -27,30 +31,42 @@ func TestNeighbours(t *testing.T) {
 	if len(y) != s.Rows || !(deviation(y) > 0.5) {
 		t.Errorf("outcome of %d rows with deviation %g", len(y), deviation(y))
 	}
-	again, _ := s.Make(3)
-	if !slices.Equal(again[5], cols[5]) {
+	if again := s.Make(3); !slices.Equal(again.Columns[5], cols[5]) {
 		t.Error("the same seed gives another table")
 	}
 }
 
+// TestSameTable pins the first values of the tables whose figures are published:
+// they were made before there were other kinds of outcome.
+func TestSameTable(t *testing.T) {
+	got := Shape{Rows: 4, Cols: 3, Signals: 2, SNR: 2}.Make(1)
+	want := []float64{-0.721215406293976, 1.6686945384217922, 2.9476054326385306, 1.1713584971175772}
+	for i, y := range got.Outcome {
+		if math.Abs(y-want[i]) > 1e-14 {
+			t.Errorf("outcome of row %d is %v, want %v", i, y, want[i])
+		}
+	}
+}
+
 func TestKeepAndRead(t *testing.T) {
-	dir := t.TempDir()
-	s := Shape{Name: "small", Rows: 10, Cols: 3, Signals: 1, SNR: 1}
-	if err := s.Keep(dir, 5); err != nil {
-		t.Fatal(err)
-	}
-	cols, y, err := s.Read(dir)
-	if err != nil {
-		t.Fatal(err)
-	}
-	want, wantY := s.Make(5)
-	if !slices.Equal(y, wantY) || !slices.EqualFunc(cols, want, slices.Equal[[]float64]) {
-		t.Error("the table read is not the table made")
-	}
-	other := s
-	other.Cols = 4
-	if _, _, err := other.Read(dir); err == nil {
-		t.Error("a table of another size was read")
+	for _, family := range []solver.Family{solver.Gaussian, solver.Cox} {
+		dir := t.TempDir()
+		s := Shape{Name: "small", Rows: 10, Cols: 3, Signals: 1, SNR: 1, Family: family}
+		if err := s.Keep(dir, 5); err != nil {
+			t.Fatal(err)
+		}
+		got, err := s.Read(dir)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if want := s.Make(5); !reflect.DeepEqual(got, want) {
+			t.Errorf("%v: the table read is not the table made", family)
+		}
+		other := s
+		other.Cols = 4
+		if _, err := other.Read(dir); err == nil {
+			t.Errorf("%v: a table of another size was read", family)
+		}
 	}
 }
 
@@ -69,7 +85,10 @@ func TestHeader(t *testing.T) {
 
 func TestDrawsOnDisk(t *testing.T) {
 	dir := t.TempDir()
-	s := Shape{Name: "small", Rows: 10}
+	s := Shape{Name: "small", Rows: 10, Cols: 1, Signals: 1, SNR: 1}
+	if err := s.Keep(dir, 1); err != nil {
+		t.Fatal(err)
+	}
 	if err := s.KeepDraws(dir, 4, 1); err != nil {
 		t.Fatal(err)
 	}

@@ -8,7 +8,8 @@
 // our side, and then runs, round by round and each in a process of its own:
 // engine with one worker, loop with one process, engine with two workers,
 // loop with two processes. Reading the table counts on neither side. The loop
-// makes fewer draws, because each takes it seconds.
+// makes fewer draws, because each takes it seconds. Kinds of outcome for which
+// there is no loop are timed alone.
 //
 // Medians come with the interval between order statistics that covers the
 // median with at least 95 % (binomial), p values are the exact two-sided

@@ -21,7 +21,10 @@ type ours struct {
 	Kernel     string       `json:"kernel"`
 	Violation  float64      `json:"violation"`
 	Gap        float64      `json:"gap"`
+	Fits       int          `json:"fits"`
+	Unreached  int          `json:"unreached"`
 	Failed     int          `json:"not_certified"`
+	Redraws    int          `json:"redraws"`
 	Borderline int          `json:"borderline"`
 	Entries    [][][2]int32 `json:"entries,omitempty"`
 }
@@ -38,7 +41,8 @@ type peer struct {
 	Entries      [][][2]int32 `json:"entries,omitempty"`
 }
 
-// result holds all runs of one case; the maps are by number of workers.
+// result holds all runs of one case; the maps are by number of workers, that of
+// the peer is empty where the case has none.
 type result struct {
 	of    benchCase
 	ours  map[int][]ours
@@ -49,19 +53,13 @@ type result struct {
 
 // check says how far the two sides select the same predictors.
 type check struct {
-	ours       ours
-	draws      int
-	entries    int     // of our side in those draws
-	different  int     // entries on one side only, at the loop's tolerance
-	tight      int     // the same at the tight tolerance
-	tolerances [2]bool // which tolerances were tried
+	ours      ours
+	draws     int
+	entries   int     // of our side in those draws
+	different int     // entries on one side only, with the loop's settings as timed
+	tight     int     // the same with the tight ones
+	tried     [2]bool // which settings were tried
 }
-
-// Tolerances of the scikit-learn loop: as timed, and for settling differences.
-const (
-	timedTolerance = 1e-7
-	tightTolerance = 1e-13
-)
 
 // allWorkers are the numbers of workers that are timed, in this order.
 var allWorkers = []int{1, 2}
@@ -79,17 +77,11 @@ func (s settings) compare(c benchCase, log *json.Encoder) (result, error) {
 	for round := range s.rounds {
 		fmt.Fprintf(os.Stderr, "%v: round %d of %d\n", c, round+1, s.rounds)
 		for _, workers := range allWorkers {
-			o, err := s.runOurs(c, workers)
+			line, err := s.timed(c, workers, &r)
 			if err != nil {
 				return r, err
 			}
-			p, err := s.runPeer(c, workers, r.check.ours.LambdaMax, timedTolerance)
-			if err != nil {
-				return r, err
-			}
-			r.ours[workers] = append(r.ours[workers], o)
-			r.peer[workers] = append(r.peer[workers], p)
-			line := map[string]any{"case": c.String(), "round": round, "workers": workers, "ours": o, "peer": p}
+			line["round"] = round
 			if err := log.Encode(line); err != nil {
 				return r, err
 			}
@@ -98,8 +90,31 @@ func (s settings) compare(c benchCase, log *json.Encoder) (result, error) {
 	return r, nil
 }
 
+// timed runs our engine once and then the loop, if there is one, and returns
+// what is kept of both.
+func (s settings) timed(c benchCase, workers int, r *result) (map[string]any, error) {
+	line := map[string]any{"case": c.String(), "workers": workers}
+	o, err := s.runOurs(c, workers)
+	if err != nil {
+		return nil, err
+	}
+	r.ours[workers] = append(r.ours[workers], o)
+	line["ours"] = o
+	l, ok := c.loop()
+	if !ok {
+		return line, nil
+	}
+	p, err := s.runPeer(c, workers, r.check.ours.LambdaMax, l.timed)
+	if err != nil {
+		return nil, err
+	}
+	r.peer[workers] = append(r.peer[workers], p)
+	line["peer"] = p
+	return line, nil
+}
+
 // check compares entries over the draws that the loop makes. Where the loop's
-// tolerance leaves differences, it is asked again with a tight one.
+// settings leave differences, it is asked again with tight ones.
 func (s settings) check(c benchCase) (check, error) {
 	k := check{draws: s.peerDraws}
 	var err error
@@ -107,15 +122,22 @@ func (s settings) check(c benchCase) (check, error) {
 	if err != nil {
 		return k, err
 	}
+	if k.ours.Redraws > 0 {
+		return k, fmt.Errorf("%d draws were made anew: the rows written for the loop are not those fitted", k.ours.Redraws)
+	}
 	for _, of := range k.ours.Entries[:s.peerDraws] {
 		k.entries += len(of)
 	}
-	for i, tolerance := range []float64{timedTolerance, tightTolerance} {
-		p, err := s.runPeer(c, 2, k.ours.LambdaMax, tolerance, "--entries")
+	l, ok := c.loop()
+	if !ok {
+		return k, nil
+	}
+	for i, settings := range []settingsOfLoop{l.timed, l.tight} {
+		p, err := s.runPeer(c, 2, k.ours.LambdaMax, settings, "--entries")
 		if err != nil {
 			return k, err
 		}
-		k.tolerances[i] = true
+		k.tried[i] = true
 		*[]*int{&k.different, &k.tight}[i] = differences(k.ours.Entries, p.Entries)
 		if k.different == 0 {
 			break
@@ -145,17 +167,18 @@ func differences(a, b [][][2]int32) int {
 func (s settings) runOurs(c benchCase, workers int, more ...string) (ours, error) {
 	args := append([]string{
 		"-shape", c.shape.Name, "-dir", s.dir, "-draws", strconv.Itoa(s.draws), "-workers", strconv.Itoa(workers),
-		"-seed", strconv.FormatUint(s.seed, 10), "-ratio", number(s.ratio), "-floor", number(c.floor),
+		"-seed", strconv.FormatUint(s.seed, 10), "-ratio", number(c.ratio), "-floor", number(c.floor),
 	}, more...)
 	var o ours
 	return o, child(&o, s.engine(), args)
 }
 
-func (s settings) runPeer(c benchCase, workers int, lambdaMax, tolerance float64, more ...string) (peer, error) {
+func (s settings) runPeer(c benchCase, workers int, lambdaMax float64, how settingsOfLoop, more ...string) (peer, error) {
+	l, _ := c.loop()
 	args := append([]string{
-		filepath.Join("bench", "peer", "loop.py"), s.dir, c.shape.Name, "--draws", strconv.Itoa(s.peerDraws), "--workers", strconv.Itoa(workers),
-		"--ratio", number(s.ratio), "--floor", number(c.floor), "--lambda-max", number(lambdaMax), "--tolerance", number(tolerance),
-	}, more...)
+		filepath.Join("bench", "peer", "loop.py"), s.dir, c.shape.Name, "--solver", l.solver, "--draws", strconv.Itoa(s.peerDraws),
+		"--workers", strconv.Itoa(workers), "--ratio", number(c.ratio), "--floor", number(c.floor), "--lambda-max", number(lambdaMax),
+	}, append(how.args(), more...)...)
 	var p peer
 	return p, child(&p, s.python, args)
 }

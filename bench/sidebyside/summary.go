@@ -8,18 +8,32 @@ import (
 	"runtime"
 	"slices"
 	"strings"
+
+	"holdfast/solver"
 )
 
 // summarise prints the results as Markdown.
 func summarise(w io.Writer, s settings, results []result) error {
 	out := bufio.NewWriter(w)
-	first := results[0]
-	fmt.Fprintf(out, "%s, %d processors; %s, kernel %s; %s, one thread of linear algebra per process.\n", processor(), runtime.NumCPU(), runtime.Version(),
-		first.check.ours.Kernel, first.peer[1][0].Versions)
-	fmt.Fprintf(out, "Ours: %d draws a run, scikit-learn: %d; %d interleaved runs of each; ratio %g, lasso_path at tolerance %g, seed %d.\n\n", s.draws, s.peerDraws,
-		s.rounds, s.ratio, timedTolerance, s.seed)
-	printTimes(out, results)
-	printPeer(out, results)
+	var both, alone []result
+	for _, r := range results {
+		if _, ok := r.of.loop(); ok {
+			both = append(both, r)
+		} else {
+			alone = append(alone, r)
+		}
+	}
+	fmt.Fprintf(out, "%s, %d processors; %s, kernel %s.\n", processor(), runtime.NumCPU(), runtime.Version(), results[0].check.ours.Kernel)
+	fmt.Fprintf(out, "Ours: %d draws a run; %d runs of each, interleaved; seed %d.\n\n", s.draws, s.rounds, s.seed)
+	if len(both) > 0 {
+		fmt.Fprintf(out, "The loop: %d draws a run; %s, one thread of linear algebra per process.\n\n", s.peerDraws, both[0].peer[1][0].Versions)
+		printTimes(out, both)
+		printPeer(out, both)
+		printEntries(out, both)
+	}
+	if len(alone) > 0 {
+		printAlone(out, alone)
+	}
 	printChecks(out, results)
 	printRuns(out, results)
 	return out.Flush()
@@ -42,12 +56,12 @@ func processor() string {
 // printTimes compares seconds per draw. Intervals cover the median with at
 // least 95 %.
 func printTimes(w io.Writer, results []result) {
-	fmt.Fprintln(w, "| case | steps | workers | ours, ms per draw | scikit-learn, ms per draw | ratio of medians | p | CPU ms per draw: ours, its | peak MB: ours, its |")
+	fmt.Fprintln(w, "| case | steps, ratio | workers | ours, ms per draw | scikit-learn, ms per draw | ratio of medians | p | CPU ms per draw: ours, its | peak MB: ours, its |")
 	fmt.Fprintln(w, "|---|---|---|---|---|---|---|---|---|")
 	for _, r := range results {
 		for _, n := range allWorkers {
 			a, b := times(r.ours[n], ours.wall), times(r.peer[n], peer.wall)
-			fmt.Fprintf(w, "| %v | %d | %d | %s | %s | %.1f | %.1g | %s, %s | %.0f, %.0f |\n", r.of, r.check.ours.Steps, n, spread(a), spread(b),
+			fmt.Fprintf(w, "| %v | %d, %.4g | %d | %s | %s | %.1f | %.1g | %s, %s | %.0f, %.0f |\n", r.of, r.check.ours.Steps, r.of.ratio, n, spread(a), spread(b),
 				median(b)/median(a), mannWhitney(a, b), digits(median(times(r.ours[n], ours.cpu))), digits(median(times(r.peer[n], peer.cpu))),
 				slices.Max(times(r.ours[n], ours.megabytes)), slices.Max(times(r.peer[n], peer.megabytes)))
 		}
@@ -55,37 +69,76 @@ func printTimes(w io.Writer, results []result) {
 	fmt.Fprintln(w)
 }
 
+// printAlone gives the times of cases without a loop.
+func printAlone(w io.Writer, results []result) {
+	fmt.Fprintln(w, "| case | steps, ratio | workers | ours, ms per draw | CPU ms per draw | peak MB |")
+	fmt.Fprintln(w, "|---|---|---|---|---|---|")
+	for _, r := range results {
+		for _, n := range allWorkers {
+			fmt.Fprintf(w, "| %v | %d, %.4g | %d | %s | %s | %.0f |\n", r.of, r.check.ours.Steps, r.of.ratio, n, spread(times(r.ours[n], ours.wall)),
+				digits(median(times(r.ours[n], ours.cpu))), slices.Max(times(r.ours[n], ours.megabytes)))
+		}
+	}
+	fmt.Fprintln(w)
+}
+
 // printPeer splits the time of the scikit-learn loop: copying and
-// standardising the rows, and the path alone.
+// standardising the rows, and the fits alone.
 func printPeer(w io.Writer, results []result) {
-	fmt.Fprintln(w, "| case | scikit-learn: copy and standardise, ms per draw | lasso_path alone, ms per draw | lasso_path alone over ours | not converged |")
-	fmt.Fprintln(w, "|---|---|---|---|---|")
+	fmt.Fprintln(w, "| case | solver | copy and standardise, ms per draw | fits alone, ms per draw | fits alone over ours | not converged |")
+	fmt.Fprintln(w, "|---|---|---|---|---|---|")
 	for _, r := range results {
 		prepare, path := times(r.peer[1], peer.prepare), times(r.peer[1], peer.path)
 		failed := 0
 		for _, p := range r.peer[1] {
 			failed += p.NotConverged
 		}
-		fmt.Fprintf(w, "| %v | %s | %s | %.1f | %d |\n", r.of, spread(prepare), spread(path), median(path)/median(times(r.ours[1], ours.wall)), failed)
+		l, _ := r.of.loop()
+		fmt.Fprintf(w, "| %v | %s, %v | %s | %s | %.1f | %d |\n", r.of, l.solver, l.timed, spread(prepare), spread(path),
+			median(path)/median(times(r.ours[1], ours.wall)), failed)
 	}
 	fmt.Fprintln(w)
 }
 
-// printChecks says what the timed fits were worth.
+// printEntries says how far both sides select the same.
+func printEntries(w io.Writer, results []result) {
+	fmt.Fprintln(w, "| case | entries compared | on one side only |")
+	fmt.Fprintln(w, "|---|---|---|")
+	for _, r := range results {
+		different := fmt.Sprint(r.check.different)
+		if l, _ := r.of.loop(); r.check.tried[1] {
+			different += fmt.Sprintf(" (%d with %v)", r.check.tight, l.tight)
+		}
+		fmt.Fprintf(w, "| %v | %d in %d draws | %s |\n", r.of, r.check.entries, r.check.draws, different)
+	}
+	fmt.Fprintln(w)
+}
+
+// printChecks says what the timed fits were worth. A duality gap is made for
+// numbers only.
 func printChecks(w io.Writer, results []result) {
-	fmt.Fprintln(w, "| case | entries compared | on one side only | largest violation | largest gap | not certified | borderline | making the model, s | kernels' share of CPU |")
+	fmt.Fprintln(w, "| case | largest violation | largest gap | fits not certified | draws with one | entries per draw | borderline | making the model, s | kernels' share of CPU |")
 	fmt.Fprintln(w, "|---|---|---|---|---|---|---|---|---|")
 	for _, r := range results {
 		o := r.check.ours
-		different := fmt.Sprint(r.check.different)
-		if r.check.tolerances[1] {
-			different += fmt.Sprintf(" (%d at tolerance %g)", r.check.tight, tightTolerance)
+		gap := "none"
+		if r.of.shape.Family == solver.Gaussian {
+			gap = fmt.Sprintf("%.1g", o.Gap)
 		}
 		model := times(r.ours[1], func(run ours) float64 { return run.ModelTime })
-		fmt.Fprintf(w, "| %v | %d in %d draws | %s | %.1g | %.1g | %d | %d | %.2f | %.0f %% |\n", r.of, r.check.entries, r.check.draws, different, o.Violation,
-			o.Gap, o.Failed, o.Borderline, median(model), 100*r.share)
+		fmt.Fprintf(w, "| %v | %.1g | %s | %d of %d | %d of %d | %.1f | %d | %.2f | %.0f %% |\n", r.of, o.Violation, gap, o.Unreached, o.Unreached+o.Fits,
+			o.Failed, len(o.Entries), o.entered(), o.Borderline, median(model), 100*r.share)
 	}
 	fmt.Fprintln(w)
+}
+
+// entered is the mean number of predictors that entered in a draw.
+func (r ours) entered() float64 {
+	n := 0
+	for _, of := range r.Entries {
+		n += len(of)
+	}
+	return float64(n) / float64(len(r.Entries))
 }
 
 // printRuns lists every timed run.
@@ -94,7 +147,11 @@ func printRuns(w io.Writer, results []result) {
 	fmt.Fprintln(w)
 	for _, r := range results {
 		for _, n := range allWorkers {
-			fmt.Fprintf(w, "- %v, workers %d: ours %s; scikit-learn %s\n", r.of, n, list(times(r.ours[n], ours.wall)), list(times(r.peer[n], peer.wall)))
+			fmt.Fprintf(w, "- %v, workers %d: ours %s", r.of, n, list(times(r.ours[n], ours.wall)))
+			if len(r.peer[n]) > 0 {
+				fmt.Fprintf(w, "; scikit-learn %s", list(times(r.peer[n], peer.wall)))
+			}
+			fmt.Fprintln(w)
 		}
 	}
 }
