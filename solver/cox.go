@@ -327,9 +327,23 @@ func (f *cox) hazard(i int) float64 {
 	return h
 }
 
-func (f *cox) score(eta, u []float64) float64 {
+func (f *cox) score(eta, u []float64) {
 	f.expose(eta)
 	f.hazards()
+	for i := range u {
+		event := 0.0
+		if f.dead[i] {
+			event = f.weight[i]
+		}
+		u[i] = event - float64(f.risk[i]*f.hazard(i))
+		if f.d.root != nil {
+			u[i] /= f.d.root[i]
+		}
+	}
+}
+
+func (f *cox) loss(eta []float64) float64 {
+	f.expose(eta)
 	loss := 0.0
 	for k, t := range f.ties {
 		part := 0.0
@@ -340,16 +354,6 @@ func (f *cox) score(eta, u []float64) float64 {
 			part -= float64(f.weight[i] * (eta[i] - f.shift[k]))
 		}
 		loss += part
-	}
-	for i := range u {
-		event := 0.0
-		if f.dead[i] {
-			event = f.weight[i]
-		}
-		u[i] = event - float64(f.risk[i]*f.hazard(i))
-		if f.d.root != nil {
-			u[i] /= f.d.root[i]
-		}
 	}
 	return loss / f.d.total
 }
@@ -411,5 +415,5 @@ func (c *coxCurvature) carry(z []float64, _ int) (a, b []float64) {
 }
 
 func (f *cox) deviance(eta []float64) float64 {
-	return 2 * f.d.total * f.score(eta, make([]float64, len(eta)))
+	return 2 * f.d.total * f.loss(eta)
 }

@@ -19,7 +19,7 @@ const (
 	solvedGroups = 1e-4
 	// slow is how much of the violation a step may leave before the Hessian is
 	// made anew.
-	slow = 0.3
+	slow = 0.4
 	// sufficient is the share of the decrease that the model promises which a step
 	// must bring (Nocedal & Wright 2006, eq. 3.4).
 	sufficient = 1e-4
@@ -38,13 +38,15 @@ type curved struct {
 	lanes int
 	fixed []choice // the always-in places that are not redundant, the intercept first
 
-	beta   []float64
-	offset []float64 // per row of the draw; nil: none
-	eta    []float64
-	u      []float64
-	g      []float64 // gradients at beta
-	value  float64   // objective at beta
-	lambda float64   // of value
+	beta     []float64
+	offset   []float64 // per row of the draw; nil: none
+	eta      []float64
+	u        []float64
+	g        []float64 // gradients at beta
+	value    float64   // objective at beta
+	loss0    float64   // loss at beta
+	standing bool      // eta, u and loss0 are those of beta
+	lambda   float64   // of value
 
 	bend    *hessian // of the steps: that of the record before, or a later one
 	which   []int    // coefficients of the step's model: all that may move
@@ -165,7 +167,7 @@ func (c *curved) load(r *record) {
 			c.beta[(b.place+t)*c.lanes+b.lane] = r.beta[b.at+t]
 		}
 	}
-	c.lambda = 0
+	c.lambda, c.standing = 0, false
 }
 
 // predict overwrites eta with the linear predictors of coefficients by place and
@@ -203,7 +205,9 @@ func (c *curved) at(beta []float64, lambda float64) float64 {
 	n := len(c.f.d.rows) * c.lanes
 	c.eta, c.u = resize(c.eta, n), resize(c.u, n)
 	c.predict(beta, c.eta)
-	return c.fam.score(c.eta, c.u) + c.penalise(beta, lambda)
+	c.fam.score(c.eta, c.u)
+	c.loss0, c.standing = c.fam.loss(c.eta), true
+	return c.loss0 + c.penalise(beta, lambda)
 }
 
 // penalise is the penalty of coefficients.
@@ -284,7 +288,11 @@ func (c *curved) violation(unit int32, first, width int, lambda float64) float64
 // is that of the record before while it serves.
 func (c *curved) solve(lambda float64) error {
 	c.grow()
-	c.value = c.at(c.beta, lambda)
+	if c.standing {
+		c.value = c.loss0 + c.penalise(c.beta, lambda)
+	} else {
+		c.value = c.at(c.beta, lambda)
+	}
 	worst := c.gradients(lambda)
 	if c.lambda != lambda {
 		c.lambda, c.bend = lambda, c.f.rec.bend

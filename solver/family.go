@@ -16,9 +16,10 @@ type family interface {
 	take(d *drawn)
 	// fittable says why no finite fit exists, whatever the columns; nil if one may.
 	fittable() error
-	// score overwrites u with the score at eta and returns the mean loss, which
-	// may be infinite where eta is far off.
-	score(eta, u []float64) float64
+	// score overwrites u with the score at eta.
+	score(eta, u []float64)
+	// loss returns the mean loss at eta, which may be infinite where eta is far off.
+	loss(eta []float64) float64
 	// bend returns the curvature at eta.
 	bend(eta []float64) curvature
 	// deviance is the mean unit deviance at eta (STATISTICS 11), for Cox -2 log
@@ -30,24 +31,24 @@ type family interface {
 func newFamily(p *Problem) family {
 	switch p.Family {
 	case Binomial:
-		return &pointwise{p: p, at: binomialAt, unit: binomialDeviance, check: bothClasses}
+		return &pointwise{p: p, at: binomialLoss, mean: binomialMean, unit: binomialDeviance, check: bothClasses}
 	case Poisson:
-		return &pointwise{p: p, at: poissonAt, unit: poissonDeviance, check: someCount}
+		return &pointwise{p: p, at: poissonLoss, mean: poissonMean, unit: poissonDeviance, check: someCount}
 	case Multinomial:
 		return &multinomial{p: p}
 	case Cox:
 		return &cox{p: p}
 	}
-	return &pointwise{p: p, at: gaussianAt, unit: gaussianDeviance, check: anyOutcome}
+	return &pointwise{p: p, at: gaussianLoss, mean: gaussianMean, unit: gaussianDeviance, check: anyOutcome}
 }
 
 // pointwise is a family whose loss is a sum over rows with one linear predictor
 // each.
 type pointwise struct {
-	p *Problem
-	// at returns loss, mean and variance function at eta.
-	at    func(y, eta float64) (loss, mu, v float64)
-	unit  func(y, eta float64) float64
+	p     *Problem
+	at    func(y, eta float64) float64      // loss
+	mean  func(eta float64) (mu, v float64) // mean and variance function
+	unit  func(y, eta float64) float64      // deviance
 	check func(y, w []float64) error
 
 	d *drawn
@@ -62,14 +63,20 @@ func (f *pointwise) take(d *drawn) {
 
 func (f *pointwise) fittable() error { return f.check(f.y, f.d.weight) }
 
-func (f *pointwise) score(eta, u []float64) float64 {
-	losses := make([]float64, len(eta))
+func (f *pointwise) score(eta, u []float64) {
 	for k, e := range eta {
-		loss, mu, _ := f.at(f.y[k], e)
-		losses[k], u[k] = loss, f.y[k]-mu
+		mu, _ := f.mean(e)
+		u[k] = f.y[k] - mu
 	}
 	for k, r := range f.d.root {
 		u[k] *= r
+	}
+}
+
+func (f *pointwise) loss(eta []float64) float64 {
+	losses := make([]float64, len(eta))
+	for k, e := range eta {
+		losses[k] = f.at(f.y[k], e)
 	}
 	return f.d.weighted(losses) / f.d.total
 }
@@ -77,7 +84,7 @@ func (f *pointwise) score(eta, u []float64) float64 {
 func (f *pointwise) bend(eta []float64) curvature {
 	root := make([]float64, len(eta))
 	for k, e := range eta {
-		_, _, v := f.at(f.y[k], e)
+		_, v := f.mean(e)
 		root[k] = math.Sqrt(v)
 	}
 	return pointwiseCurvature(root)
@@ -102,10 +109,9 @@ func (f *pointwise) deviance(eta []float64) float64 {
 	return f.d.weighted(unit) / f.d.total
 }
 
-func gaussianAt(y, eta float64) (loss, mu, v float64) {
-	r := y - eta
-	return r * r / 2, eta, 1
-}
+func gaussianLoss(y, eta float64) float64 { return gaussianDeviance(y, eta) / 2 }
+
+func gaussianMean(eta float64) (mu, v float64) { return eta, 1 }
 
 func gaussianDeviance(y, eta float64) float64 {
 	r := y - eta
@@ -114,28 +120,31 @@ func gaussianDeviance(y, eta float64) float64 {
 
 func anyOutcome([]float64, []float64) error { return nil }
 
-// binomialAt has e^-|eta| only, so that nothing overflows.
-func binomialAt(y, eta float64) (loss, mu, v float64) {
+// binomialMean has e^-|eta| only, so that nothing overflows.
+func binomialMean(eta float64) (mu, v float64) {
 	t := kernel.Exp(-math.Abs(eta))
 	below, above := t/(1+t), 1/(1+t)
-	mu = above
 	if eta < 0 {
-		mu = below
+		return below, float64(below * above)
 	}
-	loss = kernel.Log1p(t)
+	return above, float64(below * above)
+}
+
+func binomialLoss(y, eta float64) float64 {
+	loss := kernel.Log1p(kernel.Exp(-math.Abs(eta)))
 	if y > 0.5 && eta < 0 || y < 0.5 && eta > 0 {
 		loss += math.Abs(eta)
 	}
-	return loss, mu, float64(below * above)
+	return loss
 }
 
 // clip is how near to 0 or 1 a probability may be in a deviance (STATISTICS 11).
 const clip = 1e-15
 
 func binomialDeviance(y, eta float64) float64 {
-	_, mu, _ := binomialAt(y, eta)
+	mu, _ := binomialMean(eta)
 	if y < 0.5 {
-		_, mu, _ = binomialAt(y, -eta)
+		mu, _ = binomialMean(-eta)
 	}
 	return -2 * kernel.Log(min(max(mu, clip), 1-clip))
 }
@@ -149,9 +158,11 @@ func bothClasses(y, _ []float64) error {
 	return fmt.Errorf("the outcome is the same in all %d rows", len(y))
 }
 
-func poissonAt(y, eta float64) (loss, mu, v float64) {
+func poissonLoss(y, eta float64) float64 { return kernel.Exp(eta) - float64(y*eta) }
+
+func poissonMean(eta float64) (mu, v float64) {
 	mu = kernel.Exp(eta)
-	return mu - float64(y*eta), mu, mu
+	return mu, mu
 }
 
 func poissonDeviance(y, eta float64) float64 {

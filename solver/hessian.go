@@ -43,6 +43,7 @@ func (h *hessian) place(i int) int {
 	return k
 }
 
+// entry is a'a where the lanes are the same, less b'b.
 func (h *hessian) entry(k, j int) float64 {
 	v := 0.0
 	if h.list[k]%h.lanes == h.list[j]%h.lanes {
@@ -63,10 +64,13 @@ func (h *hessian) between(i, j int) float64 {
 // extend brings out, the Hessian among the first coefficients of a list, up to all
 // of it.
 func (h *hessian) extend(list []int, out *symmetric) {
-	row := make([]float64, len(list))
+	row, at := make([]float64, len(list)), make([]int, len(list))
+	for k, i := range list {
+		at[k] = h.place(i)
+	}
 	for k := len(out.row); k < len(list); k++ {
 		for j := range k + 1 {
-			row[j] = h.between(list[k], list[j])
+			row[j] = h.row[max(at[k], at[j])][min(at[k], at[j])]
 		}
 		out.append(row[:k+1])
 	}

@@ -52,11 +52,10 @@ func (f *multinomial) probabilities(eta []float64, k int, q []float64) float64 {
 	return most + kernel.Log(sum)
 }
 
-func (f *multinomial) score(eta, u []float64) float64 {
-	n := len(f.y)
-	losses, q := make([]float64, n), make([]float64, f.p.Classes)
+func (f *multinomial) score(eta, u []float64) {
+	n, q := len(f.y), make([]float64, f.p.Classes)
 	for k, y := range f.y {
-		losses[k] = f.probabilities(eta, k, q) - eta[y*n+k]
+		f.probabilities(eta, k, q)
 		root := 1.0
 		if f.d.root != nil {
 			root = f.d.root[k]
@@ -67,6 +66,14 @@ func (f *multinomial) score(eta, u []float64) float64 {
 			}
 			u[c*n+k] = -root * v
 		}
+	}
+}
+
+func (f *multinomial) loss(eta []float64) float64 {
+	n := len(f.y)
+	losses, q := make([]float64, n), make([]float64, f.p.Classes)
+	for k, y := range f.y {
+		losses[k] = f.probabilities(eta, k, q) - eta[y*n+k]
 	}
 	return f.d.weighted(losses) / f.d.total
 }

@@ -64,7 +64,6 @@ type newton struct {
 	eta     []float64
 	residue []float64
 	worst   float64
-	value   float64 // smooth objective: signs stand
 	h       symmetric
 	endless int  // steps in a row that moved far and gained little
 	anySign bool // single columns may have the other sign: a basis of candidates that share
@@ -113,19 +112,34 @@ func (n *newton) start(prev *record) {
 	}
 }
 
-// evaluate fills what belongs to the present coefficients.
+// evaluate fills what belongs to the present coefficients, but for the loss.
 func (n *newton) evaluate() {
 	n.predict()
-	n.r.loss = n.c.fam.score(n.eta, n.r.u)
+	n.c.fam.score(n.eta, n.r.u)
 	n.gradients()
-	n.value, n.worst = n.r.loss, 0
+	n.worst = 0
 	for _, b := range n.r.blocks {
-		n.value += n.penalty(b)
-		n.worst = max(n.worst, n.missing(b))
+		v := n.missing(b)
+		if !(v <= n.worst) {
+			n.worst = v
+		}
 	}
-	if math.IsNaN(n.value) || math.IsInf(n.value, 0) {
+	if math.IsNaN(n.worst) {
 		n.worst = math.Inf(1)
 	}
+}
+
+// smooth is the objective as the signs have it, at coefficients and their linear
+// predictors.
+func (n *newton) smooth(beta, eta []float64) float64 {
+	value := n.c.fam.loss(eta)
+	for _, b := range n.r.blocks {
+		value += n.penalty(b, beta)
+	}
+	if math.IsNaN(value) {
+		return math.Inf(1)
+	}
+	return value
 }
 
 // predict fills eta: blocks in their order, a lane at a time.
@@ -161,8 +175,8 @@ func (n *newton) gradients() {
 }
 
 // penalty of a block, of a single column as its sign has it.
-func (n *newton) penalty(b block) float64 {
-	p, v := n.c.f.penalty, n.r.beta[b.at:b.at+b.width]
+func (n *newton) penalty(b block, beta []float64) float64 {
+	p, v := n.c.f.penalty, beta[b.at:b.at+b.width]
 	t, ridge := p.threshold(b.unit, n.r.lambda), p.ridge(b.unit, n.r.lambda)
 	if b.width == 1 {
 		return float64(t*b.sign*v[0]) + float64(ridge*v[0]*v[0]/2)
@@ -267,7 +281,7 @@ func (n *newton) descendNewton(groups bool) (done bool, err error) {
 		before := n.worst
 		whole, moved := n.step()
 		if !moved && fresh {
-			return !groups || n.worst <= near, nil
+			return !groups || n.worst <= certified, nil
 		}
 		if groups && !whole && moved && n.worst > near {
 			return false, nil
@@ -280,7 +294,7 @@ func (n *newton) descendNewton(groups bool) (done bool, err error) {
 		if err := n.escaping(); err != nil {
 			return true, err
 		}
-		if k > 20 && !n.anySign && n.wrong() {
+		if k > 20 && n.r.lambda > 0 && !n.anySign && n.wrong() {
 			return true, nil
 		}
 	}
@@ -371,15 +385,22 @@ func (n *newton) step() (whole, moved bool) {
 	slope := -kernel.Dot(step, n.residue)
 	from, u, grad, residue := slices.Clone(n.r.beta), n.r.u, slices.Clone(n.r.grad), slices.Clone(n.residue)
 	eta := slices.Clone(n.eta)
-	worst, value, loss := n.worst, n.value, n.r.loss
+	worst, value := n.worst, math.NaN()
 	n.r.u = n.c.f.residual()
-	noise := float64(1e-15 * math.Abs(value))
 	for k, t := 0, 1.0; k < halvings; k, t = k+1, t/2 {
 		for i := range n.r.beta {
 			n.r.beta[i] = from[i] + float64(t*step[i])
 		}
 		n.evaluate()
-		if n.worst < better*worst || n.value < value+float64(sufficient*t*slope)-noise {
+		good := n.worst < better*worst
+		if !good {
+			if k == 0 {
+				value = n.smooth(from, eta)
+				value -= float64(1e-15 * math.Abs(value)) // beyond its rounding
+			}
+			good = n.smooth(n.r.beta, n.eta) < value+float64(sufficient*t*slope)
+		}
+		if good {
 			n.c.f.dropResidual(u)
 			n.follow(eta, worst)
 			return k == 0, true
@@ -389,7 +410,7 @@ func (n *newton) step() (whole, moved bool) {
 	copy(n.r.beta, from)
 	copy(n.r.grad, grad)
 	copy(n.residue, residue)
-	n.r.u, n.eta, n.worst, n.value, n.r.loss = u, eta, worst, value, loss
+	n.r.u, n.eta, n.worst = u, eta, worst
 	return false, false
 }
 
@@ -512,7 +533,7 @@ func (n *newton) descend() bool {
 
 // objective is the objective itself, whatever the signs.
 func (n *newton) objective() float64 {
-	sum := n.r.loss
+	sum := n.c.fam.loss(n.eta)
 	for _, b := range n.r.blocks {
 		size := length(n.r.beta[b.at : b.at+b.width])
 		t, ridge := n.c.f.penalty.threshold(b.unit, n.r.lambda), n.c.f.penalty.ridge(b.unit, n.r.lambda)
@@ -571,13 +592,14 @@ func middle(values []float64, free, lasso bool) (float64, bool) {
 // certify notes the certificate and what the record selects.
 func (n *newton) certify() {
 	f, r := n.c.f, n.r
+	r.loss = n.c.fam.loss(n.eta)
 	r.cert = certificate{violation: n.worst, objective: r.loss}
 	r.spread = f.spread(r.u)
 	for _, b := range r.blocks {
 		if f.penalty.always(b.unit) {
 			continue
 		}
-		r.cert.objective += n.penalty(b)
+		r.cert.objective += n.penalty(b, r.beta)
 		r.support = append(r.support, b.choice)
 		if len(r.units) == 0 || r.units[len(r.units)-1] != b.unit {
 			r.units = append(r.units, b.unit)
