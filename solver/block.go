@@ -143,7 +143,7 @@ func (f *fitting) record(p *Path, progress func(int)) {
 func (f *fitting) note(p *Path, r *record, shared bool) {
 	step := int32(f.cur)
 	negative := make(map[int32]bool)
-	for _, c := range f.core.values(r) {
+	for _, c := range f.values(r) {
 		c.Step = step
 		p.Coefs = append(p.Coefs, c)
 		negative[c.Candidate] = c.Value < 0 && f.signed(c.Candidate)
@@ -194,11 +194,38 @@ func (f *fitting) rest(r *record) (intercepts, always []float64) {
 			intercepts[lane] -= mean
 		}
 	}
-	return intercepts, always
+	return f.twofold(intercepts), f.twofold(always)
 }
 
 // signed reports whether a candidate's coefficient is one number.
-func (f *fitting) signed(unit int32) bool { return f.lanes() == 1 && f.m.single(unit) }
+func (f *fitting) signed(unit int32) bool { return f.m.Classes() == 1 && f.m.single(unit) }
+
+// values lists the coefficients of a record's candidates by class.
+func (f *fitting) values(r *record) []Coef {
+	list := f.core.values(r)
+	if !f.m.two {
+		return list
+	}
+	both := make([]Coef, 0, 2*len(list))
+	for _, c := range list {
+		no, yes := c, c
+		no.Value, yes.Value, yes.Class = -c.Value/2, c.Value/2, 1
+		both = append(both, no, yes)
+	}
+	return both
+}
+
+// twofold gives each of two classes its half.
+func (f *fitting) twofold(list []float64) []float64 {
+	if !f.m.two {
+		return list
+	}
+	both := make([]float64, 0, 2*len(list))
+	for _, v := range list {
+		both = append(both, -v/2, v/2)
+	}
+	return both
+}
 
 // seeds are the lambdas at which candidates enter on all rows: proposals for
 // draws on long tables, where most draws agree with them. Nothing recorded

@@ -35,7 +35,7 @@ type cox struct {
 	shift  []float64 // per tie: that of its stratum
 	sum    []float64 // per tie: of the risk set
 	died   []float64 // per tie: of the deaths
-	full   []float64 // per tie: hazard added from it up to the earliest of the stratum, that of those who outlive it
+	full   []carried // per tie: hazard added from it down to the earliest of the stratum, that of those who outlive it
 	less   []float64 // per tie: how much less of it those who die there bear
 }
 
@@ -291,27 +291,28 @@ func (c *carried) total() float64 { return c.sum + c.lost }
 // left is what of a risk sum a term counts.
 func (f *cox) left(t term) float64 { return f.sum[t.tie] - float64(t.gone*f.died[t.tie]) }
 
-// hazards fills the hazard that each tie adds.
+// hazards fills the hazard that each tie adds, summed from the earliest.
 func (f *cox) hazards() {
-	f.full, f.less = resize(f.full, len(f.ties)+1), resize(f.less, len(f.ties))
-	for k, t := range f.ties {
+	f.full, f.less = slices.Grow(f.full[:0], len(f.ties))[:len(f.ties)], resize(f.less, len(f.ties))
+	var run carried
+	for k := len(f.ties) - 1; k >= 0; k-- {
+		t := f.ties[k]
 		full, less := 0.0, 0.0
 		for _, q := range f.terms[t.from:t.to] {
 			h := q.weight / f.left(q)
 			full += h
 			less += float64(q.gone * h)
 		}
-		f.full[k], f.less[k] = full, less
-	}
-	f.full[len(f.ties)] = 0
-	for k := len(f.ties) - 1; k > 0; k-- {
-		if !f.ties[k].first {
-			f.full[k-1] += f.full[k]
+		run.add(full)
+		f.full[k], f.less[k] = run, less
+		if t.first {
+			run = carried{}
 		}
 	}
 }
 
-// hazard is what row i bore.
+// hazard is what row i bore. A row that enters late bears little of a sum that may be
+// large, so the difference is taken of the sums with what rounding took from them.
 func (f *cox) hazard(i int) float64 {
 	lo, hi := f.lo[i], f.hi[i]
 	if lo >= hi {
@@ -319,12 +320,12 @@ func (f *cox) hazard(i int) float64 {
 	}
 	h := f.full[lo]
 	if int(hi) < len(f.ties) && !f.ties[hi].first {
-		h -= f.full[hi]
+		h.sum, h.lost = h.sum-f.full[hi].sum, h.lost-f.full[hi].lost
 	}
 	if f.dead[i] {
-		h -= f.less[lo]
+		h.lost -= f.less[lo]
 	}
-	return h
+	return h.total()
 }
 
 func (f *cox) score(eta, u []float64) {

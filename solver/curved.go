@@ -19,7 +19,7 @@ const (
 	solvedGroups = 1e-4
 	// slow is how much of the violation a step may leave before the Hessian is
 	// made anew.
-	slow = 0.4
+	slow = 0.3
 	// sufficient is the share of the decrease that the model promises which a step
 	// must bring (Nocedal & Wright 2006, eq. 3.4).
 	sufficient = 1e-4
@@ -63,7 +63,7 @@ type curved struct {
 }
 
 func newCurved(f *fitting) *curved {
-	return &curved{f: f, fam: newFamily(&f.m.p), chosen: make(map[int]bool), lanes: f.m.Classes()}
+	return &curved{f: f, fam: newFamily(&f.m.p), chosen: make(map[int]bool), lanes: f.m.lanes()}
 }
 
 // begin fits the intercept alone, then with the always-in columns.

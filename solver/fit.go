@@ -123,7 +123,7 @@ func (f *fitting) fitOf(r *record) Fit {
 	fit.Selected, fit.Loss, fit.Objective = len(r.units), f.core.loss(r), r.cert.objective
 	fit.Violation, fit.Gap, fit.Certified = r.cert.violation, r.cert.gap, true
 	classes := f.m.Classes()
-	for _, c := range f.core.values(r) {
+	for _, c := range f.values(r) {
 		fit.Coef[(f.m.firstTerm(c.Candidate)+int(c.Term))*classes+int(c.Class)] = c.Value
 	}
 	fit.Intercept, fit.Always = f.rest(r)

@@ -246,7 +246,7 @@ func (f *fitting) top() float64 {
 }
 
 // lanes is the number of score vectors of a fit.
-func (f *fitting) lanes() int { return f.m.Classes() }
+func (f *fitting) lanes() int { return f.m.lanes() }
 
 // gradient is the record gradient of a unit of the working set, by its first
 // place, for one lane; of a group its length.

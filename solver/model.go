@@ -36,6 +36,7 @@ type Model struct {
 	first   []int     // per candidate: position of its first column in Terms; nil: all are single
 	table   []float64 // per unit: variance over all rows, for the constant test
 	exact   bool      // which core serves
+	two     bool      // two classes, fitted as yes-no (see settle)
 	shift   float64   // taken from a numeric outcome
 	scale   []float64 // per unit: fixed scale of the penalty; nil with ScaleDraw
 	lattice lattice
@@ -121,7 +122,7 @@ func (p *Problem) penalty() *penalty {
 			w[c] = p.Relative[c]
 		}
 	}
-	return &penalty{mix: p.Mix, weight: w, uneven: p.Relative != nil || p.Groups != nil}
+	return &penalty{mix: p.Mix, soft: 1, weight: w, uneven: p.Relative != nil || p.Groups != nil}
 }
 
 // firstTerms finds where each candidate's columns begin in Terms.
@@ -271,6 +272,14 @@ func (m *Model) findTop() (float64, error) {
 // Classes is the number of coefficients that each column has: the classes of
 // Multinomial, else 1.
 func (m *Model) Classes() int {
+	if m.p.Family == Multinomial || m.two {
+		return m.p.Classes
+	}
+	return 1
+}
+
+// lanes is the number of score vectors of a fit.
+func (m *Model) lanes() int {
 	if m.p.Family == Multinomial {
 		return m.p.Classes
 	}

@@ -65,8 +65,7 @@ type newton struct {
 	residue []float64
 	worst   float64
 	h       symmetric
-	endless int  // steps in a row that moved far and gained little
-	anySign bool // single columns may have the other sign: a basis of candidates that share
+	endless int // steps in a row that moved far and gained little
 }
 
 // lineUp lists the blocks in an order that is free of history.
@@ -247,7 +246,43 @@ func (n *newton) converge() error {
 			break
 		}
 	}
+	if err := n.finite(); err != nil {
+		return err
+	}
 	return n.balance()
+}
+
+// penalised reports whether candidates are in that pay: then the fit without them was
+// finite, and so is this one.
+func (n *newton) penalised() bool {
+	return n.r.lambda > 0 && len(n.r.blocks) > len(n.c.fixed)*n.c.lanes
+}
+
+// finite makes sure that unpenalised coefficients have come to rest: one more Newton
+// step must move no linear predictor. Towards a separation each moves some by 1.
+func (n *newton) finite() error {
+	if len(n.r.gone) > 0 || n.penalised() {
+		return nil
+	}
+	if err := n.factorise(true); err != nil {
+		return err
+	}
+	step, beta, eta := slices.Clone(n.residue), n.r.beta, slices.Clone(n.eta)
+	n.r.chol.solve(step)
+	n.r.beta = slices.Clone(beta)
+	for i, v := range step {
+		n.r.beta[i] += v
+	}
+	n.predict()
+	far := 0.0
+	for k, e := range n.eta {
+		far = max(far, math.Abs(e-eta[k]))
+	}
+	n.r.beta, n.eta = beta, eta
+	if far > endless {
+		n.endless = endlessSteps
+	}
+	return n.escaping()
 }
 
 const (
@@ -279,7 +314,7 @@ func (n *newton) descendNewton(groups bool) (done bool, err error) {
 			return true, nil
 		}
 		before := n.worst
-		whole, moved := n.step()
+		whole, moved := n.step(fresh)
 		if !moved && fresh {
 			return !groups || n.worst <= certified, nil
 		}
@@ -294,7 +329,7 @@ func (n *newton) descendNewton(groups bool) (done bool, err error) {
 		if err := n.escaping(); err != nil {
 			return true, err
 		}
-		if k > 20 && n.r.lambda > 0 && !n.anySign && n.wrong() {
+		if k > 20 && n.r.lambda > 0 && n.wrong() {
 			return true, nil
 		}
 	}
@@ -339,7 +374,7 @@ func (n *newton) factorise(anew bool) error {
 // depends takes a candidate whose columns depend on those before it out of the
 // support: it will stand on the border, where shares are settled.
 func (n *newton) depends(q block) error {
-	if n.c.f.penalty.always(q.unit) || n.r.lambda == 0 || n.anySign {
+	if n.c.f.penalty.always(q.unit) || n.r.lambda == 0 {
 		return fmt.Errorf("the support became linearly dependent at %s", n.c.f.m.name(q.unit))
 	}
 	n.r.gone = append(n.r.gone, q.choice)
@@ -379,7 +414,7 @@ func (n *newton) addPenalty(b block, t int, row []float64) {
 
 // step makes a Newton step with the factor there is, halved until it improves
 // the fit. whole says that it was not halved.
-func (n *newton) step() (whole, moved bool) {
+func (n *newton) step(fresh bool) (whole, moved bool) {
 	step := slices.Clone(n.residue)
 	n.r.chol.solve(step)
 	slope := -kernel.Dot(step, n.residue)
@@ -402,7 +437,9 @@ func (n *newton) step() (whole, moved bool) {
 		}
 		if good {
 			n.c.f.dropResidual(u)
-			n.follow(eta, worst)
+			if fresh {
+				n.follow(eta, worst)
+			}
 			return k == 0, true
 		}
 	}
@@ -414,7 +451,7 @@ func (n *newton) step() (whole, moved bool) {
 	return false, false
 }
 
-// follow counts the steps in a row that moved linear predictors far and gained
+// follow counts the steps with a new Hessian, in a row, that moved linear predictors far and gained
 // little: towards a separation they never end (Albert & Anderson 1984, Biometrika
 // 71:1-10).
 func (n *newton) follow(eta []float64, worst float64) {
@@ -431,7 +468,7 @@ func (n *newton) follow(eta []float64, worst float64) {
 
 // escaping returns an error where a coefficient without penalty grows without end.
 func (n *newton) escaping() error {
-	if n.endless < endlessSteps {
+	if n.endless < endlessSteps || n.penalised() {
 		return nil
 	}
 	step := slices.Clone(n.residue)
@@ -701,6 +738,9 @@ func (c *curved) values(r *record) []Coef {
 		g := f.groups[b.unit]
 		g.coefficients(v)
 		for i, t := range g.kept {
+			if v[i] == 0 {
+				continue
+			}
 			list = append(list, Coef{Candidate: b.unit, Term: int32(t), Class: int32(b.lane), Value: v[i]})
 		}
 	}

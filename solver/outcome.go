@@ -82,6 +82,9 @@ func (p *Problem) checkGroups() error {
 		return fmt.Errorf("solver: %d groups for %d candidates", len(p.Groups), len(p.Candidates))
 	}
 	in := make(map[int32]bool)
+	for _, j := range p.Always {
+		in[j] = true
+	}
 	for c, g := range p.Groups {
 		if g == nil {
 			g = p.Candidates[c : c+1]
@@ -91,7 +94,7 @@ func (p *Problem) checkGroups() error {
 		}
 		for _, j := range g {
 			if in[j] {
-				return fmt.Errorf("solver: column %s is in two groups", p.Names[j])
+				return fmt.Errorf("solver: column %s is in two groups, or in one and in every model", p.Names[j])
 			}
 			in[j] = true
 		}
@@ -99,9 +102,14 @@ func (p *Problem) checkGroups() error {
 	return nil
 }
 
-// settle puts a numeric outcome into the form that is fitted: less the offset and
-// its mean, which the intercept gets back.
+// settle puts an outcome into the form that is fitted. A numeric one loses the offset
+// and its mean, which the intercept gets back. Two classes are yes-no: their
+// coefficients are -b/2 and b/2, so that the absolute values add up to |b| and half
+// the squares to b^2/4, half of what a yes-no outcome pays.
 func (m *Model) settle() {
+	if m.p.Family == Multinomial && m.p.Classes == 2 {
+		m.two, m.p.Family, m.penalty.soft = true, Binomial, 0.5
+	}
 	if m.p.Family != Gaussian {
 		return
 	}

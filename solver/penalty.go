@@ -18,6 +18,7 @@ func isOut(gauge float64) bool { return gauge-1 <= border }
 // lambda * weight * (mix*|b| + (1-mix)/2*b^2). Weight 0 is an always-in column.
 type penalty struct {
 	mix    float64
+	soft   float64   // what the quadratic part is multiplied by: 1, or 1/2 for two classes
 	weight []float64 // per unit: candidates, then always-in columns and the intercept
 	uneven bool      // not all candidates weigh 1
 }
@@ -28,7 +29,7 @@ func (p *penalty) of(s *Sample) *penalty {
 	if s.Jitter == nil {
 		return p
 	}
-	q := &penalty{mix: p.mix, weight: slices.Clone(p.weight), uneven: true}
+	q := &penalty{mix: p.mix, soft: p.soft, weight: slices.Clone(p.weight), uneven: true}
 	for c, w := range s.Jitter {
 		q.weight[c] /= w
 	}
@@ -42,7 +43,7 @@ func (p *penalty) threshold(unit int32, lambda float64) float64 {
 
 // ridge is what the quadratic part adds to the Hessian's diagonal.
 func (p *penalty) ridge(unit int32, lambda float64) float64 {
-	return float64(lambda * (1 - p.mix) * p.weight[unit])
+	return float64(lambda * (1 - p.mix) * p.weight[unit] * p.soft)
 }
 
 func (p *penalty) always(unit int32) bool { return p.weight[unit] == 0 }

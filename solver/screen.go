@@ -207,7 +207,7 @@ func (s *productScreen) compute(ctx context.Context, reqs []*request) error {
 // column brings one candidate's gradient up to date in the requests that need
 // it.
 func (s *productScreen) column(reqs []*request, c int) {
-	if s.m.Classes() > 1 || !s.m.single(int32(c)) {
+	if s.m.lanes() > 1 || !s.m.single(int32(c)) {
 		s.sizes(reqs, c)
 		return
 	}

@@ -221,6 +221,43 @@ func (s *sharing) least() float64 {
 	return dependent
 }
 
+// feasible splits candidates whose sizes are given so that the fit has no negative
+// size on the basis: each dependent one in turn hands over to the others until it,
+// or one of these, has nothing left.
+func (s *sharing) feasible(list []int, x []float64) *parts {
+	left := slices.Clone(list)
+	for {
+		p := s.split(left)
+		if len(p.rest) == 0 {
+			return s.split(append(left, slices.DeleteFunc(slices.Clone(list), func(k int) bool { return slices.Contains(left, k) })...))
+		}
+		k := p.rest[0]
+		t := s.products(p, s.places[k])
+		p.chol.solve(t)
+		out, length := k, x[k]
+		rate := func(q int) float64 { return s.sign[k] * t[q] * s.sign[p.which[q]] }
+		for q, j := range p.which {
+			if j >= 0 && rate(q) < 0 && x[j]/-rate(q) < length*(1-border) {
+				out, length = j, x[j]/-rate(q)
+			}
+		}
+		for q, j := range p.which {
+			if j >= 0 {
+				x[j] = max(0, x[j]+float64(length*rate(q)))
+			}
+		}
+		x[k] -= length
+		left = slices.DeleteFunc(left, func(j int) bool { return j == out })
+	}
+}
+
+// within reports whether a share does not exceed the border: its margin is that of a
+// single column.
+func (s *sharing) within(k int, v float64) bool {
+	i := s.places[k]
+	return v*s.square(i)/s.f.penalty.threshold(s.unit(i), s.lambda) <= border
+}
+
 func (s *sharing) unit(i int) int32 { return s.f.work.units[i/s.f.lanes()] }
 
 // weight of a basis column in the sum of squares: none for always-in columns.
@@ -357,14 +394,20 @@ func (s *sharing) depends(p *parts, place int) bool {
 // that depend on that set alone.
 func (s *sharing) record(free []bool, x []float64) (*record, error) {
 	size := slices.Max(x)
+	none := true
 	for k, v := range x {
-		if v <= border*size {
+		if v <= border*size || s.within(k, v) {
 			free[k] = false
+		} else {
+			none = false
 		}
+	}
+	if none {
+		return nil, nil // all stay out
 	}
 	p := s.split(indices(free))
 	if s.curved != nil {
-		return s.curved.shared(s, p)
+		return s.curved.shared(s, s.feasible(indices(free), slices.Clone(x)))
 	}
 	alone := s.alone(p)
 	r := s.filled(p, alone)

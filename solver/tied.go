@@ -68,11 +68,9 @@ func (c *curved) independent(support []choice) []choice {
 		}
 		row := make([]float64, len(in))
 		for k, j := range in {
-			if i%c.lanes == j%c.lanes {
-				row[k] = s.product(i, j)
-			}
+			row[k] = s.gram(i, j)
 		}
-		if chol.push(row, s.product(i, i), loose) {
+		if chol.push(row, s.gram(i, i), loose) {
 			in, kept = append(in, i), append(kept, q)
 		}
 	}
@@ -158,8 +156,8 @@ func (s *sharing) seen(i, j int) float64 {
 	return (kernel.Dot(a, p) - kernel.Dot(b, q)) / s.f.d.total
 }
 
-// shared is the record of shares: the fit on a basis, by the signs that the border
-// gives, whatever those of its coefficients are, shared out.
+// shared is the record of shares: the fit on a basis on which no size is negative,
+// shared out.
 func (c *curved) shared(s *sharing, p *parts) (*record, error) {
 	var support []choice
 	for q, i := range p.basis {
@@ -168,7 +166,6 @@ func (c *curved) shared(s *sharing, p *parts) (*record, error) {
 		}
 	}
 	n := c.newton(c.f.rec, support, s.lambda)
-	n.anySign = true
 	if err := n.converge(); err != nil {
 		return nil, err
 	}
@@ -237,7 +234,7 @@ func (c *curved) fill(s *sharing, p *parts, alone []float64, fit *record) (*reco
 	}
 	var support []choice
 	for k, i := range s.places {
-		if _, ok := at[i]; ok {
+		if _, ok := at[i]; ok || s.whole(i, at) {
 			support = append(support, c.choiceOf(i, s.sign[k]))
 		}
 	}
@@ -259,6 +256,26 @@ func (c *curved) fill(s *sharing, p *parts, alone []float64, fit *record) (*reco
 	}
 	n.certify()
 	return n.r, nil
+}
+
+// whole reports whether a single column stands on the border for all of an even
+// number of classes, and is in for some: its classes are then balanced together,
+// whichever are 0 at the least squares.
+func (s *sharing) whole(i int, at map[int]float64) bool {
+	lanes := s.f.lanes()
+	if lanes%2 != 0 || s.f.penalty.mix < 1 || s.f.work.width(i/lanes) > 1 {
+		return false
+	}
+	in := false
+	for lane := range lanes {
+		j := i - i%lanes + lane
+		if !slices.Contains(s.places, j) {
+			return false
+		}
+		_, ok := at[j]
+		in = in || ok
+	}
+	return in
 }
 
 // informs reports whether the likelihood sees a column at all.

@@ -25,7 +25,7 @@ func (m *Model) Shape(drawRows int) Shape {
 	return Shape{
 		Rows: m.rows, DrawRows: drawRows, Candidates: m.candidates(), Always: len(m.p.Always),
 		Steps: m.last + 1, StopAfter: m.p.StopAfter, Mix: m.p.Mix,
-		Columns: len(m.Terms()), Classes: m.Classes(), Curved: !m.exact,
+		Columns: len(m.Terms()), Classes: m.lanes(), Curved: !m.exact,
 	}
 }
 
