@@ -15,9 +15,14 @@ const (
 	certifiedCurved = 1e-8
 	// mostSteps bounds the Newton steps of a record.
 	mostSteps = 200
-	// better is what a step must leave of the violation at most to be taken
-	// without a look at the objective, which has fewer digits.
+	// better is what a step near the optimum must leave of the violation at most to be
+	// taken without a look at the objective, which has fewer digits.
 	better = 0.9
+	// local is the violation below which that is a sign of the optimum; far from it
+	// gradients may also vanish where a coefficient has gone too far.
+	local = 1e-3
+	// unseen is the decrease, as a share of the objective, that is lost in its rounding.
+	unseen = 1e-10
 	// endless is how far linear predictors move, again and again, where no finite
 	// coefficients fit best: each Newton step then gains about 1.
 	endless = 0.3
@@ -420,20 +425,25 @@ func (n *newton) step(fresh bool) (whole, moved bool) {
 	slope := -kernel.Dot(step, n.residue)
 	from, u, grad, residue := slices.Clone(n.r.beta), n.r.u, slices.Clone(n.r.grad), slices.Clone(n.residue)
 	eta := slices.Clone(n.eta)
-	worst, value := n.worst, math.NaN()
+	worst, near := n.worst, n.worst < local
+	value := 0.0
+	if !near {
+		value = n.smooth(from, eta)
+		near = -slope < float64(unseen*math.Abs(value))
+	}
 	n.r.u = n.c.f.residual()
 	for k, t := 0, 1.0; k < halvings; k, t = k+1, t/2 {
 		for i := range n.r.beta {
 			n.r.beta[i] = from[i] + float64(t*step[i])
 		}
 		n.evaluate()
-		good := n.worst < better*worst
+		good := near && n.worst < better*worst
 		if !good {
-			if k == 0 {
+			if value == 0 {
 				value = n.smooth(from, eta)
-				value -= float64(1e-15 * math.Abs(value)) // beyond its rounding
 			}
-			good = n.smooth(n.r.beta, n.eta) < value+float64(sufficient*t*slope)
+			rounding := float64(1e-15 * math.Abs(value))
+			good = n.smooth(n.r.beta, n.eta) < value-rounding+float64(sufficient*t*slope)
 		}
 		if good {
 			n.c.f.dropResidual(u)
