@@ -1,6 +1,15 @@
 package solver
 
-import "holdfast/solver/kernel"
+import (
+	"cmp"
+	"slices"
+
+	"holdfast/solver/kernel"
+)
+
+// scoredTogether is the number of steps whose fits on the rows left out are made in
+// one pass over the columns.
+const scoredTogether = 8
 
 // outside is the rows that a draw's path is scored on: the other half, or what a
 // bootstrap left out (STATISTICS 11).
@@ -8,11 +17,18 @@ type outside struct {
 	d      drawn
 	fam    family
 	offset []float64
+	steps  []scored // certified steps that are to be scored
 	column []float64
-	eta    []float64
+	eta    []float64 // linear predictors, step by step, lane by lane
 }
 
-// outside takes the rows left out of a sample; nil where there are none.
+// scored is what a certified step predicts by.
+type scored struct {
+	level, always []float64
+	coefs         []Coef
+}
+
+// leftOf takes the rows left out of a sample; nil where there are none.
 func (f *fitting) leftOf(s *Sample) *outside {
 	if s.Left == nil {
 		return nil
@@ -31,52 +47,136 @@ func (f *fitting) leftOf(s *Sample) *outside {
 	return o
 }
 
-// deviance scores a record of the draw on the rows left out.
-func (f *fitting) deviance(o *outside, r *record) float64 {
-	o.begin(f.core.level(r), f.lanes())
-	always := f.core.always(r)
-	for i, b := range always {
-		if b != 0 {
-			unit := int32(f.m.candidates() + i/f.lanes())
-			f.addOutside(o, f.m.design(unit), f.work.mean[f.work.place[unit]], b, i%f.lanes())
+// scoreLeft notes a certified step, to be scored with others.
+func (f *fitting) scoreLeft(p *Path, r *record) {
+	o := f.left
+	if o == nil {
+		return
+	}
+	if len(p.Deviance) == 0 && len(o.steps) == 0 {
+		o.steps = append(o.steps, scored{level: f.core.nullLevel()})
+		f.predictOutside(o)
+		p.NullDeviance = o.fam.deviance(o.eta)
+		o.steps = o.steps[:0]
+	}
+	o.steps = append(o.steps, scored{f.core.level(r), f.core.always(r), f.core.values(r)})
+	if len(o.steps) == scoredTogether {
+		f.scoreNoted(p)
+	}
+}
+
+// scoreNoted appends the deviances of the steps noted to the path.
+func (f *fitting) scoreNoted(p *Path) {
+	o := f.left
+	if o == nil || len(o.steps) == 0 {
+		return
+	}
+	f.predictOutside(o)
+	n := len(o.d.rows) * f.lanes()
+	for k := range o.steps {
+		p.Deviance = append(p.Deviance, o.fam.deviance(o.eta[k*n:(k+1)*n]))
+	}
+	o.steps, o.eta = o.steps[:0], o.eta[:0]
+}
+
+// use is one column's coefficient in one step, for one lane.
+type use struct {
+	unit  int32
+	term  int32
+	index int // step*lanes + lane
+	b     float64
+}
+
+// predictOutside fills the linear predictors of the steps noted. Each adds its columns
+// in the order of units, whatever steps it is made with.
+func (f *fitting) predictOutside(o *outside) {
+	lanes, n := f.lanes(), len(o.d.rows)
+	o.begin(lanes)
+	uses := o.uses(int32(f.m.candidates()), lanes)
+	for i := 0; i < len(uses); {
+		k := i
+		for k < len(uses) && uses[k].unit == uses[i].unit && uses[k].term == uses[i].term {
+			k++
 		}
+		f.addOutside(o, uses[i:k], n)
+		i = k
 	}
-	for _, c := range f.core.values(r) {
-		f.addOutside(o, f.m.columns(c.Candidate)[c.Term], f.meanOf(c.Candidate, int(c.Term)), c.Value, int(c.Class))
-	}
-	return o.fam.deviance(o.eta)
 }
 
 // begin starts the linear predictors at the intercepts.
-func (o *outside) begin(level []float64, lanes int) {
+func (o *outside) begin(lanes int) {
 	n := len(o.d.rows)
-	o.eta = resize(o.eta, n*lanes)
+	o.eta = resize(o.eta, n*lanes*len(o.steps))
 	clear(o.eta)
-	for lane, v := range level {
-		for k := range n {
-			o.eta[lane*n+k] = v
+	for s, step := range o.steps {
+		for lane, v := range step.level {
+			part := o.eta[(s*lanes+lane)*n:][:n]
+			for k := range part {
+				part[k] = v
+			}
 		}
-	}
-	for k, v := range o.offset {
-		o.eta[k] += v
-	}
-}
-
-// addOutside adds a column to the linear predictors. Missing cells take the mean of
-// the draw, and so add nothing.
-func (f *fitting) addOutside(o *outside, j int32, mean, b float64, lane int) {
-	n := len(o.d.rows)
-	x, holes := f.m.p.Design.Panel([]int32{j}, 0, f.m.rows, nil)[0], f.m.p.Design.Holes(j)
-	o.column = resize(o.column, n)
-	kernel.Gather(o.column, x, o.d.rows, mean, 1)
-	if holes != nil {
-		for k, r := range o.d.rows {
-			if isHole(holes, r) {
-				o.column[k] = 0
+		for lane := range lanes {
+			for k, v := range o.offset {
+				o.eta[(s*lanes+lane)*n+k] += v
 			}
 		}
 	}
-	kernel.AddScaled(b, o.column, o.eta[lane*n:(lane+1)*n])
+}
+
+// uses lists the coefficients of the steps by column: always-in columns first.
+func (o *outside) uses(candidates int32, lanes int) []use {
+	var list []use
+	for s, step := range o.steps {
+		for i, b := range step.always {
+			if b != 0 {
+				list = append(list, use{candidates + int32(i/lanes), 0, s*lanes + i%lanes, b})
+			}
+		}
+		for _, c := range step.coefs {
+			list = append(list, use{c.Candidate, c.Term, s*lanes + int(c.Class), c.Value})
+		}
+	}
+	slices.SortFunc(list, func(a, b use) int {
+		if first := a.unit >= candidates; first != (b.unit >= candidates) {
+			if first {
+				return -1
+			}
+			return 1
+		}
+		return cmp.Or(cmp.Compare(a.unit, b.unit), cmp.Compare(a.term, b.term), cmp.Compare(a.index, b.index))
+	})
+	return list
+}
+
+// addOutside adds one column to the linear predictors that use it. Missing cells take
+// the mean of the draw, and so add nothing.
+func (f *fitting) addOutside(o *outside, uses []use, n int) {
+	j, mean := f.columnOf(uses[0].unit, int(uses[0].term))
+	x, holes := f.m.p.Design.Panel([]int32{j}, 0, f.m.rows, nil)[0], f.m.p.Design.Holes(j)
+	for r0 := 0; r0 < n; r0 += kernel.Chunk {
+		rows := o.d.rows[r0:min(r0+kernel.Chunk, n)]
+		o.column = resize(o.column, len(rows))
+		kernel.Gather(o.column, x, rows, mean, 1)
+		if holes != nil {
+			for k, r := range rows {
+				if isHole(holes, r) {
+					o.column[k] = 0
+				}
+			}
+		}
+		for _, u := range uses {
+			kernel.AddScaled(u.b, o.column, o.eta[u.index*n+r0:][:len(rows)])
+		}
+	}
+}
+
+// columnOf is the design column of a unit's term, and its mean in the draw less its
+// centre.
+func (f *fitting) columnOf(unit int32, term int) (j int32, mean float64) {
+	if int(unit) >= f.m.candidates() {
+		return f.m.design(unit), f.work.mean[f.work.place[unit]]
+	}
+	return f.m.columns(unit)[term], f.meanOf(unit, term)
 }
 
 // meanOf is the draw's mean of a column of a candidate, less its centre.
@@ -91,16 +191,4 @@ func (f *fitting) meanOf(unit int32, t int) float64 {
 		}
 	}
 	return 0
-}
-
-// score appends the deviance of a certified step to the path.
-func (f *fitting) scoreLeft(p *Path, r *record) {
-	if f.left == nil {
-		return
-	}
-	if len(p.Deviance) == 0 {
-		f.left.begin(f.core.nullLevel(), f.lanes())
-		p.NullDeviance = f.left.fam.deviance(f.left.eta)
-	}
-	p.Deviance = append(p.Deviance, f.deviance(f.left, r))
 }

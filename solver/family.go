@@ -51,8 +51,9 @@ type pointwise struct {
 	unit  func(y, eta float64) float64      // deviance
 	check func(y, w []float64) error
 
-	d *drawn
-	y []float64
+	d      *drawn
+	y      []float64
+	values []float64 // scratch: one per row
 }
 
 func (f *pointwise) take(d *drawn) {
@@ -74,11 +75,11 @@ func (f *pointwise) score(eta, u []float64) {
 }
 
 func (f *pointwise) loss(eta []float64) float64 {
-	losses := make([]float64, len(eta))
+	f.values = resize(f.values, len(eta))
 	for k, e := range eta {
-		losses[k] = f.at(f.y[k], e)
+		f.values[k] = f.at(f.y[k], e)
 	}
-	return f.d.weighted(losses) / f.d.total
+	return f.d.weighted(f.values) / f.d.total
 }
 
 func (f *pointwise) bend(eta []float64) curvature {
@@ -102,11 +103,11 @@ func (c pointwiseCurvature) carry(z []float64, _ int) (a, b []float64) {
 }
 
 func (f *pointwise) deviance(eta []float64) float64 {
-	unit := make([]float64, len(eta))
+	f.values = resize(f.values, len(eta))
 	for k, e := range eta {
-		unit[k] = f.unit(f.y[k], e)
+		f.values[k] = f.unit(f.y[k], e)
 	}
-	return f.d.weighted(unit) / f.d.total
+	return f.d.weighted(f.values) / f.d.total
 }
 
 func gaussianLoss(y, eta float64) float64 { return gaussianDeviance(y, eta) / 2 }

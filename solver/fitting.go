@@ -440,11 +440,13 @@ func (f *fitting) stopAfter() int {
 func (f *fitting) finished(s Stop) {
 	if f.path != nil {
 		f.path.Stop = s
+		f.scoreNoted(f.path)
 	}
 }
 
 func (f *fitting) uncertified(err error) {
 	if f.path != nil {
+		f.scoreNoted(f.path)
 		f.path.Stop, f.path.Why = StopUncertified, fmt.Sprintf("lambda %.6g: %v", f.lambda(f.cur), err)
 	}
 	f.failed = err
