@@ -31,6 +31,9 @@ func (f *fitting) acceptStep(support []choice) (fresh []int32, err error) {
 			support = slices.DeleteFunc(support, func(c choice) bool { return holds(weak, c) })
 			continue
 		}
+		if err := r.check(f); err != nil {
+			return nil, err
+		}
 		v, err := f.judge(r)
 		if err != nil {
 			return nil, err

@@ -392,28 +392,31 @@ func (c *coxCurvature) carry(z []float64, _ int) (a, b []float64) {
 	for i, v := range z {
 		a[i], part[i] = c.root[i]*v, c.risk[i]*v
 	}
-	sum, added, taken := 0.0, 0, 0
+	var run carried
+	added, taken := 0, 0
 	for k, t := range f.ties {
 		if t.first {
-			sum = 0
+			run = carried{}
 			added, taken = f.begins(k)
 		}
 		for ; added < t.added; added++ {
-			sum += part[f.byTime[added]]
+			run.add(part[f.byTime[added]])
 		}
 		for ; taken < t.taken; taken++ {
-			sum -= part[f.byEntry[taken]]
+			run.add(-part[f.byEntry[taken]])
 		}
 		died := 0.0
 		for _, i := range t.dead {
 			died += part[i]
 		}
 		for q := t.from; q < t.to; q++ {
-			b[q] = c.scale[q] * (sum - float64(f.terms[q].gone*died))
+			b[q] = c.scale[q] * (run.total() - float64(f.terms[q].gone*died))
 		}
 	}
 	return a, b
 }
+
+func (f *cox) intercepts([]float64) []float64 { return nil }
 
 func (f *cox) deviance(eta []float64) float64 {
 	return 2 * f.d.total * f.loss(eta)

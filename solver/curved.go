@@ -81,13 +81,12 @@ func (c *curved) begin() error {
 	}
 	f.work.add(f, units)
 	c.grow()
-	empty := &record{lambda: math.Inf(1)}
-	var err error
 	c.fixed = c.fixed[:0]
 	if f.m.p.Family != Cox {
 		c.fixed = append(c.fixed, choice{place: 0})
 	}
-	if c.lonely, err = c.record(empty, nil, 1); err != nil {
+	var err error
+	if c.lonely, err = c.alone(); err != nil {
 		return err
 	}
 	if f.m.p.Family == Cox {
@@ -101,6 +100,24 @@ func (c *curved) begin() error {
 	f.whole = kernel.Dot(c.lonely.u, c.lonely.u)
 	c.load(f.rec)
 	return nil
+}
+
+// alone fits the intercept alone, from where its family has it start. What is missing
+// is measured against the spread of the residual there, in place of a lambda.
+func (c *curved) alone() (*record, error) {
+	n := c.newton(&record{}, nil, 1)
+	for lane, v := range c.fam.intercepts(c.offset) {
+		n.r.beta[n.r.blocks[lane].at] = v
+	}
+	n.evaluate()
+	if spread := c.f.spread(n.r.u); spread > 0 {
+		n.r.lambda = spread
+	}
+	if err := n.converge(); err != nil {
+		return nil, err
+	}
+	n.certify()
+	return n.r, nil
 }
 
 // seenShare is the share of a square in seen that must remain for a column not to
@@ -124,7 +141,7 @@ func (c *curved) beginAlways(units int) (*record, error) {
 	if len(c.fixed) > len(f.d.rows)-2 {
 		return nil, fmt.Errorf("%d always-in columns leave nothing of %d rows", len(c.fixed), len(f.d.rows))
 	}
-	r, err := c.record(c.lonely, nil, 1)
+	r, err := c.record(c.lonely, nil, c.lonely.lambda)
 	if err != nil {
 		return nil, err
 	}
@@ -148,7 +165,7 @@ func (c *curved) setOffset() {
 // reset forgets the draw before.
 func (c *curved) reset() {
 	c.beta, c.g = c.beta[:0], c.g[:0]
-	c.bend, c.modelOf, c.seen = nil, nil, nil
+	c.bend, c.modelOf, c.seen, c.lonely = nil, nil, nil, nil
 }
 
 // grow makes room for places that joined the working set.
@@ -433,6 +450,19 @@ func (c *curved) startActive(lambda float64) {
 	}
 }
 
+// leash is how far a step may move a linear predictor: where an exponential or a
+// probability changes more, a quadratic model says nothing.
+const leash = 5
+
+// farthest is the largest difference of two vectors.
+func farthest(a, b []float64) float64 {
+	most := 0.0
+	for k, v := range a {
+		most = max(most, math.Abs(v-b[k]))
+	}
+	return most
+}
+
 // search goes from beta towards trial as far as the objective falls. It reports
 // whether it moved, and whether all the way.
 func (c *curved) search(lambda float64) (moved, whole bool) {
@@ -445,11 +475,17 @@ func (c *curved) search(lambda float64) (moved, whole bool) {
 		promise -= float64(g * (to[i] - from[i]))
 	}
 	noise := float64(4e-16 * math.Abs(c.value))
+	eta := slices.Clone(c.eta)
 	for k, t := 0, 1.0; k < halvings; k, t = k+1, t/2 {
 		for i := range c.beta {
 			c.beta[i] = from[i] + float64(t*(to[i]-from[i]))
 		}
-		if value := c.at(c.beta, lambda); value <= c.value+float64(sufficient*t*min(promise, 0))+noise && !math.IsNaN(value) {
+		value := c.at(c.beta, lambda)
+		if far := farthest(c.eta, eta); k == 0 && far > leash && c.f.m.p.Family != Gaussian {
+			t *= 2 * leash / far
+			continue
+		}
+		if value <= c.value+float64(sufficient*t*min(promise, 0))+noise && !math.IsNaN(value) {
 			moved = !slices.Equal(c.beta, from)
 			c.value = value
 			return moved, t == 1

@@ -57,7 +57,7 @@ func (f *fitting) scoreLeft(p *Path, r *record) {
 		o.steps = append(o.steps, scored{level: f.core.nullLevel()})
 		f.predictOutside(o)
 		p.NullDeviance = o.fam.deviance(o.eta)
-		o.steps = o.steps[:0]
+		f.doneOutside(o)
 	}
 	o.steps = append(o.steps, scored{f.core.level(r), f.core.always(r), f.core.values(r)})
 	if len(o.steps) == scoredTogether {
@@ -76,7 +76,15 @@ func (f *fitting) scoreNoted(p *Path) {
 	for k := range o.steps {
 		p.Deviance = append(p.Deviance, o.fam.deviance(o.eta[k*n:(k+1)*n]))
 	}
-	o.steps, o.eta = o.steps[:0], o.eta[:0]
+	f.doneOutside(o)
+}
+
+// doneOutside gives the room of the linear predictors back: one draw at a time needs
+// it.
+func (f *fitting) doneOutside(o *outside) {
+	eta := o.eta
+	f.m.etas.Put(&eta)
+	o.steps, o.eta = o.steps[:0], nil
 }
 
 // use is one column's coefficient in one step, for one lane.
@@ -91,6 +99,9 @@ type use struct {
 // in the order of units, whatever steps it is made with.
 func (f *fitting) predictOutside(o *outside) {
 	lanes, n := f.lanes(), len(o.d.rows)
+	if room, ok := f.m.etas.Get().(*[]float64); ok {
+		o.eta = *room
+	}
 	o.begin(lanes)
 	uses := o.uses(int32(f.m.candidates()), lanes)
 	for i := 0; i < len(uses); {

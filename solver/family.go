@@ -3,6 +3,7 @@ package solver
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"holdfast/solver/kernel"
 )
@@ -20,6 +21,9 @@ type family interface {
 	score(eta, u []float64)
 	// loss returns the mean loss at eta, which may be infinite where eta is far off.
 	loss(eta []float64) float64
+	// intercepts are where the fit of the intercept alone starts, given offsets (nil:
+	// none); none for Cox.
+	intercepts(offset []float64) []float64
 	// bend returns the curvature at eta.
 	bend(eta []float64) curvature
 	// deviance is the mean unit deviance at eta (STATISTICS 11), for Cox -2 log
@@ -100,6 +104,30 @@ func (c pointwiseCurvature) carry(z []float64, _ int) (a, b []float64) {
 		a[k] = s * z[k]
 	}
 	return a, nil
+}
+
+// intercepts is the link of the mean, less that of the offsets: the fit itself where
+// there are none, or where counts have them.
+func (f *pointwise) intercepts(offset []float64) []float64 {
+	mean := f.d.weighted(f.y) / f.d.total
+	f.values = resize(f.values, len(f.y))
+	for k := range f.values {
+		f.values[k] = 0
+		if offset != nil {
+			f.values[k] = offset[k]
+		}
+	}
+	switch f.p.Family {
+	case Binomial:
+		return []float64{kernel.Log(mean/(1-mean)) - f.d.weighted(f.values)/f.d.total}
+	case Poisson:
+		most := slices.Max(f.values)
+		for k, o := range f.values {
+			f.values[k] = kernel.Exp(o - most)
+		}
+		return []float64{kernel.Log(mean/(f.d.weighted(f.values)/f.d.total)) - most}
+	}
+	return []float64{mean - f.d.weighted(f.values)/f.d.total}
 }
 
 func (f *pointwise) deviance(eta []float64) float64 {

@@ -284,6 +284,11 @@ func (r *record) check(f *fitting) error {
 	if err := r.resolvable(f); err != nil {
 		return err
 	}
+	return r.reached()
+}
+
+// reached says why a record is not at the optimum of its support, or nil.
+func (r *record) reached() error {
 	if !(r.cert.violation <= r.limit) || !(r.cert.gap <= r.limit) {
 		return fmt.Errorf("violation %.1e, gap %.1e: above %.0e", r.cert.violation, r.cert.gap, r.limit)
 	}

@@ -43,7 +43,8 @@ type Model struct {
 	last    int
 	seeds   seeds
 	pool    sync.Pool
-	whim    *whim // only in tests: forces other histories
+	etas    sync.Pool // *[]float64: linear predictors of the rows left out
+	whim    *whim     // only in tests: forces other histories
 }
 
 // NewModel checks a problem, measures its columns and finds lambda_max. It

@@ -104,6 +104,21 @@ func (c *multinomialCurvature) carry(z []float64, lane int) (a, b []float64) {
 	return a, b
 }
 
+func (f *multinomial) intercepts([]float64) []float64 {
+	share := make([]float64, f.p.Classes)
+	for k, y := range f.y {
+		w := 1.0
+		if f.d.weight != nil {
+			w = f.d.weight[k]
+		}
+		share[y] += w
+	}
+	for c, v := range share {
+		share[c] = kernel.Log(v / f.d.total)
+	}
+	return share
+}
+
 func (f *multinomial) deviance(eta []float64) float64 {
 	unit, q := make([]float64, len(f.y)), make([]float64, f.p.Classes)
 	for k, y := range f.y {

@@ -266,6 +266,9 @@ func (n *newton) penalised() bool {
 // finite makes sure that unpenalised coefficients have come to rest: one more Newton
 // step must move no linear predictor. Towards a separation each moves some by 1.
 func (n *newton) finite() error {
+	if n.r.lambda > 0 && len(n.c.fixed) <= 1 && n.c.f.m.p.Family != Cox {
+		return nil // the intercept alone: a draw that can be fitted has one
+	}
 	if len(n.r.gone) > 0 || n.penalised() {
 		return nil
 	}
@@ -279,10 +282,7 @@ func (n *newton) finite() error {
 		n.r.beta[i] += v
 	}
 	n.predict()
-	far := 0.0
-	for k, e := range n.eta {
-		far = max(far, math.Abs(e-eta[k]))
-	}
+	far := farthest(n.eta, eta)
 	n.r.beta, n.eta = beta, eta
 	if far > endless {
 		n.endless = endlessSteps
@@ -437,6 +437,10 @@ func (n *newton) step(fresh bool) (whole, moved bool) {
 			n.r.beta[i] = from[i] + float64(t*step[i])
 		}
 		n.evaluate()
+		if far := farthest(n.eta, eta); k == 0 && far > leash && n.c.f.m.p.Family != Gaussian {
+			t *= 2 * leash / far
+			continue
+		}
 		good := near && n.worst < better*worst
 		if !good {
 			if value == 0 {
@@ -465,11 +469,7 @@ func (n *newton) step(fresh bool) (whole, moved bool) {
 // little: towards a separation they never end (Albert & Anderson 1984, Biometrika
 // 71:1-10).
 func (n *newton) follow(eta []float64, worst float64) {
-	far := 0.0
-	for k, e := range n.eta {
-		far = max(far, math.Abs(e-eta[k]))
-	}
-	if far > endless && n.worst > 0.1*worst {
+	if farthest(n.eta, eta) > endless && n.worst > 0.1*worst {
 		n.endless++
 	} else {
 		n.endless = 0
@@ -478,7 +478,7 @@ func (n *newton) follow(eta []float64, worst float64) {
 
 // escaping returns an error where a coefficient without penalty grows without end.
 func (n *newton) escaping() error {
-	if n.endless < endlessSteps || n.penalised() {
+	if n.endless < endlessSteps || n.penalised() || n.c.lonely == nil {
 		return nil
 	}
 	step := slices.Clone(n.residue)
