@@ -337,13 +337,18 @@ func TestRedrawsAreSaid(t *testing.T) {
 			d.Redraws = i / 2
 		}
 	})
-	if !slices.Equal(j.Redrawn, []int{6, 7, 14, 15}) || j.MostRedraws != 7 || !strings.Contains(w, "2 of 20 pairs of halves were drawn anew, up to 7 times,") {
+	if !slices.Equal(j.Redrawn, []int{6, 7, 14, 15}) || j.MostRedraws != 7 || !strings.Contains(w, "2 of 20 pairs of halves were drawn anew (up to 7 times), because their rows could not be fitted; the frequencies hold for rows that can be fitted") {
 		t.Errorf("%v, %d, %q", j.Redrawn, j.MostRedraws, w)
 	}
 	draws, p := reef()
 	draws[1].Redraws = 1
 	j, err := Judge(draws[:3], true, p, Decision{Region: Cap, Bound: Unimodal, Threshold: 0.6, Selected: 2})
-	if w := strings.Join(j.Warnings, "\n"); err != nil || !strings.Contains(w, "1 of 3 draws were drawn anew, up to once,") {
+	if w := strings.Join(j.Warnings, "\n"); err != nil || !strings.Contains(w, "1 of 3 draws was drawn anew (once), because its rows") {
+		t.Errorf("%q, %v", w, err)
+	}
+	draws[0].Redraws = 1
+	j, err = Judge(draws[:3], true, p, Decision{Region: Cap, Bound: Unimodal, Threshold: 0.6, Selected: 2})
+	if w := strings.Join(j.Warnings, "\n"); err != nil || !strings.Contains(w, "2 of 3 draws were drawn anew (once each), because their rows") {
 		t.Errorf("%q, %v", w, err)
 	}
 }

@@ -33,7 +33,23 @@ func (j *Judgement) warnRedrawn() {
 	if !j.Bootstrap {
 		n, all, what = pairsOf(j.Redrawn), j.Draws/2, "pairs of halves"
 	}
-	j.add("%d of %d %s were drawn anew, up to %s, because their rows could not be fitted; the frequencies hold for rows that can be", n, all, what, times(j.MostRedraws))
+	were, their := "were", "their"
+	if n == 1 {
+		were, their = "was", "its"
+	}
+	j.add("%d of %d %s %s drawn anew (%s), because %s rows could not be fitted; the frequencies hold for rows that can be fitted",
+		n, all, what, were, redrawsText(n, j.MostRedraws), their)
+}
+
+// redrawsText says how often n draws or pairs were made anew.
+func redrawsText(n, most int) string {
+	switch {
+	case n == 1:
+		return times(most)
+	case most == 1:
+		return "once each"
+	}
+	return "up to " + times(most)
 }
 
 // pairsOf counts the pairs that ascending numbers of draws belong to.

@@ -51,7 +51,7 @@ func (i Info) scale() string {
 	case "classes":
 		return " They are changes of the logarithm of a class's chance, up to a number that all classes share."
 	case "survival":
-		return " They are changes of the logarithm of the hazard."
+		return " They are changes of the logarithm of the hazard: a positive one means that the event comes sooner."
 	}
 	return ""
 }

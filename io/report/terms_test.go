@@ -327,7 +327,7 @@ func TestRedrawnIsReported(t *testing.T) {
 	if err := JSON(&text, j, Info{}); err != nil || !strings.Contains(text.String(), `"redrawn":6,"most_redraws":3`) {
 		t.Errorf("%v: %s", err, text.String())
 	}
-	if page := strings.Join(strings.Fields(written(t, j, Info{}, 80, false)), " "); !strings.Contains(page, "3 of 10 pairs of halves were drawn anew, up to 3 times") {
+	if page := strings.Join(strings.Fields(written(t, j, Info{}, 80, false)), " "); !strings.Contains(page, "3 of 10 pairs of halves were drawn anew (up to 3 times)") {
 		t.Error(page)
 	}
 }
@@ -412,7 +412,7 @@ func TestTermsAtAnyWidth(t *testing.T) {
 func TestScaleOfCoefficients(t *testing.T) {
 	j := judged(t, hatchery(), 20, false, hatcheryDecision())
 	for kind, want := range map[string]string{"yes-no": "the log odds of the level counted as 1", "count": "logarithm of the expected count",
-		"classes": "logarithm of a class's chance", "survival": "logarithm of the hazard", "number": ""} {
+		"classes": "logarithm of a class's chance", "survival": "logarithm of the hazard: a positive one means that the event comes sooner", "number": ""} {
 		text := strings.Join(strings.Fields(written(t, j, Info{Kind: kind}, 100, false)), " ")
 		if said := strings.Contains(text, "They are changes of"); said != (want != "") || !strings.Contains(text, want) {
 			t.Errorf("%s: %s", kind, text)
