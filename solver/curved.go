@@ -139,7 +139,7 @@ func (c *curved) beginAlways(units int) (*record, error) {
 		}
 	}
 	if len(c.fixed) > len(f.d.rows)-2 {
-		return nil, fmt.Errorf("%d always-in columns leave nothing of %d rows", len(c.fixed), len(f.d.rows))
+		return nil, fmt.Errorf("%d coefficients without penalty leave nothing to explain of %d rows", len(c.fixed), len(f.d.rows))
 	}
 	r, err := c.record(c.lonely, nil, c.lonely.lambda)
 	if err != nil {
@@ -338,11 +338,11 @@ func (c *curved) solve(lambda float64) error {
 		}
 		worst = now
 	}
-	return fmt.Errorf("the proximal Newton method made %d steps", newtonSteps)
+	return c.stuck(worst)
 }
 
 // nearly is the violation at which the finish can go on from a working set that
-// no step improves any more.
+// no step improves any more, or that has had its number of steps.
 const nearly = 1e-3
 
 // stuck judges such a working set: what is left is rounding of the objective, or
@@ -351,7 +351,7 @@ func (c *curved) stuck(worst float64) error {
 	if worst <= nearly {
 		return nil
 	}
-	return fmt.Errorf("the line search ended at a violation of %.1e", worst)
+	return fmt.Errorf("the proximal Newton method ended at a violation of %.1e", worst)
 }
 
 // choose brings into the step's model what is not 0 or not penalised, and what

@@ -28,7 +28,7 @@ func (e exact) begin() error {
 		}
 	}
 	if len(f.qp.members) > len(f.d.rows)-2 {
-		return fmt.Errorf("%d always-in columns leave nothing of %d rows", len(f.qp.members), len(f.d.rows))
+		return fmt.Errorf("an intercept and %d always-in columns leave nothing to explain of %d rows", len(f.qp.members), len(f.d.rows))
 	}
 	null := &record{members: slices.Clone(f.qp.members), sign: make([]float64, len(f.qp.members))}
 	if err := null.factorise(f, &record{}, 0); err != nil {

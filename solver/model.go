@@ -308,7 +308,7 @@ func (m *Model) Terms() []int32 {
 // one class only, fewer than five events, always-in columns that tell the
 // classes apart. Nil where nothing speaks against it.
 func (m *Model) Fittable(s *Sample) error {
-	if m.exact {
+	if m.exact && len(m.p.Always) == 0 {
 		return nil
 	}
 	f := m.fitting()

@@ -493,16 +493,23 @@ func (n *newton) escaping() error {
 	if name == "" {
 		name = "the intercept"
 	}
-	return &SeparationError{Column: name}
+	advice := "make it a candidate, merge its rare levels, or leave it out"
+	if n.r.lambda == 0 {
+		advice = "take a lambda above 0, or leave it out"
+	}
+	return &SeparationError{name, advice}
 }
 
 // SeparationError says that a fit without a penalty on a column does not exist:
 // its coefficient grows without end, because the column tells the outcomes of
 // some rows without error.
-type SeparationError struct{ Column string }
+type SeparationError struct {
+	Column string
+	advice string
+}
 
 func (e *SeparationError) Error() string {
-	return e.Column + " tells the outcome of some rows without error, so that its coefficient grows without end (separation): make it a candidate, merge its rare levels, or leave it out"
+	return e.Column + " tells the outcome of some rows without error, so that its coefficient grows without end (separation): " + e.advice
 }
 
 // wrong reports whether a single column has the wrong sign: it does not belong,
