@@ -32,7 +32,9 @@ func (l *loaded) examine(ctx context.Context) error {
 			return wrong(err, "")
 		}
 	}
-	l.fitted = l.withoutCopies(varying, found)
+	if l.fitted, err = l.withoutRecoded(ctx, l.withoutCopies(varying, found)); err != nil {
+		return wrong(err, "")
+	}
 	if len(l.fitted) == 0 {
 		return wrong(fmt.Errorf("holdfast: no candidate is left: all %d are constant over the rows used", len(l.roles.Predictors)),
 			"holdfast inspect shows what the table holds")
@@ -134,6 +136,26 @@ func (l *loaded) withoutCopies(all []predictor, found *solver.Examination) []pre
 		l.exclude(name[c.Col], "copy up to shift and scale", name[c.Of])
 	}
 	return slices.DeleteFunc(all, func(p predictor) bool { return len(p.columns) == 1 && copied[p.columns[0]] })
+}
+
+// withoutRecoded takes out predictors of several columns that an earlier one is in
+// other words: a category under other names, as a code and what it stands for.
+func (l *loaded) withoutRecoded(ctx context.Context, all []predictor) ([]predictor, error) {
+	several := slices.DeleteFunc(slices.Clone(all), func(p predictor) bool { return len(p.columns) == 1 })
+	groups := make([][]int32, len(several))
+	for i, p := range several {
+		groups[i] = p.columns
+	}
+	same, err := solver.EqualGroups(ctx, l.data.X, groups)
+	if err != nil {
+		return nil, err
+	}
+	out := make(map[string]bool, len(same))
+	for _, c := range same {
+		out[several[c.Col].name] = true
+		l.exclude(several[c.Col].name, "recoded copy", several[c.Of].name)
+	}
+	return slices.DeleteFunc(all, func(p predictor) bool { return out[p.name] }), nil
 }
 
 // look examines all columns of some predictors.
