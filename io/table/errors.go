@@ -16,7 +16,7 @@ type Error struct {
 	Path   string // file, folder or glob as given
 	Column string // column in question; empty if it is not about one
 	Why    string // what is wrong and what to do
-	Gaps   []Gaps // columns with missing, NaN or infinite values, worst first, if that is what is wrong
+	Gaps   []Gaps // predictors with missing, NaN or infinite values, worst first, if they alone are what is wrong
 	Rows   int    // with Gaps: rows in use
 	Lost   int    // with Gaps: rows that DropRows leaves out
 	Err    error  // underlying error, if any

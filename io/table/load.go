@@ -16,7 +16,7 @@ import (
 func (s *Source) Load(ctx context.Context, r Request) (*Data, error) {
 	l := &loading{src: s, req: r, workers: workersOr(r.Workers)}
 	for _, step := range []func(context.Context) error{
-		l.choose, l.read, l.weigh, l.findLevels, l.checkOutcome, l.countGaps, l.applyPolicy, l.finish,
+		l.choose, l.read, l.weigh, l.dropIncomplete, l.findLevels, l.checkOutcome, l.countGaps, l.applyPolicy, l.finish,
 	} {
 		if err := ctx.Err(); err != nil {
 			return nil, err
@@ -46,7 +46,11 @@ type loading struct {
 	used  []uint64 // rows that count; nil: all
 	zero  int      // rows of weight 0
 	holed []uint64 // rows in which a predictor has a gap
-	data  *Data
+
+	roleGaps []Gaps // DropRows: of the columns that are no predictors, worst first
+	dropped  int    // rows that have one of them, out of use
+
+	data *Data
 }
 
 // column is a column of the table that is read. There may be a hundred thousand
@@ -297,8 +301,10 @@ func (l *loading) weigh(context.Context) error {
 		return nil
 	}
 	w := l.weight.values
-	if err := l.checkComplete(l.weight, "case weight", w); err != nil {
-		return err
+	if l.req.Missing != DropRows {
+		if err := l.checkComplete(l.weight, "case weight", w); err != nil {
+			return err
+		}
 	}
 	var negative []int
 	l.used = make([]uint64, (l.n+63)/64)
@@ -351,7 +357,7 @@ func (l *loading) checkComplete(c *column, role string, v []float64) error {
 }
 
 func (l *loading) incomplete(c *column, role, what string, rows []int) error {
-	return columnFaultf(l.path(), c.Name, "the %s is %s in %s: complete it, or leave these rows out of the table (it is never filled)",
+	return columnFaultf(l.path(), c.Name, "the %s is %s in %s: complete it, or leave these rows out with missing = \"drop-rows\" (it is never filled)",
 		role, what, rowList(rows))
 }
 

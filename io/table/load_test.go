@@ -9,6 +9,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"slices"
 	"strconv"
 	"strings"
 	"testing"
@@ -309,7 +310,7 @@ func TestFillMean(t *testing.T) {
 }
 
 func TestOutcomeAndWeightMustBeComplete(t *testing.T) {
-	for _, p := range []Policy{Refuse, DropRows, FillMean} {
+	for _, p := range []Policy{Refuse, FillMean} {
 		_, err := tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "few"}, Candidates: []string{"full"}, Missing: p})
 		wantError(t, err, `column "few": the outcome is missing in rows 3, 7 (rows are counted from 0)`, "never filled")
 		_, err = tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "inf"}, Candidates: []string{"full"}, Missing: p})
@@ -319,6 +320,52 @@ func TestOutcomeAndWeightMustBeComplete(t *testing.T) {
 	}
 	_, err := tryLoad(t, gappy(t), Request{Outcome: Outcome{Column: "hole"}, Candidates: []string{"full"}})
 	wantError(t, err, "rows 0, 2, 4, 6, 8, 10, 12, 14, 16, 18 and 10 more")
+}
+
+// DropRows leaves out the rows in which any column in use has a gap, and counts
+// them together. By hand: rows 3 and 7 of few, 7 of nan, 9 of inf.
+func TestDropRowsOfOtherColumns(t *testing.T) {
+	for name, c := range map[string]struct {
+		r    Request
+		gone []int32
+		note string
+	}{
+		"outcome":           {Request{Outcome: Outcome{Column: "few"}, Candidates: []string{"full"}}, []int32{3, 7}, `left out 2 of 40 rows (5.0 %) because of gaps in 1 column: "few" (2 missing)`},
+		"infinite outcome":  {Request{Outcome: Outcome{Column: "inf"}, Candidates: []string{"full"}}, []int32{9}, `"inf" (1 infinite)`},
+		"weight":            {Request{Outcome: Outcome{Column: "y"}, Weight: "nan", Candidates: []string{"full"}}, []int32{7}, `"nan" (1 NaN)`},
+		"offset":            {Request{Outcome: Outcome{Column: "y", Offset: "few"}, Candidates: []string{"full"}}, []int32{3, 7}, `"few" (2 missing)`},
+		"with a candidate":  {Request{Outcome: Outcome{Column: "few"}, Candidates: []string{"full", "nan", "inf", "void"}}, []int32{3, 7, 9}, `left out 3 of 40 rows (7.5 %) because of gaps in 2 columns: "few" (2 missing), "inf" (1 infinite)`},
+		"stratum of a draw": {Request{Outcome: Outcome{Column: "y"}, Candidates: []string{"full"}, Within: []string{"few"}}, []int32{3, 7}, `"few" (2 missing)`},
+	} {
+		c.r.Missing = DropRows
+		d := load(t, gappy(t), c.r)
+		var want []int32
+		for i := range int32(40) {
+			if !slices.Contains(c.gone, i) {
+				want = append(want, i)
+			}
+		}
+		if !slices.Equal(d.Rows, want) || len(d.Outcome) != len(want) || d.Weight != nil && len(d.Weight) != len(want) {
+			t.Errorf("%s: rows %v, want %v", name, d.Rows, want)
+		}
+		if len(d.Notes) != 1 || !strings.Contains(d.Notes[0], c.note) {
+			t.Errorf("%s: notes %q, want %q", name, d.Notes, c.note)
+		}
+	}
+	r := Request{Outcome: Outcome{Column: "hole"}, Candidates: []string{"full"}, Missing: DropRows}
+	_, err := tryLoad(t, gappy(t), r)
+	wantError(t, err, `leaves out 20 of 40 rows (50.0 %), more than a tenth: complete "hole" (20 missing), or confirm with [table] accept_loss = true`)
+	var e *Error
+	if errors.As(err, &e) && len(e.Gaps) > 0 {
+		t.Errorf("the outcome stands among columns that could be filled or left out: %v", e.Gaps)
+	}
+	r.AcceptLoss = true
+	if d := load(t, gappy(t), r); len(d.Rows) != 20 {
+		t.Errorf("%d rows are kept", len(d.Rows))
+	}
+	r.Outcome.Column = "void"
+	_, err = tryLoad(t, gappy(t), r)
+	wantError(t, err, `column "void": no row has a value`)
 }
 
 func TestWeights(t *testing.T) {

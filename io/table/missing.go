@@ -102,7 +102,7 @@ func (l *loading) excludeEmpty() {
 	if l.req.Missing == Refuse {
 		return
 	}
-	full := int64(l.n - l.zero)
+	full := int64(l.rowsLeft())
 	l.leaveOut(func(_ int, p *predictor) string {
 		if p.gaps.Missing+p.gaps.NaN == full {
 			return noValue
@@ -117,11 +117,11 @@ func (l *loading) applyPolicy(context.Context) error {
 		return err
 	}
 	worst := l.worstFirst()
-	if len(worst) == 0 {
+	if len(worst)+len(l.roleGaps) == 0 {
 		return nil
 	}
 	for _, p := range l.predictors {
-		if p.always && l.req.Missing != Refuse && p.gaps.Total() == int64(l.n-l.zero) {
+		if p.always && l.req.Missing != Refuse && p.gaps.Total() == int64(l.rowsLeft()) {
 			return columnFaultf(l.path(), p.Name, "cannot be an always-in column: %s", noValue)
 		}
 	}
@@ -134,7 +134,7 @@ func (l *loading) applyPolicy(context.Context) error {
 	return l.gapFault(worst, l.refusal(worst))
 }
 
-// worstFirst returns the columns with gaps, most gaps first, table order
+// worstFirst returns the predictors with gaps, most gaps first, table order
 // among equals.
 func (l *loading) worstFirst() []Gaps {
 	var out []Gaps
@@ -143,48 +143,141 @@ func (l *loading) worstFirst() []Gaps {
 			out = append(out, p.gaps)
 		}
 	}
-	sort.SliceStable(out, func(a, b int) bool { return out[a].Total() > out[b].Total() })
+	sortGaps(out)
 	return out
 }
 
-// dropRows takes the rows with gaps out of use.
-func (l *loading) dropRows(worst []Gaps) error {
-	before, lost := l.n-l.zero, l.lost()
-	share := 100 * float64(lost) / float64(before)
-	fill := ", use missing = \"fill-mean\""
-	if slices.ContainsFunc(worst, func(g Gaps) bool { return g.Infinite > 0 }) {
-		fill = "" // infinite values are never filled
+func sortGaps(g []Gaps) {
+	sort.SliceStable(g, func(a, b int) bool { return g[a].Total() > g[b].Total() })
+}
+
+// dropIncomplete takes the rows out of use in which the outcome, or another
+// column that is no predictor, has a gap, where DropRows was asked for. Such
+// columns are never filled. Gaps of predictors are counted over what is left.
+func (l *loading) dropIncomplete(context.Context) error {
+	if l.req.Missing != DropRows {
+		return nil
 	}
-	switch {
-	case before-lost < 2:
-		return l.gapFault(worst, fmt.Sprintf("missing = \"drop-rows\" keeps %d of %d rows: leave out the columns with the most gaps (%s)%s",
-			before-lost, before, gapList(worst), fill))
-	case lost*10 > before && !l.req.AcceptLoss:
-		return l.gapFault(worst, fmt.Sprintf(
-			"missing = \"drop-rows\" leaves out %d of %d rows (%.1f %%), more than a tenth: leave out the columns with the most gaps (%s)%s, or confirm with [table] accept_loss = true",
-			lost, before, share, gapList(worst), fill))
-	}
-	for i, w := range l.holed {
-		if l.used == nil {
-			l.used = fullMask(l.n)
+	mark := make([]uint64, (l.n+63)/64)
+	for _, c := range l.roleColumns() {
+		g := c.markGaps(l.used, mark)
+		g.Column = c.Name
+		switch {
+		case g.Total() == 0:
+			continue
+		case g.Missing+g.NaN == int64(l.rowsLeft()):
+			return columnFaultf(l.path(), c.Name, "no row has a value, so missing = \"drop-rows\" would keep none: name another column")
 		}
-		l.used[i] &^= w
+		l.roleGaps = append(l.roleGaps, g)
 	}
-	l.note("drop-rows left out %d of %d rows (%.1f %%) because of gaps in %s: %s", lost, before, share, plural(int64(len(worst)), "column"), gapList(worst))
+	if len(l.roleGaps) == 0 {
+		return nil
+	}
+	sortGaps(l.roleGaps)
+	l.takeOut(mark)
+	l.dropped = countRows(mark)
+	if l.rowsLeft() < 2 {
+		return l.keepsTooFew(nil)
+	}
 	return nil
 }
 
-// lost is the number of rows with a gap.
-func (l *loading) lost() int {
-	lost := 0
-	for _, w := range l.holed {
-		lost += bits.OnesCount64(w)
+// roleColumns lists the columns that are read for another purpose than as
+// predictors, each once.
+func (l *loading) roleColumns() []*column {
+	o := &l.outcome
+	var out []*column
+	for _, c := range slices.Concat([]*column{o.column, o.time, o.event, o.entry, o.offset, o.exposure, l.weight}, o.strata, l.within) {
+		if c != nil && !slices.Contains(out, c) {
+			out = append(out, c)
+		}
 	}
-	return lost
+	return out
 }
 
-// gapFault is an error about gaps, with what a caller needs to advise.
+// markGaps counts the gaps of a column that was read, and marks their rows.
+func (c *column) markGaps(used, mark []uint64) Gaps {
+	if c.texts != nil {
+		return gapsOfLevels(c.texts.codes, used, mark)
+	}
+	return gapsOf(c.values, used, mark)
+}
+
+// dropRows takes the rows with gaps in predictors out of use, and says how
+// many rows are lost with those that are gone already.
+func (l *loading) dropRows(worst []Gaps) error {
+	before, lost := l.n-l.zero, l.lost()
+	share := 100 * float64(lost) / float64(before)
+	switch {
+	case before-lost < 2:
+		return l.keepsTooFew(worst)
+	case lost*10 > before && !l.req.AcceptLoss:
+		return l.gapFault(worst, fmt.Sprintf(
+			"missing = \"drop-rows\" leaves out %d of %d rows (%.1f %%), more than a tenth: %s, or confirm with [table] accept_loss = true",
+			lost, before, share, l.insteadOfDropping(worst)))
+	}
+	l.takeOut(l.holed)
+	all := slices.Concat(l.roleGaps, worst)
+	sortGaps(all)
+	l.note("drop-rows left out %d of %d rows (%.1f %%) because of gaps in %s: %s", lost, before, share, plural(int64(len(all)), "column"), gapList(all))
+	return nil
+}
+
+// keepsTooFew refuses to drop rows until nothing is left to learn from.
+func (l *loading) keepsTooFew(worst []Gaps) error {
+	before := l.n - l.zero
+	return l.gapFault(worst, fmt.Sprintf("missing = \"drop-rows\" keeps %d of %d rows: %s", before-l.lost(), before, l.insteadOfDropping(worst)))
+}
+
+// insteadOfDropping says what else can be done about gaps: predictors can be
+// left out or filled, other columns only be completed.
+func (l *loading) insteadOfDropping(worst []Gaps) string {
+	var ways []string
+	if len(l.roleGaps) > 0 {
+		ways = append(ways, "complete "+gapList(l.roleGaps))
+	}
+	if len(worst) > 0 {
+		ways = append(ways, "leave out the columns with the most gaps ("+gapList(worst)+")")
+	}
+	infinite := slices.ContainsFunc(worst, func(g Gaps) bool { return g.Infinite > 0 })
+	if len(l.roleGaps) == 0 && !infinite { // neither is ever filled
+		ways = append(ways, "use missing = \"fill-mean\"")
+	}
+	return strings.Join(ways, ", ")
+}
+
+// takeOut takes marked rows out of use.
+func (l *loading) takeOut(mark []uint64) {
+	if l.used == nil {
+		l.used = fullMask(l.n)
+	}
+	for i, w := range mark {
+		l.used[i] &^= w
+	}
+}
+
+// rowsLeft is the number of rows that have a weight and are complete but for
+// their predictors.
+func (l *loading) rowsLeft() int { return l.n - l.zero - l.dropped }
+
+// lost is the number of rows with a gap.
+func (l *loading) lost() int { return l.dropped + countRows(l.holed) }
+
+// countRows is the number of rows marked.
+func countRows(mark []uint64) int {
+	n := 0
+	for _, w := range mark {
+		n += bits.OnesCount64(w)
+	}
+	return n
+}
+
+// gapFault is an error about gaps, with what a caller needs to advise: the
+// gaps, where all are those of predictors.
 func (l *loading) gapFault(gaps []Gaps, why string) error {
+	if len(l.roleGaps) > 0 {
+		gaps = nil
+	}
 	return &Error{Path: l.path(), Why: why, Gaps: gaps, Rows: l.n - l.zero, Lost: l.lost()}
 }
 

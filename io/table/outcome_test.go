@@ -6,6 +6,7 @@ import (
 	"math/big"
 	"math/rand/v2"
 	"path/filepath"
+	"reflect"
 	"slices"
 	"strings"
 	"testing"
@@ -276,6 +277,39 @@ func TestOutcomesThatCannotBe(t *testing.T) {
 				wantError(t, err, c.want...)
 			}
 		})
+	}
+}
+
+// Rows without class, event status, time, entry, exposure or stratum are
+// dropped where that was asked for, and the rest is read as if they had never
+// been there.
+func TestDropRowsOfOutcomes(t *testing.T) {
+	survival := Outcome{Measure: AsSurvival, Time: "days", Event: "settled", Entry: "joined", Strata: []string{"site"}}
+	for name, o := range map[string]Outcome{
+		"fate":    {Measure: AsYesNo, Column: "fate", Success: "alive"},
+		"stage":   {Measure: AsClasses, Column: "stage"},
+		"litres":  {Measure: AsCount, Column: "spat_count", Exposure: "litres"},
+		"settled": survival, "days": survival, "joined": survival, "site": survival,
+	} {
+		with, without := larvae(), larvae()
+		for k := range with {
+			if with[k].name == name {
+				with[k].cells = slices.Clone(with[k].cells)
+				with[k].cells[3] = nil
+			}
+			without[k].cells = slices.Delete(slices.Clone(without[k].cells), 3, 4)
+		}
+		r := Request{Outcome: o, Candidates: []string{"ph"}, Missing: DropRows}
+		plain := load(t, inEveryFormat(t, without)[0], r)
+		for _, path := range inEveryFormat(t, with) {
+			d := load(t, path, r)
+			if len(d.Rows) != 11 || slices.Contains(d.Rows, 3) || !strings.Contains(fmt.Sprint(d.Notes), fmt.Sprintf("%q (1 missing)", name)) {
+				t.Errorf("%s: rows %v, notes %q", name, d.Rows, d.Notes)
+			}
+			if !slices.Equal(d.Outcome, plain.Outcome) || !slices.Equal(d.Offset, plain.Offset) || !reflect.DeepEqual(d.Survival, plain.Survival) || d.Centre[0] != plain.Centre[0] {
+				t.Errorf("%s: %v, want %v", name, d, plain)
+			}
+		}
 	}
 }
 

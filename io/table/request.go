@@ -7,7 +7,7 @@ type Policy uint8
 
 const (
 	Refuse   Policy = iota // none is allowed
-	DropRows               // rows that hold one are left out
+	DropRows               // rows that hold one, in a predictor or elsewhere, are left out
 	FillMean               // the draw's own mean stands in; infinite values are not allowed. Categories take their most frequent level
 )
 
