@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/csv"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"os"
 	"slices"
@@ -77,9 +78,25 @@ func (p *program) fit(ctx context.Context, q question, o fitOptions) error {
 		fits, err = model.FitPath(ctx, sample)
 	}
 	if err != nil {
-		return wrong(err, "")
+		return wrong(l.separated(err), "")
 	}
 	return p.printFits(l, fits, o)
+}
+
+// separated says of a candidate that separates, which it does at lambda 0 only,
+// what can be done about it. Other errors stay what they are. Of a group the
+// solver names the first column, whichever of them separates.
+func (l *loaded) separated(err error) error {
+	var s *solver.SeparationError
+	if !errors.As(err, &s) {
+		return err
+	}
+	at := slices.IndexFunc(l.fitted, func(f predictor) bool { return slices.Contains(l.columnNames(f.columns), s.Column) })
+	if at < 0 {
+		return err
+	}
+	return wrong(fmt.Errorf("holdfast fit: lambda 0: %s tells the outcome of some rows without error, so that a coefficient grows without end (separation)", l.fitted[at].name),
+		"a lambda above 0 has a fit; at lambda 0, leave the predictor out, or merge its rare levels")
 }
 
 // model is that of all rows, with case weights of a file where one is named.
@@ -91,6 +108,11 @@ func (l *loaded) model(ctx context.Context, weights string) (*solver.Model, erro
 	}
 	if weight != nil {
 		problem.Case = weight
+	}
+	if problem.Family == solver.Multinomial {
+		if err := l.holdsClasses(solver.AllRows(l.rows()), problem.Case); err != nil {
+			return nil, wrong(fmt.Errorf("holdfast fit: %w", err), "")
+		}
 	}
 	if l.grouped() && problem.GroupWeight == solver.GroupEven {
 		s, err := l.settle() // what groups pay follows from the decision

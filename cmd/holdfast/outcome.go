@@ -47,12 +47,8 @@ func explained(o study.Outcome) string {
 	return o.Column
 }
 
-// kindText says how the outcome is taken, and what counts; empty for numbers,
-// which are taken as they stand.
+// kindText says how the outcome is taken, and what counts.
 func kindText(o study.Outcome) string {
-	if o.Kind == study.Number {
-		return ""
-	}
 	text := o.Kind.String()
 	if o.Success != "" {
 		text += fmt.Sprintf(", success %q", o.Success)

@@ -172,13 +172,43 @@ func (s *settled) ready(ctx context.Context) (*solver.Model, error) {
 	if err != nil {
 		return nil, wrong(err, "")
 	}
-	s.plan.Fit = model.Fittable
-	return model, wrong(s.plan.Check(), fittable[s.study.Outcome.Kind])
+	s.plan.Fit = s.fittable(model)
+	return model, wrong(s.plan.Check(), everyHalf[s.study.Outcome.Kind])
 }
 
-// fittable says what every half must hold, for a question of which none can be
+// fittable is the question whether a draw can be fitted: that of the model, and
+// before it, for classes, one that answers with the name of a class.
+func (l *loaded) fittable(model *solver.Model) func(*solver.Sample) error {
+	if l.study.Outcome.Kind != study.Classes {
+		return model.Fittable
+	}
+	return func(sample *solver.Sample) error {
+		if err := l.holdsClasses(sample, l.data.Weight); err != nil {
+			return err
+		}
+		return model.Fittable(sample)
+	}
+}
+
+// holdsClasses names the first class of which a draw has no row of weight; a
+// nil weight is 1 for every row.
+func (l *loaded) holdsClasses(sample *solver.Sample, weight []float64) error {
+	seen := make([]bool, len(l.data.Classes))
+	for row := range resample.Drawn(sample) {
+		if weight == nil || weight[row] > 0 {
+			seen[int(l.data.Outcome[row])] = true
+		}
+	}
+	if missing := slices.Index(seen, false); missing >= 0 {
+		return fmt.Errorf("class %q of the outcome has no row", l.data.Classes[missing])
+	}
+	return nil
+}
+
+// everyHalf says what every half must hold, for a question of which none can be
 // fitted.
-var fittable = map[study.Kind]string{
+var everyHalf = map[study.Kind]string{
+	study.Number:   "the intercept and the columns of candidates.always must be fewer than the rows of every half: name fewer of them",
 	study.YesNo:    "every half must hold rows of both values, and columns that are always in must not tell them apart",
 	study.Classes:  "every half must hold rows of every class: join classes that are rare, or leave their rows out",
 	study.Survival: "every half must see 5 events: more rows with an event are needed",

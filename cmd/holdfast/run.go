@@ -134,7 +134,6 @@ func (r *runner) do(ctx context.Context, q question) (err error) {
 	if r.o.share, err = r.o.share.settle(r.o.out, r.dir); err != nil {
 		return err
 	}
-	fmt.Fprintln(r.talk, "results go to "+oneLine(r.o.out))
 	if err := r.prepare(ctx, q); err != nil {
 		return err
 	}
@@ -172,6 +171,7 @@ func (r *runner) prepare(ctx context.Context, q question) error {
 	if err != nil {
 		return vanished(err)
 	}
+	fmt.Fprintln(r.talk, "results go to "+oneLine(r.o.out))
 	r.p.tell(l)
 	if r.settled, err = l.settle(); err != nil {
 		return err
@@ -368,9 +368,7 @@ func (r *runner) lastWord(err error) {
 // tellPlan says what is about to happen, and what was decided.
 func (r *runner) tellPlan(there, missing int) {
 	d, o := r.decision, r.study.Outcome
-	if kind := kindText(o); kind != "" {
-		fmt.Fprintf(r.talk, "outcome: %s (%s)\n", oneLine(explained(o)), oneLine(kind))
-	}
+	fmt.Fprintf(r.talk, "outcome: %s (%s)\n", oneLine(explained(o)), oneLine(kindText(o)))
 	fmt.Fprintf(r.talk, "rows: %d, candidates: %d, draws: %d (%s), seed: %d, workers: %d\n",
 		r.rows(), len(r.fitted), r.plan.Number, r.plan.Design, r.plan.Seed, r.o.workers)
 	if there > 0 || r.o.share.only {
