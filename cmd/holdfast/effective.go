@@ -37,8 +37,14 @@ func weigh(plan resample.Plan) *effective {
 		}
 	}
 	slices.Sort(sizes)
-	e.median, e.smallest = sizes[len(sizes)/2], sizes[0]
+	e.median, e.smallest = middle(sizes), sizes[0]
 	return &e
+}
+
+// middle is the median of ascending values.
+func middle(sorted []float64) float64 {
+	n := len(sorted)
+	return (sorted[(n-1)/2] + sorted[n/2]) / 2
 }
 
 // String says it to people.
@@ -55,5 +61,5 @@ func small(median float64, rows int) bool { return median < float64(rows)/2 }
 
 // fewCount is the warning where a few rows decide.
 func fewCount(median float64, rows int) string {
-	return fmt.Sprintf("few rows decide what is chosen: case weights make the %d of a draw worth %.4g of equal weight", rows, median)
+	return fmt.Sprintf("few rows decide what is chosen: case weights make the %d rows of a draw worth %.4g of equal weight", rows, median)
 }

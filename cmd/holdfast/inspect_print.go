@@ -159,6 +159,9 @@ func leakReason(c table.ColumnSummary) string {
 	if math.Abs(c.Correlation) >= table.LeakCorrelation || math.IsNaN(c.AUC) {
 		return fmt.Sprintf("r = %.3f", c.Correlation)
 	}
+	if c.AUC < 0.5 {
+		return fmt.Sprintf("AUC = %.3f, reversed", 1-c.AUC)
+	}
 	return fmt.Sprintf("AUC = %.3f", c.AUC)
 }
 
