@@ -9,7 +9,7 @@ import (
 
 // scoredTogether is the number of steps whose fits on the rows left out are made in
 // one pass over the columns.
-const scoredTogether = 8
+const scoredTogether = 16
 
 // outside is the rows that a draw's path is scored on: the other half, or what a
 // bootstrap left out (STATISTICS 11).
@@ -104,13 +104,16 @@ func (f *fitting) predictOutside(o *outside) {
 	}
 	o.begin(lanes)
 	uses := o.uses(int32(f.m.candidates()), lanes)
-	for i := 0; i < len(uses); {
-		k := i
-		for k < len(uses) && uses[k].unit == uses[i].unit && uses[k].term == uses[i].term {
-			k++
+	for r0 := 0; r0 < n; r0 += kernel.Chunk {
+		r1 := min(r0+kernel.Chunk, n)
+		for i := 0; i < len(uses); {
+			k := i
+			for k < len(uses) && uses[k].unit == uses[i].unit && uses[k].term == uses[i].term {
+				k++
+			}
+			f.addOutside(o, uses[i:k], r0, r1)
+			i = k
 		}
-		f.addOutside(o, uses[i:k], n)
-		i = k
 	}
 }
 
@@ -159,25 +162,23 @@ func (o *outside) uses(candidates int32, lanes int) []use {
 	return list
 }
 
-// addOutside adds one column to the linear predictors that use it. Missing cells take
-// the mean of the draw, and so add nothing.
-func (f *fitting) addOutside(o *outside, uses []use, n int) {
+// addOutside adds rows r0 to r1-1 of one column to the linear predictors that use it.
+// Missing cells take the mean of the draw, and so add nothing.
+func (f *fitting) addOutside(o *outside, uses []use, r0, r1 int) {
 	j, mean := f.columnOf(uses[0].unit, int(uses[0].term))
 	x, holes := f.m.p.Design.Panel([]int32{j}, 0, f.m.rows, nil)[0], f.m.p.Design.Holes(j)
-	for r0 := 0; r0 < n; r0 += kernel.Chunk {
-		rows := o.d.rows[r0:min(r0+kernel.Chunk, n)]
-		o.column = resize(o.column, len(rows))
-		kernel.Gather(o.column, x, rows, mean, 1)
-		if holes != nil {
-			for k, r := range rows {
-				if isHole(holes, r) {
-					o.column[k] = 0
-				}
+	rows, n := o.d.rows[r0:r1], len(o.d.rows)
+	o.column = resize(o.column, len(rows))
+	kernel.Gather(o.column, x, rows, mean, 1)
+	if holes != nil {
+		for k, r := range rows {
+			if isHole(holes, r) {
+				o.column[k] = 0
 			}
 		}
-		for _, u := range uses {
-			kernel.AddScaled(u.b, o.column, o.eta[u.index*n+r0:][:len(rows)])
-		}
+	}
+	for _, u := range uses {
+		kernel.AddScaled(u.b, o.column, o.eta[u.index*n+r0:][:len(rows)])
 	}
 }
 
