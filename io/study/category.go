@@ -1,6 +1,7 @@
 package study
 
 import (
+	"fmt"
 	"maps"
 	"slices"
 )
@@ -59,7 +60,19 @@ func (r *resolver) noPredictor(name string) string {
 	case r.within[name]:
 		return "is the column of draws.within, and a predictor only where candidates.take or candidates.always names it"
 	}
-	return "is a column of the table but no predictor: take its name out, or the column in"
+	return r.notTaken(name)
+}
+
+// notTaken says why a usable column plays no part, and what makes it a
+// candidate: a name beats a pattern.
+func (r *resolver) notTaken(name string) string {
+	switch leave := r.wishes[r.index[name]].leave; {
+	case leave.named:
+		return "is left out, for candidates.leave names it: take its name out of candidates.leave, or out of here"
+	case leave.matched:
+		return fmt.Sprintf("is left out, for a pattern in candidates.leave matches it: add %s to candidates.take, or take its name out of here", quoted(name))
+	}
+	return fmt.Sprintf("is a column of the table, but candidates.take does not take it: add %s to candidates.take, or take its name out of here", quoted(name))
 }
 
 // findReferences checks that reference levels belong to categories.

@@ -44,14 +44,12 @@ func (o Outcome) check(f *faults) {
 	o.checkRoles(f)
 }
 
-// checkColumns says which columns the kind of outcome needs.
+// checkColumns says which columns the kind of outcome needs. A yes-no outcome
+// needs a success too: package table, which knows the values, asks for it.
 func (o Outcome) checkColumns(f *faults) {
 	if o.Kind != Survival {
 		if o.Column == "" {
 			f.add("outcome.column", "is missing: name the column to be explained")
-		}
-		if o.Kind == YesNo && o.Success == "" {
-			f.add("outcome.success", `is missing: outcome.kind = "yes-no" needs the value that counts as yes, such as 1, true or "alive"`)
 		}
 		return
 	}

@@ -240,7 +240,7 @@ func (d *drafter) checkOutcome() error {
 	case !o.admissible():
 		return d.refuse("column %s cannot be the outcome: %s", shown, o.Reason)
 	case o.gaps() > 0:
-		return d.refuse("the outcome %s has no value in %d of %d rows%s, and an outcome is never filled: take these rows out of the table", shown, o.gaps(), f.Rows, f.gapRows(o.gaps()))
+		return d.refuse("the outcome %s has no value in %d of %d rows%s, and an outcome is never filled: take these rows out of the table, or write a study with table.missing = \"drop-rows\", which leaves them out", shown, o.gaps(), f.Rows, f.gapRows(o.gaps()))
 	case f.Rows < 4:
 		return d.refuse("the table has %s, and two halves take at least 4", numberOf(int(f.Rows), "row"))
 	case o.constant():

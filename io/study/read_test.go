@@ -162,7 +162,7 @@ var values = map[string]struct{ good, bad []string }{
 	"table.path":                {[]string{`"a.csv"`, `'C:\t.csv'`}, []string{`1`, `true`, `["a"]`, `""`}},
 	"table.missing":             {[]string{`"refuse"`, `"drop-rows"`, `"fill-mean"`, `"own-level"`}, []string{`"drop"`, `"Refuse"`, `0`, `true`}},
 	"table.accept_loss":         {[]string{`false`, `true`}, []string{`"true"`, `1`}},
-	"outcome.kind":              {[]string{`"number"`, `"count"`, `"classes"`}, []string{`"gaussian"`, `1`, `[]`}}, // yes-no needs success
+	"outcome.kind":              {[]string{`"number"`, `"count"`, `"classes"`, `"yes-no"`}, []string{`"gaussian"`, `1`, `[]`}},
 	"outcome.column":            {[]string{`"y"`}, []string{`1`, `""`, `["y"]`}},
 	"outcome.success":           {[]string{`""`}, []string{`["alive"]`, `{}`, `"alive"`}}, // of another kind
 	"outcome.time":              {[]string{`""`}, []string{`1`, `"t"`}},
@@ -273,7 +273,6 @@ func TestMessages(t *testing.T) {
 		{small + "[draws]\ndesign = \"bootstrap\"\n[decision]\nfalse_selections = 1\n", `study: dir/s.toml:8: decision.false_selections: draws.design = "bootstrap" has no bound on false selections: give threshold and selected in its place`},
 		{small + "time = \"t\"\n", `study: dir/s.toml:5: outcome.time: is for outcome.kind = "survival", and it is "number"`},
 		{"[table]\npath = \"t.csv\"\n[outcome]\nkind = \"survival\"\ncolumn = \"y\"\ntime = \"t\"\nevent = \"e\"\n", `study: dir/s.toml:5: outcome.column: outcome.kind = "survival" has time and event in place of column`},
-		{small + "kind = \"yes-no\"\n", `study: dir/s.toml: outcome.success: is missing: outcome.kind = "yes-no" needs the value that counts as yes, such as 1, true or "alive"`},
 		{small + "kind = \"classes\"\noffset = \"o\"\n", `study: dir/s.toml:6: outcome.offset = "o": is for every kind of outcome but classes, where it would move all classes alike: leave the line out`},
 		{small + "[candidates.groups]\nsalinity = []\n", `study: dir/s.toml:6: candidates.groups.salinity = []: has no members: name columns or patterns, or take the line out`},
 		{small + "[candidates.groups]\n\"\" = [\"a\"]\n", `study: dir/s.toml:6: candidates.groups."": a group has a name: it stands in the tables of results`},

@@ -312,7 +312,7 @@ func (r *resolver) notPenalised(name string) {
 	case slices.Contains(r.roles.Always, name):
 		r.faults.add(key, "is always in the model and not penalised: take its line out")
 	case known:
-		r.faults.add(key, "is a column of the table but no candidate: take its line out, or the column in")
+		r.faults.add(key, "%s", r.noPredictor(name))
 	case len(r.roles.Predictors) > 0:
 		r.faults.add(key, "is no candidate%s", NearHint(name, r.predictorNames()))
 	}

@@ -89,7 +89,7 @@ func TestResolveRefuses(t *testing.T) {
 		{"nothing left", "[candidates]\ntake = [\"sal_*\"]\nleave = [\"sal_1\", \"sal_2\"]", `leaves no candidate: of 11 columns 2 are left out, 0 are always in the model, 1 cannot be used ("sal_list": nested)`},
 		{"relative of no column", "[penalty.relative]\npH = 2", `s.toml:6: penalty.relative.pH: is no candidate; the nearest is "ph"`},
 		{"relative of always", "[candidates]\nalways = [\"ph\"]\n[penalty.relative]\nph = 2", "penalty.relative.ph: is always in the model"},
-		{"relative of a left column", "[candidates]\nleave = [\"ph\"]\n[penalty.relative]\nph = 2", "penalty.relative.ph: is a column of the table but no candidate"},
+		{"relative of a left column", "[candidates]\nleave = [\"ph\"]\n[penalty.relative]\nph = 2", "penalty.relative.ph: is left out, for candidates.leave names it"},
 		{"relative by pattern", "[penalty.relative]\n\"sal_*\" = 2", "is no candidate"},
 	} {
 		r, err := resolved(t, c.lines+"\n")

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 
 	"holdfast/solver"
 )
@@ -215,8 +216,8 @@ func (l *loading) findStatus() error {
 			if rows == nil {
 				continue
 			}
-			return columnFaultf(l.path(), c.Name, "holds %s in %s: the event status is 1 or true where the event was seen, and 0 or false where it was not",
-				quote(name), rowList(rows))
+			return columnFaultf(l.path(), c.Name, "holds %s in %s: without success, the event status is 1 or true where the event was seen, and 0 or false where it was not; %s",
+				quote(name), rowList(rows), l.valuesOf(levels, "the event"))
 		}
 		if seen {
 			place[k] = 1
@@ -226,6 +227,26 @@ func (l *loading) findStatus() error {
 	levels.names = []string{noEvent, seenEvent}
 	l.outcome.status = levels
 	return nil
+}
+
+// valuesOf lists the values of the rows in use, and how the study says which
+// of them is meant.
+func (l *loading) valuesOf(levels coding, meant string) string {
+	used := levels.keep(l.rowsUsed())
+	return "it holds " + levelList(used.levels()) + ": " + writeSuccess(used.names, meant)
+}
+
+// writeSuccess is what can be typed to name one of several values.
+func writeSuccess(names []string, meant string) string {
+	const most = 4
+	var lines []string
+	for _, name := range names[:min(most, len(names))] {
+		lines = append(lines, "success = "+tomlText(name))
+	}
+	if len(names) > most {
+		lines = append(lines, "another of them")
+	}
+	return "write " + strings.Join(lines, " or ") + " in [outcome], whichever is " + meant
 }
 
 // isEvent reports whether a level of the event status says that the event was
@@ -275,10 +296,9 @@ func (l *loading) settleYesNo() error {
 	case k > 2:
 		return columnFaultf(l.path(), c.Name, "holds %d values, and an outcome of kind yes-no has two: %s; leave the rows of the others out, or write kind = \"classes\"", k, list)
 	case asked == "":
-		return columnFaultf(l.path(), c.Name, "which value is the success? It holds %s: write success = %s", list, tomlText(levels.names[1]))
+		return columnFaultf(l.path(), c.Name, "which value is the success? It holds %s: %s", list, writeSuccess(levels.names, "the success"))
 	case success < 0:
-		return columnFaultf(l.path(), c.Name, "no row holds the success %s; it holds %s: write success = %s or success = %s",
-			quote(asked), list, tomlText(levels.names[0]), tomlText(levels.names[1]))
+		return columnFaultf(l.path(), c.Name, "no row holds the success %s; it holds %s: %s", quote(asked), list, writeSuccess(levels.names, "the success"))
 	case success == 0:
 		levels.reorder(func(a, _ int) bool { return a == 1 })
 	}
@@ -322,7 +342,8 @@ func (l *loading) settleSurvival(rows []int32) error {
 	if events == 0 {
 		why := "no row has the event: there is nothing to explain"
 		if l.req.Outcome.Success != "" {
-			why = fmt.Sprintf("no row holds the event %s", quote(l.req.Outcome.Success))
+			levels, _ := o.event.coding(MostLevels) // findStatus has seen that it has levels
+			why = fmt.Sprintf("no row holds the event %s; %s", quote(l.req.Outcome.Success), l.valuesOf(levels, "the event"))
 		}
 		return columnFaultf(l.path(), o.event.Name, "%s", why)
 	}

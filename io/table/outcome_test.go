@@ -245,8 +245,8 @@ func TestOutcomesThatCannotBe(t *testing.T) {
 		want    []string
 	}{
 		"three values":     {base, Outcome{Measure: AsYesNo, Column: "stage", Success: "spat"}, []string{`column "stage": holds 3 values, and an outcome of kind yes-no has two`, `"pediveliger" (2 rows), "spat" (6 rows), "veliger" (4 rows)`, `kind = "classes"`}},
-		"no such success":  {base, Outcome{Measure: AsYesNo, Column: "fate", Success: "Alive"}, []string{`no row holds the success "Alive"; it holds "alive" (7 rows), "dead" (5 rows): write success = "alive" or success = "dead"`}},
-		"which success":    {base, Outcome{Measure: AsYesNo, Column: "fate"}, []string{`which value is the success? It holds "alive" (7 rows), "dead" (5 rows): write success = "dead"`}},
+		"no such success":  {base, Outcome{Measure: AsYesNo, Column: "fate", Success: "Alive"}, []string{`no row holds the success "Alive"; it holds "alive" (7 rows), "dead" (5 rows): write success = "alive" or success = "dead" in [outcome], whichever is the success`}},
+		"which success":    {base, Outcome{Measure: AsYesNo, Column: "fate"}, []string{`which value is the success? It holds "alive" (7 rows), "dead" (5 rows): write success = "alive" or success = "dead"`}},
 		"negative count":   {change("spat_count", 4, -1), Outcome{Measure: AsCount, Column: "spat_count"}, []string{`column "spat_count": is no count in row 4 (rows are counted from 0) (the first holds -1)`}},
 		"half a count":     {base, Outcome{Measure: AsCount, Column: "days"}, []string{`column "days": is no count in rows 0, 6`, "the first holds 18.5"}},
 		"count is missing": {change("spat_count", 4, nil), Outcome{Measure: AsCount, Column: "spat_count"}, []string{`the outcome is missing in row 4`}},
@@ -258,8 +258,9 @@ func TestOutcomesThatCannotBe(t *testing.T) {
 		"late entry":         {change("joined", 2, 14.0), survival, []string{`column "joined": the entry is not before the time in row 2`, "(the first enters at 14 and ends at 14)"}},
 		"entry is missing":   {change("joined", 2, nil), survival, []string{`column "joined": the entry is missing in row 2`}},
 		"odd status":         {change("settled", 5, 2), survival, []string{`column "settled": holds "2" in row 5`, "the event status is 1 or true"}},
+		"status of words":    {base, Outcome{Measure: AsSurvival, Time: "days", Event: "fate"}, []string{`column "fate": holds "alive" in rows `, `; it holds "alive" (7 rows), "dead" (5 rows): write success = "alive" or success = "dead" in [outcome], whichever is the event`}},
 		"status is missing":  {change("settled", 5, nil), survival, []string{`column "settled": the event status is missing in row 5`}},
-		"no event":           {base, Outcome{Measure: AsSurvival, Time: "days", Event: "settled", Success: "3"}, []string{`column "settled": no row holds the event "3"`}},
+		"no event":           {base, Outcome{Measure: AsSurvival, Time: "days", Event: "settled", Success: "3"}, []string{`column "settled": no row holds the event "3"; it holds "0" (`, `), "1" (`, `write success = "0" or success = "1" in [outcome], whichever is the event`}},
 		"stratum is missing": {change("site", 1, nil), Outcome{Measure: AsSurvival, Time: "days", Event: "settled", Strata: []string{"site"}}, []string{`column "site": the stratum is missing in row 1`}},
 		"exposure 0":         {change("litres", 3, 0.0), Outcome{Measure: AsCount, Column: "spat_count", Exposure: "litres"}, []string{`column "litres": the exposure is 0 or negative in row 3`}},
 		"offset is missing":  {change("shift", 3, nil), Outcome{Measure: AsCount, Column: "spat_count", Offset: "shift"}, []string{`column "shift": the offset is missing in row 3`}},
