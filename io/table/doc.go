@@ -26,7 +26,8 @@
 // [Open] reads the schema. [Source.Scan] describes every column of numbers or
 // text, a few columns in memory at a time. [Source.Load] reads the columns asked
 // for, all at the same time and row group by row group, numbers into one block of
-// memory and text into codes; takes rows of weight 0 out; leaves out categories
+// memory and text into codes; takes rows of weight 0 out, and under [DropRows]
+// those without outcome, weight, offset, exposure or stratum; leaves out categories
 // with too many levels; checks the outcome; applies the policy for gaps
 // ([Refuse], [DropRows], [FillMean]); finds outcome, offset and strata of the
 // rows used; takes the fingerprint; makes the indicators, and centres each column
