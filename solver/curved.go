@@ -13,7 +13,7 @@ const (
 	newtonSteps = 200
 	// solved is the violation, relative to the thresholds, at which the working
 	// set counts as solved: the finish goes on from there.
-	solved = 1e-7
+	solved = 1e-5
 	// solvedGroups is the same with groups, where the descent gains digits slowly and
 	// the finish, which has Newton steps, fast.
 	solvedGroups = 1e-4
@@ -264,13 +264,16 @@ func (c *curved) norm(v []float64, first, width int) float64 {
 	return math.Sqrt(sum)
 }
 
-// gradients fills g at u, and returns the largest violation of the working set.
-func (c *curved) gradients(lambda float64) float64 {
+// gradients fills g at u, and returns the largest violation of the working set; of
+// the step's model alone where that is all that is asked for.
+func (c *curved) gradients(lambda float64, all bool) float64 {
 	f := c.f
 	n := len(f.d.rows)
 	for i := range c.g {
-		lane := i % c.lanes
-		c.g[i] = kernel.Dot(f.work.z[i/c.lanes], c.u[lane*n:(lane+1)*n]) / f.d.total
+		if all || c.chosen[i] {
+			lane := i % c.lanes
+			c.g[i] = kernel.Dot(f.work.z[i/c.lanes], c.u[lane*n:(lane+1)*n]) / f.d.total
+		}
 	}
 	worst := 0.0
 	for _, q := range c.fixed {
@@ -279,7 +282,9 @@ func (c *curved) gradients(lambda float64) float64 {
 		}
 	}
 	c.each(func(unit int32, first, width int) {
-		worst = max(worst, c.violation(unit, first, width, lambda))
+		if all || c.chosen[first] {
+			worst = max(worst, c.violation(unit, first, width, lambda))
+		}
 	})
 	return worst
 }
@@ -310,7 +315,7 @@ func (c *curved) solve(lambda float64) error {
 	} else {
 		c.value = c.at(c.beta, lambda)
 	}
-	worst := c.gradients(lambda)
+	worst := c.gradients(lambda, true)
 	if c.lambda != lambda {
 		c.lambda, c.bend = lambda, c.f.rec.bend
 	}
@@ -329,7 +334,10 @@ func (c *curved) solve(lambda float64) error {
 			return err
 		}
 		moved, whole := c.search(lambda)
-		now := c.gradients(lambda)
+		now := c.gradients(lambda, false)
+		if now <= enough || !moved {
+			now = c.gradients(lambda, true)
+		}
 		if !moved && fresh {
 			return c.stuck(now)
 		}

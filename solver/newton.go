@@ -13,6 +13,9 @@ const (
 	// certifiedCurved is the largest violation of a recorded fit whose Hessian
 	// moves (DESIGN 4).
 	certifiedCurved = 1e-8
+	// curvedEnough ends the Newton steps of a record: far below the border (1e-10), so
+	// that no gauge is on the wrong side of it, and a step from rounding.
+	curvedEnough = 1e-12
 	// mostSteps bounds the Newton steps of a record.
 	mostSteps = 200
 	// better is what a step near the optimum must leave of the violation at most to be
@@ -315,7 +318,7 @@ func (n *newton) descendNewton(groups bool) (done bool, err error) {
 		return true, err
 	}
 	for k := range mostSteps {
-		if n.worst <= goodEnough {
+		if n.worst <= curvedEnough {
 			return true, nil
 		}
 		before := n.worst
@@ -326,7 +329,7 @@ func (n *newton) descendNewton(groups bool) (done bool, err error) {
 		if groups && !whole && moved && n.worst > near {
 			return false, nil
 		}
-		if fresh = !moved || !whole || n.worst > slow*before; fresh && n.worst > goodEnough {
+		if fresh = !moved || !whole || n.worst > slow*before; fresh && n.worst > curvedEnough {
 			if err := n.factorise(true); err != nil || len(n.r.gone) > 0 {
 				return true, err
 			}
