@@ -241,9 +241,10 @@ func (n *newton) converge() error {
 	if len(n.r.blocks) == 0 {
 		return nil
 	}
-	groups := n.groups()
-	for k := range rounds {
-		if groups && !n.approach(math.Pow(closer, float64(k+1))) {
+	groups, enough := n.groups(), 1.0
+	for range rounds {
+		enough *= closer
+		if groups && !n.approach(enough) {
 			return nil
 		}
 		done, err := n.descendNewton(groups)
