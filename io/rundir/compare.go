@@ -225,11 +225,17 @@ func names(list []any) []string {
 
 // listChange says which names are gone and which are new.
 func listChange(key string, old, now []string) Change {
-	what := "columns"
+	one, many := "column", "columns"
 	if key == studyKeys["classes"] {
-		what = "classes"
+		one, many = "class", "classes"
 	}
-	c := Change{key, fmt.Sprintf("%d %s", len(old), what), fmt.Sprintf("%d %s", len(now), what)}
+	count := func(names []string) string {
+		if len(names) == 1 {
+			return "1 " + one
+		}
+		return fmt.Sprintf("%d %s", len(names), many)
+	}
+	c := Change{key, count(old), count(now)}
 	gone, added := without(old, now), without(now, old)
 	if len(gone) > 0 {
 		c.Old += ", among them " + some(gone)

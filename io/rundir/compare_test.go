@@ -101,8 +101,8 @@ func TestCompareNamesEveryChangeOfAKind(t *testing.T) {
 		key, old, now string
 	}{
 		{"yes-no", func(i *Identity) { i.Success = "kept" }, "outcome.success", "lost", "kept"},
-		{"yes-no", func(i *Identity) { i.Draws.Within = nil }, "draws.within", "1 columns, among them outcome", "0 columns"},
-		{"yes-no", func(i *Identity) { i.Draws.Within = []string{"site"} }, "draws.within", "1 columns, among them outcome", "1 columns, among them site"},
+		{"yes-no", func(i *Identity) { i.Draws.Within = nil }, "draws.within", "1 column, among them outcome", "0 columns"},
+		{"yes-no", func(i *Identity) { i.Draws.Within = []string{"site"} }, "draws.within", "1 column, among them outcome", "1 column, among them site"},
 		{"yes-no", func(i *Identity) { i.Offset = "log_larvae" }, "outcome.offset", "not set", "log_larvae"},
 		{"yes-no", func(i *Identity) { i.Reference = map[string]string{"feed": "oats", "site": "arm", "pump": "false"} }, "candidates.reference.feed", "algae", "oats"},
 		{"yes-no", terms("feed", "feed=oats", "feed=rye"), "columns of feed", "2 columns, among them feed=wheat", "2 columns, among them feed=rye"},
@@ -119,7 +119,7 @@ func TestCompareNamesEveryChangeOfAKind(t *testing.T) {
 		{"survival", func(i *Identity) { i.Time = "weeks" }, "outcome.time", "days", "weeks"},
 		{"survival", func(i *Identity) { i.Event = "dead" }, "outcome.event", "settled", "dead"},
 		{"survival", func(i *Identity) { i.Entry = "" }, "outcome.entry", "from_day", "not set"},
-		{"survival", func(i *Identity) { i.Strata = []string{"season", "site"} }, "outcome.strata", "1 columns", "2 columns, among them site"},
+		{"survival", func(i *Identity) { i.Strata = []string{"season", "site"} }, "outcome.strata", "1 column", "2 columns, among them site"},
 		{"survival", func(i *Identity) { i.Success = "on shell" }, "outcome.success", "not set", "on shell"},
 		{"survival", func(i *Identity) { i.Ties = "efron" }, "outcome.ties", "breslow", "efron"},
 	}
